@@ -37,9 +37,7 @@ def normalised(value: Any) -> Any:
 
 def canonical_json(tree: Any) -> str:
     """Canonical text of a tree of dicts, lists, texts, integers, Decimals, booleans and None."""
-    return json.dumps(
-        normalised(tree), ensure_ascii=False, sort_keys=True, separators=(",", ":"), allow_nan=False
-    )
+    return json.dumps(normalised(tree), ensure_ascii=False, sort_keys=True, separators=(",", ":"), allow_nan=False)
 
 
 def canonical_bytes(tree: Any) -> bytes:

@@ -23,9 +23,7 @@ class Entry:
 
     def expected_hash(self) -> str:
         """The hash this entry must have (contract, section 4)."""
-        return entry_hash(
-            self.seq, self.utc, self.kind, canonical_json(self.body), self.observer, self.previous_hash
-        )
+        return entry_hash(self.seq, self.utc, self.kind, canonical_json(self.body), self.observer, self.previous_hash)
 
 
 def entry_hash(seq: int, utc: str, kind: str, body_text: str, observer: str, previous_hash: str) -> str:

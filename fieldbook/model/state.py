@@ -35,20 +35,14 @@ class Occupation:
     rollover_weeks: int = 0  # decision: weeks to add to day0
     datum_confirmed: str | None = None  # session or decision
     talker: str | None = None  # session or decision
-    initialisation_decisions: dict[int, tuple[bool, str]] = field(
-        default_factory=dict
-    )  # number -> (used, reason)
-    operation: list[str] | None = (
-        None  # recorded codes of the frame operation, e.g. ["EPSG:9991 inverse", "EPSG:8049"]
-    )
+    initialisation_decisions: dict[int, tuple[bool, str]] = field(default_factory=dict)  # number -> (used, reason)
+    operation: list[str] | None = None  # recorded codes of the frame operation, e.g. ["EPSG:9991 inverse", "EPSG:8049"]
     accuracy_over_limit: bool = False
     outside_area_accepted: bool = False
     decisions: list[Entry] = field(default_factory=list)
     remarks: list[Entry] = field(default_factory=list)
     gaps: list[Entry] = field(default_factory=list)  # `gap` and `resumed` entries
-    findings: list[Entry] = field(
-        default_factory=list
-    )  # findings the recorder made while recording (overlap ...)
+    findings: list[Entry] = field(default_factory=list)  # findings the recorder made while recording (overlap ...)
     struck: list[Entry] = field(default_factory=list)  # entries of this occupation that were struck out
     received_sha256: str | None = None  # of the received bytes alone, from the `end` entry
     received_bytes: int | None = None
