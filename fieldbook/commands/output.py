@@ -1,0 +1,75 @@
+"""The only writer of the commands: data on stdout, everything else on stderr.
+
+Texts of a book may come from anybody. A name such as `\\x1b[2J` must not clear the reader's terminal, and a direction
+override must not make a coordinate read backwards: whatever is printed as text passes `plain`, JSON escapes by itself.
+"""
+
+from __future__ import annotations
+
+import json
+import re
+import sys
+from typing import Any
+
+import click
+
+from fieldbook.errors import FieldbookError
+
+# C0 and C1 controls, DEL, line and paragraph separators, zero-width and direction marks, byte order mark, surrogates
+_UNSAFE = re.compile(
+    "[\x00-\x1f\x7f-\x9f\u00ad\u061c\u200b-\u200f\u2028-\u202e\u2060-\u206f\ufeff\ud800-\udfff\ufff9-\ufffb]"
+)
+
+
+def plain(value: object) -> str:
+    r"""The text with everything that could move a cursor or turn a line written as `\x1b` or `\u202e`."""
+    return _UNSAFE.sub(_escaped, str(value))
+
+
+def _escaped(found: re.Match[str]) -> str:
+    number = ord(found.group())
+    return f"\\x{number:02x}" if number < 0x100 else f"\\u{number:04x}"
+
+
+def line(text: object = "") -> None:
+    """One line of data on stdout, made harmless."""
+    click.echo(plain(text))
+
+
+def note(text: object) -> None:
+    """One line on stderr: progress, advice, where a file went."""
+    click.echo(plain(text), err=True)
+
+
+def write_json(tree: dict[str, Any]) -> None:
+    """One JSON object on stdout; ASCII only, so that no text in it can steer a terminal."""
+    click.echo(json.dumps(tree, indent=1, allow_nan=False))
+
+
+def write_error(error: FieldbookError, *, as_json: bool) -> None:
+    """An error with its remedy: `error: ...` on stderr, or one JSON object on stdout."""
+    if as_json:
+        tree = {"code": error.code, "text": error.text, "remedy": error.remedy}
+        write_json({"schema": "fieldbook.error/1", "error": tree})
+        return
+    note(f"error: {error}")
+
+
+class Progress:
+    """One line on stderr that is overwritten; silent where stderr is no terminal."""
+
+    def __init__(self) -> None:
+        self._shown = sys.stderr.isatty()
+        self._open = False
+
+    def show(self, text: str) -> None:
+        """Replace the line."""
+        if self._shown:
+            click.echo(f"\r\x1b[K{plain(text)}", err=True, nl=False)
+            self._open = True
+
+    def close(self) -> None:
+        """Leave the last line standing and go to the next."""
+        if self._open:
+            click.echo("", err=True)
+            self._open = False
