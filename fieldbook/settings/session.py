@@ -137,12 +137,12 @@ def _conditions(tree: Tree, where: _Where) -> None:
     setup, antenna = tree["setup"], tree["antenna"]
     if setup["reported_point"] == "mark" and "receiver_height_m" not in setup:
         raise UsageError(
-            f'{where("setup", "reported_point")}: with reported_point = "mark" the height keyed into the receiver is needed.',
+            f'{where("setup", "reported_point")}: reported_point = "mark" needs the height keyed into the receiver.',
             "Write setup.receiver_height_m: a height taken off twice is the classic blunder.",
         )
     if setup["reported_point"] == "phase centre" and "arp_to_phase_centre_m" not in antenna:
         raise UsageError(
-            f'{where("setup", "reported_point")}: with reported_point = "phase centre" the offset of the antenna is needed.',
+            f'{where("setup", "reported_point")}: reported_point = "phase centre" needs the offset of the antenna.',
             "Write antenna.arp_to_phase_centre_m = { north = ..., east = ..., up = ... } from its calibration.",
         )
     if any(item["method"] == "slant" for item in setup.get("height", [])):

@@ -115,8 +115,8 @@ def _qualities(value: Any, stored: bool) -> list[int]:  # noqa: ARG001
     for item in value:
         if isinstance(item, bool) or not isinstance(item, int) or not 1 <= item <= 5:
             raise BadValue(
-                f"takes qualities 1 to 5 (1 autonomous, 2 differential, 3 PPS, 4 RTK fixed, 5 RTK float), not {_shown(item)}; "
-                "dead reckoning, manual and simulator fixes cannot make a mark"
+                "takes qualities 1 to 5 (1 autonomous, 2 differential, 3 PPS, 4 RTK fixed, 5 RTK float), "
+                f"not {_shown(item)}; dead reckoning, manual and simulator fixes cannot make a mark"
             )
     return sorted(set(value))
 
