@@ -1,0 +1,345 @@
+"""What was received, in order: tail, chunks, packs.
+
+A burst becomes plain rows of `raw_tail` at once. Sealing moves the tail into one zlib `raw_chunk`, whose SHA-256 over
+the canonical items enters the chain as a `raw` entry in the same transaction. At the end of an occupation packing
+moves chunks into larger xz pieces; the hashes of the chunks inside stay those of the chain. Item ids run through
+the whole book without a gap inside a chunk, so that the place of an item in a chunk gives its id.
+
+The functions take a connection; `store.Book` holds the transactions and the entries. Reading raises ValueError on
+anything that does not fit, which `Book` words as a BookError and `audit` as a finding.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import lzma
+import sqlite3
+import zlib
+from collections.abc import Callable, Iterable, Iterator, Sequence
+from dataclasses import dataclass
+
+from fieldbook.model.canonical import Tree
+from fieldbook.model.item import Item, ItemKind, canonical_items, parse_items
+
+CHUNK_BYTES = 4 * 1024 * 1024  # a chunk is closed at this size of canonical bytes
+PACK_BYTES = 8 * 1024 * 1024  # canonical bytes in one pack: bounds memory in writing and in reading
+MAX_INFLATED_BYTES = 64 * 1024 * 1024  # of one chunk or pack; no writer makes larger ones
+XZ_MEMORY_BYTES = 128 * 1024 * 1024
+ZLIB_LEVEL = 3
+CODEC = "xz"
+# Chosen by measurement on receiver logs (DEVELOPERS.md): size of preset 6 within a few percent, at several times
+# its speed. Packing is part of recording a file, which must keep pace with reading it.
+XZ_FILTERS: Sequence[dict[str, int]] = (
+    {
+        "id": lzma.FILTER_LZMA2,
+        "preset": 6,
+        "dict_size": 8 * 1024 * 1024,
+    },
+)
+Row = tuple[int, str, int | None, int | None, bytes]
+
+
+@dataclass(frozen=True)
+class Sealed:
+    """A chunk as its `raw` entry states it. `bytes` counts canonical bytes: what `sha256` covers."""
+
+    occupation: int
+    chunk: int
+    first_id: int
+    last_id: int
+    items: int
+    bytes: int
+    sha256: str
+
+    def body(self) -> Tree:
+        """The body of the `raw` entry."""
+        return {
+            "occupation": self.occupation,
+            "chunk": self.chunk,
+            "first_id": self.first_id,
+            "last_id": self.last_id,
+            "items": self.items,
+            "bytes": self.bytes,
+            "sha256": self.sha256,
+        }
+
+    @classmethod
+    def from_body(cls, body: Tree) -> Sealed:
+        """From a `raw` entry.
+
+        Raises:
+            ValueError: a key is missing, or a value is no positive number or text.
+        """
+        sha256 = body.get("sha256")
+        if not isinstance(sha256, str):
+            raise ValueError("a raw entry names no hash")
+        occupation, chunk, first, last, items, size = (
+            _count(body, key) for key in ("occupation", "chunk", "first_id", "last_id", "items", "bytes")
+        )
+        return cls(occupation, chunk, first, last, items, size, sha256)
+
+
+def _count(body: Tree, key: str) -> int:
+    value = body.get(key)
+    if type(value) is not int or not 0 <= value < 2**62:
+        raise ValueError(f"a raw entry states no number '{key}'")
+    return value
+
+
+def insert_tail(connection: sqlite3.Connection, occupation: int, first_id: int, items: Iterable[Item]) -> int:
+    """Write items as tail rows from an id on; return the next free id. The caller holds the transaction."""
+    rows = [
+        (number, occupation, item.kind.value, item.monotonic_ms, item.utc_ms, item.data)
+        for number, item in enumerate(items, first_id)
+    ]
+    connection.executemany(
+        "INSERT INTO raw_tail (id, occupation, kind, monotonic_ms, utc_ms, data) VALUES (?, ?, ?, ?, ?, ?)", rows
+    )
+    return first_id + len(rows)
+
+
+def last_tail_id(connection: sqlite3.Connection) -> int:
+    """The highest id in the tail, 0 if it is empty."""
+    return int(connection.execute("SELECT coalesce(max(id), 0) FROM raw_tail").fetchone()[0])
+
+
+def tail_rows(
+    connection: sqlite3.Connection, occupation: int, after_id: int, limit_bytes: int = CHUNK_BYTES
+) -> list[Row]:
+    """Tail rows of an occupation after an id, up to about `limit_bytes` of data."""
+    cursor = connection.execute(
+        "SELECT id, kind, monotonic_ms, utc_ms, data FROM raw_tail WHERE occupation = ? AND id > ? ORDER BY id",
+        (occupation, after_id),
+    )
+    rows: list[Row] = []
+    size = 0
+    for row in cursor:
+        rows.append(row)
+        size += len(row[4])
+        if size >= limit_bytes:
+            break
+    cursor.close()
+    return rows
+
+
+def item_of(row: Row) -> Item:
+    """The item of a tail row."""
+    return Item(ItemKind(row[1]), row[4], row[2], row[3])
+
+
+def chunk_of(occupation: int, chunk: int, rows: Sequence[Row]) -> tuple[Sealed, bytes]:
+    """What a new chunk holds: its description and its zlib data.
+
+    Raises:
+        ValueError: the ids have a gap.
+    """
+    first, last = rows[0][0], rows[-1][0]
+    if last - first + 1 != len(rows):
+        raise ValueError(f"received items {first} to {last} of occupation {occupation} have a gap")
+    plain = canonical_items(item_of(row) for row in rows)
+    sealed = Sealed(occupation, chunk, first, last, len(rows), len(plain), hashlib.sha256(plain).hexdigest())
+    return sealed, zlib.compress(plain, ZLIB_LEVEL)
+
+
+def insert_chunk(connection: sqlite3.Connection, sealed: Sealed, data: bytes) -> None:
+    """Write the chunk and take its rows from the tail. The caller holds the transaction.
+
+    Raises:
+        ValueError: the tail does not hold exactly these rows any more.
+    """
+    connection.execute(
+        "INSERT INTO raw_chunk (occupation, chunk, first_id, last_id, items, bytes, sha256, data)"
+        " VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
+        (*sealed.body().values(), data),
+    )
+    gone = connection.execute(
+        "DELETE FROM raw_tail WHERE occupation = ? AND id BETWEEN ? AND ?",
+        (sealed.occupation, sealed.first_id, sealed.last_id),
+    ).rowcount
+    if gone != sealed.items:
+        raise ValueError(f"the tail of occupation {sealed.occupation} changed while it was sealed")
+
+
+def inflate_chunk(data: bytes, expected: int) -> bytes:
+    """The canonical bytes of a zlib chunk.
+
+    Raises:
+        ValueError: no zlib data, not exactly `expected` bytes, or something behind it.
+    """
+    _check_size(expected)
+    worker = zlib.decompressobj()
+    try:
+        plain = worker.decompress(data, expected + 1)
+    except zlib.error as error:
+        raise ValueError(f"its zlib data is damaged ({error})") from error
+    if len(plain) != expected or not worker.eof or worker.unused_data:
+        raise ValueError(f"its zlib data does not hold exactly {expected} bytes")
+    return plain
+
+
+def inflate_pack(codec: str, data: bytes, expected: int) -> bytes:
+    """The canonical bytes of a pack.
+
+    Raises:
+        ValueError: unknown codec, no xz data, not exactly `expected` bytes, or something behind it.
+    """
+    if codec != CODEC:
+        raise ValueError(f"its codec is '{codec}', not '{CODEC}'")
+    _check_size(expected)
+    worker = lzma.LZMADecompressor(format=lzma.FORMAT_XZ, memlimit=XZ_MEMORY_BYTES)
+    parts: list[bytes] = []
+    size = 0
+    try:
+        while not worker.eof and size <= expected:
+            part = worker.decompress(data, max(1, expected + 1 - size))
+            data = b""
+            parts.append(part)
+            size += len(part)
+            if not part and worker.needs_input:
+                break
+    except (lzma.LZMAError, EOFError, MemoryError) as error:
+        raise ValueError(f"its xz data is damaged ({error})") from error
+    if size != expected or not worker.eof or worker.unused_data:
+        raise ValueError(f"its xz data does not hold exactly {expected} bytes")
+    return b"".join(parts)
+
+
+def _check_size(expected: int) -> None:
+    if not 0 <= expected <= MAX_INFLATED_BYTES:
+        raise ValueError(f"it claims {expected} bytes, more than any writer puts into one piece")
+
+
+def checked(sealed: Sealed, plain: bytes) -> bytes:
+    """The canonical bytes, if they are those the chain names.
+
+    Raises:
+        ValueError: another SHA-256.
+    """
+    if hashlib.sha256(plain).hexdigest() != sealed.sha256:
+        raise ValueError(f"chunk {sealed.chunk} of occupation {sealed.occupation} is not what entry 'raw' states")
+    return plain
+
+
+def read_chunk(connection: sqlite3.Connection, sealed: Sealed) -> bytes | None:
+    """The checked canonical bytes of a chunk that is not packed; None if it is not in `raw_chunk`."""
+    row = connection.execute(
+        "SELECT data FROM raw_chunk WHERE occupation = ? AND chunk = ?", (sealed.occupation, sealed.chunk)
+    ).fetchone()
+    return None if row is None else checked(sealed, inflate_chunk(row[0], sealed.bytes))
+
+
+def split_pack(codec: str, data: bytes, chunks: Sequence[Sealed]) -> Iterator[tuple[Sealed, bytes]]:
+    """Each chunk of a pack with its checked canonical bytes.
+
+    Raises:
+        ValueError: the pack does not hold these chunks.
+    """
+    plain = inflate_pack(codec, data, sum(sealed.bytes for sealed in chunks))
+    position = 0
+    for sealed in chunks:
+        yield sealed, checked(sealed, plain[position : position + sealed.bytes])
+        position += sealed.bytes
+
+
+def pack_groups(chunks: Sequence[Sealed]) -> Iterator[list[Sealed]]:
+    """Consecutive chunks in groups of about PACK_BYTES."""
+    group: list[Sealed] = []
+    size = 0
+    for sealed in chunks:
+        if group and (size + sealed.bytes > PACK_BYTES or sealed.chunk != group[-1].chunk + 1):
+            yield group
+            group, size = [], 0
+        group.append(sealed)
+        size += sealed.bytes
+    if group:
+        yield group
+
+
+def compress_pack(connection: sqlite3.Connection, chunks: Sequence[Sealed]) -> bytes:
+    """xz data of consecutive chunks, read back and compared before anything is let go.
+
+    Raises:
+        ValueError: a chunk is missing or damaged.
+    """
+    parts: list[bytes] = []
+    for sealed in chunks:
+        plain = read_chunk(connection, sealed)
+        if plain is None:
+            raise ValueError(f"chunk {sealed.chunk} of occupation {sealed.occupation} is missing")
+        parts.append(plain)
+    data = lzma.compress(b"".join(parts), lzma.FORMAT_XZ, lzma.CHECK_CRC64, filters=list(XZ_FILTERS))
+    for _ in split_pack(CODEC, data, chunks):
+        pass
+    return data
+
+
+def insert_pack(connection: sqlite3.Connection, chunks: Sequence[Sealed], data: bytes) -> None:
+    """Write the pack and take its chunks from `raw_chunk`. The caller holds the transaction."""
+    occupation, first, last = chunks[0].occupation, chunks[0].chunk, chunks[-1].chunk
+    connection.execute(
+        "INSERT INTO raw_pack (occupation, first_chunk, last_chunk, codec, data) VALUES (?, ?, ?, ?, ?)",
+        (occupation, first, last, CODEC, data),
+    )
+    connection.execute(
+        "DELETE FROM raw_chunk WHERE occupation = ? AND chunk BETWEEN ? AND ?", (occupation, first, last)
+    )
+
+
+def unpacked(connection: sqlite3.Connection, occupation: int) -> set[int]:
+    """Numbers of the chunks of an occupation that are still in `raw_chunk`."""
+    rows = connection.execute("SELECT chunk FROM raw_chunk WHERE occupation = ?", (occupation,))
+    return {row[0] for row in rows}
+
+
+Snapshot = Callable[[], list[Sealed]]
+
+
+def iterate(connection: sqlite3.Connection, occupation: int, sealed_now: Snapshot, after_id: int = 0) -> Iterator[Item]:
+    """Items of an occupation in order, also while a recorder seals and packs.
+
+    Each step is one short read transaction over entries, packs, chunks and tail together, so that a row moving
+    from the tail into a chunk between two steps is neither lost nor seen twice; no transaction stays open
+    between two items. `sealed_now` gives the occupation's `raw` entries as of the current transaction.
+    """
+    after = after_id
+    while True:
+        connection.execute("BEGIN")
+        try:
+            step = list(_next_piece(connection, occupation, sealed_now(), after))
+        finally:
+            connection.execute("COMMIT")
+        if not step:
+            return
+        for number, item in step:
+            after = number
+            yield item
+
+
+def _next_piece(
+    connection: sqlite3.Connection, occupation: int, chunks: Sequence[Sealed], after: int
+) -> Iterator[tuple[int, Item]]:
+    due = next((sealed for sealed in chunks if sealed.last_id > after), None)
+    if due is None:
+        for row in tail_rows(connection, occupation, after):
+            yield row[0], item_of(row)
+        return
+    plain = read_chunk(connection, due)
+    pieces = [(due, plain)] if plain is not None else _pack_of(connection, chunks, due)
+    for sealed, content in pieces:
+        for number, item in enumerate(parse_items(content), sealed.first_id):
+            if number > after:
+                yield number, item
+
+
+def _pack_of(
+    connection: sqlite3.Connection, chunks: Sequence[Sealed], wanted: Sealed
+) -> Iterable[tuple[Sealed, bytes]]:
+    row = connection.execute(
+        "SELECT first_chunk, last_chunk, codec, data FROM raw_pack"
+        " WHERE occupation = ? AND ? BETWEEN first_chunk AND last_chunk",
+        (wanted.occupation, wanted.chunk),
+    ).fetchone()
+    if row is None:
+        raise ValueError(f"chunk {wanted.chunk} of occupation {wanted.occupation} is missing")
+    inside = [sealed for sealed in chunks if row[0] <= sealed.chunk <= row[1]]
+    return split_pack(row[2], row[3], inside)

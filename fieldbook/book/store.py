@@ -1,0 +1,442 @@
+"""Book: create, open, append, record, read.
+
+A Book holds one connection and belongs to the thread that opened it: every thread opens its own. A writer works in
+explicit transactions (BEGIN IMMEDIATE) and never holds one while it computes. Screen, commands and recorder may
+write to one book at the same time; the raw and epoch tables belong to the process that holds the `RecorderLock`.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import sqlite3
+import uuid
+from collections.abc import Iterable, Iterator, Sequence
+from contextlib import contextmanager
+from pathlib import Path
+from types import TracebackType
+
+from fieldbook import __version__
+from fieldbook.clock import Clock, utc_text
+from fieldbook.errors import BookError, UsageError
+from fieldbook.model.canonical import Tree
+from fieldbook.model.entry import Entry
+from fieldbook.model.epoch import Epoch
+from fieldbook.model.item import Item, ItemKind
+from fieldbook.model.recorder import RecorderState
+from fieldbook.model.state import BookState
+
+from . import chain, connect, epochs, migrations, raw
+from .begin import new_book
+from .fold import fold
+
+
+class Book:
+    """One open book. Use `create` or `open`; close it, or use it in a `with` statement."""
+
+    def __init__(self, path: Path, connection: connect.BookConnection, clock: Clock, *, write: bool) -> None:
+        self.path = path
+        self.writable = write
+        self._connection = connection
+        self._clock = clock
+        self._entries: list[Entry] = []  # all entries up to the last look, for `state` and the questions below
+        self._state: BookState | None = None
+        self._next_id: int | None = None
+        self._forms: dict[int, dict[epochs.Form, int]] = {}
+        self._origins: dict[int, epochs.Origin] = {}
+        self._version_seen = -1
+
+    # -- begin and end -------------------------------------------------------------------------------------
+
+    @classmethod
+    def create(
+        cls,
+        path: Path,
+        *,
+        clock: Clock,
+        observer: str,
+        session_tree: Tree | None = None,
+        book_id: str | None = None,
+    ) -> Book:
+        """Begin a book and open it for writing. The file appears under its name only when it is complete.
+
+        Args:
+            path: where no file is yet.
+            clock: time of the entries.
+            observer: who signs the first entries.
+            session_tree: canonical tree of the session file to offer for the first occupation.
+            book_id: the UUID4 of the book; made up if None.
+
+        Raises:
+            UsageError: the path exists; observer or tree cannot be stored.
+            BookError: the file cannot be made.
+        """
+        if path.exists() or path.is_symlink():
+            raise UsageError(f"{path} exists already.", "Choose another name; a book is never overwritten.")
+        new_book(path, clock, observer, session_tree, book_id or str(uuid.uuid4()))
+        return cls.open(path, clock=clock, write=True)
+
+    @classmethod
+    def open(cls, path: Path, *, clock: Clock, write: bool = False) -> Book:
+        """Open a book, for reading unless `write`. A book of an older version is brought up to date by a writer.
+
+        Raises:
+            BookError: code "missing", "not_a_book", "newer", "older", "schema", "damaged", "busy", "read_only", ...
+        """
+        connection = connect.open_writer(path) if write else connect.open_reader(path)
+        try:
+            with connect.book_errors(path):
+                found = connect.check_identity(connection, path)
+                book = cls(path, connection, clock, write=write)
+                if write:
+                    connect.begin_wal(connection)
+                if found < migrations.version():
+                    book._upgrade()
+        except BaseException:
+            connection.close()
+            raise
+        return book
+
+    def _upgrade(self) -> None:
+        if not self.writable:
+            raise BookError(
+                f"{self.path} was written by an older Fieldbook.",
+                "Open it once for writing (`fieldbook open`): it is brought up to date and nothing is lost.",
+                code="older",
+            )
+        with self.transaction():
+            rows = migrations.apply(self._connection)
+            if rows:
+                body = {"migrations": [list(row) for row in rows]}
+                chain.insert_entry(self._connection, "migrated", body, "fieldbook " + __version__, self._now())
+
+    @property
+    def notes(self) -> list[str]:
+        """What a reader should know about how the book was opened (read-only medium, temporary copy)."""
+        return self._connection.notes
+
+    @property
+    def copied_without_wal(self) -> bool:
+        """True if the entries say that a recorder runs, the file expects a -wal, and none was beside it.
+
+        Such a book was copied while it was recorded: what the recorder wrote last is missing.
+        """
+        return self._connection.without_wal and self._recorder_running()
+
+    def _recorder_running(self) -> bool:
+        self._catch_up()
+        states = [entry.body.get("state") for entry in self._entries if entry.kind == "recorder"]
+        return bool(states) and states[-1] == "running"
+
+    def close(self) -> None:
+        """Close. A writer leaves one plain file behind if nobody else is on the book (see `close_clean`)."""
+        self.close_clean()
+
+    def close_clean(self) -> bool:
+        """Close; True if what is left is one plain file without a -wal (a reader leaves that as it is)."""
+        try:
+            if self.writable and not self._connection.in_transaction:
+                with connect.book_errors(self.path):
+                    return connect.end_wal(self._connection)
+            return False
+        except sqlite3.ProgrammingError:
+            return False  # closed already
+        finally:
+            self._connection.close()
+
+    def __enter__(self) -> Book:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+    # -- transactions --------------------------------------------------------------------------------------
+
+    def _now(self) -> str:
+        return utc_text(self._clock.utc_ms())
+
+    @contextmanager
+    def transaction(self) -> Iterator[None]:
+        """One write transaction; all of it is committed, or nothing. Inside another one it is part of that.
+
+        Raises:
+            BookError: busy, read-only, disk full, ...
+        """
+        if not self.writable:
+            raise BookError(f"{self.path} is open for reading only.", "Open it for writing.", code="read_only")
+        with connect.book_errors(self.path):
+            if self._connection.in_transaction:
+                yield
+                return
+            self._connection.execute("BEGIN IMMEDIATE")
+            try:
+                yield
+                self._connection.execute("COMMIT")
+            except BaseException:
+                self._forget()
+                if self._connection.in_transaction:
+                    self._connection.execute("ROLLBACK")
+                raise
+
+    @contextmanager
+    def _reading(self) -> Iterator[None]:
+        with connect.book_errors(self.path):
+            if self._connection.in_transaction:
+                yield
+                return
+            self._connection.execute("BEGIN")
+            try:
+                yield
+            finally:
+                self._connection.execute("COMMIT")
+
+    def _forget(self) -> None:
+        """Drop what was remembered of the tables: after a rollback or a change by another connection."""
+        self._entries.clear()
+        self._state = None
+        self._next_id = None
+        self._forms.clear()
+        self._origins.clear()
+
+    def _look_around(self) -> None:
+        """Forget ids and forms if another connection has written. Called inside a write transaction."""
+        version = self.data_version()
+        if version != self._version_seen:
+            self._version_seen = version
+            self._next_id = None
+            self._forms.clear()
+
+    # -- entries -------------------------------------------------------------------------------------------
+
+    def append(self, kind: str, body: Tree, observer: str) -> Entry:
+        """Append one entry, durably. An `end` entry seals what is still in the tail first.
+
+        Raises:
+            UsageError: it cannot be stored (unknown kind, missing key, a float, no observer).
+            BookError: busy, read-only, disk full, ...
+        """
+        if kind == "end" and type(body.get("occupation")) is int:
+            self.seal(body["occupation"])
+        with self.transaction():
+            return chain.insert_entry(self._connection, kind, body, observer, self._now())
+
+    def entries(self, after_seq: int = 0) -> list[Entry]:
+        """Entries after a seq, in order.
+
+        Raises:
+            BookError: damaged.
+        """
+        with connect.book_errors(self.path):
+            return list(chain.read_entries(self._connection, after_seq))
+
+    def _catch_up(self) -> None:
+        after = self._entries[-1].seq if self._entries else 0
+        self._entries.extend(self.entries(after))
+
+    def state(self) -> BookState:
+        """The state of the job, folded from all entries. Treat it as read-only; folded again only after news.
+
+        Raises:
+            BookError: an entry is damaged.
+        """
+        self._catch_up()
+        if self._state is None or self._state.head_seq != len(self._entries):
+            self._state = fold(self._entries)
+        return self._state
+
+    def data_version(self) -> int:
+        """A number that changes when another connection has committed. 5 microseconds."""
+        with connect.book_errors(self.path):
+            return int(self._connection.execute("PRAGMA data_version").fetchone()[0])
+
+    def _of(self, kind: str, occupation: int) -> Iterator[Entry]:
+        self._catch_up()
+        return (entry for entry in self._entries if entry.kind == kind and entry.body.get("occupation") == occupation)
+
+    def _observer_of(self, occupation: int) -> str:
+        entry = next(self._of("occupation", occupation), None)
+        if entry is None:
+            raise UsageError(f"There is no occupation {occupation} in {self.path}.", "Begin it first.")
+        return entry.observer
+
+    def _origin_of(self, occupation: int) -> epochs.Origin | None:
+        if occupation not in self._origins:
+            entry = next(self._of("origin", occupation), None)
+            if entry is None:
+                return None
+            self._origins[occupation] = int(entry.body["latitude_e8min"]), int(entry.body["longitude_e8min"])
+        return self._origins[occupation]
+
+    # -- recording -----------------------------------------------------------------------------------------
+
+    def write_burst(
+        self,
+        occupation: int,
+        items: Sequence[Item],
+        epochs: Sequence[Epoch] = (),
+        state: RecorderState | None = None,
+    ) -> None:
+        """Write received items, closed epochs and the recorder's state as one durable commit.
+
+        Items and epochs may be many; all may be empty (heartbeat).
+
+        Raises:
+            UsageError: the occupation has not begun.
+            BookError: busy, read-only, disk full, ...; then nothing was written and the burst may be tried again.
+        """
+        with self.transaction():
+            self._look_around()
+            if items:
+                first = self._next_id if self._next_id is not None else self._first_free_id()
+                self._next_id = raw.insert_tail(self._connection, occupation, first, items)
+            if epochs:
+                self._write_epochs(occupation, epochs)
+            if state is not None:
+                self._connection.execute(
+                    "INSERT INTO recorder_state (id, state) VALUES (1, ?)"
+                    " ON CONFLICT (id) DO UPDATE SET state = excluded.state",
+                    (state.to_json(),),
+                )
+
+    def _first_free_id(self) -> int:
+        self._catch_up()
+        sealed = max((entry.body["last_id"] for entry in self._entries if entry.kind == "raw"), default=0)
+        return max(int(sealed), raw.last_tail_id(self._connection)) + 1
+
+    def _write_epochs(self, occupation: int, rows: Sequence[Epoch]) -> None:
+        forms = self._forms.get(occupation)
+        if forms is None:
+            forms = self._forms[occupation] = epochs.load_forms(self._connection, occupation)
+        origin = self._origin_of(occupation)
+        if origin is None:
+            origin = epochs.first_position(rows)
+            if origin is not None:
+                body = {"occupation": occupation, "latitude_e8min": origin[0], "longitude_e8min": origin[1]}
+                observer = self._observer_of(occupation)
+                chain.insert_entry(self._connection, "origin", body, observer, self._now())
+        epochs.insert_epochs(self._connection, occupation, rows, origin, forms)
+
+    def replace_epochs(self, occupation: int, rows: Iterable[Epoch]) -> None:
+        """Put newly decoded epochs in the place of an occupation's epochs, as one commit."""
+        with self.transaction():
+            epochs.delete_epochs(self._connection, occupation)
+            self._forms[occupation] = {}
+            self._write_epochs(occupation, list(rows))
+
+    def seal(self, occupation: int) -> list[Entry]:
+        """Move the tail of an occupation into chunks of at most about 4 MiB, each with its `raw` entry.
+
+        Compression happens outside the transaction. Returns the entries written; none if the tail is empty.
+
+        Raises:
+            UsageError: the occupation has not begun.
+            BookError: the tail has a gap or was changed meanwhile, or any of `transaction`.
+        """
+        written: list[Entry] = []
+        with self._worded(occupation):
+            while rows := raw.tail_rows(self._connection, occupation, 0):
+                number = max((sealed.chunk for sealed in self._sealed(occupation)), default=0) + 1
+                sealed, data = raw.chunk_of(occupation, number, rows)
+                with self.transaction():
+                    raw.insert_chunk(self._connection, sealed, data)
+                    observer = self._observer_of(occupation)
+                    written.append(chain.insert_entry(self._connection, "raw", sealed.body(), observer, self._now()))
+        return written
+
+    def _sealed(self, occupation: int) -> list[raw.Sealed]:
+        return [raw.Sealed.from_body(entry.body) for entry in self._of("raw", occupation)]
+
+    def pack(self, occupation: int) -> int:
+        """Seal the tail, move all chunks of an occupation into xz packs, and let the file shrink.
+
+        Every chunk's SHA-256 is compared with its `raw` entry before and after compression. Returns the number of
+        chunks packed.
+
+        Raises:
+            BookError: a chunk is damaged or missing (then it stays as it is), or any of `transaction`.
+        """
+        self.seal(occupation)
+        packed = 0
+        with self._worded(occupation):
+            left = raw.unpacked(self._connection, occupation)
+            due = [sealed for sealed in self._sealed(occupation) if sealed.chunk in left]
+            for group in raw.pack_groups(due):
+                data = raw.compress_pack(self._connection, group)
+                with self.transaction():
+                    raw.insert_pack(self._connection, group, data)
+                packed += len(group)
+            if packed:
+                self._shrink()
+        return packed
+
+    def _shrink(self) -> None:
+        """Give free pages back. VACUUM if it can have the book at once, else the free pages only, else later."""
+        for statement in ("VACUUM", "PRAGMA incremental_vacuum"):
+            try:
+                self._connection.execute(statement).fetchall()
+                break
+            except sqlite3.OperationalError:
+                continue  # busy or no room for a second copy: the book is whole, only larger than need be
+
+    @contextmanager
+    def _worded(self, occupation: int) -> Iterator[None]:
+        """Word ValueErrors of the raw and epoch tables as BookErrors."""
+        with connect.book_errors(self.path):
+            try:
+                yield
+            except (ValueError, OverflowError) as error:
+                raise BookError(
+                    f"Occupation {occupation} of {self.path} is damaged: {error}.",
+                    "`fieldbook verify` says what still holds.",
+                    code="damaged",
+                ) from error
+
+    # -- reading what was recorded -------------------------------------------------------------------------
+
+    def items(self, occupation: int, after_id: int = 0) -> Iterator[Item]:
+        """Received items and link events of an occupation, in order, across packs, chunks and tail.
+
+        Safe while a recorder seals and packs; no transaction stays open between two items.
+
+        Raises:
+            BookError: a chunk is missing or damaged.
+        """
+        with self._worded(occupation):
+            yield from raw.iterate(self._connection, occupation, lambda: self._sealed(occupation), after_id)
+
+    def received(self, occupation: int) -> Iterator[bytes]:
+        """The received bytes alone, piece by piece."""
+        return (item.data for item in self.items(occupation) if item.kind is ItemKind.BYTES)
+
+    def received_digest(self, occupation: int) -> tuple[int, str]:
+        """(number, SHA-256) of the received bytes alone."""
+        size, total = 0, hashlib.sha256()
+        for data in self.received(occupation):
+            size += len(data)
+            total.update(data)
+        return size, total.hexdigest()
+
+    def received_sha256(self, occupation: int) -> str:
+        """SHA-256 of the received bytes alone: the same for the same file, whatever the times and events."""
+        return self.received_digest(occupation)[1]
+
+    def epochs(self, occupation: int, after: int = 0) -> list[Epoch]:
+        """Decoded epochs of an occupation with a number above `after`.
+
+        Raises:
+            BookError: damaged.
+        """
+        with self._worded(occupation), self._reading():
+            return epochs.read_epochs(self._connection, occupation, self._origin_of(occupation), after)
+
+    def recorder_state(self) -> RecorderState | None:
+        """What the recorder last said of itself; None if there never was one, or it cannot be read."""
+        with connect.book_errors(self.path):
+            row = self._connection.execute("SELECT state FROM recorder_state WHERE id = 1").fetchone()
+        if row is None:
+            return None
+        try:
+            return RecorderState.from_json(row[0])
+        except (ValueError, TypeError, AttributeError, RecursionError):
+            return None  # not chained and rewritten at each commit: a heartbeat that makes no sense is none
