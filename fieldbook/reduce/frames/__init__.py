@@ -1,0 +1,68 @@
+"""The one gateway to PROJ: frames, epochs, grids and geoid files. No other module imports pyproj.
+
+PROJ's network access is switched off here, in code, whatever the environment says: the result must not depend on
+whether there was a connection.
+
+    registry     what a frame is               choice      is a choice complete: check_frames, epochs
+    candidates   PROJ's offers, judged         route       which of them: direct, equalities, by an ITRF
+    convert      transform_to_client           projection  project, check_grid        heightgrid  GeoTIFF geoid
+"""
+
+from __future__ import annotations
+
+from pyproj import network
+
+network.set_network_enabled(False)  # type: ignore[attr-defined]
+
+from fieldbook.reduce.frames.choice import (  # noqa: E402  (the network goes off before anything else)
+    check_frames,
+    check_taken_as,
+    client_epoch_of,
+    decimal_year,
+    motion_of,
+    operation_epoch_of,
+    receiver_epoch_of,
+)
+from fieldbook.reduce.frames.convert import (  # noqa: E402
+    ellipsoidal_height_difference_to_itrf2020,
+    operation_codes,
+    transform_to_client,
+)
+from fieldbook.reduce.frames.heightgrid import undulation_by_proj  # noqa: E402
+from fieldbook.reduce.frames.projection import check_grid, project  # noqa: E402
+from fieldbook.reduce.frames.registry import (  # noqa: E402
+    ITRF2020,
+    FrameInfo,
+    Versions,
+    frame_info,
+    inside,
+    is_global_realisation,
+    same_frame,
+    versions,
+)
+from fieldbook.reduce.frames.route import OperationChanged  # noqa: E402
+
+__all__ = [
+    "ITRF2020",
+    "FrameInfo",
+    "OperationChanged",
+    "Versions",
+    "check_frames",
+    "check_grid",
+    "check_taken_as",
+    "client_epoch_of",
+    "decimal_year",
+    "ellipsoidal_height_difference_to_itrf2020",
+    "frame_info",
+    "inside",
+    "is_global_realisation",
+    "motion_of",
+    "operation_codes",
+    "operation_epoch_of",
+    "project",
+    "receiver_epoch_of",
+    "same_frame",
+    "transform_to_client",
+    "undulation_by_proj",
+    "versions",
+]

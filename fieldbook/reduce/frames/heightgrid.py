@@ -1,0 +1,61 @@
+"""A geoid grid read by PROJ's vgridshift: for GeoTIFF files, and to check our own reader of GTX files.
+
+PROJ interpolates bilinearly. Its default multiplier is -1, a missing file with `@` gives N = 0, and a comma in a
+name separates files: all three are closed here.
+"""
+
+from __future__ import annotations
+
+import math
+from functools import lru_cache
+from pathlib import Path
+
+from pyproj import Transformer
+from pyproj.exceptions import ProjError
+
+from fieldbook.errors import ReductionError
+
+
+def undulation_by_proj(path: Path, lat_deg: float, lon_deg: float) -> float:
+    """N in metres at a place, bilinear, from a GTX or GeoTIFF file.
+
+    Raises:
+        ReductionError: PROJ cannot read the file, or the place is outside it or has no data.
+    """
+    try:
+        _, _, undulation = _reader(str(path)).transform(lon_deg, lat_deg, 0.0, errcheck=True)
+    except ProjError as error:
+        raise ReductionError(
+            f"The geoid file {path.name} gives no undulation at ({lat_deg:.4f}, {lon_deg:.4f}).",
+            "Give a model that covers this place, or leave frame.geoid out: then there is no height H.",
+            code="geoid_no_value",
+        ) from error
+    if not math.isfinite(undulation):
+        raise ReductionError(
+            f"The geoid file {path.name} has no data at ({lat_deg:.4f}, {lon_deg:.4f}).",
+            "Give a model that covers this place, or leave frame.geoid out: then there is no height H.",
+            code="geoid_no_value",
+        )
+    return float(undulation)
+
+
+@lru_cache(maxsize=8)
+def _reader(path: str) -> Transformer:
+    if "," in path or '"' in path:
+        raise ReductionError(
+            f"The path {path} holds a comma or a quotation mark, which PROJ reads as two files.",
+            "Rename the file or its folder.",
+            code="geoid_file",
+        )
+    try:
+        return Transformer.from_pipeline(
+            "+proj=pipeline +step +proj=unitconvert +xy_in=deg +xy_out=rad "
+            f'+step +proj=vgridshift +grids="{path}" +multiplier=1 '
+            "+step +proj=unitconvert +xy_in=rad +xy_out=deg"
+        )
+    except ProjError as error:
+        raise ReductionError(
+            f"PROJ cannot read the geoid file {Path(path).name}.",
+            "Give a GTX or GeoTIFF file; convert other formats first.",
+            code="geoid_file",
+        ) from error
