@@ -23,7 +23,15 @@ def undulation_by_proj(path: Path, lat_deg: float, lon_deg: float) -> float:
         ReductionError: PROJ cannot read the file, or the place is outside it or has no data.
     """
     try:
-        _, _, undulation = _reader(str(path)).transform(lon_deg, lat_deg, 0.0, errcheck=True)
+        # PROJ opens a bare relative name only in its own folder.
+        whole = path.resolve()
+        _, _, undulation = _reader(str(whole), whole.stat().st_mtime_ns).transform(lon_deg, lat_deg, 0.0, errcheck=True)
+    except OSError as error:
+        raise ReductionError(
+            f"The geoid file {path} cannot be read ({error.strerror}).",
+            "Put the file beside the session file or the book, or correct frame.geoid.",
+            code="geoid_missing",
+        ) from error
     except ProjError as error:
         raise ReductionError(
             f"The geoid file {path.name} gives no undulation at ({lat_deg:.4f}, {lon_deg:.4f}).",
@@ -40,7 +48,8 @@ def undulation_by_proj(path: Path, lat_deg: float, lon_deg: float) -> float:
 
 
 @lru_cache(maxsize=8)
-def _reader(path: str) -> Transformer:
+def _reader(path: str, changed_ns: int) -> Transformer:
+    del changed_ns  # only the key of the cache
     if "," in path or '"' in path:
         raise ReductionError(
             f"The path {path} holds a comma or a quotation mark, which PROJ reads as two files.",
