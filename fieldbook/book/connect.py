@@ -24,6 +24,7 @@ from fieldbook.errors import BookError
 from . import foreign, migrations
 
 BUSY_MS = 5000
+PAGE_BYTES = 1024  # an empty book of 4096 takes 52 kB, half the gzip of a short log
 MAX_VALUE_BYTES = 64 * 1024 * 1024
 WAL_KEPT_BYTES = 8 * 1024 * 1024
 
@@ -194,6 +195,7 @@ def open_writer(path: Path, *, create: bool = False) -> BookConnection:
         try:
             connection.execute("PRAGMA synchronous=FULL")
             if create:
+                connection.execute(f"PRAGMA page_size={PAGE_BYTES}")
                 connection.execute("PRAGMA auto_vacuum=INCREMENTAL")
             else:
                 connection.execute("SELECT count(*) FROM sqlite_master").fetchone()

@@ -2,7 +2,9 @@
 
 A burst becomes plain rows of `raw_tail` at once. Sealing moves the tail into one zlib `raw_chunk`, whose SHA-256 over
 the canonical items enters the chain as a `raw` entry in the same transaction. At the end of an occupation packing
-moves chunks into larger xz pieces; the hashes of the chunks inside stay those of the chain. Item ids run through
+moves chunks into `raw_pack`, several bz2 streams of whole chunks behind one another; the hashes of the chunks stay
+those of the chain. (bz2, not xz: on receiver logs measured 0.55 x gzip -9 at 18 MB/s against 0.65 at 5 MB/s, or 0.81
+at xz's fastest; packing belongs to recording a file, which must keep pace with reading it.) Item ids run through
 the whole book without a gap inside a chunk, so that the place of an item in a chunk gives its id.
 
 The functions take a connection; `store.Book` holds the transactions and the entries. Reading raises ValueError on
@@ -11,8 +13,8 @@ anything that does not fit, which `Book` words as a BookError and `audit` as a f
 
 from __future__ import annotations
 
+import bz2
 import hashlib
-import lzma
 import sqlite3
 import zlib
 from collections.abc import Callable, Iterable, Iterator, Sequence
@@ -21,21 +23,13 @@ from dataclasses import dataclass
 from fieldbook.model.canonical import Tree
 from fieldbook.model.item import Item, ItemKind, canonical_items, parse_items
 
-CHUNK_BYTES = 4 * 1024 * 1024  # a chunk is closed at this size of canonical bytes
+from .press import LARGE_BYTES, press
+
+CHUNK_BYTES = 512 * 1024  # a chunk is closed at about this size of data
 PACK_BYTES = 8 * 1024 * 1024  # canonical bytes in one pack: bounds memory in writing and in reading
+STREAM_BYTES = 900_000  # small chunks are compressed together up to this size: one block of bz2
 MAX_INFLATED_BYTES = 64 * 1024 * 1024  # of one chunk or pack; no writer makes larger ones
-XZ_MEMORY_BYTES = 128 * 1024 * 1024
-ZLIB_LEVEL = 3
-CODEC = "xz"
-# Chosen by measurement on receiver logs (DEVELOPERS.md): size of preset 6 within a few percent, at several times
-# its speed. Packing is part of recording a file, which must keep pace with reading it.
-XZ_FILTERS: Sequence[dict[str, int]] = (
-    {
-        "id": lzma.FILTER_LZMA2,
-        "preset": 6,
-        "dict_size": 8 * 1024 * 1024,
-    },
-)
+CODEC = "bz2"
 Row = tuple[int, str, int | None, int | None, bytes]
 
 
@@ -128,7 +122,7 @@ def item_of(row: Row) -> Item:
 
 
 def chunk_of(occupation: int, chunk: int, rows: Sequence[Row]) -> tuple[Sealed, bytes]:
-    """What a new chunk holds: its description and its zlib data.
+    """A new chunk of tail rows: its description and its canonical bytes.
 
     Raises:
         ValueError: the ids have a gap.
@@ -138,7 +132,12 @@ def chunk_of(occupation: int, chunk: int, rows: Sequence[Row]) -> tuple[Sealed, 
         raise ValueError(f"received items {first} to {last} of occupation {occupation} have a gap")
     plain = canonical_items(item_of(row) for row in rows)
     sealed = Sealed(occupation, chunk, first, last, len(rows), len(plain), hashlib.sha256(plain).hexdigest())
-    return sealed, zlib.compress(plain, ZLIB_LEVEL)
+    return sealed, plain
+
+
+def deflate_chunk(plain: bytes) -> bytes:
+    """zlib data of a chunk: quick for the large ones of a file, which are packed soon."""
+    return zlib.compress(plain, 1 if len(plain) >= LARGE_BYTES else 6)
 
 
 def insert_chunk(connection: sqlite3.Connection, sealed: Sealed, data: bytes) -> None:
@@ -181,26 +180,26 @@ def inflate_pack(codec: str, data: bytes, expected: int) -> bytes:
     """The canonical bytes of a pack.
 
     Raises:
-        ValueError: unknown codec, no xz data, not exactly `expected` bytes, or something behind it.
+        ValueError: unknown codec, no bz2 data, not exactly `expected` bytes, or something behind it.
     """
     if codec != CODEC:
         raise ValueError(f"its codec is '{codec}', not '{CODEC}'")
     _check_size(expected)
-    worker = lzma.LZMADecompressor(format=lzma.FORMAT_XZ, memlimit=XZ_MEMORY_BYTES)
     parts: list[bytes] = []
     size = 0
-    try:
-        while not worker.eof and size <= expected:
-            part = worker.decompress(data, max(1, expected + 1 - size))
-            data = b""
-            parts.append(part)
-            size += len(part)
-            if not part and worker.needs_input:
-                break
-    except (lzma.LZMAError, EOFError, MemoryError) as error:
-        raise ValueError(f"its xz data is damaged ({error})") from error
-    if size != expected or not worker.eof or worker.unused_data:
-        raise ValueError(f"its xz data does not hold exactly {expected} bytes")
+    while data and size <= expected:
+        worker = bz2.BZ2Decompressor()
+        try:
+            part = worker.decompress(data, expected + 1 - size)
+        except OSError as error:
+            raise ValueError(f"its {CODEC} data is damaged ({error})") from error
+        parts.append(part)
+        size += len(part)
+        if not worker.eof:
+            break
+        data = worker.unused_data
+    if size != expected or data:
+        raise ValueError(f"its {CODEC} data does not hold exactly {expected} bytes")
     return b"".join(parts)
 
 
@@ -255,22 +254,34 @@ def pack_groups(chunks: Sequence[Sealed]) -> Iterator[list[Sealed]]:
         yield group
 
 
-def compress_pack(connection: sqlite3.Connection, chunks: Sequence[Sealed]) -> bytes:
-    """xz data of consecutive chunks, read back and compared before anything is let go.
+def compress_pack(
+    connection: sqlite3.Connection, chunks: Sequence[Sealed], ready: Callable[[Sealed], bytes | None]
+) -> bytes:
+    """bz2 streams of consecutive chunks. `press` reads each back and compares, before anything is let go.
+
+    `ready` may give the stream of a chunk that was compressed beside the recording; the others are read from
+    `raw_chunk` and compared with the SHA-256 of their entry.
 
     Raises:
         ValueError: a chunk is missing or damaged.
     """
-    parts: list[bytes] = []
+    streams: list[bytes] = []
+    waiting: list[bytes] = []
     for sealed in chunks:
-        plain = read_chunk(connection, sealed)
-        if plain is None:
-            raise ValueError(f"chunk {sealed.chunk} of occupation {sealed.occupation} is missing")
-        parts.append(plain)
-    data = lzma.compress(b"".join(parts), lzma.FORMAT_XZ, lzma.CHECK_CRC64, filters=list(XZ_FILTERS))
-    for _ in split_pack(CODEC, data, chunks):
-        pass
-    return data
+        stream = ready(sealed)
+        if stream is None:
+            plain = read_chunk(connection, sealed)
+            if plain is None:
+                raise ValueError(f"chunk {sealed.chunk} of occupation {sealed.occupation} is missing")
+            waiting.append(plain)
+        if waiting and (stream is not None or sum(map(len, waiting)) >= STREAM_BYTES):
+            streams.append(press(b"".join(waiting)))
+            waiting.clear()
+        if stream is not None:
+            streams.append(stream)
+    if waiting:
+        streams.append(press(b"".join(waiting)))
+    return b"".join(streams)
 
 
 def insert_pack(connection: sqlite3.Connection, chunks: Sequence[Sealed], data: bytes) -> None:

@@ -28,6 +28,7 @@ from fieldbook.model.state import BookState
 from . import chain, connect, epochs, migrations, raw
 from .begin import new_book
 from .fold import fold
+from .press import Presser
 
 
 class Book:
@@ -44,6 +45,8 @@ class Book:
         self._forms: dict[int, dict[epochs.Form, int]] = {}
         self._origins: dict[int, epochs.Origin] = {}
         self._version_seen = -1
+        self._tail_bytes = 0  # written since the last seal
+        self._presser = Presser()
 
     # -- begin and end -------------------------------------------------------------------------------------
 
@@ -120,9 +123,8 @@ class Book:
 
         Such a book was copied while it was recorded: what the recorder wrote last is missing.
         """
-        return self._connection.without_wal and self._recorder_running()
-
-    def _recorder_running(self) -> bool:
+        if not self._connection.without_wal:
+            return False
         self._catch_up()
         states = [entry.body.get("state") for entry in self._entries if entry.kind == "recorder"]
         return bool(states) and states[-1] == "running"
@@ -141,6 +143,7 @@ class Book:
         except sqlite3.ProgrammingError:
             return False  # closed already
         finally:
+            self._presser.close()
             self._connection.close()
 
     def __enter__(self) -> Book:
@@ -285,6 +288,8 @@ class Book:
             UsageError: the occupation has not begun.
             BookError: busy, read-only, disk full, ...; then nothing was written and the burst may be tried again.
         """
+        if self._tail_bytes >= raw.CHUNK_BYTES:  # before, not after: a burst that failed may be tried again
+            self.seal(occupation)
         with self.transaction():
             self._look_around()
             if items:
@@ -298,6 +303,7 @@ class Book:
                     " ON CONFLICT (id) DO UPDATE SET state = excluded.state",
                     (state.to_json(),),
                 )
+        self._tail_bytes += sum(len(item.data) for item in items)
 
     def _first_free_id(self) -> int:
         self._catch_up()
@@ -325,7 +331,7 @@ class Book:
             self._write_epochs(occupation, list(rows))
 
     def seal(self, occupation: int) -> list[Entry]:
-        """Move the tail of an occupation into chunks of at most about 4 MiB, each with its `raw` entry.
+        """Move the tail of an occupation into chunks of at most about 512 KiB, each with its `raw` entry.
 
         Compression happens outside the transaction. Returns the entries written; none if the tail is empty.
 
@@ -337,18 +343,21 @@ class Book:
         with self._worded(occupation):
             while rows := raw.tail_rows(self._connection, occupation, 0):
                 number = max((sealed.chunk for sealed in self._sealed(occupation)), default=0) + 1
-                sealed, data = raw.chunk_of(occupation, number, rows)
+                sealed, plain = raw.chunk_of(occupation, number, rows)
+                self._presser.offer((occupation, number), plain)
+                data = raw.deflate_chunk(plain)
+                observer = self._observer_of(occupation)
                 with self.transaction():
                     raw.insert_chunk(self._connection, sealed, data)
-                    observer = self._observer_of(occupation)
                     written.append(chain.insert_entry(self._connection, "raw", sealed.body(), observer, self._now()))
+        self._tail_bytes = 0
         return written
 
     def _sealed(self, occupation: int) -> list[raw.Sealed]:
         return [raw.Sealed.from_body(entry.body) for entry in self._of("raw", occupation)]
 
     def pack(self, occupation: int) -> int:
-        """Seal the tail, move all chunks of an occupation into xz packs, and let the file shrink.
+        """Seal the tail, move all chunks of an occupation into packs, and let the file shrink.
 
         Every chunk's SHA-256 is compared with its `raw` entry before and after compression. Returns the number of
         chunks packed.
@@ -362,7 +371,9 @@ class Book:
             left = raw.unpacked(self._connection, occupation)
             due = [sealed for sealed in self._sealed(occupation) if sealed.chunk in left]
             for group in raw.pack_groups(due):
-                data = raw.compress_pack(self._connection, group)
+                data = raw.compress_pack(
+                    self._connection, group, lambda sealed: self._presser.take((sealed.occupation, sealed.chunk))
+                )
                 with self.transaction():
                     raw.insert_pack(self._connection, group, data)
                 packed += len(group)
