@@ -41,11 +41,11 @@ LATER = ("register", "frames", "geoid")
 class LazyGroup(click.Group):
     """A group that knows its commands by name and imports one only to run it."""
 
-    def list_commands(self, ctx: click.Context) -> list[str]:
+    def list_commands(self, ctx: click.Context) -> list[str]:  # noqa: ARG002
         """Names in the order of the work."""
         return list(COMMANDS)
 
-    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:  # noqa: ARG002
         """The command of that name, imported now; None if there is none.
 
         Raises:
@@ -76,7 +76,7 @@ class LazyGroup(click.Group):
             raise UsageError(f'There is no command "{name}".{hint}', "Run `fieldbook --help` for the list of commands.")
         return super().resolve_command(ctx, args)
 
-    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:  # noqa: ARG002
         """The list of commands from the table, without importing them."""
         with formatter.section("Commands"):
             formatter.write_dl(list(COMMANDS.items()))

@@ -1,0 +1,166 @@
+"""`fieldbook marks`: the marks of a book as a list, from CSV, to CSV.
+
+Columns: name, id, description, inscription, access, condition, lat_deg, lon_deg. The position is the approximate one
+(decimal degrees, for finding the mark and for judging a receiver's 0,0); it is never a coordinate of the mark.
+"""
+
+from __future__ import annotations
+
+import csv
+import io
+from pathlib import Path
+from typing import Any
+
+import click
+
+from fieldbook.commands import assignments
+from fieldbook.commands.open_book import reading, writing
+from fieldbook.commands.output import line, write_json
+from fieldbook.errors import UsageError
+from fieldbook.model.canonical import Tree, normalised
+from fieldbook.settings.values import nearest
+
+TEXTS = ("name", "id", "description", "inscription", "access", "condition")
+COLUMNS = (*TEXTS, "lat_deg", "lon_deg")
+MAX_BYTES = 4 * 1024 * 1024
+
+
+@click.group("marks", help="List, import or export the marks of a book.")
+def command() -> None:
+    """The group."""
+
+
+@command.command("list", help="The marks of BOOK with their occupations.")
+@click.argument("book", type=click.Path(path_type=Path))
+@click.option("--json", "as_json", is_flag=True, help="JSON on stdout.")
+def list_marks(book: Path, *, as_json: bool) -> None:
+    """Read and tell."""
+    with reading(book) as opened:
+        state = opened.state()
+    marks = [
+        {
+            **tree,
+            "name": name,
+            "occupations": [
+                {"occupation": item.number, "open": item.open, "started_utc": item.started_utc}
+                for item in state.of_mark(name)
+            ],
+        }
+        for name, tree in sorted(state.marks.items())
+    ]
+    if as_json:
+        write_json({"schema": "fieldbook.marks/1", "book": str(book), "marks": marks})
+        return
+    for mark in marks:
+        numbers = ", ".join(str(item["occupation"]) for item in mark["occupations"]) or "none yet"
+        line(f"{mark['name']}: {mark.get('description', 'no description')}; occupations: {numbers}")
+
+
+@command.command("import", help="Read marks from a CSV file; one entry per new mark, all of them or none.")
+@click.argument("book", type=click.Path(path_type=Path))
+@click.argument("file", type=click.Path(path_type=Path))
+@click.option("--by", "observer", required=True, help="Name of who writes.")
+@click.option("--update", is_flag=True, help="Also change marks that are described differently in the book.")
+@click.option("--json", "as_json", is_flag=True, help="The result as JSON on stdout.")
+def import_marks(book: Path, file: Path, observer: str, *, update: bool, as_json: bool) -> None:
+    """Check every row, then write."""
+    rows = _read(file)
+    with writing(book) as opened:
+        known = opened.state().marks
+        wanted = [(row, _tree(row, place, known)) for place, row in rows]
+        changed = [tree for _, tree in wanted if known.get(tree["name"]) != tree]
+        differing = [tree["name"] for tree in changed if tree["name"] in known]
+        if differing and not update:
+            raise UsageError(
+                f"Already in the book with another description: {', '.join(differing)}.",
+                "Nothing was written. Add --update to change them.",
+                code="marks_differ",
+            )
+        with opened.transaction():
+            written = [opened.append("mark", tree, observer) for tree in changed]
+    tree = {
+        "written": [{"seq": entry.seq, "hash": entry.hash, "name": entry.body["name"]} for entry in written],
+        "unchanged": len(wanted) - len(changed),
+    }
+    if as_json:
+        write_json({"schema": "fieldbook.marks/1", "book": str(book), **tree})
+    else:
+        line(f"{len(written)} marks written, {tree['unchanged']} unchanged")
+
+
+@command.command("export", help="Write the marks of BOOK as CSV.")
+@click.argument("book", type=click.Path(path_type=Path))
+@click.option("--out", required=True, type=click.Path(path_type=Path), help="File to write.")
+@click.option("--replace", is_flag=True, help="Write over an existing file.")
+def export_marks(book: Path, out: Path, *, replace: bool) -> None:
+    """Make the text, then write it."""
+    if out.exists() and not replace:
+        raise UsageError(f"{out} exists already.", "Name another file, or add --replace.", code="out_exists")
+    with reading(book) as opened:
+        marks = opened.state().marks
+    text = io.StringIO(newline="")
+    table = csv.DictWriter(text, COLUMNS, extrasaction="ignore", lineterminator="\r\n")
+    table.writeheader()
+    for name, tree in sorted(marks.items()):
+        place = tree.get("approximate", {})
+        table.writerow({**tree, "name": name, **place})
+    out.write_bytes(text.getvalue().encode("utf-8"))
+    line(f"{out}: {len(marks)} marks")
+
+
+def _read(file: Path) -> list[tuple[str, dict[str, Any]]]:
+    """Rows with the place they stand at, for errors."""
+    if not file.is_file():
+        raise UsageError(f"There is no file {file}.", "Name a CSV file with a header line.")
+    if file.stat().st_size > MAX_BYTES:
+        raise UsageError(f"{file} is larger than 4 MB.", "A list of marks is shorter; is it the right file?")
+    try:
+        text = file.read_bytes().decode("utf-8-sig")
+    except UnicodeDecodeError:
+        raise UsageError(f"{file} is no UTF-8 text.", "Save it as CSV in UTF-8.") from None
+    head = text.partition("\n")[0]
+    reader = csv.DictReader(io.StringIO(text, newline=""), delimiter=";" if ";" in head else ",", strict=True)
+    try:
+        names = [name.strip() for name in reader.fieldnames or []]
+        for name in names:
+            if name not in COLUMNS:
+                raise UsageError(f'{file}: there is no column "{name}".{nearest(name, COLUMNS)}', _TAKES)
+        if "name" not in names:
+            raise UsageError(f"{file} has no column name.", _TAKES)
+        reader.fieldnames = names
+        rows = [(f"{file}, line {reader.line_num}", row) for row in reader]
+    except csv.Error as problem:
+        raise UsageError(f"{file} is no proper CSV: {problem}.", "Correct it or save it again.") from None
+    if not rows:
+        raise UsageError(f"{file} holds no mark.", "Write one line per mark under the header.")
+    return rows
+
+
+_TAKES = f"The columns are {', '.join(COLUMNS)}; name is needed, the others are optional."
+
+
+def _tree(row: dict[str, Any], place: str, known: dict[str, Tree]) -> Tree:
+    if None in row:
+        raise UsageError(f"{place}: more fields than columns.", "Put quotes around a text with commas.")
+    cells = {key: value.strip() for key, value in row.items() if value and value.strip()}
+    if "name" not in cells:
+        raise UsageError(f"{place}: the mark has no name.", "Write it in the column name.")
+    if ("lat_deg" in cells) != ("lon_deg" in cells):
+        raise UsageError(f"{place}: only one of lat_deg and lon_deg is given.", "Give both or neither.")
+    tree: Tree = dict(known.get(cells["name"], {}))
+    for key, value in cells.items():
+        dotted = f"approximate.{key}" if key in ("lat_deg", "lon_deg") else key
+        try:
+            assignments.put(tree, "mark", dotted, value)
+        except UsageError as slip:
+            raise UsageError(f"{place}: {slip.text}", slip.remedy) from None
+    _within(tree, place)
+    result: Tree = normalised(tree)
+    return result
+
+
+def _within(tree: Tree, place: str) -> None:
+    for key, limit in (("lat_deg", 90), ("lon_deg", 180)):
+        value = tree.get("approximate", {}).get(key)
+        if value is not None and abs(float(value)) > limit:
+            raise UsageError(f"{place}: {key} {value} is not within {limit} degrees.", "Write decimal degrees.")

@@ -1,0 +1,32 @@
+"""`fieldbook new`: begin a book from a session file."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from fieldbook.clock import SystemClock
+from fieldbook.commands.output import line, write_json
+
+
+@click.command("new", help="Begin BOOK. The session file is kept in it and offered for the first occupation.")
+@click.argument("book", type=click.Path(path_type=Path))
+@click.option("--from", "session_path", required=True, type=click.Path(path_type=Path), help="Session file (TOML).")
+@click.option("--json", "as_json", is_flag=True, help="The result as JSON on stdout.")
+def command(book: Path, session_path: Path, *, as_json: bool) -> None:
+    """Check the session, then make the file."""
+    from fieldbook.book.store import Book
+    from fieldbook.settings.session import load_session
+
+    session = load_session(session_path)
+    made = Book.create(book, clock=SystemClock(), observer=session.job.observer, session_tree=session.tree)
+    try:
+        state = made.state()
+    finally:
+        made.close_clean()
+    if as_json:
+        head = {"seq": state.head_seq, "hash": state.head_hash}
+        write_json({"schema": "fieldbook.new/1", "book": {"path": str(book), "id": state.id, "head": head}})
+    else:
+        line(f"{book}: book {state.id}, mark {session.mark.name} ready for its first occupation")

@@ -1,0 +1,55 @@
+"""The words in which `status`, `watch` and `observe` tell the state of a recorder."""
+
+from __future__ import annotations
+
+from typing import Any
+
+QUALITY = {
+    0: "no fix",
+    1: "autonomous",
+    2: "differential",
+    3: "PPS",
+    4: "RTK fixed",
+    5: "RTK float",
+    6: "dead reckoning",
+    7: "manual",
+    8: "simulator",
+}  # NMEA 0183, GGA field 6
+
+
+def quality_words(quality: int | None) -> str:
+    """`RTK fixed` for 4; the number itself where the standard gives none."""
+    if quality is None:
+        return "no quality"
+    return QUALITY.get(quality, f"quality {quality}")
+
+
+def head_line(status: dict[str, Any]) -> str:
+    """One plain line about a running, stopped or absent recorder."""
+    occupation, recorder = status["occupation"], status["recorder"]
+    if occupation is None:
+        return "no occupation yet"
+    if not recorder["alive"]:
+        gone = occupation["open"] and recorder.get("link_state") not in (None, "closed", "ended")
+        return "RECORDER GONE: run the same `fieldbook observe` again" if gone else "no recorder runs"
+    if "link_state" not in recorder:
+        return "recorder starting"
+    said = [recorder["fix_utc"] or "no fix time yet"]
+    if recorder["epochs"]:
+        said.append(recorder["quality_words"])
+    for key, words in (("satellites", "{} satellites"), ("hdop", "HDOP {}"), ("age_s", "corrections {} s old")):
+        if recorder[key] is not None:
+            said.append(words.format(recorder[key]))
+    said.append(f"{recorder['epochs']} epochs")
+    said.append(_link(recorder))
+    return ", ".join(said)
+
+
+def _link(recorder: dict[str, Any]) -> str:
+    silence_s = recorder["silence_s"]
+    if recorder["link_state"] in ("lost", "stale"):
+        since = "" if silence_s is None else f" {silence_s:.0f} s"
+        return f"NO DATA{since} ({recorder['link_reason']})"
+    if silence_s is not None and silence_s >= 5:
+        return f"NO DATA {silence_s:.0f} s"
+    return f"link {recorder['link_state']}"
