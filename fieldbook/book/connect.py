@@ -308,13 +308,18 @@ _WORDS: dict[int, tuple[str, str, str]] = {
 }
 
 
+def printable(what: object) -> str:
+    """SQLite's words without anything a hostile file could put into them to steer a terminal."""
+    return "".join(letter if letter.isprintable() else "?" for letter in str(what)[:300])
+
+
 def book_error(path: Path, error: sqlite3.Error) -> BookError:
     """sqlite3's error as a BookError."""
     words = _WORDS.get(_primary(error))
     if words is None:
         return BookError(f"The book {path} cannot be used: {error}.", "`fieldbook verify` says what still holds.")
     text, remedy, code = words
-    return BookError(f"The book {path} {text} ({error}).", remedy, code=code)
+    return BookError(f"The book {path} {text} ({printable(error)}).", remedy, code=code)
 
 
 @contextmanager

@@ -183,7 +183,7 @@ def inflate_pack(codec: str, data: bytes, expected: int) -> bytes:
         ValueError: unknown codec, no bz2 data, not exactly `expected` bytes, or something behind it.
     """
     if codec != CODEC:
-        raise ValueError(f"its codec is '{codec}', not '{CODEC}'")
+        raise ValueError(f"its codec is {codec!r:.20}, not '{CODEC}'")
     _check_size(expected)
     parts: list[bytes] = []
     size = 0

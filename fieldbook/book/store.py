@@ -27,7 +27,7 @@ from fieldbook.model.state import BookState
 
 from . import chain, connect, epochs, migrations, raw
 from .begin import new_book
-from .fold import fold
+from .known import Known
 from .press import Presser
 
 
@@ -39,11 +39,9 @@ class Book:
         self.writable = write
         self._connection = connection
         self._clock = clock
-        self._entries: list[Entry] = []  # all entries up to the last look, for `state` and the questions below
-        self._state: BookState | None = None
+        self._known = Known(connection)
         self._next_id: int | None = None
         self._forms: dict[int, dict[epochs.Form, int]] = {}
-        self._origins: dict[int, epochs.Origin] = {}
         self._version_seen = -1
         self._tail_bytes = 0  # written since the last seal
         self._presser = Presser()
@@ -123,11 +121,7 @@ class Book:
 
         Such a book was copied while it was recorded: what the recorder wrote last is missing.
         """
-        if not self._connection.without_wal:
-            return False
-        self._catch_up()
-        states = [entry.body.get("state") for entry in self._entries if entry.kind == "recorder"]
-        return bool(states) and states[-1] == "running"
+        return self._connection.without_wal and self._known.recorder_runs()
 
     def close(self) -> None:
         """Close. A writer leaves one plain file behind if nobody else is on the book (see `close_clean`)."""
@@ -196,11 +190,9 @@ class Book:
 
     def _forget(self) -> None:
         """Drop what was remembered of the tables: after a rollback or a change by another connection."""
-        self._entries.clear()
-        self._state = None
+        self._known.forget()
         self._next_id = None
         self._forms.clear()
-        self._origins.clear()
 
     def _look_around(self) -> None:
         """Forget ids and forms if another connection has written. Called inside a write transaction."""
@@ -233,43 +225,19 @@ class Book:
         with connect.book_errors(self.path):
             return list(chain.read_entries(self._connection, after_seq))
 
-    def _catch_up(self) -> None:
-        after = self._entries[-1].seq if self._entries else 0
-        self._entries.extend(self.entries(after))
-
     def state(self) -> BookState:
         """The state of the job, folded from all entries. Treat it as read-only; folded again only after news.
 
         Raises:
             BookError: an entry is damaged.
         """
-        self._catch_up()
-        if self._state is None or self._state.head_seq != len(self._entries):
-            self._state = fold(self._entries)
-        return self._state
+        with connect.book_errors(self.path):
+            return self._known.state()
 
     def data_version(self) -> int:
         """A number that changes when another connection has committed. 5 microseconds."""
         with connect.book_errors(self.path):
             return int(self._connection.execute("PRAGMA data_version").fetchone()[0])
-
-    def _of(self, kind: str, occupation: int) -> Iterator[Entry]:
-        self._catch_up()
-        return (entry for entry in self._entries if entry.kind == kind and entry.body.get("occupation") == occupation)
-
-    def _observer_of(self, occupation: int) -> str:
-        entry = next(self._of("occupation", occupation), None)
-        if entry is None:
-            raise UsageError(f"There is no occupation {occupation} in {self.path}.", "Begin it first.")
-        return entry.observer
-
-    def _origin_of(self, occupation: int) -> epochs.Origin | None:
-        if occupation not in self._origins:
-            entry = next(self._of("origin", occupation), None)
-            if entry is None:
-                return None
-            self._origins[occupation] = int(entry.body["latitude_e8min"]), int(entry.body["longitude_e8min"])
-        return self._origins[occupation]
 
     # -- recording -----------------------------------------------------------------------------------------
 
@@ -293,8 +261,10 @@ class Book:
         with self.transaction():
             self._look_around()
             if items:
-                first = self._next_id if self._next_id is not None else self._first_free_id()
-                self._next_id = raw.insert_tail(self._connection, occupation, first, items)
+                if self._next_id is None:
+                    self._known.observer_of(occupation)  # it has begun
+                    self._next_id = self._first_free_id()
+                self._next_id = raw.insert_tail(self._connection, occupation, self._next_id, items)
             if epochs:
                 self._write_epochs(occupation, epochs)
             if state is not None:
@@ -306,20 +276,18 @@ class Book:
         self._tail_bytes += sum(len(item.data) for item in items)
 
     def _first_free_id(self) -> int:
-        self._catch_up()
-        sealed = max((entry.body["last_id"] for entry in self._entries if entry.kind == "raw"), default=0)
-        return max(int(sealed), raw.last_tail_id(self._connection)) + 1
+        return max(self._known.last_sealed_id(), raw.last_tail_id(self._connection)) + 1
 
     def _write_epochs(self, occupation: int, rows: Sequence[Epoch]) -> None:
         forms = self._forms.get(occupation)
         if forms is None:
             forms = self._forms[occupation] = epochs.load_forms(self._connection, occupation)
-        origin = self._origin_of(occupation)
+        origin = self._known.origin_of(occupation)
         if origin is None:
             origin = epochs.first_position(rows)
             if origin is not None:
                 body = {"occupation": occupation, "latitude_e8min": origin[0], "longitude_e8min": origin[1]}
-                observer = self._observer_of(occupation)
+                observer = self._known.observer_of(occupation)
                 chain.insert_entry(self._connection, "origin", body, observer, self._now())
         epochs.insert_epochs(self._connection, occupation, rows, origin, forms)
 
@@ -342,19 +310,16 @@ class Book:
         written: list[Entry] = []
         with self._worded(occupation):
             while rows := raw.tail_rows(self._connection, occupation, 0):
-                number = max((sealed.chunk for sealed in self._sealed(occupation)), default=0) + 1
+                number = max((sealed.chunk for sealed in self._known.sealed(occupation)), default=0) + 1
                 sealed, plain = raw.chunk_of(occupation, number, rows)
                 self._presser.offer((occupation, number), plain)
                 data = raw.deflate_chunk(plain)
-                observer = self._observer_of(occupation)
+                observer = self._known.observer_of(occupation)
                 with self.transaction():
                     raw.insert_chunk(self._connection, sealed, data)
                     written.append(chain.insert_entry(self._connection, "raw", sealed.body(), observer, self._now()))
         self._tail_bytes = 0
         return written
-
-    def _sealed(self, occupation: int) -> list[raw.Sealed]:
-        return [raw.Sealed.from_body(entry.body) for entry in self._of("raw", occupation)]
 
     def pack(self, occupation: int) -> int:
         """Seal the tail, move all chunks of an occupation into packs, and let the file shrink.
@@ -369,7 +334,7 @@ class Book:
         packed = 0
         with self._worded(occupation):
             left = raw.unpacked(self._connection, occupation)
-            due = [sealed for sealed in self._sealed(occupation) if sealed.chunk in left]
+            due = [sealed for sealed in self._known.sealed(occupation) if sealed.chunk in left]
             for group in raw.pack_groups(due):
                 data = raw.compress_pack(
                     self._connection, group, lambda sealed: self._presser.take((sealed.occupation, sealed.chunk))
@@ -414,7 +379,7 @@ class Book:
             BookError: a chunk is missing or damaged.
         """
         with self._worded(occupation):
-            yield from raw.iterate(self._connection, occupation, lambda: self._sealed(occupation), after_id)
+            yield from raw.iterate(self._connection, occupation, lambda: self._known.sealed(occupation), after_id)
 
     def received(self, occupation: int) -> Iterator[bytes]:
         """The received bytes alone, piece by piece."""
@@ -439,7 +404,7 @@ class Book:
             BookError: damaged.
         """
         with self._worded(occupation), self._reading():
-            return epochs.read_epochs(self._connection, occupation, self._origin_of(occupation), after)
+            return epochs.read_epochs(self._connection, occupation, self._known.origin_of(occupation), after)
 
     def recorder_state(self) -> RecorderState | None:
         """What the recorder last said of itself; None if there never was one, or it cannot be read."""

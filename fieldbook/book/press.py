@@ -1,0 +1,64 @@
+"""Compression of large chunks beside the recording, so that the end of a file need not wait for it.
+
+Recording a file at full speed leaves a second core idle and ends with everything still to be packed. bz2 lets go
+of the interpreter while it works, so two threads compress each large chunk as soon as it is sealed, read their
+result back and compare. Only bytes cross: the threads never see the book. What it did not get to is compressed
+when the occupation is packed. Small chunks (a minute of a live link) are not sent here: they compress better
+together.
+"""
+
+from __future__ import annotations
+
+import bz2
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from concurrent.futures import Future, ThreadPoolExecutor
+
+LARGE_BYTES = 256 * 1024
+MOST_WAITING = 8  # chunks held in memory
+
+Key = tuple[int, int]  # occupation, chunk
+
+
+def press(plain: bytes) -> bytes:
+    """One bz2 stream.
+
+    Raises:
+        ValueError: reading it back gives something else (failing memory).
+    """
+    data = bz2.compress(plain, 9)
+    if bz2.decompress(data) != plain:
+        raise ValueError("compressed data did not read back as it was; nothing was let go")
+    return data
+
+
+class Presser:
+    """Streams of large chunks, made in two threads. `close` waits for the chunks at hand and drops the rest."""
+
+    def __init__(self) -> None:
+        self._pool: ThreadPoolExecutor | None = None
+        self._streams: dict[Key, Future[bytes]] = {}
+
+    def offer(self, key: Key, plain: bytes) -> None:
+        """Begin with a chunk, unless it is small or too many are waiting."""
+        waiting = sum(not stream.done() for stream in self._streams.values())
+        if len(plain) < LARGE_BYTES or waiting >= MOST_WAITING:
+            return
+        if self._pool is None:
+            from concurrent.futures import ThreadPoolExecutor
+
+            self._pool = ThreadPoolExecutor(max_workers=2, thread_name_prefix="press")
+        self._streams[key] = self._pool.submit(press, plain)
+
+    def take(self, key: Key) -> bytes | None:
+        """The stream of a chunk, waiting for it if it is being made; None if it was never begun."""
+        stream = self._streams.pop(key, None)
+        return None if stream is None else stream.result()
+
+    def close(self) -> None:
+        """Stop."""
+        self._streams.clear()
+        if self._pool is not None:
+            self._pool.shutdown(wait=True, cancel_futures=True)
+            self._pool = None
