@@ -1,0 +1,106 @@
+"""Reading a certificate file that somebody hands over: its facts, and its text as a person sees it.
+
+The file is hostile input: sizes are limited, and whatever a damaged file makes a parser raise becomes one
+`Unreadable` with a sentence. pypdf is imported only when a PDF is read.
+"""
+
+from __future__ import annotations
+
+import html
+import io
+import json
+import logging
+import re
+import zlib
+from typing import Any
+
+from fieldbook.certificate.as_pdf import ATTACHMENT
+from fieldbook.model.canonical import Tree
+
+LIMIT_BYTES = 50_000_000
+# What parsers are known to raise on damaged input.
+PARSER_ERRORS = (
+    ArithmeticError,
+    AttributeError,
+    LookupError,
+    MemoryError,
+    NotImplementedError,
+    OSError,
+    RecursionError,
+    RuntimeError,
+    TypeError,
+    ValueError,
+    zlib.error,
+)
+_FACTS = re.compile(r'<script type="application/json" id="facts">(.*?)</script>', re.DOTALL)
+_HIDDEN = re.compile(r"<(script|style|title)\b.*?</\1>", re.DOTALL)
+_TAG = re.compile(r"<[^>]*>")
+
+
+class Unreadable(Exception):
+    """A file that holds no facts of a certificate."""
+
+
+def facts_of(data: bytes, extension: str) -> Tree:
+    """The facts inside a `.pdf`, `.html` or `.json` certificate.
+
+    Raises:
+        Unreadable: there are none, or they are damaged.
+    """
+    if len(data) > LIMIT_BYTES:
+        raise Unreadable("it is larger than 50 MB")
+    try:
+        text = {"pdf": _attached, "html": _embedded, "json": _plain}[extension](data)
+        tree = json.loads(text)
+    except Unreadable:
+        raise
+    except PARSER_ERRORS as error:
+        raise Unreadable(f"it is damaged ({type(error).__name__})") from error
+    if not isinstance(tree, dict) or not str(tree.get("schema", "")).startswith("fieldbook.certificate/"):
+        raise Unreadable("its data are not the facts of a certificate")
+    return tree
+
+
+def _plain(data: bytes) -> str:
+    return data.decode("utf-8")
+
+
+def _embedded(data: bytes) -> str:
+    found = _FACTS.findall(data.decode("utf-8"))
+    if len(found) != 1:
+        raise Unreadable("it holds no facts of a certificate" if not found else "it holds more than one set of facts")
+    return str(found[0])
+
+
+def _attached(data: bytes) -> str:
+    attachments = _reader(data).attachments.get(ATTACHMENT, [])
+    if len(attachments) != 1:
+        raise Unreadable(f"it has {len(attachments) or 'no'} attached facts where one is expected")
+    return bytes(attachments[0]).decode("utf-8")
+
+
+def _reader(data: bytes) -> Any:
+    import pypdf
+    from pypdf.errors import PyPdfError
+
+    logger = logging.getLogger("pypdf")
+    level, logger.level = logger.level, logging.CRITICAL
+    try:
+        return pypdf.PdfReader(io.BytesIO(data))
+    except PyPdfError as error:
+        raise Unreadable("it is no readable PDF") from error
+    finally:
+        logger.level = level
+
+
+def text_lines(data: bytes, extension: str) -> list[str]:
+    """The text of a file as a person sees it, line by line, spaces evened out."""
+    if extension == "pdf":
+        pages = _reader(data).pages
+        text = "\n".join(page.extract_text() for page in pages)
+    elif extension == "html":
+        text = html.unescape(_TAG.sub("\n", _HIDDEN.sub("", data.decode("utf-8", "replace"))))
+    else:
+        text = data.decode("utf-8", "replace")
+    lines = (" ".join(line.split()) for line in text.splitlines())
+    return [line for line in lines if line]
