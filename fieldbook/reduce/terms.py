@@ -1,0 +1,141 @@
+"""The lines of the uncertainty budget of one occupation, each from what is known of this set-up.
+
+In: the figures of the mean, the class of fix, the digits received, the antenna, the set-up, the corrections, the frame
+operation. Out: `budget.Term`s. Two statements are made of them: the mark in the receiver's frame (what was measured)
+and in the client's frame (the same plus what the frame operation states).
+
+Sources: Type A and the least uncertainty claimed for a kind of fix: `correlated_mean`, `fix_classes`; rectangular
+distributions: JCGM 100:2008, 4.3.7; the sizes of centring, pole and plumb line terms: as stated in the session, else
+the line's note says where its figure comes from.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+from fieldbook.model.reduction import Operation
+from fieldbook.model.session import Corrections, Setup
+from fieldbook.reduce.antenna import ASSUMED_READING_SIGMA_M, AntennaReduction
+from fieldbook.reduce.budget import Term, Triple
+
+FLOOR_DOF = 8.0
+PLUMB_LINE_ARCSEC = 15.0  # deflection of the vertical, typical size; from memory, medium
+COMMON_NOTE = "half of its variance is common to all occupations with this station and antenna"
+
+
+def mean_term(u_enu_m: Triple, dof_enu: Triple, rho_en: float) -> Term:
+    """Type A: the mean of the kept epochs with its correlation in time."""
+    return Term("mean of the kept epochs", "A", "t", u_enu_m, dof_enu, rho_en=rho_en)
+
+
+def floor_term(floor_horizontal_m: float, floor_up_m: float | None, label: str) -> Term:
+    """Least uncertainty claimed for this kind of fix: base, ephemeris, slow atmosphere, initialisation.
+
+    One term of 8 dof: both halves (common, and of this occupation) are the same quantity.
+    """
+    return Term(
+        f"least uncertainty claimed for this kind of fix ({label})",
+        "B",
+        "normal",
+        (floor_horizontal_m, floor_horizontal_m, floor_up_m),
+        (FLOOR_DOF, FLOOR_DOF, FLOOR_DOF),
+        note=COMMON_NOTE,
+    )
+
+
+def resolution_terms(
+    coordinate_u_en_m: tuple[float, float], altitude_u_m: float | None, separation_u_m: float | None
+) -> list[Term]:
+    """Resolution of the received digits: coordinates and altitude (averaged in part), separation (never)."""
+    east, north = coordinate_u_en_m
+    terms = [Term("resolution of the received coordinates", "B", "rectangular", (east, north, 0.0))]
+    terms.append(Term("resolution of the received altitude", "B", "rectangular", (0.0, 0.0, altitude_u_m)))
+    terms.append(
+        Term(
+            "resolution of the received geoid separation",
+            "B",
+            "rectangular",
+            (0.0, 0.0, separation_u_m),
+            common=True,
+            note="the same for all occupations with this receiver; never averaged",
+        )
+    )
+    return terms
+
+
+def setup_terms(setup: Setup, antenna: AntennaReduction) -> list[Term]:
+    """Height readings, centring, pole, phase centre, plumb line."""
+    height_u_m = antenna.height.height_u_m
+    if height_u_m is None and setup.reported_point == "mark":
+        height_u_m = setup.reading_sigma_m or ASSUMED_READING_SIGMA_M  # the height keyed in was read too
+    terms = [
+        Term("readings of the antenna height", "B", "normal", (0.0, 0.0, height_u_m)),
+        Term(f"centring ({setup.centring})", "B", "normal", (setup.centring_sigma_m, setup.centring_sigma_m, 0.0)),
+    ]
+    if setup.pole_length_m is not None and setup.bubble_arcmin is not None:
+        # bubble anywhere within its circle: half-width length x angle on each axis, rectangular
+        tilt_m = setup.pole_length_m * math.radians(setup.bubble_arcmin / 60) / math.sqrt(3)
+        terms.append(Term("levelling of the pole", "B", "rectangular", (tilt_m, tilt_m, 0.0)))
+    if antenna.phase_centre_u_enu_m is not None:
+        note = "phase centre variations not applied; 2 mm and 5 mm: common practice, no source. " + antenna.note
+        u_east, u_north, u_up = antenna.phase_centre_u_enu_m
+        terms.append(
+            Term("phase centre of the antenna", "B", "normal", (u_east, u_north, u_up), common=True, note=note.strip())
+        )
+    height_m = setup.receiver_height_m if setup.reported_point == "mark" else antenna.height.height_arp_m
+    if height_m is not None:
+        plumb_m = abs(height_m) * math.radians(PLUMB_LINE_ARCSEC / 3600)
+        note = f"deflection of {PLUMB_LINE_ARCSEC:.0f} seconds taken, from memory"
+        terms.append(
+            Term(
+                "plumb line against ellipsoidal normal", "B", "normal", (plumb_m, plumb_m, 0.0), common=True, note=note
+            )
+        )
+    return terms
+
+
+def station_terms(corrections: Corrections) -> list[Term]:
+    """The correction station's own coordinates, when their uncertainty is stated; every mark shares it."""
+    if corrections.u95_m is None:
+        return []
+    u_m = corrections.u95_m / 1.959964
+    return [
+        Term(
+            f"coordinates of station {corrections.station or ''}".strip(),
+            "B",
+            "normal",
+            (u_m, u_m, u_m),
+            common=True,
+            note=f"stated as 95 %: {corrections.source or 'source not stated'}",
+        )
+    ]
+
+
+def disagreement_term(half_width_enu_m: Sequence[float] | None) -> list[Term]:
+    """Distance to initialisations that disagree, as a rectangular half-width (GUM 4.3.7)."""
+    if half_width_enu_m is None:
+        return []
+    east, north, up = (abs(value) / math.sqrt(3) for value in half_width_enu_m)
+    return [Term("initialisations that disagree", "B", "rectangular", (east, north, up))]
+
+
+def operation_terms(operation: Operation) -> list[Term]:
+    """Each step of the frame operation: its stated accuracy as one standard uncertainty per axis, common."""
+    terms = []
+    for step in operation.steps:
+        accuracy_m = step.accuracy_m or 0.0
+        note = "by definition" if accuracy_m == 0.0 else f"as stated by {step.authority}, probability not given"
+        if step.remark:
+            note = f"{note}. {step.remark}"
+        terms.append(
+            Term(
+                f"frame operation {step.authority}:{step.code}{' inverse' if step.inverse else ''} {step.name}".strip(),
+                "B",
+                "as stated",
+                (accuracy_m, accuracy_m, accuracy_m),
+                common=True,
+                note=note,
+            )
+        )
+    return terms
