@@ -17,7 +17,7 @@ HEAVY = ("numpy", "pyproj", "scipy", "textual", "sqlite_utils", "pynmea2", "seri
 
 
 def run(*arguments: str) -> subprocess.CompletedProcess[str]:
-    return subprocess.run([sys.executable, "-m", "fieldbook", *arguments], capture_output=True, text=True)
+    return subprocess.run([sys.executable, "-m", "fieldbook", *arguments], capture_output=True, text=True, check=False)
 
 
 def test_help_lists_every_command_and_loads_nothing_heavy() -> None:
@@ -25,7 +25,7 @@ def test_help_lists_every_command_and_loads_nothing_heavy() -> None:
         "import sys; from fieldbook import commands; code = commands.run(['--help']); "
         f"loaded = [name for name in {HEAVY!r} if name in sys.modules]; assert not loaded, loaded; sys.exit(code)"
     )
-    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True)
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
     assert done.returncode == 0, done.stderr
     for name in COMMANDS:
         assert f"\n  {name} " in done.stdout
@@ -93,7 +93,7 @@ def test_interrupt_and_a_closed_pipe(raised, code) -> None:
         "commands.LazyGroup.get_command = lambda *_: click.Command('status', callback=fail)\n"
         "sys.exit(commands.run(['status']))"
     )
-    done = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True)
+    done = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=False)
     assert done.returncode == code
     assert "Traceback" not in done.stderr
 

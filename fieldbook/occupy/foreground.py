@@ -1,0 +1,104 @@
+"""`observe`: the same recorder, in the process that was called, from nothing to the end of an occupation.
+
+The order matters. A book that is there is locked first, so that 'another recorder' is said before anything else; a book
+that is not there is made last, when the session, the file or the port have proved good: an error leaves no empty book.
+"""
+
+from __future__ import annotations
+
+import threading
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+from fieldbook.book.lock import RecorderLock
+from fieldbook.book.store import Book
+from fieldbook.clock import Clock
+from fieldbook.links import open_link
+from fieldbook.links.address import LinkAddress
+from fieldbook.links.base import Link
+from fieldbook.model.recorder import RecorderState
+from fieldbook.model.session import Session
+from fieldbook.occupy.begin import Plan, enter, plan_occupation
+from fieldbook.occupy.recorder import Recorder, RecorderResult
+
+
+@dataclass(frozen=True)
+class Wish:
+    """What the operator asked for."""
+
+    session: Session
+    address: LinkAddress
+    limit_s: float | None = None
+    new: bool = False
+
+
+def observe(
+    book_path: Path,
+    wish: Wish,
+    clock: Clock,
+    stop: threading.Event,
+    *,
+    on_start: Callable[[], None] = lambda: None,
+    on_state: Callable[[RecorderState], None] = lambda _state: None,
+) -> RecorderResult:
+    """Record one occupation in this process.
+
+    Raises:
+        UsageError, LinkError: as `begin.plan_occupation`; nothing was written, no book was made.
+        BookError: not a book, newer, or another recorder holds it.
+    """
+    lock = RecorderLock(book_path)
+    if book_path.exists():
+        lock.acquire()
+    try:
+        plan, link = _checked(book_path, wish, clock)
+        try:
+            lock.acquire()
+            number = _entered(book_path, plan, clock)
+        except BaseException:
+            if link is not None:
+                link.close()
+            raise
+        recorder = Recorder(
+            book_path,
+            number,
+            clock,
+            address=wish.address,
+            link=link,
+            lock=lock,
+            on_start=on_start,
+            on_state=on_state,
+        )
+        return recorder.run(stop, wish.limit_s)
+    finally:
+        lock.release()
+
+
+def _checked(book_path: Path, wish: Wish, clock: Clock) -> tuple[Plan, Link | None]:
+    """The plan, and for a live link the link itself, opened."""
+    if book_path.exists():
+        book = Book.open(book_path, clock=clock, write=False)
+        try:
+            plan = plan_occupation(book, wish.session, wish.address, new=wish.new)
+        finally:
+            book.close()
+    else:
+        plan = plan_occupation(None, wish.session, wish.address, new=wish.new)
+    if not wish.address.live:
+        return plan, None
+    link = open_link(wish.address)
+    link.open()
+    return plan, link
+
+
+def _entered(book_path: Path, plan: Plan, clock: Clock) -> int:
+    if book_path.exists():
+        book = Book.open(book_path, clock=clock, write=True)
+    else:
+        session = plan.session
+        book = Book.create(book_path, clock=clock, observer=session.job.observer, session_tree=session.tree)
+    try:
+        return enter(book, plan, clock)
+    finally:
+        book.close()
