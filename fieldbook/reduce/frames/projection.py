@@ -30,7 +30,7 @@ _EAST_NORTH_METHODS = {9807, 9801, 9802, 9804, 9805, 9812, 9815}
 
 
 @dataclass(frozen=True)
-class _Grid:
+class Projection:
     """A projection ready to run: signs and factors turn PROJ's two numbers into east and north, in metres."""
 
     code: str
@@ -43,6 +43,16 @@ class _Grid:
     north: tuple[int, float]
     bounds: Bounds | None
     area_name: str
+
+
+@dataclass(frozen=True)
+class PlanePosition:
+    """East and north in metres, convergence (azimuth = grid bearing + convergence) and scale."""
+
+    easting_m: float
+    northing_m: float
+    convergence_deg: float
+    scale_factor: float
 
 
 def check_grid(client_code: str, grid_code: str) -> None:
@@ -77,17 +87,38 @@ def project(
     if not inside(grid.bounds, lat_deg, lon_deg) and not outside_area_accepted:
         raise ReductionError(
             f"The mark ({lat_deg:.4f}, {lon_deg:.4f}) is outside the area of use of {grid.code} {grid.name}: "
-            f"{grid.area_name}.",
+            f"{grid.area_name[:160]}",
             "Give the grid of this place, or record a decision that accepts figures outside the area.",
             code="outside_area",
         )
+    plane = evaluated(grid, lat_deg, lon_deg)
+    elevation = None if h_m is None else elevation_factor(lat_deg, h_m, client.ellipsoid)
+    return GridPosition(
+        crs=grid.code,
+        crs_name=grid.name,
+        easting_m=plane.easting_m,
+        northing_m=plane.northing_m,
+        convergence_deg=plane.convergence_deg,
+        scale_factor=plane.scale_factor,
+        elevation_factor=elevation,
+        combined_factor=None if elevation is None else plane.scale_factor * elevation,
+        zone_text=grid.text,
+    )
+
+
+def evaluated(grid: Projection, lat_deg: float, lon_deg: float) -> PlanePosition:
+    """The projection alone: no frame, no area of use.
+
+    Raises:
+        ReductionError: no finite result, or not conformal here.
+    """
+    place = (lat_deg, lon_deg) if grid.latitude_first else (lon_deg, lat_deg)
     try:
-        place = (lat_deg, lon_deg) if grid.latitude_first else (lon_deg, lat_deg)
         pair = grid.transformer.transform(*place, errcheck=True)
         factors = grid.factors.get_factors(lon_deg, lat_deg, errcheck=True)
     except ProjError as error:
         raise _no_result(grid) from error
-    east, north = (pair[index] * factor for index, factor in (grid.east, grid.north))
+    east, north = (float(pair[index] * factor) for index, factor in (grid.east, grid.north))
     scale, across = float(factors.meridional_scale), float(factors.parallel_scale)
     convergence = float(factors.meridian_convergence)
     if not all(math.isfinite(value) for value in (east, north, scale, across, convergence)):
@@ -98,21 +129,10 @@ def project(
             "Give a conformal grid, or leave the grid out.",
             code="grid_not_conformal",
         )
-    elevation = None if h_m is None else elevation_factor(lat_deg, h_m, client.ellipsoid)
-    return GridPosition(
-        crs=grid.code,
-        crs_name=grid.name,
-        easting_m=float(east),
-        northing_m=float(north),
-        convergence_deg=convergence,
-        scale_factor=scale,
-        elevation_factor=elevation,
-        combined_factor=None if elevation is None else scale * elevation,
-        zone_text=grid.text,
-    )
+    return PlanePosition(east, north, convergence, scale)
 
 
-def _no_result(grid: _Grid) -> ReductionError:
+def _no_result(grid: Projection) -> ReductionError:
     return ReductionError(
         f"{grid.code} {grid.name} gives no finite figures at this mark.",
         "Give the grid of this place, or leave the grid out.",
@@ -121,7 +141,7 @@ def _no_result(grid: _Grid) -> ReductionError:
 
 
 @lru_cache(maxsize=64)
-def _grid(client_code: str, grid_code: str) -> _Grid:
+def _grid(client_code: str, grid_code: str) -> Projection:
     client = frame_info(client_code)
     number = epsg_number(grid_code, "frame.grid")
     code = f"EPSG:{number}"
@@ -141,7 +161,7 @@ def _grid(client_code: str, grid_code: str) -> _Grid:
     base = crs.geodetic_crs
     if base is None:
         raise UsageError(f"frame.grid: {code} has no base frame.", "Give another grid.", code="grid_kind")
-    return _ready(code, crs.name, text, crs, base)
+    return projection_of(code, crs.name, text, crs, base)
 
 
 def _checked_base(code: str, crs: CRS, client: FrameInfo) -> str:
@@ -164,7 +184,7 @@ def _checked_base(code: str, crs: CRS, client: FrameInfo) -> str:
     )
 
 
-def _of_conversion(client: FrameInfo, number: int) -> _Grid:
+def _of_conversion(client: FrameInfo, number: int) -> Projection:
     """A bare EPSG conversion put on the client's frame."""
     code = f"EPSG:{number}"
     try:
@@ -203,10 +223,10 @@ def _of_conversion(client: FrameInfo, number: int) -> _Grid:
     )
     bounds = (area.west, area.south, area.east, area.north) if area is not None else None
     text = f"{operation.name} ({code}) applied to {client.name}"
-    return _ready(code, operation.name, text, crs, plane, bounds, str(area.name) if area is not None else "")
+    return projection_of(code, operation.name, text, crs, plane, bounds, str(area.name) if area is not None else "")
 
 
-def _ready(
+def projection_of(
     code: str,
     name: str,
     text: str,
@@ -214,13 +234,14 @@ def _ready(
     base: CRS,
     bounds: Bounds | None = None,
     area_name: str = "",
-) -> _Grid:
+) -> Projection:
+    """A projected CRS on its own base frame, ready to run; area of use from the CRS unless given."""
     if bounds is None and crs.area_of_use is not None:
         area = crs.area_of_use
         bounds, area_name = (area.west, area.south, area.east, area.north), str(area.name)
     east, north, notes = _axes(crs)
     plane = base.to_2d()
-    return _Grid(
+    return Projection(
         code,
         name,
         "; ".join([text, *notes]),
