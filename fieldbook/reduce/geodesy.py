@@ -26,7 +26,9 @@ _LEAST_RADIUS_M = 1.0e6
 
 
 def wrapped_longitude(lon_deg: float) -> float:
-    """The longitude in [-180, 180) degrees."""
+    """The longitude in [-180, 180) degrees; one that is there already comes back to the last bit."""
+    if -180.0 <= lon_deg < 180.0:
+        return lon_deg
     wrapped = math.fmod(lon_deg + 180.0, 360.0)
     if wrapped < 0.0:
         wrapped += 360.0

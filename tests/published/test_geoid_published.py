@@ -2,26 +2,18 @@
 
 from __future__ import annotations
 
-import csv
-from collections.abc import Iterator
 from importlib import resources
 from pathlib import Path
 
 import numpy as np
 import pytest
 from numpy.typing import NDArray
+from published_tables import table
 
 from fieldbook.reduce.frames import undulation_by_proj
 from fieldbook.reduce.geoidgrid import GeoidGrid, read_gtx
 
-DATA = Path(__file__).parent / "data"
 EGM96 = Path(str(resources.files("fieldbook") / "data")) / "egm96_15.gtx"
-
-
-def table(name: str) -> Iterator[dict[str, str]]:
-    with (DATA / name).open(encoding="utf-8") as file:
-        next(file)
-        yield from csv.DictReader(file)
 
 
 @pytest.fixture(scope="module")

@@ -6,30 +6,17 @@ function that `project` uses.
 
 from __future__ import annotations
 
-import csv
 import math
-from collections.abc import Iterator
-from pathlib import Path
 
 import pytest
+from published_tables import dms, table
 from pyproj import CRS
 
 from fieldbook.errors import ReductionError, UsageError
 from fieldbook.reduce.frames import check_grid, project
 from fieldbook.reduce.frames.projection import PlanePosition, evaluated, projection_of
 
-DATA = Path(__file__).parent / "data"
 FOOT_US = 1200.0 / 3937.0
-
-
-def table(name: str) -> Iterator[dict[str, str]]:
-    with (DATA / name).open(encoding="utf-8") as file:
-        next(file)
-        yield from csv.DictReader(file)
-
-
-def dms(degrees: float, minutes: float, seconds: float) -> float:
-    return math.copysign(abs(degrees) + minutes / 60.0 + seconds / 3600.0, degrees)
 
 
 def alone(number: int, lat_deg: float, lon_deg: float) -> PlanePosition:
