@@ -12,12 +12,14 @@ Everything is judged before anything is written. `plan_occupation` only reads; `
 
 from __future__ import annotations
 
+import hashlib
 from dataclasses import dataclass
 from pathlib import Path
 
+from fieldbook.book.lock import held
 from fieldbook.book.store import Book
 from fieldbook.clock import Clock, SystemClock
-from fieldbook.errors import UsageError
+from fieldbook.errors import BookError, UsageError
 from fieldbook.links.address import LinkAddress, parse_link
 from fieldbook.model.canonical import Tree
 from fieldbook.model.session import Session
@@ -101,9 +103,14 @@ def begin_occupation(
 
     Raises:
         UsageError, LinkError: as `plan_occupation`; nothing is written then.
+        BookError: the occupation that `new` would end is being recorded.
     """
     address = parse_link(link_text, base_dir or Path.cwd())
     plan = plan_occupation(book, session, address, new=new)
+    if plan.end_first is not None and held(book.path):
+        raise BookError(
+            f"A recorder is recording occupation {plan.end_first}.", "End that occupation first.", code="locked"
+        )
     return enter(book, plan, SystemClock()), plan.resume is not None
 
 
@@ -188,8 +195,6 @@ def _options(session: Session, resume: Occupation | None) -> DecoderOptions:
 
 
 def _recorded(book: Book | None, number: int | None) -> tuple[int, str]:
-    import hashlib
-
     total, whole = 0, hashlib.sha256()
     if book is not None and number is not None:
         for data in book.received(number):

@@ -33,6 +33,7 @@ SEAL_ROWS, SEAL_MS = 60, 60_000
 STATE_MS = 250
 RETRY_S = 0.5
 RESTORE_BATCH = 5000
+PASSING = frozenset({"busy", "disk_full", "disk_error", "read_only", "cannot_open"})  # may be better in a moment
 
 
 @dataclass
@@ -51,6 +52,7 @@ class Heard:
     epochs: int = 0
     span: Span = field(default_factory=Span)
     last_utc_ms: int | None = None  # arrival of the latest burst; None for files
+    last_item_utc_ms: int = 0  # arrival of the latest item of any kind
 
 
 class Writer:
@@ -141,7 +143,7 @@ class Writer:
     def resumed(self, *, live: bool) -> None:
         """Enter that a new recorder took the occupation up again, and that a live link was not heard meanwhile."""
         now = self._clock.utc_ms()
-        since = max(self.heard.last_utc_ms or 0, self._last_sign_ms())
+        since = max(self.heard.last_item_utc_ms, self._last_sign_ms())
         self.append("resumed", after_s=max(0, (now - since) // 1000))
         if live:
             heard = self.heard.last_utc_ms or utc_ms_of(self._occupation.started_utc)
@@ -201,6 +203,7 @@ class Writer:
         self._persist(lambda: self._book.pack(self._number))
 
     def _take(self, item: Item, on_break_over: Callable[[Item], None] | None = None) -> list[Epoch]:
+        self.heard.last_item_utc_ms = item.utc_ms or 0
         if item.kind is ItemKind.BYTES:
             self._hash.update(item.data)
             self.heard.received_bytes += len(item.data)
@@ -287,8 +290,8 @@ class Writer:
         while True:
             try:
                 action()
-            except BookError:
-                if not self._patience():
+            except BookError as error:
+                if error.code not in PASSING or not self._patience():
                     raise
                 time.sleep(RETRY_S)
             else:
