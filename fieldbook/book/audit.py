@@ -25,13 +25,13 @@ from pathlib import Path
 from typing import Any, NoReturn
 
 from fieldbook.clock import utc_ms_of, utc_text
-from fieldbook.errors import FieldbookError
+from fieldbook.errors import FieldbookError, UsageError
 from fieldbook.model.canonical import Tree, canonical_json
 from fieldbook.model.entry import GENESIS, entry_hash
 
 from . import connect, migrations
 from .audit_raw import audit_raw
-from .kinds import MAX_BODY_BYTES
+from .kinds import KINDS, MAX_BODY_BYTES, checked_body
 
 MAX_FINDINGS = 100
 TIME_LIMIT_S = 600.0
@@ -69,7 +69,7 @@ class Audit:
         """One check. What SQLite cannot read, or does not fit in memory, is a finding of this part."""
         try:
             yield
-        except sqlite3.Error as error:
+        except (sqlite3.Error, UnicodeDecodeError) as error:
             self.find(where, f"cannot be read: {connect.printable(error)}")
         except (MemoryError, RecursionError, OverflowError) as error:
             self.find(where, f"holds what no book holds ({type(error).__name__})")
@@ -193,6 +193,11 @@ def _check_entries(audit: Audit) -> None:
             audit.find("entry", f"entry {seq} ({_shown(kind)}): {wrong}", seq)
             continue
         body = json.loads(text)
+        if kind in KINDS:  # a later version may know more kinds
+            try:
+                checked_body(kind, body)
+            except UsageError as error:
+                audit.find("entry", f"entry {seq}: {connect.printable(error.text)}", seq)
         if kind == "book" and seq != 1:
             audit.find("entry", f"entry {seq} begins the book a second time", seq)
         audit.bodies.setdefault(kind, []).append((seq, body))

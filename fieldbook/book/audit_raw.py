@@ -50,6 +50,7 @@ def audit_raw(audit: Audit) -> None:
     received = _stated(audit)
     _check_tail(audit, known, ended.keys())
     _check_strangers(audit, received)
+    _check_packs(audit)
     for occupation, found in received.items():
         with audit.part(f"raw of occupation {occupation}"):
             _check_occupation(audit, occupation, found)
@@ -138,8 +139,8 @@ def _piece(audit: Audit, left: Sequence[raw.Sealed]) -> tuple[Iterator[tuple[raw
         (sealed.occupation, sealed.chunk),
     ).fetchone()
     if row is not None:
-        if row[:7] != tuple(sealed.body().values()):
-            raise ValueError("its row does not state what its entry states")
+        if row[:7] != sealed.columns() or raw.sha256_of(row[7]) != sealed.stored_sha256:
+            raise ValueError("its row is not what its entry states")
         if pack is not None:
             raise ValueError("it stands in a chunk and in a pack")
         return iter([(sealed, raw.checked(sealed, raw.inflate_chunk(row[7], sealed.bytes)))]), 1
@@ -149,3 +150,27 @@ def _piece(audit: Audit, left: Sequence[raw.Sealed]) -> tuple[Iterator[tuple[raw
         raise ValueError(f"its pack begins with chunk {pack[0]}")
     inside = [item for item in left if item.chunk <= pack[1]]
     return iter(list(raw.split_pack(pack[2], pack[3], inside))), len(inside)
+
+
+def _check_packs(audit: Audit) -> None:
+    """Every column of every pack against its `packed` entry."""
+    stated: dict[tuple[int, int], tuple[int, raw.Packed]] = {}
+    for seq, body in audit.of("packed"):
+        try:
+            packed = raw.Packed.from_body(body)
+        except ValueError as error:
+            audit.find("raw", f"entry {seq}: {error}", seq)
+            continue
+        stated[packed.occupation, packed.first_chunk] = seq, packed
+    for occupation, first, last, codec, data in audit.connection.execute(
+        "SELECT occupation, first_chunk, last_chunk, codec, data FROM raw_pack"
+    ):
+        where = f"the pack of chunks {first} to {last} of occupation {occupation}"
+        entry = stated.pop((occupation, first), None)
+        if entry is None:
+            audit.find("raw", f"{where} is stated by no entry")
+        elif entry[1] != raw.Packed(occupation, first, last, codec, len(data), raw.sha256_of(data)):
+            audit.find("raw", f"{where} is not what entry {entry[0]} states", entry[0])
+    for seq, packed in stated.values():
+        where = f"the pack of chunks {packed.first_chunk} to {packed.last_chunk} of occupation {packed.occupation}"
+        audit.find("raw", f"{where} is missing", seq)

@@ -45,6 +45,15 @@ KINDS: dict[str, dict[str, tuple[type, ...]]] = {
         "items": _INT,
         "bytes": _INT,
         "sha256": _TEXT,
+        "stored_sha256": _TEXT,
+    },
+    "packed": {
+        "occupation": _INT,
+        "first_chunk": _INT,
+        "last_chunk": _INT,
+        "codec": _TEXT,
+        "bytes": _INT,
+        "sha256": _TEXT,
     },
     "end": {
         "occupation": _INT,

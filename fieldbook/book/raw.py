@@ -14,6 +14,7 @@ anything that does not fit, which `Book` words as a BookError and `audit` as a f
 from __future__ import annotations
 
 import bz2
+import dataclasses
 import hashlib
 import sqlite3
 import zlib
@@ -35,7 +36,11 @@ Row = tuple[int, str, int | None, int | None, bytes]
 
 @dataclass(frozen=True)
 class Sealed:
-    """A chunk as its `raw` entry states it. `bytes` counts canonical bytes: what `sha256` covers."""
+    """A chunk as its `raw` entry states it.
+
+    `bytes` counts canonical bytes: what `sha256` covers. `stored_sha256` covers the zlib data of the chunk's row, so
+    that not even a bit that inflates to the same bytes can change unseen.
+    """
 
     occupation: int
     chunk: int
@@ -44,18 +49,15 @@ class Sealed:
     items: int
     bytes: int
     sha256: str
+    stored_sha256: str
 
     def body(self) -> Tree:
         """The body of the `raw` entry."""
-        return {
-            "occupation": self.occupation,
-            "chunk": self.chunk,
-            "first_id": self.first_id,
-            "last_id": self.last_id,
-            "items": self.items,
-            "bytes": self.bytes,
-            "sha256": self.sha256,
-        }
+        return dataclasses.asdict(self)
+
+    def columns(self) -> tuple[int | str, ...]:
+        """The columns of the chunk's row, without its data."""
+        return self.occupation, self.chunk, self.first_id, self.last_id, self.items, self.bytes, self.sha256
 
     @classmethod
     def from_body(cls, body: Tree) -> Sealed:
@@ -64,19 +66,49 @@ class Sealed:
         Raises:
             ValueError: a key is missing, or a value is no positive number or text.
         """
-        sha256 = body.get("sha256")
-        if not isinstance(sha256, str):
-            raise ValueError("a raw entry names no hash")
-        occupation, chunk, first, last, items, size = (
-            _count(body, key) for key in ("occupation", "chunk", "first_id", "last_id", "items", "bytes")
-        )
-        return cls(occupation, chunk, first, last, items, size, sha256)
+        numbers = (_count(body, key) for key in ("occupation", "chunk", "first_id", "last_id", "items", "bytes"))
+        occupation, chunk, first, last, items, size = numbers
+        hashes = _text(body, "sha256"), _text(body, "stored_sha256")
+        return cls(occupation, chunk, first, last, items, size, *hashes)
+
+
+@dataclass(frozen=True)
+class Packed:
+    """A pack as its `packed` entry states it; `bytes` and `sha256` are those of the stored data."""
+
+    occupation: int
+    first_chunk: int
+    last_chunk: int
+    codec: str
+    bytes: int
+    sha256: str
+
+    def body(self) -> Tree:
+        """The body of the `packed` entry."""
+        return dataclasses.asdict(self)
+
+    @classmethod
+    def from_body(cls, body: Tree) -> Packed:
+        """From a `packed` entry.
+
+        Raises:
+            ValueError: a key is missing, or a value is no positive number or text.
+        """
+        occupation, first, last = (_count(body, key) for key in ("occupation", "first_chunk", "last_chunk"))
+        return cls(occupation, first, last, _text(body, "codec"), _count(body, "bytes"), _text(body, "sha256"))
+
+
+def _text(body: Tree, key: str) -> str:
+    value = body.get(key)
+    if not isinstance(value, str):
+        raise ValueError(f"the entry states no text '{key}'")
+    return value
 
 
 def _count(body: Tree, key: str) -> int:
     value = body.get(key)
     if type(value) is not int or not 0 <= value < 2**62:
-        raise ValueError(f"a raw entry states no number '{key}'")
+        raise ValueError(f"the entry states no number '{key}'")
     return value
 
 
@@ -121,8 +153,8 @@ def item_of(row: Row) -> Item:
     return Item(ItemKind(row[1]), row[4], row[2], row[3])
 
 
-def chunk_of(occupation: int, chunk: int, rows: Sequence[Row]) -> tuple[Sealed, bytes]:
-    """A new chunk of tail rows: its description and its canonical bytes.
+def chunk_of(occupation: int, chunk: int, rows: Sequence[Row]) -> tuple[Sealed, bytes, bytes]:
+    """A new chunk of tail rows: its description, its canonical bytes and its zlib data.
 
     Raises:
         ValueError: the ids have a gap.
@@ -131,13 +163,14 @@ def chunk_of(occupation: int, chunk: int, rows: Sequence[Row]) -> tuple[Sealed, 
     if last - first + 1 != len(rows):
         raise ValueError(f"received items {first} to {last} of occupation {occupation} have a gap")
     plain = canonical_items(item_of(row) for row in rows)
-    sealed = Sealed(occupation, chunk, first, last, len(rows), len(plain), hashlib.sha256(plain).hexdigest())
-    return sealed, plain
+    data = zlib.compress(plain, 1 if len(plain) >= LARGE_BYTES else 6)  # the large ones of a file are packed soon
+    sealed = Sealed(occupation, chunk, first, last, len(rows), len(plain), sha256_of(plain), sha256_of(data))
+    return sealed, plain, data
 
 
-def deflate_chunk(plain: bytes) -> bytes:
-    """zlib data of a chunk: quick for the large ones of a file, which are packed soon."""
-    return zlib.compress(plain, 1 if len(plain) >= LARGE_BYTES else 6)
+def sha256_of(data: bytes) -> str:
+    """SHA-256, 64 lower-case hex digits."""
+    return hashlib.sha256(data).hexdigest()
 
 
 def insert_chunk(connection: sqlite3.Connection, sealed: Sealed, data: bytes) -> None:
@@ -149,7 +182,7 @@ def insert_chunk(connection: sqlite3.Connection, sealed: Sealed, data: bytes) ->
     connection.execute(
         "INSERT INTO raw_chunk (occupation, chunk, first_id, last_id, items, bytes, sha256, data)"
         " VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
-        (*sealed.body().values(), data),
+        (*sealed.columns(), data),
     )
     gone = connection.execute(
         "DELETE FROM raw_tail WHERE occupation = ? AND id BETWEEN ? AND ?",
@@ -214,7 +247,7 @@ def checked(sealed: Sealed, plain: bytes) -> bytes:
     Raises:
         ValueError: another SHA-256.
     """
-    if hashlib.sha256(plain).hexdigest() != sealed.sha256:
+    if sha256_of(plain) != sealed.sha256:
         raise ValueError(f"chunk {sealed.chunk} of occupation {sealed.occupation} is not what entry 'raw' states")
     return plain
 
@@ -284,7 +317,7 @@ def compress_pack(
     return b"".join(streams)
 
 
-def insert_pack(connection: sqlite3.Connection, chunks: Sequence[Sealed], data: bytes) -> None:
+def insert_pack(connection: sqlite3.Connection, chunks: Sequence[Sealed], data: bytes) -> Packed:
     """Write the pack and take its chunks from `raw_chunk`. The caller holds the transaction."""
     occupation, first, last = chunks[0].occupation, chunks[0].chunk, chunks[-1].chunk
     connection.execute(
@@ -294,6 +327,7 @@ def insert_pack(connection: sqlite3.Connection, chunks: Sequence[Sealed], data: 
     connection.execute(
         "DELETE FROM raw_chunk WHERE occupation = ? AND chunk BETWEEN ? AND ?", (occupation, first, last)
     )
+    return Packed(occupation, first, last, CODEC, len(data), sha256_of(data))
 
 
 def unpacked(connection: sqlite3.Connection, occupation: int) -> set[int]:

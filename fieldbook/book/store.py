@@ -311,9 +311,8 @@ class Book:
         with self._worded(occupation):
             while rows := raw.tail_rows(self._connection, occupation, 0):
                 number = max((sealed.chunk for sealed in self._known.sealed(occupation)), default=0) + 1
-                sealed, plain = raw.chunk_of(occupation, number, rows)
+                sealed, plain, data = raw.chunk_of(occupation, number, rows)
                 self._presser.offer((occupation, number), plain)
-                data = raw.deflate_chunk(plain)
                 observer = self._known.observer_of(occupation)
                 with self.transaction():
                     raw.insert_chunk(self._connection, sealed, data)
@@ -339,8 +338,10 @@ class Book:
                 data = raw.compress_pack(
                     self._connection, group, lambda sealed: self._presser.take((sealed.occupation, sealed.chunk))
                 )
+                observer = self._known.observer_of(occupation)
                 with self.transaction():
-                    raw.insert_pack(self._connection, group, data)
+                    body = raw.insert_pack(self._connection, group, data).body()
+                    chain.insert_entry(self._connection, "packed", body, observer, self._now())
                 packed += len(group)
             if packed:
                 self._shrink()

@@ -123,6 +123,11 @@ def ended(path: Path, *, pack: bool = True) -> Path:
     return path
 
 
+def names(folder: Path) -> list[str]:
+    """What lies in a folder."""
+    return sorted(path.name for path in folder.iterdir())
+
+
 def received(first: int, last: int) -> tuple[int, str]:
     """Size and SHA-256 of what `record` wrote, computed without the book."""
     data = b"".join(line(number) for number in range(first, last + 1))
