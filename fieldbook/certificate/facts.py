@@ -98,7 +98,7 @@ def build_facts(
         "trace": evidence.trace_facts(trace),
     }
     facts["not_stated"] = _not_stated(facts)
-    facts["missing"] = _missing(facts, occupation, reduction)
+    facts["missing"] = missing_items(occupation, reduction, signed=facts["sign_off"] is not None)
     tree: Tree = normalised(facts)
     return tree
 
@@ -282,10 +282,10 @@ def _not_stated(facts: Tree) -> list[str]:
     return [name for table, key, name in OPTIONAL if facts[table].get(key) in (None, "", [])]
 
 
-def _missing(facts: Tree, occupation: Occupation, reduction: Reduction) -> list[Tree]:
-    """What keeps the certificate a draft, each item with a code and a sentence (see the module docstring)."""
+def missing_items(occupation: Occupation, reduction: Reduction, *, signed: bool) -> list[Tree]:
+    """What keeps the certificate of an occupation a draft: `{code, text}` each (see the module docstring)."""
     found: list[tuple[str, str]] = []
-    if facts["sign_off"] is None:
+    if not signed:
         found.append(("sign_off", "no sign-off by a responsible surveyor"))
     if occupation.simulated:
         found.append(("simulated", "the occupation is simulated"))
@@ -304,7 +304,7 @@ def _missing(facts: Tree, occupation: Occupation, reduction: Reduction) -> list[
         ]
     found += [
         ("finding", f"finding {item['code']}: {item['text']}")
-        for item in evidence.stop_findings(facts["findings"])
+        for item in evidence.stop_findings(evidence.findings_facts(occupation, reduction))
         if item["code"] != "simulated"
     ]
     return [{"code": code, "text": text} for code, text in found]

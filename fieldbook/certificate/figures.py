@@ -197,7 +197,7 @@ def _legend(facts: Tree, drawn: list[Point], left: float, top: float, outside: i
     rows.append((_line(left, 0, left + 24, 0, ACCENT, 4), "95 % of the mean, not of the fixes"))
     parts, x, y = [], 0.0, top
     for symbol, words in rows:
-        width = 44 + 11.2 * len(words) + 18
+        width = 44 + 13.5 * len(words) + 22
         if x and x + width > 780:
             x, y = 0.0, y + 36
         parts.append(f'<g transform="translate({x:.1f} {y:.1f})">{symbol}</g>')

@@ -19,6 +19,7 @@ from __future__ import annotations
 import hashlib
 import os
 from collections.abc import Callable, Iterable
+from contextlib import AbstractContextManager
 from dataclasses import dataclass, field
 from importlib import metadata
 from pathlib import Path
@@ -65,6 +66,10 @@ class CertificateBook(Protocol):
 
     def state(self) -> BookState:
         """The folded book."""
+        ...
+
+    def transaction(self) -> AbstractContextManager[None]:
+        """All entries appended inside are written, or none."""
         ...
 
 
@@ -329,17 +334,7 @@ def _write(
         _save(waiting, data)
         if out.exists() and not replace:
             raise UsageError(f"{out} has appeared meanwhile.", "Name another file and run the command again.")
-        if document.body is not None:
-            book.append(document.facts["document"]["kind"], document.body, observer)
-        rendered = {
-            "number": document.facts["document"]["number"],
-            "digest": document.facts["digest"],
-            "format": extension,
-            "name": out.name,
-            "sha256": sha256,
-        }
-        if not any(entry.kind == "rendered" and entry.body == rendered for entry in book.entries()):
-            book.append("rendered", rendered, observer)
+        _enter(book, document, extension, out.name, sha256, observer)
         waiting.replace(out)
     except OSError as error:
         raise UsageError(
@@ -347,6 +342,27 @@ def _write(
         ) from error
     finally:
         waiting.unlink(missing_ok=True)
+
+
+def _enter(book: CertificateBook, document: _Document, extension: str, name: str, sha256: str, observer: str) -> None:
+    """The entries of what was rendered, both or none."""
+    number = document.facts["document"]["number"]
+    rendered = {
+        "number": number,
+        "digest": document.facts["digest"],
+        "format": extension,
+        "name": name,
+        "sha256": sha256,
+    }
+    with book.transaction():
+        if document.body is not None:
+            if number is not None and number.rpartition("-")[2] != str(_running(book)):
+                raise UsageError(
+                    f"Number {number} was given to another certificate meanwhile.", "Run the command again."
+                )
+            book.append(document.facts["document"]["kind"], document.body, observer)
+        if not any(entry.kind == "rendered" and entry.body == rendered for entry in book.entries()):
+            book.append("rendered", rendered, observer)
 
 
 def _save(path: Path, data: bytes) -> None:

@@ -208,9 +208,11 @@ def _budget_line(line: BudgetLine, *, in_mm: bool) -> Tree:
 
 
 def _size(value_m: float | None, *, in_mm: bool) -> str:
-    if value_m is None:
+    """A standard uncertainty for the budget; a dash where the line says nothing of that axis."""
+    if value_m is None or value_m == 0.0:
         return UNKNOWN
-    return rounded(value_m * 1000, 1) if in_mm else rounded(value_m, 3)
+    text = rounded(value_m * 1000, 1) if in_mm else rounded(value_m, 3)
+    return text if float(text) > 0 else "< 0.1" if in_mm else "< 0.001"
 
 
 def _printed_region(uncertainty: Uncertainty) -> Tree:

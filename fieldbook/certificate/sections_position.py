@@ -177,7 +177,9 @@ def uncertainty(facts: Tree) -> Section:
     else:
         blocks.append(_budget("Budget, receiver's frame", measured, []))
         blocks.append(_budget("Budget, client's frame", client, []))
-    notes = [f"{line['source']}: {line['note']}." for line in (client or measured)["budget"] if line["note"]]
+    notes = [
+        f"{line['source']}: {line['note'].rstrip('. ')}." for line in (client or measured)["budget"] if line["note"]
+    ]
     common = (client or {}).get("common")
     if common:
         notes.append("Common to all marks of this job: " + "; ".join(common) + ".")

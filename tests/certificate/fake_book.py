@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import copy
 from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 
 import kestrel_ridge as job
@@ -41,6 +42,15 @@ class FakeBook:
         )
         self.log.append(made)
         return made
+
+    @contextmanager
+    def transaction(self) -> Iterator[None]:
+        kept = list(self.log)
+        try:
+            yield
+        except BaseException:
+            self.log = kept
+            raise
 
     def state(self) -> BookState:
         state = copy.deepcopy(self.base)

@@ -209,6 +209,20 @@ def test_a_book_that_cannot_be_written_leaves_no_file(tmp_path: Path, monkeypatc
     assert list(tmp_path.iterdir()) == []
 
 
+def test_two_writers_cannot_take_one_number(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    book = FakeBook()
+
+    def slow(facts: Any) -> bytes:
+        write(book, tmp_path / "first.txt", reductions=changed())
+        return b"late"
+
+    monkeypatch.setitem(issue.RENDERERS, "json", slow)
+    with pytest.raises(UsageError, match="meanwhile"):
+        write(book, tmp_path / "second.json")
+    assert kinds(book) == ["book", "certificate", "rendered"]
+    assert [path.name for path in tmp_path.iterdir()] == ["first.txt"]
+
+
 # --- verification -----------------------------------------------------------------------------------------------
 
 
