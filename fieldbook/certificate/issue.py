@@ -37,6 +37,7 @@ from fieldbook.certificate.identity import (
     sealed,
 )
 from fieldbook.certificate.printable import printable
+from fieldbook.certificate.revision import changes
 from fieldbook.clock import Clock, utc_text
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree
@@ -261,6 +262,7 @@ def _certificate(
             "issued_utc": issued_utc,
             "supersedes": replaced,
             "reason": None if standing is None else (supersede or "").strip(),
+            "changed": [] if standing is None else changes(standing.body["facts"], facts),
         },
     }
     return _Document(sealed(facts), _body(facts, occupation), replaced)

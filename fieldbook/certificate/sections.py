@@ -144,6 +144,7 @@ def _record(facts: Tree) -> Section:
         ("Hash of that entry", book["head_hash"]),
         *_received(facts["occupation"]),
         ("Digest of these facts", facts["digest"]),
+        *_revision(facts["document"]),
         ("Not stated by the party", ", ".join(facts["not_stated"]) or "nothing"),
     ]
     return Section("Record", [Pairs([list(row) for row in rows])])
@@ -161,3 +162,10 @@ def _received(occupation: dict[str, Any]) -> list[tuple[str, str]]:
         ("Received bytes", str(occupation["received_bytes"])),
         ("Their SHA-256", occupation["received_sha256"]),
     ]
+
+
+def _revision(document: dict[str, Any]) -> list[tuple[str, str]]:
+    if not document.get("supersedes"):
+        return []
+    changed = "; ".join(document.get("changed") or []) or "not stated"
+    return [("Replaces", document["supersedes"]), ("Why", said(document.get("reason"))), ("What changed", changed)]

@@ -80,6 +80,27 @@ FACTOR_SENTENCE = (
     "R/(R + h) with R the mean radius of curvature at the mark and h the ellipsoidal height."
 )
 
+# Parts of the facts as a new revision names them when it says what changed.
+PART_WORDS = {
+    "position": "coordinates",
+    "uncertainty": "uncertainty",
+    "operation": "frame operation",
+    "mark": "description of the mark",
+    "occupation": "epochs and times",
+    "setup": "set-up and height readings",
+    "antenna": "antenna",
+    "receiver": "receiver",
+    "corrections": "corrections",
+    "requirement": "requirement",
+    "findings": "findings",
+    "decisions": "decisions",
+    "remarks": "remarks",
+    "struck": "struck entries",
+    "repeats": "repeats",
+    "sign_off": "sign-off",
+    "job": "client, firm and people",
+}
+
 # Which decision answers which finding: the key of a `decision` entry is looked for in the finding's code.
 ANSWER_KEYS = {
     "date": ("date",),

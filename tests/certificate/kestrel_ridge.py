@@ -462,6 +462,7 @@ def issued_facts(**document: object) -> Tree:
         "issued_utc": "2027-03-09T14:12:05.000Z",
         "supersedes": "3f2a91c0-1",
         "reason": "antenna serial number corrected",
+        "changed": ["antenna"],
         **document,
     }
     return sealed(facts)

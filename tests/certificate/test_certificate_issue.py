@@ -86,7 +86,9 @@ def test_changed_facts_need_a_reason(tmp_path: Path) -> None:
     made = write(book, tmp_path / "b.json", reductions=changed(), supersede="height read again")
     assert (made.number, made.supersedes) == ("3f2a91c0-2", "3f2a91c0-1")
     assert book.log[-2].body["reason"] == "height read again"
-    assert book.log[-2].body["facts"]["document"]["revision"] == 2
+    document = book.log[-2].body["facts"]["document"]
+    assert document["revision"] == 2
+    assert document["changed"] == ["coordinates (by 0.0 mm east, 0.0 mm north, 4.4 mm up)"]
 
 
 def test_a_number_is_never_used_twice(tmp_path: Path) -> None:
