@@ -78,7 +78,6 @@ def height_above_geoid(
     search_dirs: Sequence[Path],
     *,
     epoch_of_observation: float,
-    outside_area_accepted: bool = False,
 ) -> Height:
     """H of a mark by a model. `vertical95_m` is left None: the caller knows the uncertainty of h and fills it.
 
@@ -86,7 +85,6 @@ def height_above_geoid(
         client: the mark, with its ellipsoidal height.
         geoid_name: file name as in frame.geoid; looked for in `search_dirs`, then in the package's own data.
         epoch_of_observation: decimal year, for the height of a static frame against ITRF2020.
-        outside_area_accepted: a recorded decision, for that comparison too.
 
     `undulation_u_m` is the root sum of squares of the model's u_m, the interpolation and the difference of frames;
     None where the record states no u_m.
@@ -102,7 +100,7 @@ def height_above_geoid(
             code="no_ellipsoidal_height",
         )
     model = find_model(geoid_name, search_dirs)
-    difference = _frame_difference(model.record, client, epoch_of_observation, anywhere=outside_area_accepted)
+    difference = _frame_difference(model.record, client, epoch_of_observation)
     found = undulation_at(model, client.lat_deg, client.lon_deg)
     heading = model.record.heading
     if found.method == "bilinear":
@@ -272,7 +270,7 @@ def _hash(path: Path, size: int, changed_ns: int) -> str:
     return hashlib.sha256(path.read_bytes()).hexdigest()
 
 
-def _frame_difference(record: GeoidRecord, client: ClientPosition, epoch: float, *, anywhere: bool) -> float:
+def _frame_difference(record: GeoidRecord, client: ClientPosition, epoch: float) -> float:
     """Ellipsoidal height in the client's frame minus in the model's, metres; 0 where they are the same."""
     info = frame_info(client.frame)
     if record.kind == "national":
@@ -294,7 +292,6 @@ def _frame_difference(record: GeoidRecord, client: ClientPosition, epoch: float,
             client.lon_deg,
             float(client.h_m or 0.0),
             epoch if client.epoch is None else client.epoch,
-            anywhere=anywhere,
         )
     except ReductionError as error:
         raise ReductionError(

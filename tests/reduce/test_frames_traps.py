@@ -176,6 +176,18 @@ def test_missing_grid_stops_the_search() -> None:
     assert "ca_nrc_NAD83v70VG.tif" in error.text
 
 
+def test_a_decision_may_go_round_a_missing_grid() -> None:
+    """The operator's recorded steps, by ITRF96, are sound; they only are not what the search may choose by itself."""
+    choice = FrameChoice("EPSG:8244", "EPSG:8254")
+    steps = ["EPSG:8261 inverse", "EPSG:8078", "EPSG:8265"]
+    by_hand = {"keep_steps": steps}
+    with pytest.raises(ReductionError) as error:
+        transform_to_client(choice, 49.9, -97.2, 230.0, EPOCH, keep_steps=["EPSG:1"])
+    assert error.value.code == "grid_missing"
+    _, operation = transform_to_client(choice, 49.9, -97.2, 230.0, EPOCH, **by_hand)  # type: ignore[arg-type]
+    assert operation_codes(operation) == steps
+
+
 def test_missing_grid_behind_a_pivot_is_named() -> None:
     choice = FrameChoice("EPSG:10605", "EPSG:4959", receiver_epoch=EPOCH)
     assert "nz_linz_nzgd2000" in refused(choice, -41.3, 174.8, 100.0).text
@@ -205,6 +217,24 @@ def test_decision_opens_only_the_limit() -> None:
     choice = FrameChoice("EPSG:10605", "EPSG:9781", receiver_epoch=EPOCH)
     error = refused(choice, 45.75, 4.85, 220.0, accuracy_over_limit=True)
     assert "ensemble" in error.text
+
+
+def test_decision_for_the_area_changes_nothing_inside() -> None:
+    """Given for the grid's zone, say, it must not widen the search for operations at a mark inside its frames."""
+    assert transform_to_client(SAMPLE, *ALICE, EPOCH, outside_area_accepted=True) == transform_to_client(
+        SAMPLE, *ALICE, EPOCH
+    )
+
+
+def test_route_of_a_session_under_way_stays_cached() -> None:
+    """Millimetres and minutes later the search is not made again (from a WGS 84 realisation it takes 0.4 s)."""
+    choice = FrameChoice("EPSG:10605", "EPSG:7843", receiver_epoch="observation")
+    transform_to_client(choice, -23.67011, 133.88512, 600.0, 2027.17102)
+    before = judge.offer.cache_info().misses
+    for second in range(20):
+        later = 2027.17102 + second / 31_536_000
+        transform_to_client(choice, -23.67011 + 1e-9 * second, 133.88512, 600.0, later)
+    assert judge.offer.cache_info().misses == before
 
 
 # --- equalities ------------------------------------------------------------------------------------------

@@ -80,7 +80,8 @@ def transform_to_client(
         return _client(choice, client, (lat_deg, lon_deg), h_m, epoch_of_observation), operation
     epoch = operation_epoch_of(choice, epoch_of_observation)
     moved = [_motion_step(*motion)] if motion else []
-    mark = Mark(lat_deg, lon_deg, epoch, anywhere=outside_area_accepted, over_limit=accuracy_over_limit)
+    # Only where the mark really is outside: without an area PROJ also offers what belongs elsewhere.
+    mark = Mark(lat_deg, lon_deg, epoch, anywhere=not area_ok, over_limit=accuracy_over_limit)
     route = _route(choice, receiver, client, mark, moved, keep_steps)
     steps = [*moved, *route.steps]
     total = sum(step.accuracy_m or 0.0 for step in steps)
@@ -103,12 +104,14 @@ def transform_to_client(
 
 
 def ellipsoidal_height_difference_to_itrf2020(
-    code: str, lat_deg: float, lon_deg: float, h_m: float, epoch: float, *, anywhere: bool = False
+    code: str, lat_deg: float, lon_deg: float, h_m: float, epoch: float
 ) -> float:
     """Ellipsoidal height in a frame minus that in ITRF2020 at a place, metres: what a global geoid model is off by.
 
     Args:
         epoch: decimal year of the coordinates; for a static frame that of observation.
+
+    Outside the frame's area of use (which needs a recorded decision to get here) the search is made without area.
 
     Raises:
         ReductionError: no sound route from the frame to ITRF2020 at this place.
@@ -123,6 +126,7 @@ def ellipsoidal_height_difference_to_itrf2020(
     if same_frame(frame, target):
         return 0.0
     lon_deg = wrapped_longitude(lon_deg)
+    anywhere = not inside(frame.bounds, lat_deg, lon_deg)
     route = find_route(frame, target, Mark(lat_deg, lon_deg, epoch, anywhere=anywhere))
     return h_m - _run(route, (lat_deg, lon_deg, h_m), epoch)[2]
 

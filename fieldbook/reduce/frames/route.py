@@ -129,6 +129,11 @@ def find_route(
     routes = [Route((*before, *route.legs, *after)) for route in found.routes]
     allowed = [route for route in routes if mark.over_limit or route.total_m <= ACCURACY_LIMIT_M + _ROUNDING_M]
     kept = next((route for route in allowed if route.codes == keep_codes), None)
+    if kept is None and keep_codes is not None:
+        # A decision may have chosen the way round a missing grid, which the search itself does not offer.
+        round_about = _by_pivots(source, target, mark, limit_m=math.inf if mark.over_limit else ACCURACY_LIMIT_M)
+        others = [Route((*before, *route.legs, *after)) for route in round_about.routes]
+        kept = next((route for route in others if route.codes == keep_codes), None)
     if kept is not None:
         return kept
     blocked = found.waiting and (not found.routes or _rank(found.waiting[0]) < _rank(found.routes[0]))
@@ -143,23 +148,27 @@ def find_route(
 
 
 def _found(source: FrameInfo, target: FrameInfo, mark: Mark, *, limit_m: float) -> _Found:
+    """The direct search; by way of an ITRF only where it finds nothing sound."""
     if same_frame(source, target):
         return _Found([Route(())], [], [])
-    return _searched(source, target, mark, limit_m)
-
-
-def _searched(source: FrameInfo, target: FrameInfo, mark: Mark, limit_m: float) -> _Found:
-    """Sound routes, routes that lack a grid (both best first), and all offers looked at."""
     most = limit_m + _ROUNDING_M
     direct = _offer(source.code, target.code, mark)
     routes = [Route((_leg(source, target, c),)) for c in direct.sound if c.total_m <= most]
     waiting = [Route((_leg(source, target, c),)) for c in direct.waiting if c.total_m <= most]
-    offers = [direct]
     if routes or waiting:
-        return _Found(routes, waiting, offers)
+        return _Found(routes, waiting, [direct])
+    by_pivots = _by_pivots(source, target, mark, limit_m=limit_m)
+    return _Found(by_pivots.routes, by_pivots.waiting, [direct, *by_pivots.offers])
+
+
+def _by_pivots(source: FrameInfo, target: FrameInfo, mark: Mark, *, limit_m: float) -> _Found:
+    """Source to an ITRF to target, the best sound candidate of each leg."""
+    routes: list[Route] = []
+    waiting: list[Route] = []
+    offers: list[Offer] = []
     for code in PIVOTS:
         pivot = frame_info(code)
-        if same_frame(pivot, source) or same_frame(pivot, target):
+        if same_frame(source, target) or same_frame(pivot, source) or same_frame(pivot, target):
             continue
         first, second = _offer(source.code, code, mark), _offer(code, target.code, mark)
         one, two = _best(first), _best(second)
@@ -168,9 +177,8 @@ def _searched(source: FrameInfo, target: FrameInfo, mark: Mark, limit_m: float) 
         if one is None or two is None:
             continue
         route = Route((_leg(source, pivot, one), _leg(pivot, target, two)))
-        if route.total_m > most:
-            continue
-        (waiting if one.missing or two.missing else routes).append(route)
+        if route.total_m <= limit_m + _ROUNDING_M:
+            (waiting if one.missing or two.missing else routes).append(route)
     return _Found(sorted(routes, key=_rank), sorted(waiting, key=_rank), offers)
 
 
@@ -181,7 +189,9 @@ def _best(found: Offer) -> Candidate | None:
 
 
 def _offer(source: str, target: str, mark: Mark) -> Offer:
-    return offer(source, target, *mark.rounded, mark.epoch, anywhere=mark.anywhere)
+    # 0.001 year is nine hours: a session under way keeps its route, and rule d works to 0.01 year.
+    epoch = None if mark.epoch is None else round(mark.epoch, 3)
+    return offer(source, target, *mark.rounded, epoch, anywhere=mark.anywhere)
 
 
 def _rank(route: Route) -> tuple[float, int, int, list[str]]:
