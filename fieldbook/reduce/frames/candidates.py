@@ -28,7 +28,7 @@ from pyproj.transformer import TransformerGroup
 
 from fieldbook.model.reduction import OperationStep
 from fieldbook.reduce.constants import AREA_HALF_SIDE_DEG, SAME_EPOCH_YEARS
-from fieldbook.reduce.frames.registry import Bounds, crs_of, inside, is_scaffold, itrf_year
+from fieldbook.reduce.frames.registry import Bounds, crs_of, inside, is_scaffold, itrf_year, shortened
 
 _REMARK_LENGTH = 400
 _NKG_FRAME = re.compile(r"NKG_ETRF\d{2}")
@@ -147,7 +147,7 @@ def _of_transformer(item: Transformer, ends: _Ends, where: tuple[float, float] |
     area = item.area_of_use
     bounds = (area.west, area.south, area.east, area.north) if area is not None else None
     if where is not None and bounds is not None and not inside(bounds, *where):
-        reason = reason or f"the mark is outside its area of use ({area.name})"
+        reason = reason or f"one way is not meant for this place ({shortened(str(area.name))})"
     operations = item.operations or ()
     grids = {(grid.short_name, grid.full_name) for part in operations for grid in part.grids}
     return Candidate(steps, total, newest, reason, bounds=bounds, transformer=item, grids=tuple(sorted(grids)))
@@ -157,7 +157,7 @@ def _of_operation(item: CoordinateOperation, ends: _Ends) -> Candidate:
     steps, reason, newest, total = _judged(item.to_json_dict(), float(item.accuracy), ends)
     missing = tuple(sorted(grid.short_name for grid in item.grids if not grid.available))
     if not missing:
-        reason = reason or "PROJ cannot run it"
+        reason = reason or "one way is known, which PROJ cannot run"
     return Candidate(steps, total, newest, reason, missing=missing)
 
 
@@ -178,7 +178,7 @@ def _judged(tree: dict[str, Any], overall_m: float, ends: _Ends) -> tuple[tuple[
         first = next(step for step in steps if step.remark.startswith("intraplate"))
         first.accuracy_m, stated = overall_m - stated, overall_m
     if not steps:
-        reason = "it has no step: a null copy"
+        reason = "one way has no step at all: a null copy"
     return tuple(steps), reason, newest, stated
 
 
@@ -210,12 +210,12 @@ def _refusal(part: dict[str, Any], ends: _Ends, *, nkg: bool, inner: bool) -> st
     sides = [(_crs_name(part, end), *_datum_of(part.get(end, {}))) for end in ("source_crs", "target_crs")]
     for name, _, kind in sides:
         if kind == "ensemble":
-            return f"it passes the ensemble {name} by a null copy or a metre-level step"
+            return f"the way through the ensemble {name} is a null copy, or good to metres only"
     if not inner and _accuracy(part) is None:
         return f"{part['name']} states no accuracy"
     for name, datum, _ in sides:
         if datum not in ends.datums and not is_scaffold(name) and not (nkg and _NKG_FRAME.fullmatch(name)):
-            return f"it goes by a foreign frame, {name or datum or 'unnamed'}"
+            return f"one way goes by a foreign frame, {name or datum or 'unnamed'}"
     method = str(part.get("method", {}).get("name", ""))
     depends_on_time = _TIME_WORDS.search(method) is not None
     mixed = {kind for _, _, kind in sides} == {"static", "moving"}

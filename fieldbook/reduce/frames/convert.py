@@ -25,7 +25,7 @@ from fieldbook.reduce.frames.choice import (
     operation_epoch_of,
     receiver_epoch_of,
 )
-from fieldbook.reduce.frames.registry import ITRF2020, FrameInfo, frame_info, inside, same_frame
+from fieldbook.reduce.frames.registry import ITRF2020, FrameInfo, frame_info, inside, same_frame, shortened
 from fieldbook.reduce.frames.route import Leg, Mark, Route, find_route
 from fieldbook.reduce.geodesy import (
     Position,
@@ -164,7 +164,7 @@ def _area(receiver: FrameInfo, client: FrameInfo, lat_deg: float, lon_deg: float
         info = outside[0]
         raise ReductionError(
             f"The mark ({lat_deg:.4f}, {lon_deg:.4f}) is outside the area of use of {info.code} {info.name}: "
-            f"{info.area_name[:160]}",
+            f"{shortened(info.area_name)}",
             "Give the frame of this place, or record a decision that accepts figures outside the area.",
             code="outside_area",
         )

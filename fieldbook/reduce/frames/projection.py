@@ -20,7 +20,16 @@ from pyproj.exceptions import CRSError, ProjError
 from fieldbook.errors import ReductionError, UsageError
 from fieldbook.model.reduction import GridPosition
 from fieldbook.reduce.constants import CONFORMAL_LIMIT
-from fieldbook.reduce.frames.registry import Bounds, FrameInfo, crs_of, ellipsoid_of, epsg_number, frame_info, inside
+from fieldbook.reduce.frames.registry import (
+    Bounds,
+    FrameInfo,
+    crs_of,
+    ellipsoid_of,
+    epsg_number,
+    frame_info,
+    inside,
+    shortened,
+)
 from fieldbook.reduce.geodesy import elevation_factor, wrapped_longitude
 
 _WEB_MERCATOR = 1024  # Popular Visualisation Pseudo-Mercator: passes as conformal with scale 1.5
@@ -87,7 +96,7 @@ def project(
     if not inside(grid.bounds, lat_deg, lon_deg) and not outside_area_accepted:
         raise ReductionError(
             f"The mark ({lat_deg:.4f}, {lon_deg:.4f}) is outside the area of use of {grid.code} {grid.name}: "
-            f"{grid.area_name[:160]}",
+            f"{shortened(grid.area_name)}",
             "Give the grid of this place, or record a decision that accepts figures outside the area.",
             code="outside_area",
         )

@@ -159,6 +159,12 @@ def ellipsoid_of(crs: CRS) -> Ellipsoid:
     return Ellipsoid(found.name, float(found.semi_major_metre), float(found.inverse_flattening))
 
 
+def shortened(area_name: str, most: int = 120) -> str:
+    """An area of use as the end of a sentence: EPSG lists whole continents."""
+    name = area_name.rstrip(". ")
+    return f"{name}." if len(name) <= most else name[:most].rsplit(" ", 1)[0].rstrip(",;") + " ..."
+
+
 def same_frame(first: FrameInfo, second: FrameInfo) -> bool:
     """Frames are the same when their datum is the same."""
     return first.datum_code == second.datum_code

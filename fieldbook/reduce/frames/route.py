@@ -246,8 +246,8 @@ def _grid_missing(receiver: FrameInfo, client: FrameInfo, route: Route) -> Reduc
     names = sorted({name for leg in route.legs if leg.candidate for name in leg.candidate.missing})
     return ReductionError(
         f"{receiver.name} to {client.name} needs {', '.join(names)}, which is not installed.",
-        f"Install {', '.join(names)}, or record a decision for another operation, or declare an equality in "
-        f"[[frame.taken_as]], or give the certificate in the receiver's own frame.",
+        f"Install {', '.join(names)}, or record a decision for another operation, or give the certificate in the "
+        "receiver's own frame.",
         code="grid_missing",
     )
 
