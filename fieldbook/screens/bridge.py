@@ -1,0 +1,223 @@
+"""The one door between the screens and the book, the recorder, the reduction and the certificate.
+
+Every method here may wait for a disk and is called from a worker thread, never from the drawing. Each opens the
+book for itself and closes it again, so no connection crosses a thread. Errors are `FieldbookError`s with a remedy.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+from fieldbook.clock import Clock, SystemClock
+from fieldbook.errors import FieldbookError, UsageError
+from fieldbook.model.canonical import Tree
+from fieldbook.model.entry import Entry
+from fieldbook.model.live import LiveView
+from fieldbook.model.reduction import AntennaHeight, Finding, Reduction
+from fieldbook.model.session import Session
+
+
+@dataclass(frozen=True)
+class Port:
+    """A port of this computer, listed without opening it."""
+
+    name: str
+    description: str
+    address: str  # how to write it as a link
+
+
+@dataclass(frozen=True)
+class Issued:
+    """What came of a certificate or draft."""
+
+    path: str
+    number: str | None  # None: a draft
+    missing: tuple[str, ...] = ()  # what keeps it a draft
+
+
+@dataclass(frozen=True)
+class Reduced:
+    """Reductions of the whole book, and what could not be reduced: (mark, occupation, text, remedy)."""
+
+    reductions: tuple[Reduction, ...] = ()
+    failures: tuple[tuple[str, int, str, str], ...] = ()
+
+
+@dataclass(frozen=True)
+class Heights:
+    """Height readings judged together."""
+
+    height: AntennaHeight | None
+    findings: tuple[Finding, ...] = ()
+    problem: str = ""
+
+
+@dataclass
+class Bridge:
+    """A book on disk, as the screens see it."""
+
+    path: Path
+    clock: Clock = field(default_factory=SystemClock)
+    observer: str = ""  # who signs; empty until a session or a person says so
+    _reader: Any = None
+
+    # --- looking
+
+    def snapshot(self) -> LiveView:
+        """One frozen picture, from the feed's own thread only."""
+        from fieldbook.occupy.live import LiveReader
+
+        if self._reader is None:
+            self._reader = LiveReader(self.path)
+        view: LiveView = self._reader.snapshot()
+        return view
+
+    def close(self) -> None:
+        """Let go of the reader; called by the feed's thread's owner after the thread has ended."""
+        reader, self._reader = self._reader, None
+        close = getattr(reader, "close", None)
+        if close is not None:
+            close()
+
+    def entries(self) -> list[Entry]:
+        """All entries of the book, in order."""
+        from fieldbook.book.store import Book
+
+        with Book.open(self.path, clock=self.clock) as book:
+            return list(book.entries())
+
+    def reduce(self) -> Reduced:
+        """Every occupation of the book, reduced."""
+        from fieldbook.book.store import Book
+        from fieldbook.occupy.reductions import reduce_book
+
+        with Book.open(self.path, clock=self.clock) as book:
+            reductions, failures = reduce_book(book)
+        return Reduced(tuple(reductions), tuple(_failure(item) for item in failures))
+
+    def heights(self, session: Session, readings: Sequence[Tree]) -> Heights:
+        """Readings (keys of [[setup.height]]) reduced to the ARP and judged; pure, no disk."""
+        from fieldbook.reduce.antenna import reduce_antenna
+        from fieldbook.settings.session import reading_from_tree
+
+        try:
+            made = reduce_antenna(session.setup, session.antenna, [reading_from_tree(item) for item in readings])
+        except FieldbookError as problem:
+            return Heights(None, (), f"{problem.text} {problem.remedy}")
+        return Heights(made.height, tuple(made.findings))
+
+    def session(self, tree: Tree) -> Session:
+        """A session tree, checked."""
+        from fieldbook.settings.session import session_from_tree
+
+        return session_from_tree(tree)
+
+    def session_file(self, path_text: str) -> Tree:
+        """The tree of a session file, its link made independent of the folder the file lies in."""
+        from fieldbook.settings.session import load_session
+
+        return load_session(Path(path_text).expanduser()).tree
+
+    def link_problem(self, text: str) -> str:
+        """What is wrong with a link as typed; empty if nothing is. Nothing is opened."""
+        from fieldbook.links.address import parse_link
+
+        try:
+            parse_link(text, Path.cwd())
+        except FieldbookError as problem:
+            return f"{problem.text} {problem.remedy}"
+        return ""
+
+    def ports(self) -> list[Port]:
+        """Ports of this computer; none is opened."""
+        from fieldbook.links.ports import list_ports
+
+        return [Port(item.device, item.description, item.address) for item in list_ports()]
+
+    # --- writing
+
+    def _signed(self) -> str:
+        if not self.observer.strip():
+            raise UsageError("Nobody signs yet.", "Press 1, then O, and say who observes.")
+        return self.observer
+
+    def write(self, kind: str, body: Tree) -> Entry:
+        """One entry, signed by the observer."""
+        from fieldbook.book.store import Book
+
+        observer = self._signed()
+        with Book.open(self.path, clock=self.clock, write=True) as book:
+            return book.append(kind, body, observer)
+
+    def save_session(self, tree: Tree) -> Entry:
+        """What the screen offers for the next occupation."""
+        return self.write("session", {"tree": self.session(tree).tree})
+
+    def add_mark(self, tree: Tree) -> Entry:
+        """A mark described."""
+        return self.write("mark", tree)
+
+    def add_remark(self, occupation: int | None, text: str) -> Entry:
+        """A remark, at any moment."""
+        return self.write("remark", {"occupation": occupation, "text": text})
+
+    def add_height(self, occupation: int, tree: Tree) -> Entry:
+        """A height reading of an occupation that has begun."""
+        return self.write("height", {"occupation": occupation, **tree})
+
+    def add_setup(self, occupation: int, changes: Tree) -> Entry:
+        """Changed keys of an occupation that has begun, as {table: {key: value}}."""
+        return self.write("setup", {"occupation": occupation, **changes})
+
+    def strike(self, seq: int, reason: str) -> Entry:
+        """An entry struck out, with its reason."""
+        return self.write("strike", {"seq": seq, "reason": reason})
+
+    # --- recording
+
+    def begin(self, tree: Tree) -> tuple[int, bool]:
+        """Begin the occupation a session tree describes and start its recorder; the readings are not carried over.
+
+        Returns:
+            Number of the occupation, and whether an open one was resumed.
+        """
+        from fieldbook.book.store import Book
+        from fieldbook.occupy.begin import begin_occupation
+        from fieldbook.occupy.detached import start_recorder
+
+        self._signed()
+        session = self.session(tree)
+        with Book.open(self.path, clock=self.clock, write=True) as book:
+            number, resumed = begin_occupation(book, session, session.receiver.link)
+        start_recorder(self.path, number)
+        return number, resumed
+
+    def start_recorder(self, occupation: int) -> None:
+        """Start the recorder of an occupation that was left open."""
+        from fieldbook.occupy.detached import start_recorder
+
+        start_recorder(self.path, occupation)
+
+    def end(self, occupation: int) -> None:
+        """End the open occupation: by request where a recorder runs, else directly."""
+        from fieldbook.occupy.ending import request_end
+
+        request_end(self.path, occupation, self._signed())
+
+    # --- paper
+
+    def certify(self, mark: str, occupation: int, out: str, sign_off: str, supersede: str) -> Issued:
+        """Issue a certificate (with a sign-off) or write a draft (without)."""
+        raise NotImplementedError
+
+    def missing(self, reduction: Reduction) -> list[str]:
+        """What keeps the paper of an occupation a draft."""
+        raise NotImplementedError
+
+
+def _failure(item: Any) -> tuple[str, int, str, str]:
+    error = item["error"]
+    return (str(item["mark"]), int(item["occupation"]), str(error["text"]), str(error["remedy"]))

@@ -1,0 +1,185 @@
+"""The certificate: what still keeps the paper a draft, what was issued, and the two keys that write paper."""
+
+# ruff: noqa: ARG002 - every maker of rows takes the size, and some do not need it
+
+from __future__ import annotations
+
+from typing import Any, ClassVar
+
+from fieldbook.model.reduction import Reduction
+from fieldbook.screens.bridge import Issued
+from fieldbook.screens.forms import Field, Form, Values
+from fieldbook.screens.page import Desk, Page
+from fieldbook.screens.plain import fit, pad
+from fieldbook.screens.rows import BLANK, Row, heading, labelled, paragraph, row
+from fieldbook.screens.words import length_95
+from fieldbook.settings.schema import words
+
+FORMATS = ("pdf", "html", "txt", "json")
+
+
+class CertificatePage(Page):
+    """One occupation at a time."""
+
+    name_of_page: ClassVar[str] = "certificate"
+    index = -1
+    _missing: tuple[tuple[str, int, int], tuple[str, ...]] | None = None
+
+    def opened(self) -> None:
+        """Reduce when the page comes into sight."""
+        self.desk.reduce()
+
+    def chosen(self) -> Reduction | None:
+        """The reduction the paper would state."""
+        reduced = self.desk.reduced
+        if reduced is None or not reduced.reductions:
+            return None
+        if not 0 <= self.index < len(reduced.reductions):
+            self.index = len(reduced.reductions) - 1
+        return reduced.reductions[self.index]
+
+    def side(self, step: int) -> None:
+        """The occupation before or after."""
+        reduced = self.desk.reduced
+        if reduced is not None and reduced.reductions:
+            self.index = (self.index + step) % len(reduced.reductions)
+            self.redraw()
+
+    def left(self, width: int, height: int) -> list[Row]:
+        """Which occupation, what is missing, what was issued."""
+        item = self.chosen()
+        rows = [heading("CERTIFICATE", width, "← → occupation")]
+        if item is None:
+            text = "reducing …" if self.desk.reduced is None or self.desk.reducing else "No occupation is reduced yet."
+            return [*rows, BLANK, row(f" {text}")]
+        state = "open" if item.open else f"ended by {item.ended_by}"
+        stated = item.uncertainty_client or item.uncertainty
+        rows += [
+            labelled("Mark", f"{item.mark}, occupation {item.occupation}, {state}", width, style="strong"),
+            labelled(
+                "States",
+                f"95 % {length_95(stated.horizontal95_m)} horizontal, {length_95(stated.vertical95_m)} height",
+                width,
+            ),
+            BLANK,
+        ]
+        rows += self._missing_rows(item, width)
+        rows += [BLANK, row((" Issued for this mark", "soft"))]
+        return rows + self._documents(item, width)
+
+    def _missing_rows(self, item: Reduction, width: int) -> list[Row]:
+        missing = self.missing(item)
+        if missing is None:
+            return [row((" looking what is missing …", "soft"))]
+        if not missing:
+            return [row(" ", ("✓", "good"), " Nothing is missing.  ", ("I", "strong"), " issues it, signed off.")]
+        count = "1 thing keeps" if len(missing) == 1 else f"{len(missing)} things keep"
+        rows = [row(" ", ("○", "warn"), f" {count} this paper a draft:")]
+        for text in missing:
+            rows += paragraph(text, width, indent=3, mark=("○", "warn"), most=3)
+        return rows
+
+    def missing(self, item: Reduction) -> tuple[str, ...] | None:
+        """What keeps it a draft, found once per state of the book; None while it is being found."""
+        key = (item.mark, item.occupation, self.view.state.head_seq if self.view else 0)
+        if self._missing is not None and self._missing[0] == key:
+            return self._missing[1]
+        if item.open:
+            return ("The occupation is open: end it first (4, then E).",)
+        bridge = self.desk.bridge
+
+        def found(texts: Any) -> None:
+            self._missing = (key, tuple(texts))
+            self.desk.redraw()
+
+        if self._missing is None or self._missing[0] != (*key[:2], -1):
+            self._missing = ((*key[:2], -1), ())
+            self.desk.work(lambda: bridge.missing(item), found)
+        return None
+
+    def _documents(self, item: Reduction, width: int) -> list[Row]:
+        documents = [
+            entry for entry in (self.view.state.documents if self.view else []) if entry.body.get("mark") == item.mark
+        ]
+        if not documents:
+            return [row(" none yet")]
+        superseded = {entry.body.get("supersedes") for entry in documents}
+        rows = []
+        for entry in reversed(documents):
+            number = entry.body.get("number")
+            what = f"certificate {number}" if number else "draft"
+            state = "superseded" if number and number in superseded else ""
+            rows.append(
+                row(
+                    f" {entry.utc[:16].replace('T', ' ')}  ",
+                    (pad(what, 24), "strong" if number else "text"),
+                    f" occupation {entry.body.get('occupation')}  ",
+                    (state, "warn"),
+                )
+            )
+            for made in self.view.state.rendered if self.view else []:
+                if made.body.get("digest") == entry.body.get("digest"):
+                    rows.append(row((fit(f"   {made.body.get('format')}  {made.body.get('name')}", width - 2), "soft")))
+        return rows
+
+
+def standing_number(desk: Desk, item: Reduction) -> str | None:
+    """The number of the standing certificate of this mark and occupation, if one was issued."""
+    if desk.view is None:
+        return None
+    numbers = [
+        str(entry.body["number"])
+        for entry in desk.view.state.documents
+        if entry.kind == "certificate"
+        and (entry.body.get("mark"), entry.body.get("occupation")) == (item.mark, item.occupation)
+        and entry.seq not in desk.view.state.strikes
+    ]
+    return numbers[-1] if numbers else None
+
+
+def paper(desk: Desk, item: Reduction | None, *, issue: bool) -> None:
+    """Ask where and by whom, then write a certificate or a draft."""
+    if item is None:
+        desk.tell("No occupation is reduced yet.", "bad")
+        return
+    if item.open:
+        desk.tell(f"Occupation {item.occupation} of {item.mark} is open: end it first (4, then E).", "bad")
+        return
+    standing = standing_number(desk, item)
+    name = (
+        "".join(letter if letter.isalnum() or letter in "-_." else "_" for letter in item.mark)[:60].strip(".")
+        or "mark"
+    )
+    stem = desk.bridge.path.absolute().parent / f"{name}-{item.occupation}{'' if issue else '-draft'}"
+    fields = [
+        Field("format", "Format", words(*FORMATS), "pdf", required=True),
+        Field("path", "File", "text", str(stem), required=True),
+    ]
+    if issue:
+        fields.append(Field("sign_off", "Signed off by", "text", required=True, hint="name; licence"))
+    if issue and standing:
+        fields.append(
+            Field("supersede", "Supersedes", "text", hint=f"why {standing} is replaced, if its facts changed")
+        )
+    title = f"{'CERTIFICATE' if issue else 'DRAFT'} of {item.mark}, occupation {item.occupation}"
+    note = "The ending is added by the format. An existing file is never overwritten."
+
+    def write(values: Values | None) -> None:
+        if values is None:
+            return
+        ending = f".{values['format']}"
+        out = values["path"] if values["path"].endswith(ending) else values["path"] + ending
+        bridge, mark, number = desk.bridge, item.mark, item.occupation
+        desk.tell("writing the paper …", "soft")
+        desk.work(
+            lambda: bridge.certify(mark, number, out, values.get("sign_off", ""), values.get("supersede", "")),
+            lambda made: _said(desk, made),
+        )
+
+    desk.ask(Form(title, fields, note=note), write)
+
+
+def _said(desk: Desk, made: Issued) -> None:
+    what = f"certificate {made.number}" if made.number else "draft"
+    desk.tell(f"{what} is in {made.path}")
+    desk.redraw()

@@ -1,0 +1,117 @@
+"""Forms that write entries: session file, observer, mark, remark."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from fieldbook.errors import FieldbookError
+from fieldbook.model.canonical import Tree
+from fieldbook.screens.forms import Field, Form, Values
+from fieldbook.screens.page import Desk, next_tree, open_occupation
+
+
+def load_session(desk: Desk) -> None:
+    """Ask for the path of a session file and make it the session of the next occupation."""
+    found: dict[str, Tree] = {}
+
+    def check(values: Values) -> dict[str, str]:
+        try:
+            found["tree"] = desk.bridge.session_file(values["path"])
+        except FieldbookError as problem:
+            return {"path": f"{problem.text} {problem.remedy}"}
+        return {}
+
+    def written(values: Values | None) -> None:
+        if values is None:
+            return
+        tree, bridge = found["tree"], desk.bridge
+        if not bridge.observer:
+            bridge.observer = str(tree["job"]["observer"])
+        desk.write(
+            lambda: bridge.save_session(tree),
+            lambda entry: desk.tell(f"session of {tree['mark']['name']} written (entry {entry.seq})"),
+        )
+
+    note = "A text file with [job], [requirement], [frame], [corrections], [mark], [antenna], [setup], [receiver]."
+    desk.ask(Form("SESSION FILE", [Field("path", "Path", required=True)], note=note, check=check), written)
+
+
+def observer(desk: Desk) -> None:
+    """Ask who signs from now on."""
+
+    def taken(values: Values | None) -> None:
+        if values:
+            desk.bridge.observer = values["name"]
+            desk.tell(f"Entries are signed {values['name']} from now on.")
+            desk.redraw()
+
+    desk.ask(
+        Form(
+            "WHO OBSERVES?",
+            [Field("name", "Name", value=desk.bridge.observer, required=True)],
+            note="Every entry is signed with this name.",
+        ),
+        taken,
+    )
+
+
+def new_mark(desk: Desk) -> None:
+    """Describe a mark; it becomes the mark of the next set-up."""
+    view = desk.view
+    if view is None:
+        return
+    fields = [
+        Field("name", "Name", required=True),
+        Field("description", "Description", hint="brass plate in rock, ..."),
+        Field("inscription", "Inscription", hint="read it from the metal"),
+        Field("access", "Access"),
+        Field("condition", "Condition", hint="as found"),
+    ]
+
+    def check(values: Values) -> dict[str, str]:
+        if values["name"] in view.state.marks:
+            return {"name": "there is a mark of this name: choose it in the list, or write another name"}
+        return {}
+
+    def written(values: Values | None) -> None:
+        if values is None or desk.view is None:
+            return
+        mark = {key: text for key, text in values.items() if text}
+        bridge, tree, opened = desk.bridge, next_tree(desk.view), open_occupation(desk.view)
+
+        def job() -> Any:
+            entry = bridge.add_mark(mark)
+            if tree is not None and opened is None:
+                bridge.save_session({**tree, "mark": mark})
+            return entry
+
+        said = f"mark {mark['name']} written" + ("" if tree is None or opened else "; it is the next set-up's")
+        desk.write(job, lambda entry: desk.tell(f"{said} (entry {entry.seq})"))
+
+    desk.ask(
+        Form("DESCRIBE A MARK", fields, note="What a stranger needs to find it and be sure of it.", check=check),
+        written,
+    )
+
+
+def remark(desk: Desk) -> None:
+    """A remark, at any moment."""
+    opened = open_occupation(desk.view)
+    number = opened.number if opened else None
+    where = f"occupation {number} of {opened.mark}" if opened else "the book"
+
+    def written(values: Values | None) -> None:
+        if values:
+            bridge, text = desk.bridge, values["text"]
+            desk.write(
+                lambda: bridge.add_remark(number, text), lambda entry: desk.tell(f"remark written (entry {entry.seq})")
+            )
+
+    desk.ask(
+        Form(
+            f"REMARK to {where}",
+            [Field("text", "Remark", required=True)],
+            note="It gets the time of writing and your name, and is never erased.",
+        ),
+        written,
+    )

@@ -1,0 +1,186 @@
+"""The left page of the occupation: what would be written in ink. Formats a `LiveView`; knows no widget.
+
+Figures stand at the digits their 95 % allows; a 95 % that does not yet rest on data says so in words.
+"""
+
+from __future__ import annotations
+
+from fieldbook.model.angles import latitude_text, longitude_text
+from fieldbook.model.entry import Entry
+from fieldbook.model.live import LiveView
+from fieldbook.model.reduction import LeaveLine, Reduction, Uncertainty
+from fieldbook.model.rounding import decimals_for
+from fieldbook.screens.plain import clean, fit, pad
+from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
+from fieldbook.screens.words import SEVERITY, duration, hour_minute, length_95, set_aside_word, stopwatch
+
+SETTLED_LENGTHS = 5.0  # under five correlation times the 95 % rests on the kind of fix (design, section 6)
+
+
+def occupation_rows(view: LiveView | None, width: int, height: int) -> list[Row]:
+    """The whole left page in at most `height` rows."""
+    if view is None:
+        return [heading("FIGURES", width), BLANK, row(" opening the book …")]
+    if view.occupation is None:
+        return [
+            heading("FIGURES", width),
+            BLANK,
+            row(" No occupation yet."),
+            BLANK,
+            *paragraph("Page 2 chooses the mark, page 3 the set-up; S there starts recording.", width, style="soft"),
+        ]
+    rate = _rate(view)
+    rows = [
+        heading("FIGURES", width, f"{'open' if view.occupation.open else 'ended'} {stopwatch(view.elapsed_s)}{rate}")
+    ]
+    if view.reduction is None:
+        rows += [BLANK, *_problem(view, width)]
+    else:
+        rows += [*position_rows(view.reduction, width), BLANK, *_evidence(view, view.reduction, width)]
+    room = height - len(rows) - 2
+    findings = _findings(view.reduction, width, max(2, room - 3))
+    rows += [BLANK, *findings]
+    rows += _remarks(view.occupation.remarks, width, height - len(rows))
+    return rows[:height]
+
+
+def _rate(view: LiveView) -> str:
+    if view.recorder is None or not view.elapsed_s or not view.recorder.epochs:
+        return ""
+    rate = view.recorder.epochs / max(view.elapsed_s, 1.0)
+    return f", {rate:.0f} Hz" if rate >= 0.95 else f", one in {1 / rate:.0f} s"
+
+
+def _problem(view: LiveView, width: int) -> list[Row]:
+    if view.problem is None:
+        return [row(" waiting for the first position …")]
+    _, text, remedy = view.problem
+    return [*paragraph(text, width, mark=("▲", "warn"), most=5), *paragraph(remedy, width, style="soft", most=4)]
+
+
+def _line(reduction: Reduction, name: str) -> LeaveLine | None:
+    lines = reduction.leave.lines if reduction.leave else []
+    return next((item for item in lines if item.line == name), None)
+
+
+def wanted_rows_uncertainty(reduction: Reduction) -> Uncertainty:
+    """The uncertainty that belongs to the coordinates shown: the client's where there are client's coordinates."""
+    if reduction.client is not None and reduction.uncertainty_client is not None:
+        return reduction.uncertainty_client
+    return reduction.uncertainty
+
+
+def position_rows(reduction: Reduction, width: int) -> list[Row]:
+    """Latitude, longitude, height of the mark with 95 % and what is wanted."""
+    place = reduction.client or reduction.receiver
+    stated = wanted_rows_uncertainty(reduction)
+    decimals = min(6, max(0, decimals_for(stated.horizontal95_m) + 1))  # 0.001″ is about 3 cm
+    height_decimals = decimals_for(stated.vertical95_m, most=4)
+    label = 12
+    h_text = "not known" if place.h_m is None else f"{place.h_m:.{height_decimals}f} m"
+    lat, lon = latitude_text(place.lat_deg, decimals), longitude_text(place.lon_deg, decimals)
+    wide = max(len(lat), len(lon)) + 1
+    rows = [
+        row(" " * (label + wide + 1), (pad("95 %", 9, right=True), "soft"), (pad("wanted", 9, right=True), "soft")),
+        row((pad(" Latitude", label), "soft"), (pad(lat, wide, right=True), "strong")),
+        row(
+            (pad(" Longitude", label), "soft"),
+            (pad(lon, wide, right=True), "strong"),
+            *_reach(reduction, "horizontal_95_m", stated.horizontal95_m),
+        ),
+        row(
+            (pad(" Ell. height", label), "soft"),
+            (pad(h_text, wide - 2, right=True), "strong"),
+            "  ",
+            *_reach(reduction, "vertical_95_m", stated.vertical95_m),
+        ),
+    ]
+    epoch = "" if place.epoch is None else f" at {place.epoch:.2f}"
+    rows.append(row((fit(f" of the mark, in {place.frame_name} ({place.frame}){epoch}", width - 1), "soft")))
+    return rows
+
+
+def _reach(reduction: Reduction, name: str, shown_m: float | None) -> list[tuple[str, str]]:
+    line = _line(reduction, name)
+    have = line.have if line and isinstance(line.have, int | float) else shown_m
+    spans = [(pad(length_95(have), 10, right=True), "strong")]
+    if line is None:
+        return spans
+    wanted = length_95(float(line.wanted)) if isinstance(line.wanted, int | float) else str(line.wanted)
+    return [
+        *spans,
+        (pad(wanted, 9, right=True), "text"),
+        ("  ✓ reached", "good") if line.met else ("  ○ open", "warn"),
+    ]
+
+
+def _evidence(view: LiveView, reduction: Reduction, width: int) -> list[Row]:
+    worth = view.effective_epochs
+    kept = f"{reduction.kept} kept of {reduction.heard}"
+    kept += f", worth about {worth:.0f}" if worth is not None else ""
+    rows = [labelled("Epochs", kept, width)]
+    if reduction.set_aside:
+        parts = sorted(reduction.set_aside.items(), key=lambda item: -item[1])
+        rows += labelled_lines("Set aside", " · ".join(f"{set_aside_word(code)} {n}" for code, n in parts), width)
+    rows += labelled_lines("Initialis.", initialisations_text(reduction), width)
+    rows += labelled_lines("Correlation", correlation_text(view, reduction), width)
+    rows += [labelled("95 % rests", rests_on(view, reduction), width)]
+    arp = reduction.antenna.height_arp_m
+    height = "ARP not read yet" if arp is None else f"ARP {arp:.4f} m"
+    rows += labelled_lines("Antenna", f"{height}; receiver reports {reduction.antenna.reported_point}", width)
+    return rows
+
+
+def initialisations_text(reduction: Reduction) -> str:
+    """`2 agree within 6 mm, 1 set aside`."""
+    used = [item for item in reduction.initialisations if item.used]
+    aside = len(reduction.initialisations) - len(used)
+    offsets = [item.offset_enu_m for item in used if item.offset_enu_m is not None]
+    apart = 0.0
+    for first in offsets:
+        for second in offsets:
+            apart = max(apart, ((first[0] - second[0]) ** 2 + (first[1] - second[1]) ** 2) ** 0.5)
+    text = f"{len(used)} used"
+    text += f", means {1000 * apart:.0f} mm apart" if len(offsets) > 1 else ""
+    return text + (f"; {aside} not used" if aside else "")
+
+
+def correlation_text(view: LiveView, reduction: Reduction) -> str:
+    """How long neighbouring epochs repeat one another, and how many such lengths the session has."""
+    tau = reduction.uncertainty.correlation_time_s
+    if tau is None:
+        return "not known yet"
+    lengths = view.correlation_lengths
+    return f"about {duration(tau)}" + (f"; the session is {lengths:.1f} of these" if lengths is not None else "")
+
+
+def rests_on(view: LiveView, reduction: Reduction) -> str:
+    """What the stated 95 % rests on: data, class, or both."""
+    if view.correlation_lengths is not None and view.correlation_lengths < SETTLED_LENGTHS:
+        return "on the kind of fix, not yet on data"
+    return {"class": "on the kind of fix", "class and data": "on the kind of fix and the data"}.get(
+        reduction.uncertainty.governed_by, "on the data"
+    )
+
+
+def _findings(reduction: Reduction | None, width: int, most: int) -> list[Row]:
+    items = [item for item in reduction.findings if item.severity != "info"] if reduction else []
+    if not items:
+        return [row((" FINDINGS    ", "strong"), "none open")]
+    order = sorted(items, key=lambda item: item.severity != "stop")
+    rows = [row((" FINDINGS    ", "strong"), f"{len(items)} open")]
+    for item in order:
+        rows += paragraph(item.text, width, mark=SEVERITY.get(item.severity, ("·", "soft")), most=2)
+    return rows if len(rows) <= most else [*rows[: most - 1], row((f" … more on page 6 ({len(items)} in all)", "soft"))]
+
+
+def _remarks(remarks: list[Entry], width: int, most: int) -> list[Row]:
+    if most < 1:
+        return []
+    if not remarks:
+        return [row((" REMARKS     ", "strong"), ("none", "soft"))]
+    rows = [row((" REMARKS", "strong"))]
+    for entry in remarks[-max(1, most - 1) :]:
+        text = clean(entry.body.get("text", ""))
+        rows.append(row((f" {hour_minute(entry.utc)} ", "soft"), fit(f"{text} · {entry.observer}", width - 8)))
+    return rows

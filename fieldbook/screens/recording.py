@@ -1,0 +1,116 @@
+"""Starting, resuming and ending the occupation; leaving the screen. The recorder itself is another process."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+from fieldbook.screens.ask import Question
+from fieldbook.screens.page import Desk, next_tree, open_occupation
+from fieldbook.screens.setup import current_readings, current_session
+from fieldbook.screens.words import stopwatch
+
+
+def start(desk: Desk) -> None:
+    """Begin the occupation and its recorder, or start the recorder of the open one again."""
+    view = desk.view
+    if view is None:
+        return
+    opened = open_occupation(view)
+    bridge = desk.bridge
+    if opened is not None:
+        if view.recorder_alive:
+            desk.tell(f"Occupation {opened.number} of {opened.mark} is being recorded already.")
+            desk.go("occupation")
+            return
+        number = opened.number
+        desk.tell("starting the recorder …", "soft")
+        desk.write(lambda: bridge.start_recorder(number), lambda _: _started(desk, number, resumed=True))
+        return
+    session, problem = current_session(view, bridge)
+    tree = next_tree(view)
+    if session is None or tree is None:
+        desk.tell(problem, "bad")
+        return
+    text = [
+        f"{session.mark.name}, antenna {session.antenna.model}, on {session.receiver.link}.",
+        f"The receiver reports the {session.setup.reported_point}.",
+    ]
+    if not current_readings(view):
+        text.append("No height of antenna was read yet. It may be read later, but before the tripod moves.")
+
+    def answered(word: str) -> None:
+        if word == "start":
+            desk.tell("starting the recorder …", "soft")
+            desk.write(lambda: bridge.begin(tree), lambda made: _started(desk, made[0], resumed=made[1]))
+
+    desk.ask(
+        Question("START RECORDING?", text, "go back, nothing is begun", [("y", "start", "yes, begin the occupation")]),
+        answered,
+    )
+
+
+def _started(desk: Desk, number: int, *, resumed: bool) -> None:
+    desk.tell(f"occupation {number} is {'recorded again' if resumed else 'begun'}; the recorder runs on its own")
+    desk.go("occupation")
+
+
+def end(desk: Desk, then: Callable[[], None] | None = None) -> None:
+    """End the occupation, after asking."""
+    view = desk.view
+    opened = open_occupation(view)
+    if view is None or opened is None:
+        desk.tell("No occupation is open.", "bad")
+        return
+    text = [
+        f"Occupation {opened.number} of {opened.mark}, {stopwatch(view.elapsed_s)} recorded. It cannot be opened again."
+    ]
+    leave = view.reduction.leave if view.reduction else None
+    missing = [item for item in leave.lines if item.scope == "set-up" and not item.met] if leave else []
+    if leave is None:
+        text.append("Nothing is reduced yet: the leave check says NOT YET.")
+    elif missing:
+        text.append(f"The leave check says {leave.verdict.upper()}: {len(missing)} lines of this set-up are open.")
+        text += [f"○ {item.text}" for item in missing if item.text][:4]
+    bridge, number = desk.bridge, opened.number
+
+    def ended(_: Any) -> None:
+        desk.tell(f"occupation {number} is ended")
+        if then:
+            then()
+
+    def answered(word: str) -> None:
+        if word == "end":
+            desk.tell("ending the occupation …", "soft")
+            desk.write(lambda: bridge.end(number), ended)
+
+    desk.ask(Question("END THE OCCUPATION?", text, "keep recording", [("y", "end", "yes, end it")]), answered)
+
+
+def leave_screen(desk: Desk, exit_now: Callable[[], None]) -> None:
+    """Ask what becomes of the recorder; staying is the safe answer."""
+    view = desk.view
+    opened = open_occupation(view)
+    if view is None or opened is None:
+        text = ["No occupation is open. Everything written is in the book."]
+        answers = [("l", "leave", "leave the screen")]
+    elif view.recorder_alive:
+        text = [f"Occupation {opened.number} of {opened.mark} is being recorded."]
+        answers = [
+            ("l", "leave", "leave the screen, the recorder runs on"),
+            ("e", "end", "end the occupation first (asks again)"),
+        ]
+    else:
+        text = [f"Occupation {opened.number} of {opened.mark} is open, and NO recorder runs."]
+        answers = [
+            ("l", "leave", "leave the screen, the occupation stays open"),
+            ("e", "end", "end the occupation first (asks again)"),
+        ]
+
+    def answered(word: str) -> None:
+        if word == "leave":
+            exit_now()
+        elif word == "end":
+            end(desk, exit_now)
+
+    desk.ask(Question("LEAVE THE SCREEN?", text, "stay", answers), answered)
