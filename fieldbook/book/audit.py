@@ -71,7 +71,8 @@ class Audit:
             yield
         except (sqlite3.Error, UnicodeDecodeError) as error:
             self.find(where, f"cannot be read: {connect.printable(error)}")
-        except (MemoryError, RecursionError, OverflowError) as error:
+        except (MemoryError, RecursionError, OverflowError, TypeError, ValueError) as error:
+            # A damaged page can put a value of any type into any column, STRICT or not.
             self.find(where, f"holds what no book holds ({type(error).__name__})")
 
     def of(self, kind: str) -> list[tuple[int, Tree]]:
@@ -149,10 +150,10 @@ def _check_schema(audit: Audit) -> None:
     if pragma("encoding") != "UTF-8":
         audit.find("schema", f"its texts are {pragma('encoding')}, not UTF-8")
     expected, actual = migrations.expected_schema(version), migrations.schema_of(audit.connection)
-    for key in sorted(expected.keys() | actual.keys()):
+    for key in sorted(expected.keys() | actual.keys(), key=repr):
         if expected.get(key) != actual.get(key):
             what = "is missing" if key not in actual else "is not of a book" if key not in expected else "differs"
-            audit.find("schema", f"{key[0]} {_shown(key[1])} {what}")
+            audit.find("schema", f"{_shown(key[0])} {_shown(key[1])} {what}")
 
 
 def _check_migrations(audit: Audit) -> None:
@@ -266,6 +267,15 @@ def _check_epochs(audit: Audit) -> None:
         audit.find("epoch", f"epochs of occupation {row[0]} name form {row[1]}, which is missing")
     for row in connection.execute(f"{forms} EXCEPT {used} LIMIT 5").fetchall():
         audit.find("epoch", f"form {row[1]} of occupation {row[0]} belongs to no epoch")
+    for occupation, form, *texts in connection.execute(
+        "SELECT occupation, form, source, talker, code, station, datum FROM epoch_form"
+    ):
+        if any(text is not None and not _is_text(text) for text in texts):
+            audit.find("epoch", f"form {form} of occupation {occupation} holds a damaged text")
+
+
+def _is_text(value: object) -> bool:
+    return isinstance(value, str) and not any("\ud800" <= letter <= "\udfff" for letter in value)
 
 
 def _check_wal(audit: Audit, connection: connect.BookConnection) -> None:

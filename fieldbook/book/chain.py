@@ -14,12 +14,15 @@ from fieldbook.errors import BookError, UsageError
 from fieldbook.model.canonical import Tree, canonical_json, normalised
 from fieldbook.model.entry import GENESIS, Entry, entry_hash
 
+from .connect import printable
 from .kinds import MAX_BODY_BYTES, STRIKABLE, checked_body
 
 
 def head(connection: sqlite3.Connection) -> tuple[int, str]:
     """(seq, hash) of the last entry; (0, 64 zeros) of an empty book."""
     row = connection.execute("SELECT seq, hash FROM entry ORDER BY seq DESC LIMIT 1").fetchone()
+    if row and not isinstance(row[1], str):
+        raise damaged_entry(row[0], "its hash is no text")
     return (row[0], row[1]) if row else (0, GENESIS)
 
 
@@ -88,6 +91,8 @@ def read_entries(connection: sqlite3.Connection, after_seq: int = 0) -> Iterator
         (after_seq,),
     )
     for seq, utc, kind, text, observer, previous, own in rows:
+        if not all(isinstance(value, str) for value in (utc, kind, text, observer, previous, own)):
+            raise damaged_entry(seq, "it holds a value that is no text")  # a damaged page can, STRICT or not
         yield Entry(seq, utc, kind, _parsed(seq, text), observer, previous, own)
 
 
@@ -103,4 +108,6 @@ def _parsed(seq: int, text: str) -> Tree:
 
 def damaged_entry(seq: int, why: str) -> BookError:
     """The error for an entry that cannot be read."""
-    return BookError(f"Entry {seq} is damaged: {why}.", "`fieldbook verify` says what is wrong.", code="damaged")
+    return BookError(
+        f"Entry {seq} is damaged: {printable(why)}.", "`fieldbook verify` says what is wrong.", code="damaged"
+    )

@@ -329,5 +329,6 @@ def book_errors(path: Path) -> Iterator[None]:
         yield
     except sqlite3.Error as error:
         raise book_error(path, error) from error
-    except UnicodeDecodeError as error:  # a damaged name inside an error message of SQLite's
-        raise book_error(path, sqlite3.DatabaseError("damaged text")) from error
+    except (UnicodeDecodeError, MemoryError) as error:
+        # A damaged name inside an error message of SQLite's, or a damaged length it asks memory for.
+        raise book_error(path, sqlite3.DatabaseError(type(error).__name__)) from error

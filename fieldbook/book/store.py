@@ -97,6 +97,20 @@ class Book:
             raise
         return book
 
+    @staticmethod
+    def recognises(path: Path) -> bool:
+        """Whether a file is a book, sound or damaged: asked of SQLite, because nobody else may open it."""
+        try:
+            connection = connect.open_reader(path)
+        except BookError as error:
+            return error.code not in ("missing", "not_a_book")
+        try:
+            return bool(connection.execute("PRAGMA application_id").fetchone()[0] == migrations.APPLICATION_ID)
+        except sqlite3.Error:
+            return True
+        finally:
+            connection.close()
+
     def _upgrade(self) -> None:
         if not self.writable:
             raise BookError(
@@ -362,9 +376,9 @@ class Book:
         with connect.book_errors(self.path):
             try:
                 yield
-            except (ValueError, OverflowError) as error:
+            except (ValueError, OverflowError, TypeError) as error:  # a damaged page can hold values of any type
                 raise BookError(
-                    f"Occupation {occupation} of {self.path} is damaged: {error}.",
+                    f"Occupation {occupation} of {self.path} is damaged: {connect.printable(error)}.",
                     "`fieldbook verify` says what still holds.",
                     code="damaged",
                 ) from error

@@ -314,6 +314,7 @@ def test_what_is_no_book_is_said_so(tmp_path: Path, name: str, make, code: str, 
     assert (caught.value.code, caught.value.exit_code) == (code, 4)
     assert caught.value.remedy
     assert audit_book(path)
+    assert Book.recognises(path) is (code == "schema")
     assert (path.read_bytes() if path.is_file() else None) == before
     assert connect.connections_here(path) == 0
 
@@ -324,6 +325,14 @@ def _sqlite(path: Path, *statements: str) -> None:
         connection.execute(statement)
     connection.commit()
     connection.close()
+
+
+def test_a_damaged_book_is_still_recognised_as_one(tmp_path: Path) -> None:
+    path = small.ended(tmp_path / "a.book")
+    assert Book.recognises(path)
+    path.write_bytes(path.read_bytes()[:5000])
+    assert Book.recognises(path)
+    assert audit_book(path)
 
 
 @pytest.mark.parametrize("write", [False, True])
