@@ -307,10 +307,11 @@ class Book:
 
     def replace_epochs(self, occupation: int, rows: Iterable[Epoch]) -> None:
         """Put newly decoded epochs in the place of an occupation's epochs, as one commit."""
+        decoded = list(rows)  # may read `items`, so before the transaction
         with self.transaction():
             epochs.delete_epochs(self._connection, occupation)
             self._forms[occupation] = {}
-            self._write_epochs(occupation, list(rows))
+            self._write_epochs(occupation, decoded)
 
     def seal(self, occupation: int) -> list[Entry]:
         """Move the tail of an occupation into chunks of at most about 512 KiB, each with its `raw` entry.
@@ -365,7 +366,7 @@ class Book:
         """Give free pages back. VACUUM if it can have the book at once, else the free pages only, else later."""
         for statement in ("VACUUM", "PRAGMA incremental_vacuum"):
             try:
-                self._connection.execute(statement).fetchall()
+                self._connection.executescript(statement)  # runs it to its end; execute() frees one page
                 break
             except sqlite3.OperationalError:
                 continue  # busy or no room for a second copy: the book is whole, only larger than need be
