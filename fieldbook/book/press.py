@@ -18,8 +18,6 @@ if TYPE_CHECKING:
 LARGE_BYTES = 256 * 1024
 MOST_WAITING = 8  # chunks held in memory
 
-Key = tuple[int, int]  # occupation, chunk
-
 
 def press(plain: bytes) -> bytes:
     """One bz2 stream.
@@ -38,10 +36,10 @@ class Presser:
 
     def __init__(self) -> None:
         self._pool: ThreadPoolExecutor | None = None
-        self._streams: dict[Key, Future[bytes]] = {}
+        self._streams: dict[str, Future[bytes]] = {}
 
-    def offer(self, key: Key, plain: bytes) -> None:
-        """Begin with a chunk, unless it is small or too many are waiting."""
+    def offer(self, sha256: str, plain: bytes) -> None:
+        """Begin with a chunk, named by its SHA-256, unless it is small or too many are waiting."""
         waiting = sum(not stream.done() for stream in self._streams.values())
         if len(plain) < LARGE_BYTES or waiting >= MOST_WAITING:
             return
@@ -49,11 +47,11 @@ class Presser:
             from concurrent.futures import ThreadPoolExecutor
 
             self._pool = ThreadPoolExecutor(max_workers=2, thread_name_prefix="press")
-        self._streams[key] = self._pool.submit(press, plain)
+        self._streams[sha256] = self._pool.submit(press, plain)
 
-    def take(self, key: Key) -> bytes | None:
+    def take(self, sha256: str) -> bytes | None:
         """The stream of a chunk, waiting for it if it is being made; None if it was never begun."""
-        stream = self._streams.pop(key, None)
+        stream = self._streams.pop(sha256, None)
         return None if stream is None else stream.result()
 
     def close(self) -> None:

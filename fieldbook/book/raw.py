@@ -1,11 +1,12 @@
 """What was received, in order: tail, chunks, packs.
 
 A burst becomes plain rows of `raw_tail` at once. Sealing moves the tail into one zlib `raw_chunk`, whose SHA-256 over
-the canonical items enters the chain as a `raw` entry in the same transaction. At the end of an occupation packing
-moves chunks into `raw_pack`, several bz2 streams of whole chunks behind one another; the hashes of the chunks stay
-those of the chain. (bz2, not xz: on receiver logs measured 0.55 x gzip -9 at 18 MB/s against 0.65 at 5 MB/s, or 0.81
-at xz's fastest; packing belongs to recording a file, which must keep pace with reading it.) Item ids run through
-the whole book without a gap inside a chunk, so that the place of an item in a chunk gives its id.
+the canonical items enters the chain as a `raw` entry in the same transaction; a large piece of a file becomes chunks
+without passing through the tail. At the end of an occupation packing moves chunks into `raw_pack`, several bz2 streams
+of whole chunks behind one another; the hashes of the chunks stay those of the chain. (bz2, not xz: measured on two
+receiver logs 0.44 and 0.55 x gzip -9 at 17 MB/s, against xz's 0.63 and 0.65 at 4 MB/s, or 0.81 at its fastest; packing
+belongs to recording a file, which must keep pace with reading it.) Item ids run through the whole book without a gap
+inside a chunk, so that the place of an item in a chunk gives its id.
 
 The functions take a connection; `store.Book` holds the transactions and the entries. Reading raises ValueError on
 anything that does not fit, which `Book` words as a BookError and `audit` as a finding.
@@ -153,19 +154,46 @@ def item_of(row: Row) -> Item:
     return Item(ItemKind(row[1]), row[4], row[2], row[3])
 
 
-def chunk_of(occupation: int, chunk: int, rows: Sequence[Row]) -> tuple[Sealed, bytes, bytes]:
-    """A new chunk of tail rows: its description, its canonical bytes and its zlib data.
+@dataclass(frozen=True)
+class Chunk:
+    """A new chunk: its description, its canonical bytes and its zlib data."""
+
+    sealed: Sealed
+    plain: bytes
+    data: bytes
+
+
+def chunk_of(occupation: int, chunk: int, first_id: int, items: Sequence[Item]) -> Chunk:
+    """A new chunk of items, whose ids run on from `first_id`."""
+    plain = canonical_items(items)
+    data = zlib.compress(plain, 1 if len(plain) >= LARGE_BYTES else 6)  # the large ones of a file are packed soon
+    last_id = first_id + len(items) - 1
+    hashes = sha256_of(plain), sha256_of(data)
+    return Chunk(Sealed(occupation, chunk, first_id, last_id, len(items), len(plain), *hashes), plain, data)
+
+
+def chunks_of(occupation: int, chunk: int, first_id: int, items: Sequence[Item]) -> list[Chunk]:
+    """New chunks of about CHUNK_BYTES from many items."""
+    chunks: list[Chunk] = []
+    begin = size = 0
+    for end, item in enumerate(items, 1):
+        size += len(item.data)
+        if size >= CHUNK_BYTES or end == len(items):
+            chunks.append(chunk_of(occupation, chunk + len(chunks), first_id + begin, items[begin:end]))
+            begin, size = end, 0
+    return chunks
+
+
+def items_of(rows: Sequence[Row]) -> list[Item]:
+    """The items of tail rows.
 
     Raises:
-        ValueError: the ids have a gap.
+        ValueError: their ids have a gap, or a row is no item.
     """
     first, last = rows[0][0], rows[-1][0]
     if last - first + 1 != len(rows):
-        raise ValueError(f"received items {first} to {last} of occupation {occupation} have a gap")
-    plain = canonical_items(item_of(row) for row in rows)
-    data = zlib.compress(plain, 1 if len(plain) >= LARGE_BYTES else 6)  # the large ones of a file are packed soon
-    sealed = Sealed(occupation, chunk, first, last, len(rows), len(plain), sha256_of(plain), sha256_of(data))
-    return sealed, plain, data
+        raise ValueError(f"received items {first} to {last} have a gap")
+    return [item_of(row) for row in rows]
 
 
 def sha256_of(data: bytes) -> str:
@@ -173,17 +201,21 @@ def sha256_of(data: bytes) -> str:
     return hashlib.sha256(data).hexdigest()
 
 
-def insert_chunk(connection: sqlite3.Connection, sealed: Sealed, data: bytes) -> None:
-    """Write the chunk and take its rows from the tail. The caller holds the transaction.
+def insert_chunk(connection: sqlite3.Connection, chunk: Chunk) -> None:
+    """Write a chunk. The caller holds the transaction."""
+    connection.execute(
+        "INSERT INTO raw_chunk (occupation, chunk, first_id, last_id, items, bytes, sha256, data)"
+        " VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
+        (*chunk.sealed.columns(), chunk.data),
+    )
+
+
+def clear_tail(connection: sqlite3.Connection, sealed: Sealed) -> None:
+    """Take a chunk's rows from the tail. The caller holds the transaction.
 
     Raises:
         ValueError: the tail does not hold exactly these rows any more.
     """
-    connection.execute(
-        "INSERT INTO raw_chunk (occupation, chunk, first_id, last_id, items, bytes, sha256, data)"
-        " VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
-        (*sealed.columns(), data),
-    )
     gone = connection.execute(
         "DELETE FROM raw_tail WHERE occupation = ? AND id BETWEEN ? AND ?",
         (sealed.occupation, sealed.first_id, sealed.last_id),

@@ -28,7 +28,7 @@ from fieldbook.model.state import BookState
 from . import chain, connect, epochs, migrations, raw
 from .begin import new_book
 from .known import Known
-from .press import Presser
+from .press import LARGE_BYTES, Presser
 
 
 class Book:
@@ -270,15 +270,20 @@ class Book:
             UsageError: the occupation has not begun.
             BookError: busy, read-only, disk full, ...; then nothing was written and the burst may be tried again.
         """
-        if self._tail_bytes >= raw.CHUNK_BYTES:  # before, not after: a burst that failed may be tried again
-            self.seal(occupation)
+        size = sum(len(item.data) for item in items)
+        large = size >= LARGE_BYTES
+        if large or self._tail_bytes >= raw.CHUNK_BYTES:
+            self.seal(occupation)  # before, not after: a burst that failed may be tried again
+        chunks = self._chunks(occupation, items) if large else []
         with self.transaction():
             self._look_around()
             if items:
-                if self._next_id is None:
-                    self._known.observer_of(occupation)  # it has begun
-                    self._next_id = self._first_free_id()
-                self._next_id = raw.insert_tail(self._connection, occupation, self._next_id, items)
+                first = self._free_id(occupation)
+                if not chunks:
+                    raw.insert_tail(self._connection, occupation, first, items)
+                for chunk in chunks:
+                    self._insert_chunk(chunk)
+                self._next_id = first + len(items)
             if epochs:
                 self._write_epochs(occupation, epochs)
             if state is not None:
@@ -287,10 +292,29 @@ class Book:
                     " ON CONFLICT (id) DO UPDATE SET state = excluded.state",
                     (state.to_json(),),
                 )
-        self._tail_bytes += sum(len(item.data) for item in items)
+        self._tail_bytes += 0 if large else size
 
-    def _first_free_id(self) -> int:
-        return max(self._known.last_sealed_id(), raw.last_tail_id(self._connection)) + 1
+    def _free_id(self, occupation: int) -> int:
+        """The next item id. Only the holder of the recorder's lock writes items, so it does not change meanwhile."""
+        if self._next_id is None:
+            self._known.observer_of(occupation)  # it has begun
+            self._next_id = max(self._known.last_sealed_id(), raw.last_tail_id(self._connection)) + 1
+        return self._next_id
+
+    def _chunks(self, occupation: int, items: Sequence[Item]) -> list[raw.Chunk]:
+        """A large piece of a file goes into chunks at once: it would only pass through the tail."""
+        with connect.occupation_errors(self.path, occupation):
+            number = max((sealed.chunk for sealed in self._known.sealed(occupation)), default=0) + 1
+            chunks = raw.chunks_of(occupation, number, self._free_id(occupation), items)
+        for chunk in chunks:
+            self._presser.offer(chunk.sealed.sha256, chunk.plain)
+        return chunks
+
+    def _insert_chunk(self, chunk: raw.Chunk) -> Entry:
+        """A chunk with its `raw` entry, signed by whoever began the occupation."""
+        raw.insert_chunk(self._connection, chunk)
+        observer = self._known.observer_of(chunk.sealed.occupation)
+        return chain.insert_entry(self._connection, "raw", chunk.sealed.body(), observer, self._now())
 
     def _write_epochs(self, occupation: int, rows: Sequence[Epoch]) -> None:
         forms = self._forms.get(occupation)
@@ -323,15 +347,14 @@ class Book:
             BookError: the tail has a gap or was changed meanwhile, or any of `transaction`.
         """
         written: list[Entry] = []
-        with self._worded(occupation):
+        with connect.occupation_errors(self.path, occupation):
             while rows := raw.tail_rows(self._connection, occupation, 0):
                 number = max((sealed.chunk for sealed in self._known.sealed(occupation)), default=0) + 1
-                sealed, plain, data = raw.chunk_of(occupation, number, rows)
-                self._presser.offer((occupation, number), plain)
-                observer = self._known.observer_of(occupation)
+                chunk = raw.chunk_of(occupation, number, rows[0][0], raw.items_of(rows))
+                self._presser.offer(chunk.sealed.sha256, chunk.plain)
                 with self.transaction():
-                    raw.insert_chunk(self._connection, sealed, data)
-                    written.append(chain.insert_entry(self._connection, "raw", sealed.body(), observer, self._now()))
+                    written.append(self._insert_chunk(chunk))
+                    raw.clear_tail(self._connection, chunk.sealed)
         self._tail_bytes = 0
         return written
 
@@ -346,13 +369,11 @@ class Book:
         """
         self.seal(occupation)
         packed = 0
-        with self._worded(occupation):
+        with connect.occupation_errors(self.path, occupation):
             left = raw.unpacked(self._connection, occupation)
             due = [sealed for sealed in self._known.sealed(occupation) if sealed.chunk in left]
             for group in raw.pack_groups(due):
-                data = raw.compress_pack(
-                    self._connection, group, lambda sealed: self._presser.take((sealed.occupation, sealed.chunk))
-                )
+                data = raw.compress_pack(self._connection, group, lambda sealed: self._presser.take(sealed.sha256))
                 observer = self._known.observer_of(occupation)
                 with self.transaction():
                     body = raw.insert_pack(self._connection, group, data).body()
@@ -371,19 +392,6 @@ class Book:
             except sqlite3.OperationalError:
                 continue  # busy or no room for a second copy: the book is whole, only larger than need be
 
-    @contextmanager
-    def _worded(self, occupation: int) -> Iterator[None]:
-        """Word ValueErrors of the raw and epoch tables as BookErrors."""
-        with connect.book_errors(self.path):
-            try:
-                yield
-            except (ValueError, OverflowError, TypeError) as error:  # a damaged page can hold values of any type
-                raise BookError(
-                    f"Occupation {occupation} of {self.path} is damaged: {connect.printable(error)}.",
-                    "`fieldbook verify` says what still holds.",
-                    code="damaged",
-                ) from error
-
     # -- reading what was recorded -------------------------------------------------------------------------
 
     def items(self, occupation: int, after_id: int = 0) -> Iterator[Item]:
@@ -394,7 +402,7 @@ class Book:
         Raises:
             BookError: a chunk is missing or damaged.
         """
-        with self._worded(occupation):
+        with connect.occupation_errors(self.path, occupation):
             yield from raw.iterate(self._connection, occupation, lambda: self._known.sealed(occupation), after_id)
 
     def received(self, occupation: int) -> Iterator[bytes]:
@@ -419,7 +427,7 @@ class Book:
         Raises:
             BookError: damaged.
         """
-        with self._worded(occupation), self._reading():
+        with connect.occupation_errors(self.path, occupation), self._reading():
             return epochs.read_epochs(self._connection, occupation, self._known.origin_of(occupation), after)
 
     def recorder_state(self) -> RecorderState | None:

@@ -140,11 +140,11 @@ def test_a_crash_between_end_and_pack_leaves_a_sound_book(tmp_path: Path) -> Non
 def test_the_presser_takes_large_chunks_and_bounds_its_memory() -> None:
     presser = Presser()
     try:
-        presser.offer((1, 1), b"small")
-        assert presser.take((1, 1)) is None
+        presser.offer("small", b"small")
+        assert presser.take("small") is None
         for number in range(40):
-            presser.offer((1, number), bytes(LARGE_BYTES))
-        streams = [presser.take((1, number)) for number in range(40)]
+            presser.offer(str(number), bytes(LARGE_BYTES))
+        streams = [presser.take(str(number)) for number in range(40)]
         assert streams[0] is not None
         assert raw.inflate_pack(raw.CODEC, streams[0], LARGE_BYTES) == bytes(LARGE_BYTES)
     finally:
