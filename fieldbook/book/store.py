@@ -144,12 +144,9 @@ class Book:
     def close_clean(self) -> bool:
         """Close; True if what is left is one plain file without a -wal (a reader leaves that as it is)."""
         try:
-            if self.writable and not self._connection.in_transaction:
-                with connect.book_errors(self.path):
-                    return connect.end_wal(self._connection)
-            return False
-        except sqlite3.ProgrammingError:
-            return False  # closed already
+            return self.writable and not self._connection.in_transaction and connect.end_wal(self._connection)
+        except sqlite3.Error:
+            return False  # closed already, or damaged: what was committed stays in the -wal
         finally:
             self._presser.close()
             self._connection.close()

@@ -163,3 +163,32 @@ def test_a_pack_of_several_streams_reads_back(size: int) -> None:
         raw.inflate_pack("zip", data, 2 * len(plain))
     with pytest.raises(ValueError, match="more than any writer"):
         raw.inflate_pack(raw.CODEC, data, 2**40)
+
+
+def test_a_large_piece_goes_into_chunks_at_once_also_at_a_second_try(tmp_path: Path) -> None:
+    path = tmp_path / "a.book"
+    large = [Item(ItemKind.BYTES, random.Random(number).randbytes(64 * 1024)) for number in range(20)]
+    with small.begun(path) as book:
+        small.record(book, 1, 1, 3)
+        pages = book._connection.execute("PRAGMA page_count").fetchone()[0]
+        book._connection.execute(f"PRAGMA max_page_count = {pages + 300}").fetchone()
+        with pytest.raises(BookError, match="full"):
+            book.write_burst(1, large, [small.epoch(4)])
+        book._connection.execute("PRAGMA max_page_count = 1000000").fetchone()
+        book.write_burst(1, large[:12], [small.epoch(4)])  # another piece than the one that failed
+        assert raw.last_tail_id(book._connection) == 0
+        small.record(book, 1, 5, 6)
+        wanted = [*[small.item(number) for number in (1, 2, 3)], *large[:12], small.item(5), small.item(6)]
+        assert list(book.items(1)) == wanted
+        book.pack(1)
+        assert list(book.items(1)) == wanted
+        assert [epoch.number for epoch in book.epochs(1)] == [1, 2, 3, 4, 5, 6]
+    assert audit_book(path) == []
+
+
+def test_a_book_closed_twice_or_while_damaged_does_not_raise(tmp_path: Path) -> None:
+    path = small.ended(tmp_path / "a.book")
+    book = Book.open(path, clock=small.clock(), write=True)
+    path.write_bytes(path.read_bytes()[:6000])  # a dying stick
+    book.close()
+    book.close()
