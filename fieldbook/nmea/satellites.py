@@ -1,0 +1,132 @@
+"""The satellites of the latest cycle, for the sky view. Nothing of it enters a coordinate.
+
+Strategy. GSV and GSA are most of a receiver's output and the view is asked for once a second, so sentences are
+kept as received and read when asked. Message n of n makes a set complete, also when the numbering runs over
+several talkers or signals; a lost part leaves the set out. A set that was not repeated while another one came
+three times is gone.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from fieldbook.model.epoch import Satellite
+from fieldbook.nmea import fields
+from fieldbook.nmea.sentences import Counts
+from fieldbook.nmea.tables import SYSTEM_OF_ID, SYSTEM_OF_TALKER, satellite_identity
+
+_MOST_MESSAGES = 32
+_MOST_SETS = 64
+_MOST_GSA = 32
+_GONE_AFTER = 3
+
+Key = tuple[bytes, bytes]
+
+
+class Sky:
+    """Collects GSV and GSA sentences; `satellites` reads them."""
+
+    def __init__(self, counts: Counts) -> None:
+        self._counts = counts
+        self._cycle: list[bytes] = []
+        self._total = 0
+        self._sets: dict[Key, tuple[bytes, ...]] = {}
+        self._seen: dict[Key, int] = {}  # how often each other set completed since this one did
+        self._gsa: list[bytes] = []
+        self._gsa_epoch = -1
+
+    def gsv(self, text: bytes) -> None:
+        """One GSV message."""
+        parts = text.split(b",", 3)
+        if len(parts) < 4 or not (parts[1].isdigit() and parts[2].isdigit() and len(parts[1] + parts[2]) <= 4):
+            self._counts["bad_gsv"] += 1
+            return
+        total, number = int(parts[1]), int(parts[2])
+        if number == 1:
+            if self._cycle:
+                self._counts["gsv_incomplete"] += 1
+            self._cycle = [text]
+            self._total = total
+        elif self._cycle and number == len(self._cycle) + 1 and total == self._total:
+            self._cycle.append(text)
+        else:
+            self._counts["gsv_incomplete"] += 1
+            self._cycle = []
+            return
+        if number >= total:
+            self._complete()
+        elif len(self._cycle) >= _MOST_MESSAGES:
+            self._cycle = []
+
+    def _complete(self) -> None:
+        cycle, self._cycle = self._cycle, []
+        last = cycle[-1]
+        key = (cycle[0][:6], last.rpartition(b",")[2] if (last.count(b",") - 3) % 4 == 1 else b"")
+        self._sets[key] = tuple(cycle)
+        seen = self._seen
+        seen[key] = 0
+        times = len(seen)
+        for other in list(seen):
+            if other != key:
+                seen[other] += 1
+                # each other set completes once a cycle
+                if seen[other] > _GONE_AFTER * times or len(seen) > _MOST_SETS:
+                    del seen[other], self._sets[other]
+
+    def gsa(self, text: bytes, epoch: int) -> None:
+        """One GSA of the epoch with this running number; a new epoch begins a new set."""
+        if epoch != self._gsa_epoch:
+            self._gsa_epoch = epoch
+            self._gsa = []
+        if len(self._gsa) < _MOST_GSA:
+            self._gsa.append(text)
+
+    def satellites(self) -> list[Satellite]:
+        """Every satellite in view once, with its strongest signal, ordered by system and number."""
+        used = set(self._used())
+        best: dict[tuple[str, int], Satellite] = {}
+        for texts in self._sets.values():
+            for text in texts:
+                for found in _read_gsv(text, used):
+                    identity = (found.system, found.number)
+                    old = best.get(identity)
+                    if old is None or (found.cn0_dbhz or -1.0) > (old.cn0_dbhz or -1.0):
+                        best[identity] = found
+        return [best[identity] for identity in sorted(best)]
+
+    def _used(self) -> Iterator[tuple[str, int]]:
+        for text in self._gsa:
+            parts = str(text, "ascii").split(",")
+            slots = len(parts) - 6
+            with_id = slots not in (12, 20, 24)
+            system = SYSTEM_OF_TALKER.get(parts[0][1:3])
+            if system is None and with_id:
+                system = SYSTEM_OF_ID.get(parts[-1])
+            for part in parts[3 : len(parts) - (4 if with_id else 3)]:
+                number = fields.read_count(part, 3)
+                if number:
+                    yield satellite_identity(system, number)
+
+
+def _read_gsv(text: bytes, used: set[tuple[str, int]]) -> Iterator[Satellite]:
+    parts = str(text, "ascii").split(",")
+    system = SYSTEM_OF_TALKER.get(parts[0][1:3])
+    for start in range(4, len(parts) - 3, 4):
+        number = fields.read_count(parts[start], 3)
+        if not number:
+            continue
+        identity = satellite_identity(system, number)
+        strength = fields.read_decimal(parts[start + 3], 1)
+        yield Satellite(
+            system=identity[0],
+            number=identity[1],
+            elevation_deg=_degrees(parts[start + 1], 90),
+            azimuth_deg=_degrees(parts[start + 2], 360),
+            cn0_dbhz=strength[0] / 10 if strength and strength[0] > 0 else None,
+            used=identity in used,
+        )
+
+
+def _degrees(text: str, most: int) -> int | None:
+    found = fields.read_decimal(text, 0)
+    return found[0] if found and -90 <= found[0] <= most else None
