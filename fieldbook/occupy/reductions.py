@@ -1,0 +1,136 @@
+"""Reductions of a book: every occupation (or those of one mark) from its epoch rows to findings and leave check.
+
+In: an open book. Out: `Reduced` results and failures, never an exception for a single occupation that cannot be
+reduced. The leave check needs the mark's other occupations, so reductions are made first and judged second.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+from fieldbook.book import Book
+from fieldbook.check.leave import Figures, OtherOccupation, leave_check
+from fieldbook.errors import FieldbookError, ReductionError, UsageError
+from fieldbook.model.reduction import Finding
+from fieldbook.model.state import BookState, Occupation
+from fieldbook.reduce.occupation import Reduced, reduce_occupation
+
+
+@dataclass(frozen=True)
+class Failure:
+    """An occupation that could not be reduced, and what to do about it."""
+
+    mark: str
+    occupation: int
+    error: FieldbookError
+
+
+def search_dirs(book: Book) -> list[Path]:
+    """Where grids of a book are looked for before the package's own: beside the book."""
+    return [book.path.resolve().parent]
+
+
+def reduce_book(book: Book, mark: str | None = None) -> tuple[list[Reduced], list[Failure]]:
+    """Reduce all occupations, or those of one mark, each with findings and leave check.
+
+    Raises:
+        UsageError: no such mark in the book.
+    """
+    state = book.state()
+    if mark is not None and not state.of_mark(mark):
+        known = ", ".join(sorted({item.mark for item in state.occupations.values()})) or "none"
+        raise UsageError(f'There is no occupation of a mark "{mark}" in {book.path}.', f"Occupied marks: {known}.")
+    chosen = state.of_mark(mark) if mark is not None else list(state.occupations.values())
+    reduced: list[Reduced] = []
+    failed: list[Failure] = []
+    for occupation in chosen:
+        try:
+            reduced.append(reduce_one(book, occupation))
+        except (ReductionError, UsageError) as error:
+            failed.append(Failure(occupation.mark, occupation.number, error))
+    for item in reduced:
+        judge(item, state.occupations[item.reduction.occupation], others_of(item, reduced))
+    return reduced, failed
+
+
+def reduce_one(book: Book, occupation: Occupation) -> Reduced:
+    """One occupation, without leave check.
+
+    Raises:
+        ReductionError: it cannot be reduced.
+        UsageError: its frames are refused by kind.
+    """
+    return reduce_occupation(occupation, book.epochs(occupation.number), search_dirs(book))
+
+
+def reductions_of_mark(book: Book, number: int) -> tuple[Reduced, list[Reduced]]:
+    """The reduction of one occupation, and those of the mark's others (what cannot be reduced is left out).
+
+    Raises:
+        ReductionError: that occupation cannot be reduced.
+        UsageError: no such occupation, or its frames are refused by kind.
+    """
+    state = book.state()
+    if number not in state.occupations:
+        raise UsageError(f"There is no occupation {number} in {book.path}.", "`fieldbook reduce` lists them.")
+    reduced, failed = reduce_book(book, state.occupations[number].mark)
+    for failure in failed:
+        if failure.occupation == number:
+            raise failure.error
+    own = next(item for item in reduced if item.reduction.occupation == number)
+    return own, [item for item in reduced if item is not own]
+
+
+def others_of(item: Reduced, all_reduced: list[Reduced]) -> list[OtherOccupation]:
+    """The mark's other occupations that have kept epochs."""
+    return [
+        OtherOccupation(other.reduction.occupation, other.reduction.started, other.reduction.ended)
+        for other in all_reduced
+        if other.reduction.mark == item.reduction.mark
+        and other is not item
+        and other.reduction.started is not None
+        and other.reduction.ended is not None
+    ]
+
+
+def judge(item: Reduced, occupation: Occupation, others: list[OtherOccupation]) -> None:
+    """Add what the book says beside the epochs, and the leave check."""
+    reduction = item.reduction
+    known = {(finding.code, finding.text) for finding in reduction.findings}
+    for finding in book_findings(occupation):
+        if (finding.code, finding.text) not in known:
+            reduction.findings.append(finding)
+    figures = Figures(item.horizontal, item.vertical, item.horizontal_forbidden_by, item.vertical_forbidden_by)
+    reduction.leave = leave_check(occupation.session.requirement, reduction, figures, others)
+
+
+def book_findings(occupation: Occupation) -> list[Finding]:
+    """Findings that stand in the book itself: those of the recorder, a simulated receiver, struck evidence, gaps."""
+    findings = [
+        Finding(
+            str(entry.body["code"]),
+            str(entry.body["severity"]),
+            str(entry.body["text"]),
+            dict(entry.body.get("figures") or {}),
+        )
+        for entry in occupation.findings
+    ]
+    if occupation.simulated:
+        text = "Recorded from a simulated receiver: good for practice; certificates stay drafts."
+        findings.append(Finding("simulated", "stop", text))
+    if occupation.struck:
+        seqs = [entry.seq for entry in occupation.struck]
+        text = f"Evidence was struck out (entries {', '.join(map(str, seqs))}); what rested on it was reduced anew."
+        findings.append(Finding("evidence_struck", "info", text, {"entries": seqs}))
+    gaps = [entry for entry in occupation.gaps if entry.kind == "gap"]
+    if gaps:
+        longest_s = max(float(entry.body.get("seconds") or 0) for entry in gaps)
+        text = f"The link was interrupted {len(gaps)} times, at most {longest_s:.0f} s; see the diary."
+        findings.append(Finding("gaps", "info", text, {"count": len(gaps), "longest_s": longest_s}))
+    return findings
+
+
+def known_marks(state: BookState) -> list[str]:
+    """Names of all marks of a book, described or occupied, in order of appearance."""
+    return list(dict.fromkeys([*state.marks, *(item.mark for item in state.occupations.values())]))
