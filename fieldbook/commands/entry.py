@@ -72,6 +72,7 @@ def _remark(state: BookState, number: int | None, settings: tuple[str, ...]) -> 
     keys = _only(settings, ("text",), "remark")
     if not keys.get("text", "").strip():
         raise UsageError("A remark needs a text.", 'Add --set text="...".')
+    chosen: int | None
     if number is not None:
         chosen = chosen_occupation(state, number).number
     else:

@@ -67,7 +67,7 @@ class FileRun(Run):
             return self._link.read(WAIT_S)
         except LinkLost as problem:
             raise LinkError(
-                f"{self._address.text} cannot be read further: {problem}.",
+                f"{self._address.text} cannot be read further: {problem.reason}.",
                 "Copy the file again and run the same command: the occupation is open and goes on.",
                 code="lost",
             ) from problem

@@ -8,6 +8,7 @@ other occupations.
 from __future__ import annotations
 
 import hashlib
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 from fieldbook.errors import LinkError
@@ -60,9 +61,8 @@ def scan_file(
     return FileScan(count, whole.hexdigest(), prefix.hexdigest() if count >= prefix_bytes else None, times)
 
 
-def _pieces(address: LinkAddress):  # type: ignore[no-untyped-def]
+def _pieces(address: LinkAddress) -> Iterator[bytes]:
     link = open_link(address)
-    link.open()
     try:
         while True:
             data = link.read(0.25)
@@ -72,7 +72,7 @@ def _pieces(address: LinkAddress):  # type: ignore[no-untyped-def]
         return
     except LinkLost as problem:
         raise LinkError(
-            f"{address.text} cannot be read to its end: {problem}.", "Copy the file again.", code="lost"
+            f"{address.text} cannot be read to its end: {problem.reason}.", "Copy the file again.", code="lost"
         ) from problem
     finally:
         link.close()

@@ -87,9 +87,7 @@ def _checked(book_path: Path, wish: Wish, clock: Clock) -> tuple[Plan, Link | No
         plan = plan_occupation(None, wish.session, wish.address, new=wish.new)
     if not wish.address.live:
         return plan, None
-    link = open_link(wish.address)
-    link.open()
-    return plan, link
+    return plan, open_link(wish.address, clock=clock)
 
 
 def _entered(book_path: Path, plan: Plan, clock: Clock) -> int:

@@ -9,11 +9,14 @@ from fieldbook.occupy.arrivals import Arrivals
 from fieldbook.occupy.reader_thread import ReaderThread
 from fieldbook.occupy.run import WAIT_S, Run
 
+SENSELESS_MS, SENSELESS_BYTES = 5_000, 200
+
 
 class LiveRun(Run):
     """A port, a socket or the simulated receiver: read by a thread, committed burst by burst."""
 
     def go(self) -> str | None:
+        self._started_ms = self._clock.monotonic_ms()
         self._arrivals = Arrivals(self._clock)
         self._reader = ReaderThread(self._link, self._address, self._arrivals, self._clock)
         if self.resumed:
@@ -69,9 +72,16 @@ class LiveRun(Run):
         state.last_byte_utc_ms = arrivals.last_byte_utc_ms
         state.waiting_bytes, state.dropped_bytes = arrivals.waiting_bytes, arrivals.dropped_bytes
         self._alarm("disk_too_slow", arrivals.dropping, "DISK TOO SLOW: received bytes are being lost.")
+        self._alarm("no_valid_nmea", self._makes_no_sense(), "No valid NMEA sentence comes: wrong speed or format?")
         if (state.link_state, state.link_reason) != (self._reader.link_state, self._reader.link_reason):
             state.link_state, state.link_reason = self._reader.link_state, self._reader.link_reason
             self._writer.show_state(now=True)
+
+    def _makes_no_sense(self) -> bool:
+        """Bytes have come for five seconds, and not one valid sentence among them."""
+        if self._writer.decoder.sentences or self._writer.heard.received_bytes < SENSELESS_BYTES:
+            return False
+        return self._clock.monotonic_ms() - self._started_ms >= SENSELESS_MS
 
     def _alarm(self, code: str, on: bool, text: str) -> None:
         alarms = self._writer.state.alarms

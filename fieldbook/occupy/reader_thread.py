@@ -12,12 +12,12 @@ some Windows drivers hang. So stopping is a flag, and a reader that does not com
 
 from __future__ import annotations
 
-import random
 import threading
 from typing import Protocol
 
 from fieldbook.clock import Clock
 from fieldbook.errors import LinkError
+from fieldbook.links.backoff import BackOff
 from fieldbook.links.base import EndOfLink, Link, LinkLost
 from fieldbook.model.item import ItemKind
 from fieldbook.occupy.arrivals import Arrivals
@@ -25,7 +25,6 @@ from fieldbook.occupy.arrivals import Arrivals
 POLL_S = 0.25
 STALE_S = 5.0
 TCP_SILENCE_S = 15.0
-FIRST_WAIT_S, LONGEST_WAIT_S = 0.1, 5.0
 JOIN_S = 2.0
 
 
@@ -47,6 +46,7 @@ class ReaderThread(threading.Thread):
         self._link, self._address = link, address
         self._arrivals, self._clock = arrivals, clock
         self._halt = threading.Event()
+        self._back_off = BackOff()
         self._open = True
         self._heard_ms = clock.monotonic_ms()
         self.link_state = "open"
@@ -80,14 +80,18 @@ class ReaderThread(threading.Thread):
             data = self._link.read(POLL_S)
         except EndOfLink:
             raise
-        except (LinkLost, LinkError, OSError, TypeError, ValueError) as problem:
-            # TypeError and ValueError: what pyserial raises when a port vanishes inside a call
+        except LinkLost as problem:
+            self._lose(problem.reason)
+            return
+        except (LinkError, OSError, TypeError, ValueError) as problem:
+            # TypeError and ValueError: what serial drivers raise when a port vanishes inside a call
             self._lose(str(problem) or type(problem).__name__)
             return
         now = self._clock.monotonic_ms()
         if data:
             self._arrivals.add_bytes(data)
             self._heard_ms = now
+            self._back_off.reset()
             if self.link_state != "open":
                 self._become("open")
             return
@@ -104,13 +108,11 @@ class ReaderThread(threading.Thread):
         self._become("lost", reason)
 
     def _open_again(self) -> None:
-        wait_s = FIRST_WAIT_S
-        while not self._halt.wait(wait_s * random.uniform(0.9, 1.1)):  # noqa: S311 - jitter, not a secret
+        while not self._halt.wait(self._back_off.next_delay_s()):
             try:
                 self._link.open()
-            except (LinkError, LinkLost, OSError) as problem:
+            except (LinkError, OSError) as problem:
                 self._become("lost", str(problem))
-                wait_s = min(2 * wait_s, LONGEST_WAIT_S)
                 continue
             self._open = True
             self._heard_ms = self._clock.monotonic_ms()

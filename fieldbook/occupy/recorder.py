@@ -114,10 +114,7 @@ class Recorder:
         address = self._address or parse_link(occupation.link, Path.cwd())
         claimed = claimed_times(book, occupation.session, besides=self._number) if address.live else ()
         writer = Writer(book, occupation, self._clock, claimed=claimed, patience=self._has_patience)
-        link = self._link
-        if link is None:
-            link = open_link(address)
-            link.open()
+        link = self._link or open_link(address, clock=self._clock)
         wishes = Wishes(self._clock, self._stop, limit_s, self._on_start, self._on_state)
         kind = LiveRun if address.live else FileRun
         run = kind(book, occupation, writer, Source(link, address), wishes)
