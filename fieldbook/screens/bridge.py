@@ -117,9 +117,13 @@ class Bridge:
 
     def session_file(self, path_text: str) -> Tree:
         """The tree of a session file, its link made independent of the folder the file lies in."""
+        from fieldbook.links.address import parse_link
         from fieldbook.settings.session import load_session
 
-        return load_session(Path(path_text).expanduser()).tree
+        path = Path(path_text).expanduser()
+        tree = load_session(path).tree
+        link = parse_link(tree["receiver"]["link"], path.absolute().parent).text
+        return {**tree, "receiver": {**tree["receiver"], "link": link}}
 
     def link_problem(self, text: str) -> str:
         """What is wrong with a link as typed; empty if nothing is. Nothing is opened."""

@@ -8,7 +8,8 @@ from typing import Any, ClassVar
 
 from fieldbook.model.reduction import Reduction
 from fieldbook.screens.bridge import Issued
-from fieldbook.screens.forms import Field, Form, Values
+from fieldbook.screens.fields import Field
+from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.page import Desk, Page
 from fieldbook.screens.plain import fit, pad
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, paragraph, row

@@ -6,7 +6,8 @@ from typing import Any, ClassVar
 
 from fieldbook.model.entry import Entry
 from fieldbook.screens.diary_text import OWN, entry_text, strikeable
-from fieldbook.screens.forms import Field, Form, Values
+from fieldbook.screens.fields import Field
+from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.page import Page, scrolled_to
 from fieldbook.screens.plain import fit, pad
 from fieldbook.screens.rows import BLANK, Row, heading, paragraph, row

@@ -6,7 +6,8 @@ from typing import Any
 
 from fieldbook.errors import FieldbookError
 from fieldbook.model.canonical import Tree
-from fieldbook.screens.forms import Field, Form, Values
+from fieldbook.screens.fields import Field
+from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.page import Desk, next_tree, open_occupation
 
 

@@ -8,7 +8,7 @@ from __future__ import annotations
 from fieldbook.model.angles import latitude_text, longitude_text
 from fieldbook.model.entry import Entry
 from fieldbook.model.live import LiveView
-from fieldbook.model.reduction import LeaveLine, Reduction, Uncertainty
+from fieldbook.model.reduction import Initialisation, LeaveLine, Reduction, Uncertainty
 from fieldbook.model.rounding import decimals_for
 from fieldbook.screens.plain import clean, fit, pad
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
@@ -40,7 +40,11 @@ def occupation_rows(view: LiveView | None, width: int, height: int) -> list[Row]
     room = height - len(rows) - 2
     findings = _findings(view.reduction, width, max(2, room - 3))
     rows += [BLANK, *findings]
-    rows += _remarks(view.occupation.remarks, width, height - len(rows))
+    rows += _remarks(view.occupation.remarks, width, min(12, height - len(rows)))
+    if view.reduction is not None and len(rows) + 2 * len(view.reduction.initialisations) + 2 <= height:
+        rows += [BLANK, row((" INITIALISATIONS", "strong"), (", offset from the mean of those used", "soft"))]
+        for run in view.reduction.initialisations:
+            rows += initialisation_rows(run, width)
     return rows[:height]
 
 
@@ -184,3 +188,18 @@ def _remarks(remarks: list[Entry], width: int, most: int) -> list[Row]:
         text = clean(entry.body.get("text", ""))
         rows.append(row((f" {hour_minute(entry.utc)} ", "soft"), fit(f"{text} · {entry.observer}", width - 8)))
     return rows
+
+
+def initialisation_rows(run: Initialisation, width: int) -> list[Row]:
+    """One initialisation: times, epochs, used or not and why, offset from the mean; two lines on a narrow leaf."""
+    offset = "no offset"
+    if run.offset_enu_m is not None:
+        parts = [f"{axis} {1000 * value:+.0f}" for axis, value in zip("enu", run.offset_enu_m, strict=False)]
+        offset = "  ".join(parts) + " mm"
+    used = ("used", "good") if run.used else ("not used", "warn")
+    reason = f"  {run.reason}" if run.reason else ("" if run.independent else "  resumed")
+    times = f"{hour_minute(run.from_utc)} to {hour_minute(run.to_utc)}"
+    head = row(f" {run.number:>3}  {times}  {run.kept:>5} epochs  ", used)
+    if width >= 76:
+        return [row(*head, fit(f"  {offset}{reason}", width - 42))]
+    return [head, row((fit(f"      {offset}{reason}", width - 1), "soft"))]

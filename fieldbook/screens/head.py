@@ -124,6 +124,15 @@ def leave_row(view: LiveView | None, width: int) -> Row:
     own = [item for item in leave.lines if item.scope == "set-up"]
     missing = [item for item in own if not item.met]
     mark_open = [item for item in leave.lines if item.scope != "set-up" and not item.met]
+    if not view.occupation.open:
+        text = (
+            "every line of this set-up was met"
+            if not missing
+            else "open: " + " · ".join(open_text(item) for item in missing)
+        )
+        return row(
+            (" ended ", "strong"), (fit(f"  leave check at the end: {leave.verdict}; {text}", width - 8), "text")
+        )
     word = leave.verdict.upper()
     spans: list[Span] = [(f" {word} ", VERDICT.get(leave.verdict, "warn"))]
     if missing:

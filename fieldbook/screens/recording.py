@@ -36,7 +36,13 @@ def start(desk: Desk) -> None:
         f"{session.mark.name}, antenna {session.antenna.model}, on {session.receiver.link}.",
         f"The receiver reports the {session.setup.reported_point}.",
     ]
-    if not current_readings(view):
+    text.append(f"Its coordinates are taken to be in {session.frame.receiver}.")
+    readings = current_readings(view)
+    height = bridge.heights(session, readings).height
+    if height is not None and height.height_arp_m is not None:
+        count = f"{len(readings)} reading{'s' if len(readings) > 1 else ''}"
+        text.append(f"ARP {height.height_arp_m:.4f} m above the mark, from {count}.")
+    else:
         text.append("No height of antenna was read yet. It may be read later, but before the tripod moves.")
 
     def answered(word: str) -> None:

@@ -7,9 +7,9 @@ from __future__ import annotations
 from typing import ClassVar
 
 from fieldbook.model.angles import latitude_text, longitude_text, signed_dms_text
-from fieldbook.model.reduction import Initialisation, Reduction, Uncertainty
+from fieldbook.model.reduction import Reduction, Uncertainty
 from fieldbook.model.rounding import decimals_for
-from fieldbook.screens.figures import wanted_rows_uncertainty
+from fieldbook.screens.figures import initialisation_rows, wanted_rows_uncertainty
 from fieldbook.screens.page import Page
 from fieldbook.screens.plain import fit, pad, wrapped
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
@@ -176,7 +176,7 @@ def evidence_rows(item: Reduction, width: int) -> list[Row]:
     rows += [BLANK, *budget_rows(item.uncertainty_client or item.uncertainty, width), BLANK]
     rows.append(row((" Initialisations, offset from the mean of those used", "soft")))
     for run in item.initialisations:
-        rows += _run(run, width)
+        rows += initialisation_rows(run, width)
     if item.set_aside:
         text = ", ".join(f"{set_aside_word(code)} {count}" for code, count in sorted(item.set_aside.items()))
         rows += [BLANK, *paragraph(f"Set aside: {text}", width)]
@@ -202,17 +202,3 @@ def _mm(value_m: float | None) -> str:
         return "–"
     value = 1000 * value_m
     return f"{value:.1f}" if value < 99.95 else f"{value:.0f}"
-
-
-def _run(run: Initialisation, width: int) -> list[Row]:
-    offset = "no offset"
-    if run.offset_enu_m is not None:
-        parts = [f"{axis} {1000 * value:+.0f}" for axis, value in zip("enu", run.offset_enu_m, strict=False)]
-        offset = "  ".join(parts) + " mm"
-    used = ("used", "good") if run.used else ("not used", "warn")
-    reason = f"  {run.reason}" if run.reason else ("" if run.independent else "  resumed")
-    times = f"{hour_minute(run.from_utc)} to {hour_minute(run.to_utc)}"
-    head = row(f" {run.number:>3}  {times}  {run.kept:>5} epochs  ", used)
-    if width >= 76:
-        return [row(*head, fit(f"  {offset}{reason}", width - 42))]
-    return [head, row((fit(f"      {offset}{reason}", width - 1), "soft"))]

@@ -22,6 +22,8 @@ STYLES = (
     "chosen",
     "alarm",
     "carried",
+    "field",
+    "hint",
 )
 BLANK: Row = ()
 

@@ -14,7 +14,8 @@ from typing import Any
 from fieldbook.errors import FieldbookError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.session import Session
-from fieldbook.screens.forms import Field, Form, Values
+from fieldbook.screens.fields import Field
+from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.heights import drawing, judgement
 from fieldbook.screens.page import Desk, next_tree, open_occupation
 from fieldbook.screens.rows import BLANK, Row, paragraph, row

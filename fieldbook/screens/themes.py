@@ -30,6 +30,7 @@ class Palette:
     chosen_ink: str
     alarm: str
     alarm_ink: str
+    field: str
     dark: bool
     ascii_only: bool = False
 
@@ -37,29 +38,30 @@ class Palette:
         """(what, ink, paper) of every text the screens draw."""
         inks = ("ink", "soft", "good", "warn", "bad", "accent", "rule")
         on_paper = [(name, getattr(self, name), self.paper) for name in inks]
-        return [*on_paper, ("chosen", self.chosen_ink, self.chosen), ("alarm", self.alarm_ink, self.alarm)]
+        others = [("chosen", self.chosen_ink, self.chosen), ("alarm", self.alarm_ink, self.alarm)]
+        return [*on_paper, *others, ("field", self.ink, self.field), ("hint", self.soft, self.field)]
 
 
 PALETTES = (
     Palette(
         "noon", paper="#ffffff", ink="#000000", soft="#3a3a3a", good="#00513a", warn="#6b3a00", bad="#8a0f00",
         accent="#003f6b", rule="#4a4a4a", chosen="#000000", chosen_ink="#ffffff", alarm="#8a0f00",
-        alarm_ink="#ffffff", dark=False,
+        alarm_ink="#ffffff", field="#e4e4e4", dark=False,
     ),
     Palette(
         "dusk", paper="#1b1e24", ink="#e9e6dc", soft="#b3b1a8", good="#5fd0ac", warn="#f0b545", bad="#ff9d80",
         accent="#7cc4f2", rule="#9a988f", chosen="#e9e6dc", chosen_ink="#1b1e24", alarm="#f0b545",
-        alarm_ink="#1b1e24", dark=True,
+        alarm_ink="#1b1e24", field="#33373f", dark=True,
     ),
     Palette(
         "lamp", paper="#000000", ink="#ff5a4a", soft="#e04a3c", good="#ff7a66", warn="#ff8f70", bad="#ffb09a",
         accent="#ff6d5a", rule="#d8402f", chosen="#ff5a4a", chosen_ink="#000000", alarm="#ffb09a",
-        alarm_ink="#000000", dark=True,
+        alarm_ink="#000000", field="#2a0703", dark=True,
     ),
     Palette(
         "console", paper="#000000", ink="#ffffff", soft="#c0c0c0", good="#00ff00", warn="#ffff00", bad="#ffff00",
         accent="#00ffff", rule="#c0c0c0", chosen="#ffffff", chosen_ink="#000000", alarm="#ffff00",
-        alarm_ink="#000000", dark=True, ascii_only=True,
+        alarm_ink="#000000", field="#000080", dark=True, ascii_only=True,
     ),
 )  # fmt: skip
 BY_NAME = {palette.name: palette for palette in PALETTES}
@@ -80,27 +82,8 @@ def contrast(ink: str, paper: str) -> float:
 
 def textual_theme(palette: Palette) -> Theme:
     """The palette as a Textual theme; the style sheet uses the `fb-...` variables only."""
-    names = (
-        "paper",
-        "ink",
-        "soft",
-        "good",
-        "warn",
-        "bad",
-        "accent",
-        "rule",
-        "chosen",
-        "chosen_ink",
-        "alarm",
-        "alarm_ink",
-    )
+    names = [name for name in Palette.__dataclass_fields__ if name not in ("name", "dark", "ascii_only")]
     variables = {f"fb-{name.replace('_', '-')}": getattr(palette, name) for name in names}
-    variables |= {
-        "input-cursor-background": palette.ink,
-        "input-cursor-foreground": palette.paper,
-        "input-selection-background": palette.chosen,
-        "footer-background": palette.paper,
-    }
     return Theme(
         name=palette.name, primary=palette.accent, secondary=palette.accent, accent=palette.accent,
         foreground=palette.ink, background=palette.paper, surface=palette.paper, panel=palette.paper,

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import AsyncIterator, Callable
 from contextlib import asynccontextmanager
 
+from textual.events import Paste
 from textual.pilot import Pilot
 
 from fieldbook.clock import FakeClock
@@ -48,9 +49,9 @@ def desk(pilot: Pilot[int]) -> BookScreen:
 
 
 async def form(pilot: Pilot[int]) -> Form:
-    """The form on top, once it is there and has its focus."""
+    """The form on top, once it is drawn."""
     await wait_until(
-        pilot, lambda: isinstance(pilot.app.screen, Form) and pilot.app.screen.focused is not None, "a form"
+        pilot, lambda: isinstance(pilot.app.screen, Form) and "Esc: not written" in screen_text(pilot), "a form"
     )
     top = pilot.app.screen
     assert isinstance(top, Form)
@@ -58,13 +59,11 @@ async def form(pilot: Pilot[int]) -> Form:
 
 
 async def typed(pilot: Pilot[int], text: str) -> None:
-    """Put a text into the field in focus, as a paste would."""
-    from textual.widgets import Input
-
-    focused = pilot.app.screen.focused
-    assert isinstance(focused, Input)
-    focused.value = text
-    await pilot.pause()
+    """Put a text into the line being filled, as a paste over what stood there would."""
+    top = await form(pilot)
+    top.lines[top.here].put("")
+    top.post_message(Paste(text))
+    await wait_until(pilot, lambda: bool(top.lines[top.here].text), "the pasted text")
 
 
 async def on_desk(pilot: Pilot[int]) -> None:
