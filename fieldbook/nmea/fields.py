@@ -13,7 +13,7 @@ from datetime import date
 
 DAY_MS = 86_400_000
 _DECIMAL = re.compile(r"([+-]?)([0-9]{0,9})(?:\.([0-9]*))?")
-_POWER = tuple(10**n for n in range(256))
+_POWER = (1, 10, 100, 1_000, 10_000, 100_000, 1_000_000, 10_000_000, 100_000_000)
 _ANGLE_PLACES = 8
 _FOOT_E4M = 3048  # international foot, 0.3048 m exactly
 
@@ -23,7 +23,7 @@ def scaled(whole: str, fraction: str, places: int) -> int:
     surplus = len(fraction) - places
     if surplus <= 0:
         return int(whole + fraction) * _POWER[-surplus]
-    return half_even(int(whole + fraction), 10**surplus)
+    return half_even(int(whole + fraction), int("1" + "0" * surplus))
 
 
 def half_even(value: int, divisor: int) -> int:

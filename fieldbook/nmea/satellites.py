@@ -8,6 +8,7 @@ three times is gone.
 
 from __future__ import annotations
 
+from collections import deque
 from collections.abc import Iterator
 
 from fieldbook.model.epoch import Satellite
@@ -19,8 +20,7 @@ _MOST_MESSAGES = 32
 _MOST_SETS = 64
 _MOST_GSA = 32
 _GONE_AFTER = 3
-
-Key = tuple[bytes, bytes]
+_NUMBER_AFTER = [str(n + 1).encode("ascii") for n in range(_MOST_MESSAGES + 1)]
 
 
 class Sky:
@@ -29,49 +29,52 @@ class Sky:
     def __init__(self, counts: Counts) -> None:
         self._counts = counts
         self._cycle: list[bytes] = []
-        self._total = 0
-        self._sets: dict[Key, tuple[bytes, ...]] = {}
-        self._seen: dict[Key, int] = {}  # how often each other set completed since this one did
+        self._total = b""
+        self._complete: deque[list[bytes]] = deque(maxlen=_MOST_SETS)
         self._gsa: list[bytes] = []
         self._gsa_epoch = -1
 
-    def gsv(self, text: bytes) -> None:
+    def gsv(self, text: bytes, _talker: str = "") -> None:
         """One GSV message."""
-        parts = text.split(b",", 3)
-        if len(parts) < 4 or not (parts[1].isdigit() and parts[2].isdigit() and len(parts[1] + parts[2]) <= 4):
-            self._counts["bad_gsv"] += 1
-            return
-        total, number = int(parts[1]), int(parts[2])
-        if number == 1:
+        total, number = text[7:8], text[9:10]
+        if text[8:11:2] != b",,":  # two digits somewhere
+            parts = text.split(b",", 3)
+            if len(parts) < 4:
+                self._counts["bad_gsv"] += 1
+                return
+            total, number = parts[1].lstrip(b"0"), parts[2].lstrip(b"0")
+        if number == b"1":
             if self._cycle:
                 self._counts["gsv_incomplete"] += 1
             self._cycle = [text]
             self._total = total
-        elif self._cycle and number == len(self._cycle) + 1 and total == self._total:
-            self._cycle.append(text)
         else:
-            self._counts["gsv_incomplete"] += 1
+            cycle = self._cycle
+            if not cycle or total != self._total or number != _NUMBER_AFTER[len(cycle)]:
+                self._counts["gsv_incomplete"] += 1
+                self._cycle = []
+                return
+            cycle.append(text)
+        if number == total:
+            self._complete.append(self._cycle)
             self._cycle = []
-            return
-        if number >= total:
-            self._complete()
         elif len(self._cycle) >= _MOST_MESSAGES:
             self._cycle = []
 
-    def _complete(self) -> None:
-        cycle, self._cycle = self._cycle, []
-        last = cycle[-1]
-        key = (cycle[0][:6], last.rpartition(b",")[2] if (last.count(b",") - 3) % 4 == 1 else b"")
-        self._sets[key] = tuple(cycle)
-        seen = self._seen
-        seen[key] = 0
-        times = len(seen)
-        for other in list(seen):
-            if other != key:
-                seen[other] += 1
-                # each other set completes once a cycle
-                if seen[other] > _GONE_AFTER * times or len(seen) > _MOST_SETS:
-                    del seen[other], self._sets[other]
+    def _latest(self) -> list[list[bytes]]:
+        """The newest set of each talker and signal, without those that are no longer sent."""
+        newest: dict[tuple[bytes, bytes], list[bytes]] = {}
+        times: dict[tuple[bytes, bytes], int] = {}
+        for cycle in reversed(self._complete):
+            last = cycle[-1]
+            signal = last.rpartition(b",")[2] if (last.count(b",") - 3) % 4 == 1 else b""
+            key = (cycle[0][:6], signal)
+            if key not in newest:
+                if times and max(times.values()) >= _GONE_AFTER:
+                    continue
+                newest[key] = cycle
+            times[key] = times.get(key, 0) + 1
+        return list(newest.values())
 
     def gsa(self, text: bytes, epoch: int) -> None:
         """One GSA of the epoch with this running number; a new epoch begins a new set."""
@@ -85,7 +88,7 @@ class Sky:
         """Every satellite in view once, with its strongest signal, ordered by system and number."""
         used = set(self._used())
         best: dict[tuple[str, int], Satellite] = {}
-        for texts in self._sets.values():
+        for texts in self._latest():
             for text in texts:
                 for found in _read_gsv(text, used):
                     identity = (found.system, found.number)
