@@ -40,6 +40,13 @@ def command(book: Path, seq: int, reason: str, observer: str, *, as_json: bool) 
                 f"Only these can: {', '.join(sorted(STRIKABLE))}.",
                 code="not_strikable",
             )
+        opened_one = opened.state().open_occupation
+        if opened_one is not None and opened_one.entry_seq == seq:
+            raise UsageError(
+                f"Entry {seq} begins occupation {opened_one.number}, which is open.",
+                "End it first: `fieldbook entry BOOK end`.",
+                code="occupation_open",
+            )
         already = opened.state().strikes.get(seq)
         if already is not None:
             raise UsageError(

@@ -8,12 +8,14 @@ nothing is written beside the book. Whether a recorder runs is asked of the lock
 from __future__ import annotations
 
 import json
+import os
 import subprocess
 import sys
 import threading
 from pathlib import Path
 from typing import Any
 
+import fieldbook
 from fieldbook.book.lock import held
 from fieldbook.errors import BookError, FieldbookError, LinkError, UsageError
 
@@ -36,11 +38,16 @@ def start_recorder(book_path: Path, occupation: int, *, link_text: str | None = 
         LinkError: the link cannot be opened.
         UsageError: no such open occupation.
     """
-    command = [sys.executable, "-m", "fieldbook.occupy", str(book_path.absolute()), str(occupation)]
+    command = [sys.executable, "-P", "-m", "fieldbook.occupy", str(book_path.absolute()), str(occupation)]
     if link_text is not None:
         command += ["--link", link_text]
     child = subprocess.Popen(  # noqa: S603 - our own interpreter and module
-        command, stdin=subprocess.DEVNULL, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, **_apart()
+        command,
+        stdin=subprocess.DEVNULL,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.DEVNULL,
+        env=_environment(),
+        **_apart(),
     )
     _children.append(child)
     said = _first_line(child)
@@ -63,6 +70,13 @@ def error_line(error: FieldbookError) -> str:
     """An error as one line on the pipe."""
     tree = {"exit": int(error.exit_code), "code": error.code, "text": error.text, "remedy": error.remedy}
     return json.dumps(tree)
+
+
+def _environment() -> dict[str, str]:
+    """The same package as here, and nothing that happens to lie in the current folder (`-P`)."""
+    root = str(Path(fieldbook.__file__).parents[1])
+    before = os.environ.get("PYTHONPATH")
+    return {**os.environ, "PYTHONPATH": root if not before else os.pathsep.join((root, before))}
 
 
 def _apart() -> dict[str, Any]:

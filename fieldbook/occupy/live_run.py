@@ -8,6 +8,7 @@ from fieldbook.model.item import ItemKind
 from fieldbook.occupy.arrivals import Arrivals
 from fieldbook.occupy.reader_thread import ReaderThread
 from fieldbook.occupy.run import WAIT_S, Run
+from fieldbook.occupy.source_warnings import WARNINGS, finding_of
 
 SENSELESS_MS, SENSELESS_BYTES = 5_000, 200
 
@@ -72,7 +73,11 @@ class LiveRun(Run):
         state.last_byte_utc_ms = arrivals.last_byte_utc_ms
         state.waiting_bytes, state.dropped_bytes = arrivals.waiting_bytes, arrivals.dropped_bytes
         self._alarm("disk_too_slow", arrivals.dropping, "DISK TOO SLOW: received bytes are being lost.")
-        self._alarm("no_valid_nmea", self._makes_no_sense(), "No valid NMEA sentence comes: wrong speed or format?")
+        warnings = set(self._writer.decoder.warnings)
+        if self._makes_no_sense():
+            warnings.add("no_valid_nmea")
+        for code in sorted(warnings | set(WARNINGS).intersection(state.alarms)):
+            self._alarm(code, code in warnings, finding_of(code)[1])
         if (state.link_state, state.link_reason) != (self._reader.link_state, self._reader.link_reason):
             state.link_state, state.link_reason = self._reader.link_state, self._reader.link_reason
             self._writer.show_state(now=True)

@@ -86,7 +86,7 @@ def compare(book: Book, occupation: int) -> list[str]:
             said.extend(_differences(occupation, stored[count - 1], epoch))
     if count < len(stored) or (count > len(stored) and not found.open):
         said.append(f"occupation {occupation}: {len(stored)} epochs stored, {count} decoded from the raw rows")
-    if found.day0_source != "decision" and found.day0 is not None and found.day0 != decoder.day0:
+    if found.day0_source != "decision" and None not in (found.day0, decoder.day0) and found.day0 != decoder.day0:
         said.append(f"occupation {occupation}: date {found.day0} stored, {decoder.day0} decoded")
     return said[:MOST_DIFFERENCES]
 
@@ -101,7 +101,14 @@ def _differences(occupation: int, stored: Epoch, again: Epoch) -> list[str]:
 
 
 def decode_again(book: Book, occupation: int) -> int:
-    """Put the epoch table right after a decision changed the decoder's options; returns the number of epochs."""
-    epochs, _ = rebuild(book, occupation)
+    """Put the epoch table right after an entry changed the decoder's options; returns the number of epochs.
+
+    The caller holds the recorder's lock. A date that comes out otherwise is entered.
+    """
+    found = occupation_of(book, occupation)
+    epochs, decoder = rebuild(book, occupation)
     book.replace_epochs(occupation, epochs)
+    if decoder.day0 is not None and decoder.day0 != found.day0 and found.day0_source != "decision":
+        body = {"occupation": occupation, "date": decoder.day0.isoformat(), "source": decoder.day0_source}
+        book.append("date", body, found.observer)
     return len(epochs)

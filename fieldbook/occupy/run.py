@@ -108,11 +108,13 @@ class Run:
         wanted = None
         for entry in self._book.entries(after_seq=self._seen_seq):
             self._seen_seq = entry.seq
+            if entry.kind == "strike":
+                self._note_options()
             if entry.body.get("occupation") != self._occupation.number:
                 continue
             if entry.kind == "request":
                 wanted = "operator" if entry.body.get("action") == "end" else "leave"
-            elif entry.kind in ("decision", "setup", "strike"):
+            elif entry.kind in ("decision", "setup"):
                 self._note_options()
         return wanted
 

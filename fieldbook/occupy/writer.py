@@ -27,6 +27,7 @@ from fieldbook.model.recorder import RecorderState
 from fieldbook.model.state import Occupation
 from fieldbook.nmea.decoder import Decoder
 from fieldbook.occupy.rebuild import decoder_options
+from fieldbook.occupy.source_warnings import finding_of
 from fieldbook.occupy.spans import Claimed, Span
 
 SEAL_ROWS, SEAL_MS = 60, 60_000
@@ -190,8 +191,7 @@ class Writer:
         self._commit([last], epochs, with_state=True)
         self._note_date()
         self._note_overlap()
-        if self.heard.epochs and not self.heard.span.fixes:
-            self._find("no_fix", "caution", "No epoch of this occupation has a fix.", {"epochs": self.heard.epochs})
+        self._note_source()
         self.seal()
         self.append(
             "end",
@@ -261,6 +261,13 @@ class Writer:
             self._claimed.remove(other)
             text = f"The fix times overlap those of {other}."
             self._find("overlap", "stop", text, {"with_occupation": other.occupation})
+
+    def _note_source(self) -> None:
+        for code in self.decoder.warnings:
+            severity, text = finding_of(code)
+            self._find(code, severity, text, {})
+        if self.heard.epochs and not self.heard.span.fixes:
+            self._find("no_fix", "caution", "No epoch of this occupation has a fix.", {"epochs": self.heard.epochs})
 
     def _find(self, code: str, severity: str, text: str, figures: Tree) -> None:
         self.findings.append({"code": code, "severity": severity, "text": text, "figures": figures})

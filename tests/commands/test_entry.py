@@ -140,3 +140,13 @@ def test_what_a_machine_wrote_cannot_be_struck(occupied, fieldbook) -> None:
     assert "cannot be struck" in said.err
     assert fieldbook("strike", occupied, 999, "--reason", "x", "--by", "B").code == 2
     assert fieldbook("strike", occupied, 3, "--reason", " ", "--by", "B").code == 2
+
+
+def test_an_open_occupation_is_not_struck_under_its_recorder(occupied, fieldbook) -> None:
+    seq = folded(occupied).occupations[1].entry_seq
+    said = fieldbook("strike", occupied, seq, "--reason", "wrong mark", "--by", "B")
+    assert said.code == 2
+    assert "open" in said.err
+    assert fieldbook("entry", occupied, "end", "--by", "B").code == 0
+    assert fieldbook("strike", occupied, seq, "--reason", "wrong mark", "--by", "B").code == 0
+    assert folded(occupied).occupations == {}
