@@ -18,7 +18,7 @@ from fieldbook.model.item import Item, ItemKind
 from fieldbook.nmea import fields, sentences
 from fieldbook.nmea.dates import rollover_weeks
 from fieldbook.nmea.epochs import Assembler
-from fieldbook.nmea.framing import Damaged, Frame, Framer
+from fieldbook.nmea.framing import Damaged, Framer, Plain
 from fieldbook.nmea.groups import Stated
 from fieldbook.nmea.satellites import Sky
 from fieldbook.nmea.sentences import Counts
@@ -141,7 +141,7 @@ class Decoder:
             self._timers(now)
             self._utc_ms = item.utc_ms
         had_pending = framer.pending_bytes > 0
-        found = framer.feed(item.data)
+        found = framer.feed_plain(item.data)
         if had_pending and found:
             assembler.arrived(*self._pending_times)
             self._sentences(found[:1])
@@ -172,21 +172,22 @@ class Decoder:
 
     # -- sentences ----------------------------------------------------------------------------------------------
 
-    def _sentences(self, found: list[Frame | Damaged]) -> None:
+    def _sentences(self, found: list[Plain]) -> None:
         routes = self._routes
         for one in found:
-            if type(one) is not Frame:
+            if type(one) is Damaged:
                 continue
-            text, checksum, _ = one
-            if not checksum:
+            text = one[0]
+            if not one[1]:
                 self._without_checksum(text)
                 continue
             route = routes.get(text[:7])
             if route is None:
                 route = self._route(text)
             route.count += 1
-            if route.handle is not None:
-                route.handle(text, route.talker)
+            handle = route.handle
+            if handle is not None:
+                handle(text, route.talker)
 
     def _without_checksum(self, text: bytes) -> None:
         if not self.options.accept_without_checksum:

@@ -17,6 +17,11 @@ from fieldbook.nmea.sentences import Counts, Gst, Heard, Rmc, rmc_heard
 from fieldbook.nmea.sources import SourceWatch
 
 MOST_IN_A_GROUP = 64
+_QUALITY_COUNTER = [f"quality_{quality}" for quality in range(100)]
+# plain integers: an operation of an IntFlag costs more than reading a field
+_AFTER_BREAK = int(EpochFlag.AFTER_BREAK)
+_DATE_JUMP = int(EpochFlag.DATE_JUMP)
+_INCOMPLETE = int(EpochFlag.INCOMPLETE)
 _MOST_UNTIMED = 8
 _RMC_ONLY_AFTER = 5
 _GLL_STAGGER_MS = 100
@@ -53,7 +58,7 @@ class Assembler:
         self._carried_flags = 0
         self._base_day: int | None = None
         self._last: tuple[int, int] | None = None  # day and time of the latest position that counted
-        self._last_texts: frozenset[bytes] = frozenset()
+        self._last_heard: list[Heard] = []
         self._last_step: int | None = None
 
     # -- what arrives -------------------------------------------------------------------------------------------
@@ -236,11 +241,11 @@ class Assembler:
     def interrupted(self, *, incomplete: bool, after_break: bool) -> None:
         """The stream is cut here: nothing late can come, and nothing said before holds across the cut."""
         if self.open is not None and incomplete:
-            self.open.flags |= EpochFlag.INCOMPLETE
+            self.open.flags |= _INCOMPLETE
         self.flush()
         self._gll = self._stated = self._dops = None
         if after_break:
-            self._carried_flags |= EpochFlag.AFTER_BREAK
+            self._carried_flags |= _AFTER_BREAK
 
     def flush(self) -> None:
         """Both groups leave."""
@@ -300,8 +305,8 @@ class Assembler:
     def _day_of(self, group: Group) -> int | None:
         if group.key is None:
             return None
-        fix = group.has_fix
-        self._seen_fix = self._seen_fix or fix
+        if not self._seen_fix:
+            self._seen_fix = group.has_fix
         stated, source = None, "RMC"
         if group.rmc is not None and group.rmc.date is not None:
             stated = group.rmc.date
@@ -314,7 +319,7 @@ class Assembler:
         day, jump = self.days.assign(group.key, stated, source)
         if jump:
             self.counts["date_jump"] += 1
-            self._carried_flags |= EpochFlag.DATE_JUMP
+            self._carried_flags |= _DATE_JUMP
             self._last = None
         return day
 
@@ -327,13 +332,13 @@ class Assembler:
             if last is not None and day - last[0] <= 1:
                 self._learn_step(difference_ms(key, last[1]))
             self._last = (day, key)
-            self._last_texts = frozenset(heard.text for heard in everyone)
+            self._last_heard = everyone
             return
         for heard in everyone:
             if not heard.timed:
                 continue
             if (day, key) == last:  # the group was cut: too many in it
-                same = heard.text in self._last_texts
+                same = any(heard.text == earlier.text for earlier in self._last_heard)
                 heard.epoch.code = SetAside.DUPLICATE.value if same else SetAside.CONFLICT.value
             elif day == last[0] and max(key, last[1]) < _SECOND_MS:
                 self.counts["repeated_second"] += heard is chosen
@@ -361,10 +366,10 @@ class Assembler:
             return
         self.counts["rmc_only_discarded"] += len(self._waiting)
         for chosen, _ in self._waiting:
-            self._carried_flags |= chosen.epoch.flags & (EpochFlag.AFTER_BREAK | EpochFlag.DATE_JUMP)
+            self._carried_flags |= chosen.epoch.flags & (_AFTER_BREAK | _DATE_JUMP)
         self._waiting = []
         self._last = None
-        self._last_texts = frozenset()
+        self._last_heard = []
 
     def _give_waiting(self) -> None:
         waiting, self._waiting = self._waiting, []
@@ -375,7 +380,7 @@ class Assembler:
         counts = self.counts
         if chosen is not None:
             if chosen.epoch.quality is not None:
-                counts[f"quality_{chosen.epoch.quality}"] += 1
+                counts[_QUALITY_COUNTER[chosen.epoch.quality]] += 1
             if chosen.epoch.code is None:
                 self._watch.add(chosen)
         for heard in everyone:

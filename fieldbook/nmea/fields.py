@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import re
 from datetime import date
+from functools import lru_cache
 
 DAY_MS = 86_400_000
 _DECIMAL = re.compile(r"([+-]?)([0-9]{0,9})(?:\.([0-9]*))?")
@@ -34,6 +35,7 @@ def half_even(value: int, divisor: int) -> int:
     return quotient
 
 
+@lru_cache(maxsize=1024)  # most fields of a receiver repeat from epoch to epoch
 def read_decimal(text: str, places: int) -> tuple[int, int] | None:
     """A signed decimal number, scaled.
 
@@ -69,10 +71,15 @@ def _read_angle(text: str, most_digits: int, most_degrees: int) -> tuple[int, in
     degrees, minutes = divmod(int(whole), 100)
     if minutes >= 60:
         return None
-    value = scaled(str(60 * degrees + minutes), fraction, _ANGLE_PLACES)
+    decimals = len(fraction)
+    minutes += 60 * degrees
+    if 0 < decimals <= _ANGLE_PLACES:
+        value = minutes * 10**_ANGLE_PLACES + int(fraction) * _POWER[_ANGLE_PLACES - decimals]
+    else:
+        value = scaled(str(minutes), fraction, _ANGLE_PLACES)
     if value > most_degrees * 60 * 10**_ANGLE_PLACES:
         return None
-    return value, len(fraction)
+    return value, decimals
 
 
 def read_latitude(text: str, hemisphere: str) -> tuple[int, int] | None:
@@ -114,6 +121,7 @@ def time_text(time_ms: int) -> str:
     return f"{minutes // 60:02d}:{minutes % 60:02d}:{second:02d}.{part:03d}"
 
 
+@lru_cache(maxsize=16)
 def read_date(text: str) -> date | None:
     """The date of `ddmmyy`; 80 to 99 are 1980 to 1999, 00 to 79 are 2000 to 2079; or None."""
     if len(text) != 6:
@@ -122,6 +130,7 @@ def read_date(text: str) -> date | None:
     return make_date(text[:2], text[2:4], ("19" if year >= "80" else "20") + year)
 
 
+@lru_cache(maxsize=16)
 def make_date(day: str, month: str, year: str) -> date | None:
     """The date of three fields (day, month, four-digit year), or None."""
     joined = day + month + year

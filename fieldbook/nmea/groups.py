@@ -16,6 +16,9 @@ from fieldbook.model.epoch import Epoch, EpochFlag, SetAside
 from fieldbook.nmea.sentences import Counts, Gst, Heard, Rmc
 from fieldbook.nmea.tables import QUALITY_OF_MODE, best_mode_quality
 
+# plain integers: an operation of an IntFlag costs more than reading a field
+_GST_ZERO = int(EpochFlag.GST_ZERO)
+_MODE_CONFLICT = int(EpochFlag.MODE_CONFLICT)
 _POSITION = (
     "latitude_e8min",
     "latitude_decimals",
@@ -136,7 +139,7 @@ def _merge_gns(epoch: Epoch, merged: list[Heard], counts: Counts) -> None:
                 setattr(epoch, name, getattr(other, name))
             return
     if best_mode_quality(gns.modes) not in (None, epoch.quality):
-        epoch.flags |= EpochFlag.MODE_CONFLICT
+        epoch.flags |= _MODE_CONFLICT
     for name in _ACCURACY:
         if getattr(epoch, name) is None:
             setattr(epoch, name, getattr(other, name))
@@ -155,13 +158,13 @@ def complete(group: Group, epoch: Epoch, *, zero_is_a_place: bool, counts: Count
         epoch.sigma_latitude_e5m, epoch.sigma_longitude_e5m = gst.latitude, gst.longitude
         epoch.sigma_altitude_e5m = gst.altitude
         if gst.zero:
-            epoch.flags |= EpochFlag.GST_ZERO
+            epoch.flags |= _GST_ZERO
             counts["gst_zero"] += 1
     epoch.pdop_milli, epoch.vdop_milli = group.pdop_milli, group.vdop_milli
     rmc = group.rmc
     if rmc is not None and epoch.source != "RMC" and _contradicts(rmc.mode, epoch.quality):
-        epoch.flags |= EpochFlag.MODE_CONFLICT
-    if epoch.flags & EpochFlag.MODE_CONFLICT:
+        epoch.flags |= _MODE_CONFLICT
+    if epoch.flags & _MODE_CONFLICT:
         counts["mode_conflict"] += 1
     if not zero_is_a_place and epoch.latitude_e8min == 0 and epoch.longitude_e8min == 0:
         counts["zero_position"] += 1

@@ -14,6 +14,8 @@ from fieldbook.model.epoch import Epoch, EpochFlag
 from fieldbook.nmea import fields
 from fieldbook.nmea.tables import QUALITY_OF_MODE, best_mode_quality
 
+# plain integers: an operation of an IntFlag costs more than reading a field
+_FEET = int(EpochFlag.FEET)
 Counts = defaultdict[str, int]
 
 _NO_DOP_MILLI = (0, 99_990)
@@ -109,7 +111,7 @@ def _length(text: str, unit: str, epoch: Epoch, counts: Counts) -> tuple[int | N
     if unit == "M":
         return found
     if unit in ("f", "F"):
-        epoch.flags |= EpochFlag.FEET
+        epoch.flags |= _FEET
         counts["feet"] += 1
         return fields.feet_to_metres(found[0]), found[1]
     counts["bad_unit"] += 1
