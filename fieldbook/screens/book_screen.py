@@ -290,7 +290,10 @@ class BookScreen(Screen[None]):
         paper(self, self.query_one(CertificatePage).chosen(), issue=False)
 
     def do_strike(self) -> None:
-        self.query_one(DiaryPage).strike()
+        if self.page == "setup":
+            setup_forms.strike_reading(self)
+        else:
+            self.query_one(DiaryPage).strike()
 
     def do_whole(self) -> None:
         self.query_one(DiaryPage).toggle_whole()

@@ -95,8 +95,9 @@ class Bridge:
         from fieldbook.occupy.reductions import reduce_book
 
         with Book.open(self.path, clock=self.clock) as book:
-            reductions, failures = reduce_book(book)
-        return Reduced(tuple(reductions), tuple(_failure(item) for item in failures))
+            reduced, failed = reduce_book(book)
+        failures = tuple((item.mark, item.occupation, item.error.text, item.error.remedy) for item in failed)
+        return Reduced(tuple(item.reduction for item in reduced), failures)
 
     def heights(self, session: Session, readings: Sequence[Tree]) -> Heights:
         """Readings (keys of [[setup.height]]) reduced to the ARP and judged; pure, no disk."""
@@ -176,6 +177,12 @@ class Bridge:
         """Changed keys of an occupation that has begun, as {table: {key: value}}."""
         return self.write("setup", {"occupation": occupation, **changes})
 
+    def strikeable(self, entry: Entry) -> bool:
+        """Whether a person may strike the entry out: what a person wrote, never what a machine recorded."""
+        from fieldbook.book.kinds import STRIKABLE
+
+        return entry.kind in STRIKABLE
+
     def strike(self, seq: int, reason: str) -> Entry:
         """An entry struck out, with its reason."""
         return self.write("strike", {"seq": seq, "reason": reason})
@@ -214,14 +221,33 @@ class Bridge:
     # --- paper
 
     def certify(self, mark: str, occupation: int, out: str, sign_off: str, supersede: str) -> Issued:
-        """Issue a certificate (with a sign-off) or write a draft (without)."""
-        raise NotImplementedError
+        """Issue a certificate (with a sign-off) or write a draft (without). An existing file is refused."""
+        from fieldbook.book.store import Book
+        from fieldbook.certificate.issue import certify
+        from fieldbook.occupy.certifying import prepared, record_operation
+        from fieldbook.reduce.frames import versions
+
+        used = versions()
+        with Book.open(self.path, clock=self.clock, write=True) as book:
+            made = certify(
+                book,
+                mark,
+                Path(out).expanduser(),
+                occupation=occupation,
+                sign_off=sign_off or None,
+                supersede=supersede or None,
+                reductions=lambda number: prepared(book, number),
+                versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
+                clock=self.clock,
+            )
+            record_operation(book, mark, occupation)
+        return Issued(str(made.path), made.number, tuple(made.missing))
 
     def missing(self, reduction: Reduction) -> list[str]:
-        """What keeps the paper of an occupation a draft."""
-        raise NotImplementedError
+        """What keeps the paper of an occupation a draft, besides the sign-off."""
+        from fieldbook.book.store import Book
+        from fieldbook.certificate.facts import missing_items
 
-
-def _failure(item: Any) -> tuple[str, int, str, str]:
-    error = item["error"]
-    return (str(item["mark"]), int(item["occupation"]), str(error["text"]), str(error["remedy"]))
+        with Book.open(self.path, clock=self.clock) as book:
+            occupation = book.state().occupations[reduction.occupation]
+        return [str(item["text"]) for item in missing_items(occupation, reduction, signed=True)]

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Any, ClassVar
 
 from fieldbook.model.entry import Entry
-from fieldbook.screens.diary_text import OWN, entry_text, strikeable
+from fieldbook.screens.diary_text import OWN, entry_text
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.page import Page, scrolled_to
@@ -118,7 +118,7 @@ class DiaryPage(Page):
         entry, desk = self.chosen(), self.desk
         if entry is None:
             return
-        if not strikeable(entry):
+        if not desk.bridge.strikeable(entry):
             desk.tell(f"Entry {entry.seq} was not written by a person and is never struck out.", "bad")
             return
         if self.view and entry.seq in self.view.state.strikes:

@@ -14,11 +14,6 @@ OWN = frozenset(
 )  # written by the program
 
 
-def strikeable(entry: Entry) -> bool:
-    """Whether a person may strike it out: what a person wrote, not what a machine recorded."""
-    return entry.kind in ("mark", "height", "setup", "remark", "decision", "alarm", "finding")
-
-
 def entry_text(entry: Entry) -> str:
     """What the entry says."""
     body = entry.body

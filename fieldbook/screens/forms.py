@@ -29,8 +29,6 @@ Values = dict[str, str]
 Check = Callable[[Values], dict[str, str]]
 Sketch = Callable[[Values, int, int], Sequence[Row]]
 
-SKETCH_WIDTH = 38
-
 
 class Form(ModalScreen[Values | None]):
     """Asks for some fields; dismissed with their texts, or None after Esc."""
@@ -82,7 +80,7 @@ class Form(ModalScreen[Values | None]):
         return list(self._sketch(self.values(), width, height)) if self._sketch else []
 
     def _fields(self, width: int, height: int) -> list[Row]:
-        label_width = 16 if self._sketch else 19
+        label_width = 15 if self._sketch else 19
         rows: list[Row] = []
         last_needed = 0
         for number, line in enumerate(self.lines):

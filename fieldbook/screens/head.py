@@ -125,14 +125,8 @@ def leave_row(view: LiveView | None, width: int) -> Row:
     missing = [item for item in own if not item.met]
     mark_open = [item for item in leave.lines if item.scope != "set-up" and not item.met]
     if not view.occupation.open:
-        text = (
-            "every line of this set-up was met"
-            if not missing
-            else "open: " + " · ".join(open_text(item) for item in missing)
-        )
-        return row(
-            (" ended ", "strong"), (fit(f"  leave check at the end: {leave.verdict}; {text}", width - 8), "text")
-        )
+        text = f"{len(missing)} of {len(own)} lines of the set-up open" if missing else "every line of the set-up met"
+        return row((" ended ", "strong"), (fit(f"  leave check: {leave.verdict}; {text}", width - 8), "text"))
     word = leave.verdict.upper()
     spans: list[Span] = [(f" {word} ", VERDICT.get(leave.verdict, "warn"))]
     if missing:

@@ -96,6 +96,13 @@ def readings_block(
     return rows + judgement(readings, findings, width)
 
 
+def disagree(findings: Sequence[Finding]) -> str:
+    """Why readings must be read again; empty if they need not."""
+    return next(
+        (item.text for item in findings if item.severity == "stop" and item.code != "height_reading_missing"), ""
+    )
+
+
 def judgement(readings: Sequence[ReadingReduced], findings: Sequence[Finding], width: int) -> list[Row]:
     """Whether the readings agree, in words."""
     wrong = [item for item in findings if item.severity == "stop" and item.code != "height_reading_missing"]

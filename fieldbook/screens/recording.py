@@ -6,6 +6,7 @@ from collections.abc import Callable
 from typing import Any
 
 from fieldbook.screens.ask import Question
+from fieldbook.screens.heights import disagree
 from fieldbook.screens.page import Desk, next_tree, open_occupation
 from fieldbook.screens.setup import current_readings, current_session
 from fieldbook.screens.words import stopwatch
@@ -38,10 +39,12 @@ def start(desk: Desk) -> None:
     ]
     text.append(f"Its coordinates are taken to be in {session.frame.receiver}.")
     readings = current_readings(view)
-    height = bridge.heights(session, readings).height
+    judged = bridge.heights(session, readings)
+    height = judged.height
     if height is not None and height.height_arp_m is not None:
         count = f"{len(readings)} reading{'s' if len(readings) > 1 else ''}"
         text.append(f"ARP {height.height_arp_m:.4f} m above the mark, from {count}.")
+        text += [f"■ {wrong}"] if (wrong := disagree(judged.findings)) else []
     else:
         text.append("No height of antenna was read yet. It may be read later, but before the tripod moves.")
 

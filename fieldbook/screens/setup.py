@@ -12,7 +12,7 @@ from fieldbook.model.canonical import Tree
 from fieldbook.model.live import LiveView
 from fieldbook.model.session import HeightReading, Session
 from fieldbook.screens.bridge import Bridge, Heights
-from fieldbook.screens.heights import drawing, readings_block
+from fieldbook.screens.heights import disagree, drawing, readings_block
 from fieldbook.screens.page import Page, next_tree, open_occupation
 from fieldbook.screens.plain import fit, pad
 from fieldbook.screens.rows import BLANK, Row, beside, heading, paragraph, row
@@ -84,7 +84,17 @@ class SetupPage(Page):
             if arp is None
             else f"ARP {arp:.4f} m above mark, {count} reading{'s' if count > 1 else ''}"
         )
-        rows += [BLANK, _keyed("H", "Heights", text, width, style="warn" if arp is None else "strong"), BLANK]
+        rows += [BLANK, _keyed("H", "Heights", text, width, style="warn" if arp is None else "strong")]
+        if judged.problem or disagree(judged.findings):
+            rows += paragraph(
+                judged.problem or disagree(judged.findings),
+                width,
+                style="bad",
+                indent=3,
+                mark=("■ READ AGAIN", "bad"),
+                most=3,
+            )
+        rows.append(BLANK)
         if opened is None:
             carried = self.view is not None and bool(self.view.state.occupations)
             if carried:
@@ -107,11 +117,11 @@ class SetupPage(Page):
         typed = f"{last['value']} {last['unit']}" if last else ""
         arp = judged.height.readings[-1].arp_m if judged.height and judged.height.readings else None
         picture = drawing(method, typed, arp, session.antenna)
-        room = width - 39 if width >= 76 else width
+        room = width - 38 if width >= 76 else width
         block = [*paragraph(judged.problem, room, style="bad", most=6)] if judged.problem else []
         block += readings_block(judged.height, judged.findings, room, session.requirement.height_readings)
         if width >= 76:  # readings beside the drawing
-            return [*rows, BLANK, *beside(picture, block, 39)]
+            return [*rows, BLANK, *beside(picture, block, 38)]
         return [*rows, BLANK, *picture, BLANK, *block]
 
     def _heights(self, session: Session) -> Heights:

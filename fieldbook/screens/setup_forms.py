@@ -103,6 +103,44 @@ def _write_height(desk: Desk, values: Values | None) -> None:
     )
 
 
+def strike_reading(desk: Desk) -> None:
+    """Strike the last reading out, with a reason."""
+    view, bridge = desk.view, desk.bridge
+    readings = current_readings(view)
+    if view is None or not readings:
+        desk.tell("There is no reading to strike out.", "bad")
+        return
+    last, opened, tree = readings[-1], open_occupation(view), next_tree(view)
+    said = f"{last['method']} {last['value']} {last['unit']} {last['when']}"
+    seq = opened.heights[-1].seq if opened else None
+    if opened is not None and seq in (None, opened.entry_seq):
+        desk.tell(f"{said} stands in the occupation's own entry: read again, and write a remark why.", "bad")
+        return
+
+    def struck(values: Values | None) -> None:
+        if values is None:
+            return
+        reason = values["reason"]
+        if seq is not None:
+            desk.write(
+                lambda: bridge.strike(seq, reason), lambda entry: desk.tell(f"struck: {said} (entry {entry.seq})")
+            )
+        elif tree is not None:
+            setup = {**tree["setup"], "height": readings[:-1]}
+            if not readings[:-1]:
+                setup.pop("height")
+            remark = f"reading {said} taken back before the occupation: {reason}"
+
+            def job() -> Any:
+                bridge.add_remark(None, remark)
+                return bridge.save_session({**tree, "setup": setup})
+
+            desk.write(job, lambda entry: desk.tell(f"taken back: {said} (entry {entry.seq})"))
+
+    note = f"{said}. The entry stays in the diary."
+    desk.ask(Form("STRIKE OUT the last reading", [Field("reason", "Reason", required=True)], note=note), struck)
+
+
 def _change(desk: Desk, changes: Tree) -> None:
     """Write changed keys where they belong: the open occupation, or the next session."""
     view, bridge = desk.view, desk.bridge

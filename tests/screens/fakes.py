@@ -246,7 +246,7 @@ def occupation(number: int = 1, *, ended: str | None = None, tree: Tree | None =
         "R. Kell",
         session.receiver.link,
         True,
-        heights=[reading_from_tree(item, 4) for item in session.tree["setup"].get("height", [])],
+        heights=[reading_from_tree(item, 5) for item in session.tree["setup"].get("height", [])],
         ended_by=ended,
     )
 

@@ -250,6 +250,45 @@ def test_antenna_point_and_link_are_written_where_they_belong() -> None:
     asyncio.run(go())
 
 
+def test_reading_that_disagrees_is_said_aloud_and_taken_back_with_a_reason() -> None:
+    async def go() -> None:
+        bridge = FakeBridge()
+        async with opened(bridge) as pilot:
+            await pilot.press("3", "h")
+            await form(pilot)
+            await typed(pilot, "1.632")
+            await pilot.press(*["enter"] * 5)
+            await on_desk(pilot)
+            await see(pilot, "READ AGAIN")
+            await pilot.press("x")
+            await form(pilot)
+            await pilot.press(*"misread", "enter")
+            await on_desk(pilot)
+            await see(pilot, "taken back: slant 1.632 m before", "1 reading")
+            assert "READ AGAIN" not in screen_text(pilot)
+            assert kinds(bridge) == ["session", "remark", "session"]
+            assert "misread" in bridge.calls[1][1]["text"]
+
+    asyncio.run(go())
+
+
+def test_reading_of_an_open_occupation_is_struck_by_its_entry() -> None:
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge) as pilot:
+            await pilot.press("3", "x")
+            await see(pilot, "in the occupation's own entry")
+            bridge.add_height(1, {"method": "slant", "value": "1.6", "unit": "m", "when": "after"})
+            await see(pilot, "2 readings")
+            await pilot.press("x")
+            await form(pilot)
+            await pilot.press(*"misread", "enter")
+            await wait_until(pilot, lambda: kinds(bridge)[-1] == "strike", "the strike")
+            assert bridge.calls[-1][1] == {"seq": bridge.written[-2].seq, "reason": "misread"}
+
+    asyncio.run(go())
+
+
 # --- recording
 
 
@@ -437,10 +476,10 @@ def test_what_the_program_recorded_is_never_struck() -> None:
         async with opened(bridge) as pilot:
             await pilot.press("8")
             await see(pilot, "begins: KR-07")
-            await pilot.press("x")
-            await see(pilot, "never struck out")
             await pilot.press("w")
             await see(pilot, "bytes sealed")
+            await pilot.press("down", "x")
+            await see(pilot, "never struck out")
             assert not bridge.calls
 
     asyncio.run(go())
