@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 @click.option("--json", "as_json", is_flag=True, help="Result as JSON.")
 def command(book: Path, mark: str | None, check: bool, as_json: bool) -> int:
     """Reduce the occupations of BOOK."""
-    from fieldbook.book import Book
+    from fieldbook.book.store import Book
     from fieldbook.occupy.reductions import reduce_book
     from fieldbook.reduce.frames import versions
 

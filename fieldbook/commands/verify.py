@@ -48,7 +48,7 @@ def _book(path: Path) -> dict[str, object]:
 
 
 def _certificate(path: Path, books: list[Path]) -> dict[str, object]:
-    from fieldbook.book import Book
+    from fieldbook.book.store import Book
     from fieldbook.certificate.verify_file import verify_certificate
 
     lines = verify_certificate(path, None) if not books else []

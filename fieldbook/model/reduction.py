@@ -34,7 +34,7 @@ class Initialisation:
     to_utc: str | None
     kept: int
     used: bool
-    offset_enu_m: Vector | None  # from the mean of the used ones
+    offset_enu_m: list[float | None] | None  # from the mean of the used ones
     independent: bool = True  # False: 'resumed', a split without loss of fix
     reason: str = ""  # why not used
     u_enu_m: Vector | None = None

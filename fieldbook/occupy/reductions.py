@@ -9,12 +9,16 @@ from __future__ import annotations
 from dataclasses import dataclass
 from pathlib import Path
 
-from fieldbook.book import Book
+from fieldbook.book.store import Book
+from fieldbook.check.findings import findings_of
 from fieldbook.check.leave import Figures, OtherOccupation, leave_check
 from fieldbook.errors import FieldbookError, ReductionError, UsageError
 from fieldbook.model.reduction import Finding
 from fieldbook.model.state import BookState, Occupation
+from fieldbook.reduce import frames
 from fieldbook.reduce.occupation import Reduced, reduce_occupation
+
+SEVERITIES = ("stop", "caution", "info")
 
 
 @dataclass(frozen=True)
@@ -97,10 +101,8 @@ def others_of(item: Reduced, all_reduced: list[Reduced]) -> list[OtherOccupation
 def judge(item: Reduced, occupation: Occupation, others: list[OtherOccupation]) -> None:
     """Add what the book says beside the epochs, and the leave check."""
     reduction = item.reduction
-    known = {(finding.code, finding.text) for finding in reduction.findings}
-    for finding in book_findings(occupation):
-        if (finding.code, finding.text) not in known:
-            reduction.findings.append(finding)
+    reduction.findings = [*book_findings(occupation), *item.notes, *findings_of(item, occupation)]
+    reduction.findings.sort(key=lambda finding: SEVERITIES.index(finding.severity))
     figures = Figures(item.horizontal, item.vertical, item.horizontal_forbidden_by, item.vertical_forbidden_by)
     reduction.leave = leave_check(occupation.session.requirement, reduction, figures, others)
 
@@ -134,3 +136,15 @@ def book_findings(occupation: Occupation) -> list[Finding]:
 def known_marks(state: BookState) -> list[str]:
     """Names of all marks of a book, described or occupied, in order of appearance."""
     return list(dict.fromkeys([*state.marks, *(item.mark for item in state.occupations.values())]))
+
+
+def record_operation(book: Book, item: Reduced) -> None:
+    """Keep the frame operation of an ended occupation as an entry, so that a later PROJ cannot quietly choose another.
+
+    Nothing is written when it is recorded already, or when nothing was computed (identity).
+    """
+    state = book.state()
+    occupation = state.occupations[item.reduction.occupation]
+    steps = frames.operation_codes(item.reduction.operation)
+    if steps and occupation.operation is None and not occupation.open:
+        book.append("operation", {"occupation": occupation.number, "steps": steps}, occupation.observer)

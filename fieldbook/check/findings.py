@@ -1,0 +1,189 @@
+"""What the operator must know about one reduction: each finding has a code, a severity, figures, one sentence to act on.
+
+    stop       the figure cannot be relied on as it stands: answered by the operator, or the certificate stays a draft
+    caution    true, but with a weakness that somebody must know
+    info       a fact worth printing
+
+In: a `Reduced` with its evidence, and the occupation. The findings of single steps (antenna, frame operation) and those
+made while recording are added by the caller. Thresholds stand beside the finding they belong to.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from fieldbook.model.reduction import Finding
+from fieldbook.model.state import Occupation
+from fieldbook.reduce.occupation import Reduced
+from fieldbook.reduce.quantisation import FEW_DISTINCT
+
+FROZEN_CAUTION, FROZEN_STOP = 0.10, 0.90
+SEPARATION_SHARE = 1 / 3  # of the vertical requirement
+GATE_NAMES = {
+    "max_hdop": "HDOP",
+    "max_pdop": "PDOP",
+    "max_correction_age_s": "age of corrections",
+    "min_satellites": "number of satellites",
+}
+
+
+def findings_of(reduced: Reduced, occupation: Occupation) -> list[Finding]:
+    """All findings on epochs, initialisations, digits, mean and budget of one occupation, worst first."""
+    found = [
+        *_output(reduced),
+        *_initialisations(reduced, occupation),
+        *_resolution(reduced, occupation),
+        *_separation(reduced),
+        *_receiver_estimate(reduced),
+        *_session(reduced),
+        *_evidence(reduced, occupation),
+    ]
+    rank = {"stop": 0, "caution": 1, "info": 2}
+    return sorted(found, key=lambda item: rank[item.severity])
+
+
+def _output(reduced: Reduced) -> Iterator[Finding]:
+    share = reduced.screened.frozen_share
+    if share > FROZEN_STOP:
+        text = f"The receiver repeated one position for {100 * share:.0f} % of the time: a frozen or held output. "
+        yield Finding("frozen", "stop", text + "Switch static hold off and occupy again.", {"share": share})
+    elif share > FROZEN_CAUTION:
+        text = (
+            f"Output frozen for {100 * share:.0f} %: repeats were set aside and count as a gap. Check the output rate."
+        )
+        yield Finding("frozen", "caution", text, {"share": share})
+    aside = reduced.reduction.set_aside
+    outliers = aside.get("outlier", 0)
+    if outliers and outliers > 0.05 * max(reduced.reduction.kept, 1):
+        text = f"{outliers} epochs lie far from their neighbours. Look for a reflecting surface or an obstruction."
+        yield Finding("many_outliers", "caution", text, {"outliers": outliers, "kept": reduced.reduction.kept})
+    for key, count in sorted(reduced.screened.not_applied.items()):
+        text = (
+            f"The receiver did not report its {GATE_NAMES.get(key, key)} for {count} epochs: that gate was not applied."
+        )
+        yield Finding("gate_not_applied", "caution", text, {"gate": key, "epochs": count})
+
+
+def _initialisations(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
+    judged = reduced.judged
+    for item in judged.wrong:
+        offset = item.offset_enu_m or (0.0, 0.0, None)
+        distance = (offset[0] ** 2 + offset[1] ** 2) ** 0.5
+        up = "" if offset[2] is None else f", {1000 * offset[2]:+.0f} mm up"
+        text = (
+            f"Initialisation {item.number} lies {1000 * distance:.0f} mm away{up} and was not used: "
+            f"a wrong fix of {item.kept} epochs. Nothing to do if the others are independent."
+        )
+        figures = {"initialisation": item.number, "offset_enu_m": list(offset), "epochs": item.kept}
+        yield Finding("wrong_initialisation", "caution", text, figures)
+    if judged.disagreement_enu_m is not None:
+        east, north, up_m = judged.disagreement_enu_m
+        text = (
+            f"Initialisations disagree by {1000 * (east**2 + north**2) ** 0.5:.0f} mm in plan and {1000 * up_m:.0f} mm "
+            "in height, and none has a clear majority. Re-initialise and stay, or set one aside by a decision."
+        )
+        figures = {"difference_enu_m": [east, north, up_m], "share": judged.leading_share}
+        yield Finding("initialisations_disagree", "stop", text, figures)
+    independent = sum(item.used and item.independent for item in judged.initialisations)
+    if reduced.fix_class.is_rtk_fixed and independent < 2:
+        text = "One initialisation only: a wrong fix common to the whole session cannot be seen. Re-initialise."
+        yield Finding("single_initialisation", "caution", text, {"independent": independent})
+    by_decision = [item.number for item in judged.initialisations if item.code == "operator"]
+    for number in by_decision:
+        reason = occupation.initialisation_decisions.get(number, (False, ""))[1]
+        yield Finding("set_aside_by_operator", "info", f"Initialisation {number} was set aside: {reason}")
+
+
+def _resolution(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
+    resolution = reduced.resolution
+    few = [
+        name
+        for name in ("latitude", "longitude")
+        if resolution.digits[name].count_distinct < FEW_DISTINCT and reduced.reduction.kept >= 30
+    ]
+    sd_e, sd_n, _ = reduced.sd_enu_m
+    coarse = (
+        resolution.latitude_step_m is not None
+        and resolution.longitude_step_m is not None
+        and (resolution.latitude_step_m > 2 * (sd_n or 0.0) or resolution.longitude_step_m > 2 * (sd_e or 0.0))
+    )
+    if (few or coarse) and reduced.screened.frozen_share <= FROZEN_CAUTION:
+        step = max(resolution.latitude_step_m or 0.0, resolution.longitude_step_m or 0.0)
+        text = f"The coordinates come in steps of {1000 * step:.1f} mm: resolution governs. Set the receiver to more decimals."
+        yield Finding("resolution_coarse", "caution", text, {"step_m": step})
+    u_m = resolution.separation_u_m
+    wanted_m = occupation.session.requirement.vertical_95_m
+    if u_m is not None and 1.96 * u_m > SEPARATION_SHARE * wanted_m:
+        text = (
+            f"The geoid separation comes with {resolution.separation_decimals} decimals: every height can be wrong by "
+            f"{1000 * u_m * 3**0.5:.0f} mm alike, more than a third of the requirement. Set the receiver to more decimals."
+        )
+        yield Finding("separation_coarse", "stop", text, {"u_m": u_m, "decimals": resolution.separation_decimals})
+
+
+def _separation(reduced: Reduced) -> Iterator[Finding]:
+    digits = reduced.resolution.digits["separation"]
+    values = sorted(digits.distinct)
+    if values == [0]:
+        text = "The geoid separation is exactly zero throughout: the altitude may already be ellipsoidal. Check the receiver."
+        yield Finding("separation_zero", "caution", text)
+    elif len(values) > 1 and digits.fewest_decimals is not None:
+        change_m = (values[-1] - values[0]) * 1e-5
+        if change_m > 3 * 10.0**-digits.fewest_decimals:
+            text = f"The geoid separation changed by {change_m:.3f} m: the receiver changed its model or mode. Look at heights."
+            yield Finding("separation_changed", "caution", text, {"change_m": change_m})
+    if reduced.reduction.without_height:
+        count = reduced.reduction.without_height
+        text = (
+            f"{count} kept epochs have no ellipsoidal height (altitude or separation missing); they count in plan only."
+        )
+        yield Finding("without_height", "info", text, {"epochs": count})
+
+
+def _receiver_estimate(reduced: Reduced) -> Iterator[Finding]:
+    for axis, verdict, value in (
+        ("in plan", reduced.gst.horizontal, reduced.gst.horizontal_m),
+        ("in height", reduced.gst.vertical, reduced.gst.vertical_m),
+    ):
+        if verdict == "beyond":
+            text = f"The receiver's own estimate {axis}, {value:.3f} m, contradicts its fix quality. Check the fix."
+            yield Finding("gst_contradicts", "caution", text, {"sigma_m": value})
+        elif verdict == "used":
+            text = f"The receiver's own estimate {axis}, {value:.3f} m, is worse than usual for its kind of fix and was taken."
+            yield Finding("gst_used", "info", text, {"sigma_m": value})
+
+
+def _session(reduced: Reduced) -> Iterator[Finding]:
+    mean, fix_class = reduced.mean, reduced.fix_class
+    if mean.governed_by == "class":
+        text = (
+            f"The session is {mean.ratio:.1f} correlation times long (about {mean.tau_s:.0f} s each): its scatter cannot "
+            f"tell the uncertainty, the kind of fix ({fix_class.name}) governs."
+        )
+        figures = {"correlation_time_s": mean.tau_s, "ratio": mean.ratio, "class": fix_class.name}
+        yield Finding("class_governs", "info", text, figures)
+    floor = fix_class.floor_enu_m
+    if floor[0] > max(mean.east.u_m, mean.north.u_m):
+        text = "Staying longer in this session hardly helps; a second occupation hours later does."
+        yield Finding("floor_governs", "info", text, {"floor_m": floor[0], "u_mean_m": mean.east.u_m})
+    if fix_class.name == "autonomous":
+        text = "Autonomous positions: metres, not millimetres, whatever the scatter says."
+        yield Finding("autonomous", "caution", text)
+
+
+def _evidence(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
+    if reduced.reduction.set_aside.get("datum"):
+        count = reduced.reduction.set_aside["datum"]
+        text = f"The receiver announced another local datum (DTM) for {count} epochs. Confirm it by a decision, or set W84."
+        yield Finding("datum_not_confirmed", "stop", text, {"epochs": count})
+    if occupation.session.receiver.accept_without_checksum:
+        yield Finding("without_checksum", "caution", "Sentences without a checksum were accepted, as the session says.")
+    if occupation.session.corrections.kind == "own base on unknown mark":
+        text = "The base stood on an unknown mark: its error is in every coordinate and in no figure here. Tie to a known mark."
+        yield Finding("base_unknown", "stop", text)
+    if not reduced.reduction.operation.area_ok:
+        yield Finding("outside_area", "caution", "The mark lies outside the area of use of its frame or operation.")
+    height = reduced.reduction.height
+    if height is not None and height.datum is None:
+        text = f"H is a height above {height.model_name}, not above a national height datum; use the national model for that."
+        yield Finding("no_height_datum", "info", text)
