@@ -90,10 +90,10 @@ class Digits:
     def step_units(self, unit_decimals: int) -> float | None:
         """Step in the field's integer unit: from the digits, or the divisor if the receiver pads zeros.
 
-        The divisor counts from three distinct values on; two can lie any multiple apart.
+        The divisor counts from six distinct values on: fewer can all lie an even number of steps apart by chance.
         `unit_decimals` is the number of decimals of the integer unit (8 for coordinates, 5 for heights).
         """
         if self.fewest_decimals is None:
             return None
         from_digits = 10.0 ** max(unit_decimals - self.fewest_decimals, 0)
-        return max(from_digits, float(self.divisor)) if self.count_distinct >= 3 else from_digits
+        return max(from_digits, float(self.divisor)) if self.count_distinct >= FEW_DISTINCT else from_digits
