@@ -85,6 +85,7 @@ DECISIONS = (
     "operation",
     "accuracy_over_limit",
     "outside_area",
+    "height_difference",
 )
 
 # What an observer wrote and may take back. What a machine wrote (bytes, gaps, findings, ends) stands, and a
