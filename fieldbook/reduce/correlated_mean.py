@@ -56,6 +56,7 @@ class Bins:
     index: Ints  # shape (m,), increasing
     count: Ints  # shape (m,), epochs in each
     mean_m: Floats  # shape (m,)
+    thinned: bool = False
 
     @property
     def observed_s(self) -> float:
@@ -63,9 +64,11 @@ class Bins:
         return self.length_s * len(self.index)
 
     def without_thin(self) -> Bins:
-        """Without the bins that hold less than a quarter of the median count."""
+        """Without the bins that hold less than a quarter of the median count; a second call changes nothing."""
+        if self.thinned:
+            return self
         keep = self.count >= LEAST_SHARE_OF_MEDIAN * np.median(self.count)
-        return Bins(self.length_s, self.index[keep], self.count[keep], self.mean_m[keep])
+        return Bins(self.length_s, self.index[keep], self.count[keep], self.mean_m[keep], thinned=True)
 
 
 @dataclass(frozen=True)
