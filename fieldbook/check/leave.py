@@ -27,11 +27,21 @@ NOT_BLOCKING = frozenset({"simulated"})  # a simulated receiver keeps the certif
 
 @dataclass(frozen=True)
 class OtherOccupation:
-    """Another occupation of the same mark: first and last kept epoch, `utc_text` form."""
+    """Another occupation of the same mark: first and last kept epoch (`utc_text` form), its own 95 % figures."""
 
     number: int
     started: str
     ended: str
+    horizontal95_m: float
+    vertical95_m: float | None
+
+    def counts(self, requirement: Requirement) -> bool:
+        """An occupation that misses the accuracy lines is no second occupation for this requirement."""
+        return (
+            self.horizontal95_m <= requirement.horizontal_95_m
+            and self.vertical95_m is not None
+            and self.vertical95_m <= requirement.vertical_95_m
+        )
 
 
 @dataclass(frozen=True)
@@ -163,12 +173,16 @@ def _stops(reduction: Reduction) -> list[LeaveLine]:
 
 
 def _of_the_mark(requirement: Requirement, reduction: Reduction, others: Sequence[OtherOccupation]) -> list[LeaveLine]:
-    apart_h = _hours_apart(reduction, others)
+    counted = [other for other in others if other.counts(requirement)]
+    apart_h = _hours_apart(reduction, counted)
     lines = []
-    if requirement.occupations > 1 or others:
-        have = 1 + len(others)
+    if requirement.occupations > 1 or counted:
+        have = 1 + len(counted)
         met = have >= requirement.occupations
         text = "done" if met else _come_back(requirement, reduction)
+        if len(counted) < len(others):
+            poor = ", ".join(str(other.number) for other in others if not other.counts(requirement))
+            text += f"; occupation {poor} misses the accuracy lines and does not count"
         lines.append(
             LeaveLine("occupations", "mark", requirement.occupations, have, "", met, 0.0 if met else None, text)
         )

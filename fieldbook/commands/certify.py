@@ -3,15 +3,11 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING
 
 import click
 
 from fieldbook.clock import SystemClock
 from fieldbook.commands.output import line, note, plain, write_json
-
-if TYPE_CHECKING:
-    from fieldbook.certificate.issue import Prepared
 
 
 @click.command()
@@ -35,32 +31,11 @@ def command(
 ) -> None:
     """Issue the certificate of MARK from BOOK."""
     from fieldbook.book.store import Book
-    from fieldbook.certificate.issue import certify
-    from fieldbook.certificate.repeats import repeats_of
-    from fieldbook.occupy.reductions import record_operation, reductions_of_mark
-    from fieldbook.reduce.frames import versions
+    from fieldbook.commands.paper import issue
 
-    clock = SystemClock()
-    used = versions()
-    with Book.open(book, clock=clock, write=True) as opened:
-
-        def prepared(number: int) -> Prepared:
-            own, others = reductions_of_mark(opened, number)
-            record_operation(opened, own)
-            repeats = repeats_of(own.reduction, [item.reduction for item in others])
-            return own.reduction, own.trace, repeats
-
-        issued = certify(
-            opened,
-            mark,
-            out,
-            occupation=occupation,
-            sign_off=sign_off,
-            supersede=supersede,
-            replace=replace,
-            reductions=prepared,
-            versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
-            clock=clock,
+    with Book.open(book, clock=SystemClock(), write=True) as opened:
+        issued = issue(
+            opened, mark, out, occupation=occupation, sign_off=sign_off, supersede=supersede, replace=replace
         )
     if as_json:
         write_json(

@@ -17,9 +17,11 @@ from fieldbook.commands.output import line, write_json
 def command(book: Path, session_path: Path, *, as_json: bool) -> None:
     """Check the session, then make the file."""
     from fieldbook.book.store import Book
+    from fieldbook.occupy.frame_check import check_session_frames
     from fieldbook.settings.session import load_session
 
     session = load_session(session_path)
+    check_session_frames(session)
     made = Book.create(book, clock=SystemClock(), observer=session.job.observer, session_tree=session.tree)
     try:
         state = made.state()

@@ -64,10 +64,12 @@ def _observe(
 ) -> tuple[Tree, bool]:
     from fieldbook.links.address import parse_link
     from fieldbook.occupy.foreground import Wish, observe
+    from fieldbook.occupy.frame_check import check_session_frames
     from fieldbook.occupy.recorder import StopSignals
     from fieldbook.settings.session import load_session
 
     session = load_session(session_path)
+    check_session_frames(session)
     if link_text is not None:
         address = parse_link(link_text, Path.cwd())
     else:

@@ -38,9 +38,12 @@ def command(files: tuple[Path, ...], as_json: bool) -> int:
 
 
 def _book(path: Path) -> dict[str, object]:
-    from fieldbook.occupy.verifying import verify_book
+    from fieldbook.commands.verify_certified import verify_certified
+    from fieldbook.occupy.verifying import verify_stored
 
-    findings = verify_book(path)
+    findings = verify_stored(path)
+    if all(item.holds for item in findings):
+        findings += verify_certified(path)
     lines = [
         {"holds": item.holds, "where": item.where, "text": item.text, "since": item.since_seq} for item in findings
     ]

@@ -53,13 +53,15 @@ class Arrivals:
             self.waiting_bytes += len(data)
             self._changed.notify()
 
-    def add_event(self, kind: ItemKind, text: str) -> None:
-        """A link event, stamped with the time of now."""
+    def add_event(self, kind: ItemKind, text: str) -> Item:
+        """A link event, stamped with the time of now; returns its item."""
         mono, utc = self._clock.monotonic_ms(), self._clock.utc_ms()
+        item = Item(kind, text.encode("utf-8"), mono, utc)
         with self._changed:
             self._note_loss(mono, utc)
-            self._queue.append(Item(kind, text.encode("utf-8"), mono, utc))
+            self._queue.append(item)
             self._changed.notify()
+        return item
 
     def end(self) -> None:
         """Nothing more will come from this source."""

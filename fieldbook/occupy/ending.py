@@ -30,7 +30,7 @@ def end_directly(book: Book, number: int, clock: Clock, *, by: str = "operator")
     if not occupation.open:
         raise UsageError(f"Occupation {number} was ended already, by {occupation.ended_by}.", "Nothing is left to do.")
     writer = Writer(book, occupation, clock, patience=lambda: False)
-    writer.restore()
+    catch_up(writer, book, number)
     writer.finish(by, live=not occupation.link.startswith("file:"))
 
 

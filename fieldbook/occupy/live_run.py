@@ -4,28 +4,34 @@ from __future__ import annotations
 
 from fieldbook import __version__
 from fieldbook.errors import LinkError
-from fieldbook.model.item import ItemKind
+from fieldbook.model.item import Item, ItemKind
 from fieldbook.occupy.arrivals import Arrivals
 from fieldbook.occupy.reader_thread import ReaderThread
+from fieldbook.occupy.restore import Meanwhile
 from fieldbook.occupy.run import WAIT_S, Run
 from fieldbook.occupy.source_warnings import WARNINGS, finding_of
 
 SENSELESS_MS, SENSELESS_BYTES = 5_000, 200
+MEANWHILE_MS = 100
+DISK_TOO_SLOW = "disk_too_slow"
 
 
 class LiveRun(Run):
     """A port, a socket or the simulated receiver: read by a thread, committed burst by burst."""
 
     def go(self) -> str | None:
-        self._started_ms = self._clock.monotonic_ms()
+        self._started_ms, self._taken_ms = self._clock.monotonic_ms(), 0
+        self._told: set[str] = set()
         self._arrivals = Arrivals(self._clock)
         self._reader = ReaderThread(self._link, self._address, self._arrivals, self._clock)
+        meanwhile = None
         if self.resumed:
-            self._arrivals.add_event(ItemKind.STARTED, __version__)
+            start = self._arrivals.add_event(ItemKind.STARTED, __version__)
+            meanwhile = Meanwhile(start, self._take_meanwhile)
         self._arrivals.add_event(ItemKind.REOPENED if self.resumed else ItemKind.OPENED, self._address.text)
-        self._reader.start()  # before restoring: what comes meanwhile waits in memory
+        self._reader.start()  # before restoring: nothing that comes meanwhile is missed
         self._wishes.on_start()
-        self._begin()
+        self._begin(meanwhile)
         wanted = self._loop()
         self._reader.stop()
         rest = self._arrivals.take(0, all_of_it=True)
@@ -37,6 +43,14 @@ class LiveRun(Run):
             return None
         self._end(wanted)
         return wanted
+
+    def _take_meanwhile(self) -> list[Item]:
+        """What has arrived while the past is decoded, ten times a second."""
+        now = self._clock.monotonic_ms()
+        if now - self._taken_ms < MEANWHILE_MS:
+            return []
+        self._taken_ms = now
+        return self._arrivals.take(0)
 
     def close(self) -> None:
         if hasattr(self, "_reader") and self._reader.ident is not None:
@@ -72,7 +86,7 @@ class LiveRun(Run):
         state, arrivals = self._writer.state, self._arrivals
         state.last_byte_utc_ms = arrivals.last_byte_utc_ms
         state.waiting_bytes, state.dropped_bytes = arrivals.waiting_bytes, arrivals.dropped_bytes
-        self._alarm("disk_too_slow", arrivals.dropping, "DISK TOO SLOW: received bytes are being lost.")
+        self._alarm(DISK_TOO_SLOW, arrivals.dropping, "DISK TOO SLOW: received bytes are being lost.")
         warnings = set(self._writer.decoder.warnings)
         if self._makes_no_sense():
             warnings.add("no_valid_nmea")
@@ -89,9 +103,12 @@ class LiveRun(Run):
         return self._clock.monotonic_ms() - self._started_ms >= SENSELESS_MS
 
     def _alarm(self, code: str, on: bool, text: str) -> None:
+        """Show an alarm while it holds; enter it once (a disk that is too slow each time: each is a loss)."""
         alarms = self._writer.state.alarms
         if on and code not in alarms:
             alarms.append(code)
-            self._writer.append("alarm", code=code, text=text, acknowledged=False)
+            if code not in self._told or code == DISK_TOO_SLOW:
+                self._told.add(code)
+                self._writer.append("alarm", code=code, text=text, acknowledged=False)
         elif not on and code in alarms:
             alarms.remove(code)

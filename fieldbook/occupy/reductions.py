@@ -89,7 +89,13 @@ def reductions_of_mark(book: Book, number: int) -> tuple[Reduced, list[Reduced]]
 def others_of(item: Reduced, all_reduced: list[Reduced]) -> list[OtherOccupation]:
     """The mark's other occupations that have kept epochs."""
     return [
-        OtherOccupation(other.reduction.occupation, other.reduction.started, other.reduction.ended)
+        OtherOccupation(
+            other.reduction.occupation,
+            other.reduction.started,
+            other.reduction.ended,
+            other.reduction.uncertainty.horizontal95_m,
+            other.reduction.uncertainty.vertical95_m,
+        )
         for other in all_reduced
         if other.reduction.mark == item.reduction.mark
         and other is not item

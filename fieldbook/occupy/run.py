@@ -14,6 +14,7 @@ from fieldbook.links.base import Link
 from fieldbook.model.recorder import RecorderState
 from fieldbook.model.state import Occupation
 from fieldbook.occupy.rebuild import decoder_options, occupation_of
+from fieldbook.occupy.restore import Meanwhile, restore
 from fieldbook.occupy.writer import Writer
 
 WAIT_S = 0.1
@@ -69,10 +70,9 @@ class Run:
         """Let the link go, whatever happened."""
         self._link.close()
 
-    def _begin(self) -> None:
-        self._writer.restore()
+    def _begin(self, meanwhile: Meanwhile | None = None) -> None:
         if self.resumed:
-            self._writer.resumed(live=self._address.live)
+            restore(self._writer, self._book, self._occupation.number, meanwhile)
         self._writer.append("recorder", state="running", program=f"fieldbook {__version__}")
         self._writer.state.link_state = "open"
         self._writer.show_state(now=True)

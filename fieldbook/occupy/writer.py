@@ -2,8 +2,7 @@
 
 In: items in the order of their arrival. Each call of `write` is one commit: the raw rows first and always, with
 whichever epochs have closed by then. The decoder sees recorded items only and in recorded order, so a rebuild from the
-raw rows cannot differ. `restore` puts a new writer where an earlier one stopped by decoding the whole occupation again:
-it is the simplest way that is surely right, and it writes the epochs that the earlier one had not got round to.
+raw rows cannot differ. `restore.restore` puts a new writer where an earlier one stopped.
 
 A commit that fails (disk full, book busy) is tried again; meanwhile arriving bytes wait in memory.
 """
@@ -33,7 +32,6 @@ from fieldbook.occupy.spans import Claimed, Span
 SEAL_ROWS, SEAL_MS = 60, 60_000
 STATE_MS = 250
 RETRY_S = 0.5
-RESTORE_BATCH = 5000
 PASSING = frozenset({"busy", "disk_full", "disk_error", "read_only", "cannot_open"})  # may be better in a moment
 
 
@@ -95,51 +93,22 @@ class Writer:
         """Of the received bytes alone."""
         return self._hash.hexdigest()
 
-    def restore(self) -> bool:
-        """Decode what is recorded, append the epochs that are missing; True if anything had been recorded."""
-        stored = self._last_stored()
-        last = stored[-1].number if stored else 0
-        known = {epoch.number: epoch for epoch in stored}
-        missing: list[Epoch] = []
-        as_stored, any_item = True, False
-        for item in self._book.items(self._number):
-            any_item = True
-            for epoch in self._take(item):
-                as_stored = as_stored and known.get(epoch.number, epoch) == epoch
-                if epoch.number > last:
-                    missing.append(epoch)
-            if len(missing) >= RESTORE_BATCH and as_stored:
-                self._commit([], missing)
-                missing = []
-        if not as_stored or self.heard.epochs < last:
-            # an entry has changed an option of the decoder since these rows were written
-            self._decode_again()
-        elif missing:
-            self._commit([], missing)
-        self._note_date()
-        return any_item
-
     def options_changed(self, occupation: Occupation) -> None:
         """Go on with the decoder options that new entries give; everything recorded so far is decoded again."""
         self._occupation = occupation
         self.decoder = Decoder(decoder_options(occupation))
         self._hash, self.heard, self._break = hashlib.sha256(), Heard(), None
         for item in self._book.items(self._number):
-            self._take(item)
-        self._decode_again()
-        self._note_date()
+            self.take(item)
+        self.decode_again()
+        self.note_date()
 
-    def _decode_again(self) -> None:
+    def decode_again(self) -> None:
+        """Replace all epochs by what a fresh decoder makes of all items."""
         again = Decoder(decoder_options(self._occupation))
         items = self._book.items(self._number)
         epochs = [epoch for item in items for epoch in again.feed(item)]
         self._persist(lambda: self._book.replace_epochs(self._number, epochs))
-
-    def _last_stored(self) -> list[Epoch]:
-        """The last stored epochs: all after the count in the heartbeat, which may lag but never leads."""
-        state = self._book.recorder_state()
-        count = state.epochs if state is not None and state.occupation == self._number else 0
-        return self._book.epochs(self._number, after=max(0, count - 1)) or self._book.epochs(self._number)
 
     def resumed(self, *, live: bool) -> None:
         """Enter that a new recorder took the occupation up again, and that a live link was not heard meanwhile."""
@@ -150,13 +119,20 @@ class Writer:
             heard = self.heard.last_utc_ms or utc_ms_of(self._occupation.started_utc)
             self._break = self._break or _Break("recorder stopped", heard)
 
+    def write_raw(self, items: list[Item]) -> None:
+        """Commit these items; they are decoded later (`restore` comes by)."""
+        if items:
+            self.commit(items, [])
+            self._rows += len(items)
+            self.seal_if_due()
+
     def write(self, items: list[Item]) -> None:
         """Decode and commit these items, then enter what they tell (gap, date, overlap)."""
-        epochs = [epoch for item in items for epoch in self._take(item, self._gap)]
-        self._commit(items, epochs)
+        epochs = [epoch for item in items for epoch in self.take(item, fresh=True)]
+        self.commit(items, epochs)
         self._rows += len(items)
         if epochs:
-            self._note_date()
+            self.note_date()
             self._note_overlap()
         self.seal_if_due()
 
@@ -175,7 +151,7 @@ class Writer:
     def show_state(self, *, now: bool = False) -> None:
         """Write the heartbeat row, at most four times a second unless `now`."""
         if now or self._clock.monotonic_ms() - self._state_ms >= STATE_MS:
-            self._commit([], [], with_state=True)
+            self.commit([], [], with_state=True)
 
     def append(self, kind: str, **body: object) -> None:
         """One entry about this occupation, signed with the occupation's observer."""
@@ -186,10 +162,10 @@ class Writer:
         """End the occupation: last epoch closed, everything sealed, the `end` entry, chunks re-packed."""
         mono, utc = (self._clock.monotonic_ms(), self._clock.utc_ms()) if live else (None, None)
         last = Item(ItemKind.END, reason.encode("utf-8"), mono, utc)
-        epochs = self._take(last) + self._counted(self.decoder.finish())
+        epochs = self.take(last) + self._counted(self.decoder.finish())
         self.state.link_state = "ended"
-        self._commit([last], epochs, with_state=True)
-        self._note_date()
+        self.commit([last], epochs, with_state=True)
+        self.note_date()
         self._note_overlap()
         self._note_source()
         self.seal()
@@ -202,7 +178,8 @@ class Writer:
         )
         self._persist(lambda: self._book.pack(self._number))
 
-    def _take(self, item: Item, on_break_over: Callable[[Item], None] | None = None) -> list[Epoch]:
+    def take(self, item: Item, *, fresh: bool = False) -> list[Epoch]:
+        """Let the decoder have a recorded item; a `fresh` one also gives its entries (gap)."""
         self.heard.last_item_utc_ms = item.utc_ms or 0
         if item.kind is ItemKind.BYTES:
             self._hash.update(item.data)
@@ -212,8 +189,8 @@ class Writer:
             since = self.heard.last_utc_ms or item.utc_ms or 0
             self._break = _Break(item.data.decode("utf-8", "replace"), since)
         elif item.kind is ItemKind.REOPENED:
-            if on_break_over is not None:
-                on_break_over(item)
+            if fresh:
+                self._gap(item)
             self._break = None
         return self._counted(self.decoder.feed(item))
 
@@ -247,7 +224,8 @@ class Writer:
             own.append(state.last_commit_utc_ms)
         return max(own, default=0)
 
-    def _note_date(self) -> None:
+    def note_date(self) -> None:
+        """Enter the date of day 0 once the receiver has given it."""
         day0 = self.decoder.day0
         if day0 is not None and day0 != self._date and self._occupation.day0_source != "decision":
             self._date = day0
@@ -273,7 +251,8 @@ class Writer:
         self.findings.append({"code": code, "severity": severity, "text": text, "figures": figures})
         self.append("finding", code=code, severity=severity, text=text, figures=figures)
 
-    def _commit(self, items: list[Item], epochs: list[Epoch], *, with_state: bool = False) -> None:
+    def commit(self, items: list[Item], epochs: list[Epoch], *, with_state: bool = False) -> None:
+        """One commit, with the heartbeat where it is due."""
         began = self._clock.monotonic_ms()
         state = self.state if with_state or began - self._state_ms >= STATE_MS else None
         if state is not None:

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING
 
 from fieldbook.clock import Clock, SystemClock
 from fieldbook.errors import FieldbookError, UsageError
@@ -18,6 +18,9 @@ from fieldbook.model.entry import Entry
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import AntennaHeight, Finding, Reduction
 from fieldbook.model.session import Session
+
+if TYPE_CHECKING:
+    from fieldbook.occupy.live import LiveReader
 
 
 @dataclass(frozen=True)
@@ -62,7 +65,7 @@ class Bridge:
     path: Path
     clock: Clock = field(default_factory=SystemClock)
     observer: str = ""  # who signs; empty until a session or a person says so
-    _reader: Any = None
+    _reader: LiveReader | None = None
 
     # --- looking
 
@@ -71,16 +74,14 @@ class Bridge:
         from fieldbook.occupy.live import LiveReader
 
         if self._reader is None:
-            self._reader = LiveReader(self.path)
-        view: LiveView = self._reader.snapshot()
-        return view
+            self._reader = LiveReader(self.path, self.clock)
+        return self._reader.snapshot()
 
     def close(self) -> None:
-        """Let go of the reader; called by the feed's thread's owner after the thread has ended."""
+        """Let go of the reader, in the thread that used it."""
         reader, self._reader = self._reader, None
-        close = getattr(reader, "close", None)
-        if close is not None:
-            close()
+        if reader is not None:
+            reader.close()
 
     def entries(self) -> list[Entry]:
         """All entries of the book, in order."""
@@ -223,12 +224,19 @@ class Bridge:
     def certify(self, mark: str, occupation: int, out: str, sign_off: str, supersede: str) -> Issued:
         """Issue a certificate (with a sign-off) or write a draft (without). An existing file is refused."""
         from fieldbook.book.store import Book
-        from fieldbook.certificate.issue import certify
-        from fieldbook.occupy.certifying import prepared, record_operation
+        from fieldbook.certificate.issue import Prepared, certify
+        from fieldbook.certificate.repeats import repeats_of
+        from fieldbook.occupy.reductions import record_operation, reductions_of_mark
         from fieldbook.reduce.frames import versions
 
         used = versions()
         with Book.open(self.path, clock=self.clock, write=True) as book:
+
+            def prepared(number: int) -> Prepared:
+                own, others = reductions_of_mark(book, number)
+                record_operation(book, own)
+                return own.reduction, own.trace, repeats_of(own.reduction, [item.reduction for item in others])
+
             made = certify(
                 book,
                 mark,
@@ -236,11 +244,10 @@ class Bridge:
                 occupation=occupation,
                 sign_off=sign_off or None,
                 supersede=supersede or None,
-                reductions=lambda number: prepared(book, number),
+                reductions=prepared,
                 versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
                 clock=self.clock,
             )
-            record_operation(book, mark, occupation)
         return Issued(str(made.path), made.number, tuple(made.missing))
 
     def missing(self, reduction: Reduction) -> list[str]:

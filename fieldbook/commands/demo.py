@@ -1,0 +1,139 @@
+"""`fieldbook demo`: the whole job on the samples, from received bytes to verified certificates.
+
+The samples are copied into the folder first and recorded from there, so that everything the books name stands beside
+them. Nothing is overwritten: the folder must be new or empty.
+"""
+
+from __future__ import annotations
+
+import shutil
+import threading
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import click
+
+from fieldbook.clock import SystemClock
+from fieldbook.commands.output import line, note
+from fieldbook.errors import UsageError
+
+if TYPE_CHECKING:
+    from fieldbook.reduce.occupation import Reduced
+
+# book -> its occupations, in the order in which the party brought them home
+BOOKS = {
+    "kestrel-ridge": ("kestrel-ridge-1", "kestrel-ridge-2"),
+    "saltpan": ("saltpan-1", "saltpan-2"),
+}
+SIGN_OFF = "I. Nobody (sample); no licence, not for use"
+FORMATS = ("pdf", "html", "json")
+LIVE_LINK = "sim:two-inits?seed=7"
+
+
+@click.command()
+@click.option("--out", type=click.Path(path_type=Path), default=Path("fieldbook-demo"), help="Folder, new or empty.")
+@click.option("--live", is_flag=True, help="Open the screen on a simulated receiver instead.")
+def command(out: Path, live: bool) -> int | None:
+    """Do the whole job on the samples: books, reductions, certificates, and verify them."""
+    _make_folder(out)
+    samples = out / "sample_sessions"
+    shutil.copytree(samples_folder(), samples, ignore=shutil.ignore_patterns("*.py", "__pycache__"))
+    if live:
+        return _live(out, samples)
+    written: list[Path] = []
+    for name, sessions in BOOKS.items():
+        written += _one_book(out / f"{name}.book", [samples / session for session in sessions])
+    line("Certificates of the sample marks, each verified with its book:")
+    for path in written:
+        line(f"  {path}")
+    line(f"Look at one, or open a book: fieldbook open {out / 'kestrel-ridge.book'}")
+    return None
+
+
+def samples_folder() -> Path:
+    """The samples as installed with the package, or those of the repository this runs from.
+
+    Raises:
+        UsageError: neither is there.
+    """
+    import fieldbook
+
+    package = Path(fieldbook.__file__).resolve().parent
+    for folder in (package / "sample_sessions", package.parent / "sample_sessions"):
+        if (folder / "kestrel-ridge-1" / "session.toml").is_file():
+            return folder
+    raise UsageError("The samples are not installed.", "Install Fieldbook again from its repository.")
+
+
+def _make_folder(out: Path) -> None:
+    if out.exists() and (not out.is_dir() or any(out.iterdir())):
+        raise UsageError(f"{out} exists and is not empty.", "Name another folder with --out; nothing is overwritten.")
+    out.mkdir(parents=True, exist_ok=True)
+
+
+def _one_book(path: Path, sessions: list[Path]) -> list[Path]:
+    from fieldbook.book.store import Book
+    from fieldbook.commands.reduction_text import reduction_lines
+    from fieldbook.occupy.reductions import reduce_book
+
+    for session in sessions:
+        _record(path, session)
+    with Book.open(path, clock=SystemClock()) as book:
+        reduced, failed = reduce_book(book)
+    for item in reduced:
+        for text in reduction_lines(item.reduction):
+            line(text)
+        line()
+    for failure in failed:
+        note(f"{failure.mark}, occupation {failure.occupation}: {failure.error}")
+    written: list[Path] = []
+    for mark in dict.fromkeys(item.reduction.mark for item in reduced):
+        best = min(
+            (item for item in reduced if item.reduction.mark == mark),
+            key=lambda item: item.reduction.uncertainty.horizontal95_m,
+        )
+        written += _certify(path, best)
+    return written
+
+
+def _record(path: Path, folder: Path) -> None:
+    from fieldbook.links.address import parse_link
+    from fieldbook.occupy.foreground import Wish, observe
+    from fieldbook.settings.session import load_session
+
+    session = load_session(folder / "session.toml")
+    address = parse_link(session.receiver.link, folder)
+    result = observe(path, Wish(session, address), SystemClock(), threading.Event())
+    note(f"{path.name}: {session.mark.name} recorded from {folder.name}, occupation {result.occupation}")
+
+
+def _certify(path: Path, best: Reduced) -> list[Path]:
+    from fieldbook.book.store import Book
+    from fieldbook.certificate.verify_file import verify_certificate
+    from fieldbook.commands.paper import issue
+
+    mark, number = best.reduction.mark, best.reduction.occupation
+    written: list[Path] = []
+    with Book.open(path, clock=SystemClock(), write=True) as book:
+        for ending in FORMATS:
+            out = path.parent / f"{mark}.{ending}"
+            issued = issue(book, mark, out, occupation=number, sign_off=SIGN_OFF)
+            if not all(holds for holds, _ in verify_certificate(out, book)):
+                raise UsageError(f"{out} does not verify.", "Report this: it is a fault of the program.")
+            written.append(issued.path)
+    return written
+
+
+def _live(out: Path, samples: Path) -> int:
+    from fieldbook.book.store import Book
+    from fieldbook.model.canonical import Tree
+    from fieldbook.screens.app import run
+    from fieldbook.settings.session import load_session, session_from_tree
+
+    session = load_session(samples / "kestrel-ridge-1" / "session.toml")
+    tree: Tree = {**session.tree, "receiver": {**session.tree["receiver"], "link": LIVE_LINK}}
+    tree["setup"] = {key: value for key, value in session.tree["setup"].items() if key != "height"}
+    checked = session_from_tree(tree)
+    path = out / "live.book"
+    Book.create(path, clock=SystemClock(), observer=checked.job.observer, session_tree=checked.tree).close()
+    return run(path)

@@ -1,0 +1,49 @@
+"""One way from a book to a certificate file, for `certify` and `demo`."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from fieldbook.book.store import Book
+from fieldbook.certificate.issue import Issued, Prepared, certify
+from fieldbook.certificate.repeats import repeats_of
+from fieldbook.clock import SystemClock
+from fieldbook.occupy.reductions import record_operation, reductions_of_mark
+from fieldbook.reduce.frames import versions
+
+
+def issue(
+    book: Book,
+    mark: str,
+    out: Path,
+    *,
+    occupation: int | None,
+    sign_off: str | None,
+    supersede: str | None = None,
+    replace: bool = False,
+) -> Issued:
+    """Reduce, keep the frame operation as an entry, and write the file.
+
+    Raises:
+        UsageError: as `certificate.issue.certify`.
+        ReductionError: the occupation cannot be reduced.
+    """
+    used = versions()
+
+    def prepared(number: int) -> Prepared:
+        own, others = reductions_of_mark(book, number)
+        record_operation(book, own)
+        return own.reduction, own.trace, repeats_of(own.reduction, [item.reduction for item in others])
+
+    return certify(
+        book,
+        mark,
+        out,
+        occupation=occupation,
+        sign_off=sign_off,
+        supersede=supersede,
+        replace=replace,
+        reductions=prepared,
+        versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
+        clock=SystemClock(),
+    )
