@@ -114,9 +114,7 @@ class Decoder:
         return self._taken()
 
     def _taken(self) -> list[Epoch]:
-        out = self._assembler.out
-        if out:
-            self._assembler.out = []
+        out, self._assembler.out = self._assembler.out, []
         return out
 
     def _event(self, item: Item) -> None:
@@ -385,11 +383,11 @@ def _classify(start: bytes, address: str) -> tuple[str, str, str, str | None]:
     if not plain:
         return "other", "", "", "bad_address"
     if start == b"!":
-        return address[:_ADDRESS_LENGTH], address[:2], address[2:], "encapsulated"
+        return f"!{address[:_ADDRESS_LENGTH]}", address[:2], address[2:], "encapsulated"
     if address[0] == "P" and not (address[:2] in SYSTEM_OF_TALKER and address[2:] in ("GSV", "GSA")):
         return address[:_ADDRESS_LENGTH], "P", address[1:], "proprietary"
     if len(address) != _ADDRESS_LENGTH:
-        return address[:_ADDRESS_LENGTH], "", "", "unknown_type"
+        return address[: 2 * _ADDRESS_LENGTH], "", "", "unknown_type"
     if address[4] == "Q" and address[2] in "GBEIPQ":
         return address, address[:2], "", "query"
     return address, address[:2], address[2:], None

@@ -1,7 +1,7 @@
 """What a receiver sends, in words, for the links page: sentence types, their names, fields and rates.
 
-Strategy. The names are pynmea2's, which knows the types of the standard and several makers'; its import waits
-until somebody looks at the page. The bytes go through the product's own framer, so that the page and the
+Strategy. Titles of the common types stand here; the other names and all field names are pynmea2's, which knows
+the types of the standard and several makers'. Its import waits until somebody looks at the page. The bytes go through the product's own framer, so that the page and the
 recorder agree on what is a sentence.
 """
 
@@ -14,6 +14,22 @@ from typing import Any
 from fieldbook.nmea.framing import Damaged, Framer
 
 _NOT_KNOWN = "not known by name"
+# titles as in NMEA 0183, where pynmea2's class has none; from memory
+_TITLES = {
+    "DTM": "Datum reference",
+    "GBS": "GNSS satellite fault detection",
+    "GGA": "Global positioning system fix data",
+    "GLL": "Geographic position, latitude and longitude",
+    "GNS": "GNSS fix data",
+    "GRS": "GNSS range residuals",
+    "GSA": "GNSS DOP and active satellites",
+    "GST": "GNSS pseudorange error statistics",
+    "GSV": "GNSS satellites in view",
+    "RMC": "Recommended minimum specific GNSS data",
+    "THS": "True heading and status",
+    "VTG": "Course over ground and ground speed",
+    "ZDA": "Time and date",
+}
 _WORDS = re.compile(r"\s+")
 
 
@@ -57,7 +73,9 @@ def describe(data: bytes, seconds: float) -> list[SentenceRow]:
 
 
 def sentence_name(address: str) -> str:
-    """The human name of a sentence by its address: `GNGGA` is 'Global Positioning System Fix Data'."""
+    """The human name of a sentence by its address: `GNZDA` is 'Time and date'."""
+    if address[:1] != "P" and address[2:] in _TITLES:
+        return _TITLES[address[2:]]
     kind = _type_of(address)
     if kind is None:
         return _NOT_KNOWN

@@ -174,6 +174,11 @@ class Assembler:
 
     def dated(self, stated: Stated) -> None:
         """A date with the time it belongs to, for epochs that have none of their own."""
+        if stated.source != "RMC" and not self._seen_fix:
+            current = self.current
+            if current is not None and current.heard and not current.has_fix:
+                self.counts["untrusted_date"] += 1
+                return
         self._stated = stated
         for group in (self.open, self._held):
             if group is not None:
@@ -337,12 +342,12 @@ class Assembler:
         for heard in everyone:
             if not heard.timed:
                 continue
-            if (day, key) == last:  # the group was cut: too many in it
-                same = any(heard.text == earlier.text for earlier in self._last_heard)
-                heard.epoch.code = SetAside.DUPLICATE.value if same else SetAside.CONFLICT.value
-            elif day == last[0] and max(key, last[1]) < _SECOND_MS:
+            if day == last[0] and max(key, last[1]) < _SECOND_MS:
                 self.counts["repeated_second"] += heard is chosen
                 heard.epoch.code = SetAside.DUPLICATE.value
+            elif (day, key) == last:  # the group was cut: too many in it
+                same = any(heard.text == earlier.text for earlier in self._last_heard)
+                heard.epoch.code = SetAside.DUPLICATE.value if same else SetAside.CONFLICT.value
             else:
                 heard.epoch.code = SetAside.TIME_BACK.value
 

@@ -30,6 +30,7 @@ _POSITION = (
     "separation_decimals",
 )
 _ACCURACY = ("satellites", "hdop_milli", "age_ms", "station")
+_COMPARED_MODES = frozenset("RFDA")
 _REPEATED_SECOND_MS = 1000  # a receiver that has no 23:59:60 sends 00:00:00 twice
 
 
@@ -179,4 +180,4 @@ def complete(group: Group, epoch: Epoch, *, zero_is_a_place: bool, counts: Count
 
 
 def _contradicts(mode: str, quality: int | None) -> bool:
-    return quality is not None and QUALITY_OF_MODE.get(mode, quality) != quality
+    return quality is not None and mode in _COMPARED_MODES and QUALITY_OF_MODE[mode] != quality
