@@ -13,7 +13,7 @@ from operator import attrgetter
 import numpy as np
 from numpy.typing import NDArray
 
-from fieldbook.model.epoch import Epoch, SetAside
+from fieldbook.model.epoch import DAY_MS, Epoch, SetAside
 
 Ints = NDArray[np.int64]
 
@@ -42,7 +42,7 @@ _FIELDS = (
     "sigma_altitude_e5m",
     "flags",
 )
-_DERIVED = ("instant_ms", "height_e5m", "source", "code", "station", "datum")
+_DERIVED = ("instant_ms", "leap", "height_e5m", "source", "code", "station", "datum")
 NAMES = _FIELDS + _DERIVED
 
 
@@ -52,7 +52,8 @@ class EpochColumns:
     number, latitude_e8min, longitude_e8min, latitude_decimals, longitude_decimals, altitude_e5m, altitude_decimals,
     separation_e5m, separation_decimals, quality, satellites, hdop_milli, pdop_milli, age_ms, sigma_latitude_e5m,
     sigma_longitude_e5m, sigma_altitude_e5m, flags: as in `model.epoch.Epoch`.
-    instant_ms: since 00:00 of day 0. height_e5m: altitude + separation of the same sentence. source: SOURCES.
+    instant_ms: since 00:00 of day 0. leap: 1 within a leap second (its instants are those of the second after it).
+    height_e5m: altitude + separation of the same sentence. source: SOURCES.
     code: the decoder's own reason as a CODE_NUMBER, 0 = none. station, datum: indices into the tables, MISSING = none.
     """
 
@@ -75,6 +76,7 @@ class EpochColumns:
     sigma_altitude_e5m: Ints
     flags: Ints
     instant_ms: Ints
+    leap: Ints
     height_e5m: Ints
     source: Ints
     code: Ints
@@ -111,6 +113,7 @@ class EpochColumns:
             self._held[name][self._n : end] = _column(rows, attrgetter(name))
         held = self._held
         held["instant_ms"][self._n : end] = _column(rows, attrgetter("instant_ms"))
+        held["leap"][self._n : end] = _column(rows, lambda epoch: int((epoch.time_ms or 0) >= DAY_MS))
         held["source"][self._n : end] = _column(rows, lambda epoch: SOURCES.get(epoch.source, 2))
         held["code"][self._n : end] = _column(rows, _code_number)
         held["station"][self._n : end] = _column(rows, lambda epoch: _index(self.stations, epoch.station))

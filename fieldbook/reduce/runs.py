@@ -34,7 +34,7 @@ class TimeOrder:
     The decoder names most of them; this is the second line of defence, and blind where the decoder has spoken.
     """
 
-    latest_ms: int | None = None
+    latest_key: int | None = None
     latest: tuple[int, ...] = ()
 
     def apply(self, columns: EpochColumns, codes: Codes) -> Codes:
@@ -45,15 +45,15 @@ class TimeOrder:
         edges = [0, *[int(row) for row in jumps], len(columns)]
         for number, (start, end) in enumerate(pairwise(edges)):
             if number > 0:
-                self.latest_ms = None  # a corrected date may lie before: a new count begins
+                self.latest_key = None  # a corrected date may lie before: a new count begins
             self._segment(columns, np.flatnonzero(valid[start:end]) + start, result)
         return result
 
     def _segment(self, columns: EpochColumns, rows: Ints, codes: Codes) -> None:
         if rows.size == 0:
             return
-        instants = columns.instant_ms[rows]
-        before = np.concatenate([[MISSING if self.latest_ms is None else self.latest_ms], instants[:-1]])
+        instants = _order_keys(columns, rows)
+        before = np.concatenate([[MISSING if self.latest_key is None else self.latest_key], instants[:-1]])
         before = np.maximum.accumulate(before)
         codes[rows[instants < before]] = TIME_BACK
         for position in np.flatnonzero(instants == before):
@@ -62,8 +62,15 @@ class TimeOrder:
             same = held == _values(columns, int(rows[position]))
             codes[rows[position]] = DUPLICATE if same else CONFLICT
         newest = int(np.argmax(instants))
-        if self.latest_ms is None or int(instants[newest]) > self.latest_ms:
-            self.latest_ms, self.latest = int(instants[newest]), _values(columns, int(rows[newest]))
+        if self.latest_key is None or int(instants[newest]) > self.latest_key:
+            self.latest_key, self.latest = int(instants[newest]), _values(columns, int(rows[newest]))
+
+
+def _order_keys(columns: EpochColumns, rows: Ints) -> Ints:
+    """Instants in microseconds, a leap second squeezed in before the midnight whose milliseconds it shares."""
+    instants = columns.instant_ms[rows]
+    into_second = instants % 1000
+    return np.where(columns.leap[rows] > 0, (instants - into_second - 1) * 1000 + into_second, instants * 1000)
 
 
 def _values(columns: EpochColumns, row: int) -> tuple[int, ...]:

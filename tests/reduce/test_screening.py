@@ -151,6 +151,22 @@ def test_corrected_date_is_not_time_back() -> None:
     assert [item.independent for item in result.initialisations.values()] == [True, False]
 
 
+def test_a_leap_second_is_neither_duplicate_nor_time_back() -> None:
+    """23:59:59.9, 23:59:60.0 ... 60.9, 00:00:00.0 at 10 Hz: the occupation's clock shows the same ms twice."""
+    epochs = quiet(60, start_ms=86_400_000 - 3000, step_ms=100)
+    for epoch in epochs[30:40]:
+        assert epoch.time_ms is not None
+        epoch.day, epoch.time_ms = 0, epoch.time_ms + 86_400_000
+    for epoch in epochs[40:]:
+        assert epoch.time_ms is not None
+        epoch.time_ms -= 1000
+    for size in (1, 60):
+        screening = Screening(LIMITS)
+        for start in range(0, 60, size):
+            screening.push(epochs[start : start + size])
+        assert screening.evaluate().kept == 60
+
+
 # --- frozen -----------------------------------------------------------------------------------------------------
 
 
