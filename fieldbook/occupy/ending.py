@@ -14,6 +14,7 @@ from fieldbook.book.store import Book
 from fieldbook.clock import Clock, SystemClock
 from fieldbook.errors import BookError, UsageError
 from fieldbook.occupy.rebuild import occupation_of
+from fieldbook.occupy.restore import catch_up
 from fieldbook.occupy.writer import Writer
 
 LOOK_S = 0.05

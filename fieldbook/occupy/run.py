@@ -14,7 +14,7 @@ from fieldbook.links.base import Link
 from fieldbook.model.recorder import RecorderState
 from fieldbook.model.state import Occupation
 from fieldbook.occupy.rebuild import decoder_options, occupation_of
-from fieldbook.occupy.restore import Meanwhile, restore
+from fieldbook.occupy.restore import Meanwhile, catch_up
 from fieldbook.occupy.writer import Writer
 
 WAIT_S = 0.1
@@ -72,7 +72,9 @@ class Run:
 
     def _begin(self, meanwhile: Meanwhile | None = None) -> None:
         if self.resumed:
-            restore(self._writer, self._book, self._occupation.number, meanwhile)
+            catch_up(self._writer, self._book, self._occupation.number, meanwhile)
+            if meanwhile is None:
+                self._writer.resumed(live=False)
         self._writer.append("recorder", state="running", program=f"fieldbook {__version__}")
         self._writer.state.link_state = "open"
         self._writer.show_state(now=True)

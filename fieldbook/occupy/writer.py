@@ -2,7 +2,7 @@
 
 In: items in the order of their arrival. Each call of `write` is one commit: the raw rows first and always, with
 whichever epochs have closed by then. The decoder sees recorded items only and in recorded order, so a rebuild from the
-raw rows cannot differ. `restore.restore` puts a new writer where an earlier one stopped.
+raw rows cannot differ. `restore.catch_up` puts a new writer where an earlier one stopped.
 
 A commit that fails (disk full, book busy) is tried again; meanwhile arriving bytes wait in memory.
 """
@@ -120,7 +120,7 @@ class Writer:
             self._break = self._break or _Break("recorder stopped", heard)
 
     def write_raw(self, items: list[Item]) -> None:
-        """Commit these items; they are decoded later (`restore` comes by)."""
+        """Commit these items; they are decoded when `restore.catch_up` comes by."""
         if items:
             self.commit(items, [])
             self._rows += len(items)

@@ -12,6 +12,7 @@ from fieldbook.errors import BookError
 from fieldbook.model.item import Item, ItemKind
 from fieldbook.occupy import writer as writer_module
 from fieldbook.occupy.rebuild import compare, occupation_of
+from fieldbook.occupy.restore import Meanwhile, catch_up
 from fieldbook.occupy.spans import Claimed, Span
 from fieldbook.occupy.writer import Writer
 from fieldbook.settings.session import load_session
@@ -63,14 +64,13 @@ def test_sixty_rows_or_sixty_seconds_seal(book, clock) -> None:
 
 def test_a_new_writer_goes_on_where_the_old_one_stopped(book, clock) -> None:
     first = new_writer(book, clock)
-    first.restore()
     pieces = [epoch(index) for index in range(30)]
     for piece in pieces[:20]:
         first.write([received(clock, piece)])
     stored = len(book.epochs(1))
     book.write_burst(1, [received(clock, pieces[20]), received(clock, pieces[21])])  # raw only: epochs may lag
     second = new_writer(book, clock)
-    assert second.restore()
+    catch_up(second, book, 1)
     assert len(book.epochs(1)) == stored + 2
     assert second.heard.received_bytes == sum(len(piece) for piece in pieces[:22])
     for piece in pieces[22:]:
@@ -89,13 +89,12 @@ def test_epochs_that_no_longer_fit_are_replaced(book, clock) -> None:
     epochs = book.epochs(1)
     epochs[-1].satellites = 3
     book.replace_epochs(1, epochs)
-    new_writer(book, clock).restore()
+    catch_up(new_writer(book, clock), book, 1)
     assert compare(book, 1) == []
 
 
 def test_gap_entries_tell_reason_and_length(book, clock) -> None:
     writer = new_writer(book, clock)
-    writer.restore()
     writer.write([received(clock, epoch(0))])
     clock.advance(400)
     writer.write([Item(ItemKind.LOST, b"pulled", clock.monotonic_ms(), clock.utc_ms())])
@@ -104,11 +103,10 @@ def test_gap_entries_tell_reason_and_length(book, clock) -> None:
     gap = next(entry.body for entry in book.entries() if entry.kind == "gap")
     assert (gap["reason"], gap["seconds"]) == ("pulled", "12.4")
     again = new_writer(book, clock)
-    again.restore()
     clock.advance(65_000)
-    again.resumed(live=True)
-    again.write([Item(ItemKind.STARTED, b"x", clock.monotonic_ms(), clock.utc_ms())])
-    again.write([Item(ItemKind.REOPENED, b"tcp", clock.monotonic_ms(), clock.utc_ms())])
+    start = Item(ItemKind.STARTED, b"x", clock.monotonic_ms(), clock.utc_ms())
+    arrived = [start, Item(ItemKind.REOPENED, b"tcp", clock.monotonic_ms(), clock.utc_ms())]
+    catch_up(again, book, 1, Meanwhile(start, lambda: [arrived.pop(0)] if arrived else []))
     told = [entry.body for entry in book.entries() if entry.kind in ("gap", "resumed")]
     assert [body.get("reason") for body in told] == ["pulled", None, "recorder stopped"]
     assert told[1]["after_s"] == 65
@@ -189,3 +187,26 @@ def test_the_heartbeat_tells_the_head_line(book, clock) -> None:
     assert state.fix_utc == "2027-03-04T01:00:00.200Z", "the latest epoch that is final"
     assert state.received_bytes == sum(len(epoch(index)) for index in range(5))
     assert state.last_commit_took_ms is not None
+
+
+def test_new_bursts_are_committed_while_the_past_is_decoded(book, clock) -> None:
+    first = new_writer(book, clock)
+    for index in range(50):
+        first.write([received(clock, epoch(index))])
+    start = Item(ItemKind.STARTED, b"x", clock.monotonic_ms(), clock.utc_ms())
+    arrived = [start, Item(ItemKind.REOPENED, b"tcp", clock.monotonic_ms(), clock.utc_ms())]
+    arrived += [received(clock, epoch(index)) for index in range(50, 70)]
+    raw_before_its_epochs = []
+
+    def take() -> list[Item]:
+        raw_before_its_epochs.append(len(list(book.received(1))) - len(book.epochs(1)))
+        return [arrived.pop(0)] if arrived else []
+
+    second = new_writer(book, clock)
+    catch_up(second, book, 1, Meanwhile(start, take))
+    assert max(raw_before_its_epochs) > 15, "raw rows first; epochs may lag"
+    second.write([received(clock, epoch(70))])
+    second.finish("operator", live=True)
+    assert compare(book, 1) == []
+    assert len(book.epochs(1)) == 71
+    assert [entry.kind for entry in book.entries() if entry.kind in ("resumed", "gap")] == ["resumed", "gap"]
