@@ -1,0 +1,45 @@
+"""What several parts of the tests share: the sample occupations as ended books, recorded once per run."""
+
+from __future__ import annotations
+
+import shutil
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+import pytest
+from recorded_samples import SAMPLE_NAMES, SAMPLES, record_into
+
+
+@pytest.fixture(scope="session")
+def sample_books(tmp_path_factory: pytest.TempPathFactory) -> dict[str, Path]:
+    """The two sample books, two ended occupations each. Read only: copy one before changing it."""
+    folder = tmp_path_factory.mktemp("sample_books")
+    books = {"kestrel-ridge": folder / "kestrel-ridge.book", "saltpan": folder / "saltpan.book"}
+    for name in SAMPLE_NAMES:
+        record_into(books[name.rpartition("-")[0]], SAMPLES / name / "session.toml")
+    return books
+
+
+@pytest.fixture(scope="session")
+def short_session(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A session whose file holds the first two minutes of the first sample."""
+    folder = tmp_path_factory.mktemp("short_session")
+    shutil.copy(SAMPLES / "kestrel-ridge-1" / "session.toml", folder)
+    lines = (SAMPLES / "kestrel-ridge-1" / "receiver.nmea").read_bytes().splitlines(keepends=True)
+    (folder / "receiver.nmea").write_bytes(b"".join(lines[:1000]))
+    return folder / "session.toml"
+
+
+@pytest.fixture
+def run_fieldbook(monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]) -> Callable[..., Any]:
+    """Run one command line in this process: (exit code, stdout, stderr)."""
+    from fieldbook.commands import run
+
+    def call(*arguments: object) -> tuple[int, str, str]:
+        capsys.readouterr()
+        code = run([str(item) for item in arguments])
+        out = capsys.readouterr()
+        return code, out.out, out.err
+
+    return call
