@@ -13,7 +13,7 @@ from fieldbook.errors import UsageError
 
 @click.command("open", help="Open BOOK on the screen: set-up, occupation, reduction, certificate, by keyboard.")
 @click.argument("book", type=click.Path(path_type=Path))
-def command(book: Path) -> None:
+def command(book: Path) -> int:
     """Make sure that it is a book and that there is a terminal, then hand over to the screen."""
     with reading(book):
         pass
@@ -23,4 +23,4 @@ def command(book: Path) -> None:
         )
     from fieldbook.screens.app import run
 
-    run(book)
+    return run(book)

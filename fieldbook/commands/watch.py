@@ -9,8 +9,8 @@ from pathlib import Path
 import click
 
 from fieldbook.commands.output import line
-from fieldbook.commands.status import status_tree
-from fieldbook.commands.words import head_line
+from fieldbook.commands.status import live_reader, status_tree
+from fieldbook.commands.words import figures_line, head_line
 from fieldbook.errors import ExitCode
 
 
@@ -18,11 +18,12 @@ from fieldbook.errors import ExitCode
 @click.argument("book", type=click.Path(path_type=Path))
 @click.option("--count", type=click.IntRange(min=1), help="Stop after so many lines.")
 def command(book: Path, count: int | None) -> int:
-    """Ask, tell, wait."""
-    told = 0
+    """Look, tell, wait."""
+    reader, told = live_reader(book), 0
     try:
         while True:
-            line(head_line(status_tree(book)))
+            tree = status_tree(book, reader.snapshot())
+            line(f"{head_line(tree)}; {figures_line(tree)}")
             sys.stdout.flush()
             told += 1
             if count is not None and told >= count:
@@ -30,3 +31,5 @@ def command(book: Path, count: int | None) -> int:
             time.sleep(1.0)
     except KeyboardInterrupt:
         return int(ExitCode.INTERRUPTED)  # watching touches nothing: there is nothing to say
+    finally:
+        reader.close()

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from typing import Any
 
+from fieldbook.model.rounding import decimals_for, rounded_up
+
 QUALITY = {
     0: "no fix",
     1: "autonomous",
@@ -53,3 +55,21 @@ def _link(recorder: dict[str, Any]) -> str:
     if silence_s is not None and silence_s >= 5:
         return f"NO DATA {silence_s:.0f} s"
     return f"link {recorder['link_state']}"
+
+
+def figures_line(status: dict[str, Any]) -> str:
+    """The 95 % figures so far and the verdict of the leave check, or why there are none."""
+    figures, problem = status["figures"], status["problem"]
+    if figures is None:
+        return f"no figures yet: {problem['text']}" if problem else "no figures yet"
+    said = [f"95 %: {_metres(figures['horizontal95_m'])} horizontal, {_metres(figures['vertical95_m'])} vertical"]
+    said.append(f"{figures['kept']} epochs kept")
+    if figures["independent_epochs"] is not None:
+        said.append(f"worth about {figures['independent_epochs']:.0f} independent ones")
+    if figures["verdict"] is not None:
+        said.append(figures["verdict"])
+    return ", ".join(said)
+
+
+def _metres(value: float | None) -> str:
+    return "unknown" if value is None else f"{rounded_up(value, decimals_for(value, least=3))} m"
