@@ -86,8 +86,4 @@ def run(book_path: Path) -> int:
     """
     bridge = Bridge(Path(book_path))
     app = FieldbookApp(bridge, theme=first_theme())
-    try:
-        result = app.run(mouse=False)
-    finally:
-        bridge.close()
-    return int(result or 0)
+    return int(app.run(mouse=False) or 0)

@@ -9,6 +9,7 @@ from textual.binding import Binding, BindingType
 from textual.screen import ModalScreen
 
 from fieldbook.model.live import LiveView
+from fieldbook.model.reduction import Reduction
 from fieldbook.screens.digits import big
 from fieldbook.screens.head import alarms
 from fieldbook.screens.page import Desk
@@ -24,7 +25,7 @@ def big_words(view: LiveView | None) -> tuple[str, str, str]:
     wrong = alarms(view)
     elapsed = stopwatch(view.elapsed_s)
     reduction = view.reduction
-    number = length_95(reduction.uncertainty.horizontal95_m) if reduction else "-"
+    number = length_95(_judged_m(reduction)) if reduction else "-"
     if wrong:
         word = next(
             (short for short in ("RECORDER GONE", "LINK LOST", "NO DATA") if wrong[0].startswith(short)), "NO FIX"
@@ -34,6 +35,13 @@ def big_words(view: LiveView | None) -> tuple[str, str, str]:
         return "ENDED", number, elapsed
     verdict = reduction.leave.verdict if reduction and reduction.leave else "not yet"
     return {"good to leave": "DONE", "cannot reach": "CANNOT"}.get(verdict, "NOT YET"), number, elapsed
+
+
+def _judged_m(reduction: Reduction) -> float | None:
+    """The 95 % that the leave check judges, in the frame the requirement names."""
+    lines = reduction.leave.lines if reduction.leave else []
+    line = next((item for item in lines if item.line == "horizontal_95_m"), None)
+    return float(line.have) if line and isinstance(line.have, int | float) else reduction.uncertainty.horizontal95_m
 
 
 def big_rows(view: LiveView | None, width: int, height: int) -> list[Row]:

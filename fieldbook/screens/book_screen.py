@@ -76,7 +76,7 @@ class BookScreen(Screen[None]):
     def __init__(self, bridge: Bridge, clock: Clock) -> None:
         super().__init__()
         self.bridge, self.clock = bridge, clock
-        self.feed = Feed(bridge.snapshot)
+        self.feed = Feed(bridge.snapshot, bridge.close)
         self.view: LiveView | None = None
         self.reduced: Reduced | None = None
         self.reducing = False

@@ -10,7 +10,7 @@ from fieldbook.model.entry import Entry
 from fieldbook.screens.plain import clean
 
 OWN = frozenset(
-    {"raw", "recorder", "origin", "date", "migrated", "operation", "rendered", "request"}
+    {"raw", "recorder", "origin", "date", "migrated", "operation", "rendered", "request", "packed"}
 )  # written by the program
 
 

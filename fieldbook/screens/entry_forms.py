@@ -60,6 +60,7 @@ def new_mark(desk: Desk) -> None:
     """Describe a mark; it becomes the mark of the next set-up."""
     view = desk.view
     if view is None:
+        desk.tell("The book is still being opened: press again in a moment.", "bad")
         return
     fields = [
         Field("name", "Name", required=True),

@@ -16,8 +16,9 @@ from fieldbook.model.live import LiveView
 class Feed:
     """Runs `snapshot` in its own thread, once per request at most."""
 
-    def __init__(self, snapshot: Callable[[], LiveView]) -> None:
+    def __init__(self, snapshot: Callable[[], LiveView], close: Callable[[], None]) -> None:
         self._snapshot = snapshot
+        self._close = close  # called in the feed's own thread: a connection belongs to its thread
         self._wanted = threading.Event()
         self._stop = threading.Event()
         self._thread = threading.Thread(target=self._run, name="fieldbook-feed", daemon=True)
@@ -46,6 +47,7 @@ class Feed:
             self._wanted.wait()
             self._wanted.clear()
             if self._stop.is_set():
+                self._close()
                 return
             try:
                 self.latest = self._snapshot()

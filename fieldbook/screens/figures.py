@@ -5,6 +5,8 @@ Figures stand at the digits their 95 % allows; a 95 % that does not yet rest on 
 
 from __future__ import annotations
 
+import math
+
 from fieldbook.model.angles import latitude_text, longitude_text
 from fieldbook.model.entry import Entry
 from fieldbook.model.live import LiveView
@@ -36,9 +38,9 @@ def occupation_rows(view: LiveView | None, width: int, height: int) -> list[Row]
     if view.reduction is None:
         rows += [BLANK, *_problem(view, width)]
     else:
-        rows += [*position_rows(view.reduction, width), BLANK, *_evidence(view, view.reduction, width)]
-    room = height - len(rows) - 2
-    findings = _findings(view.reduction, width, max(2, room - 3))
+        rows += [*position_rows(view.reduction, width), *([BLANK] if height > 20 else [])]
+        rows += _evidence(view, view.reduction, width)
+    findings = _findings(view.reduction, width, max(2, height - len(rows) - 2 - (2 if height > 20 else 1)))
     rows += [BLANK, *findings]
     rows += _remarks(view.occupation.remarks, width, min(12, height - len(rows)))
     if view.reduction is not None and len(rows) + 2 * len(view.reduction.initialisations) + 2 <= height:
@@ -75,46 +77,47 @@ def wanted_rows_uncertainty(reduction: Reduction) -> Uncertainty:
 
 
 def position_rows(reduction: Reduction, width: int) -> list[Row]:
-    """Latitude, longitude, height of the mark with 95 % and what is wanted."""
+    """The mark in the client's frame with the 95 % of that frame; below, what is wanted and reached, in its own frame.
+
+    The two 95 % differ by what the frame operation adds, so each stands beside the words it belongs to.
+    """
     place = reduction.client or reduction.receiver
     stated = wanted_rows_uncertainty(reduction)
     decimals = min(6, max(0, decimals_for(stated.horizontal95_m) + 1))  # 0.001″ is about 3 cm
     height_decimals = decimals_for(stated.vertical95_m, most=4)
-    label = 12
     h_text = "not known" if place.h_m is None else f"{place.h_m:.{height_decimals}f} m"
     lat, lon = latitude_text(place.lat_deg, decimals), longitude_text(place.lon_deg, decimals)
     wide = max(len(lat), len(lon)) + 1
-    rows = [
-        row(" " * (label + wide + 1), (pad("95 %", 9, right=True), "soft"), (pad("wanted", 9, right=True), "soft")),
-        row((pad(" Latitude", label), "soft"), (pad(lat, wide, right=True), "strong")),
-        row(
-            (pad(" Longitude", label), "soft"),
-            (pad(lon, wide, right=True), "strong"),
-            *_reach(reduction, "horizontal_95_m", stated.horizontal95_m),
-        ),
-        row(
-            (pad(" Ell. height", label), "soft"),
-            (pad(h_text, wide - 2, right=True), "strong"),
-            "  ",
-            *_reach(reduction, "vertical_95_m", stated.vertical95_m),
-        ),
-    ]
     epoch = "" if place.epoch is None else f" at {place.epoch:.2f}"
-    rows.append(row((fit(f" of the mark, in {place.frame_name} ({place.frame}){epoch}", width - 1), "soft")))
-    return rows
 
+    def figure(label: str, text: str, said: str = "") -> Row:
+        return row((" " + pad(label, 12), "soft"), (pad(text, wide, right=True), "strong"), (f"  {said}", "text"))
 
-def _reach(reduction: Reduction, name: str, shown_m: float | None) -> list[tuple[str, str]]:
-    line = _line(reduction, name)
-    have = line.have if line and isinstance(line.have, int | float) else shown_m
-    spans = [(pad(length_95(have), 10, right=True), "strong")]
-    if line is None:
-        return spans
-    wanted = length_95(float(line.wanted)) if isinstance(line.wanted, int | float) else str(line.wanted)
     return [
-        *spans,
-        (pad(wanted, 9, right=True), "text"),
-        ("  ✓ reached", "good") if line.met else ("  ○ open", "warn"),
+        figure("Latitude", lat),
+        figure("Longitude", lon, f"95 % {length_95(stated.horizontal95_m)} circle"),
+        figure("Ell. height", h_text, f"95 % {length_95(stated.vertical95_m)}"),
+        row((fit(f" of the mark, in {place.frame_name} ({place.frame}){epoch}", width - 1), "soft")),
+        *_reached(reduction, "horizontal_95_m", "Horizontal"),
+        *_reached(reduction, "vertical_95_m", "Height"),
+    ]
+
+
+def _reached(reduction: Reduction, name: str, label: str) -> list[Row]:
+    line = _line(reduction, name)
+    if line is None:
+        return []
+    have = length_95(line.have) if isinstance(line.have, int | float) else "not known"
+    wanted = length_95(line.wanted) if isinstance(line.wanted, int | float) else str(line.wanted)
+    state = ("✓ reached", "good") if line.met else ("○ open", "warn")
+    return [
+        row(
+            (" " + pad(label, 12), "soft"),
+            ("95 % ", "text"),
+            (pad(have, 8), "strong"),
+            f"wanted {pad(wanted, 8)}",
+            state,
+        )
     ]
 
 
@@ -139,11 +142,10 @@ def initialisations_text(reduction: Reduction) -> str:
     """`2 agree within 6 mm, 1 set aside`."""
     used = [item for item in reduction.initialisations if item.used]
     aside = len(reduction.initialisations) - len(used)
-    offsets = [item.offset_enu_m for item in used if item.offset_enu_m is not None]
-    apart = 0.0
-    for first in offsets:
-        for second in offsets:
-            apart = max(apart, ((first[0] - second[0]) ** 2 + (first[1] - second[1]) ** 2) ** 0.5)
+    offsets = [
+        (item.offset_enu_m[0] or 0.0, item.offset_enu_m[1] or 0.0) for item in used if item.offset_enu_m is not None
+    ]
+    apart = max((math.dist(first, second) for first in offsets for second in offsets), default=0.0)
     text = f"{len(used)} used"
     text += f", means {1000 * apart:.0f} mm apart" if len(offsets) > 1 else ""
     return text + (f"; {aside} not used" if aside else "")
@@ -168,14 +170,18 @@ def rests_on(view: LiveView, reduction: Reduction) -> str:
 
 
 def _findings(reduction: Reduction | None, width: int, most: int) -> list[Row]:
+    """Open findings, the worst first, in at most `most` rows; what does not fit is counted."""
     items = [item for item in reduction.findings if item.severity != "info"] if reduction else []
     if not items:
         return [row((" FINDINGS    ", "strong"), "none open")]
     order = sorted(items, key=lambda item: item.severity != "stop")
-    rows = [row((" FINDINGS    ", "strong"), f"{len(items)} open")]
-    for item in order:
-        rows += paragraph(item.text, width, mark=SEVERITY.get(item.severity, ("·", "soft")), most=2)
-    return rows if len(rows) <= most else [*rows[: most - 1], row((f" … more on page 6 ({len(items)} in all)", "soft"))]
+    room, lines_each = most - 1, 2 if most - 1 >= 2 * len(items) else 1
+    shown = order if len(order) * lines_each <= room else order[: max(1, room)]
+    left = len(order) - len(shown)
+    rows = [row((" FINDINGS    ", "strong"), f"{len(items)} open" + (f", {left} more on page 6" if left else ""))]
+    for item in shown:
+        rows += paragraph(item.text, width, mark=SEVERITY.get(item.severity, ("·", "soft")), most=lines_each)
+    return rows
 
 
 def _remarks(remarks: list[Entry], width: int, most: int) -> list[Row]:
@@ -183,18 +189,27 @@ def _remarks(remarks: list[Entry], width: int, most: int) -> list[Row]:
         return []
     if not remarks:
         return [row((" REMARKS     ", "strong"), ("none", "soft"))]
-    rows = [row((" REMARKS", "strong"))]
-    for entry in remarks[-max(1, most - 1) :]:
-        text = clean(entry.body.get("text", ""))
-        rows.append(row((f" {hour_minute(entry.utc)} ", "soft"), fit(f"{text} · {entry.observer}", width - 8)))
-    return rows
+
+    def said(entry: Entry, room: int) -> list[tuple[str, str]]:
+        text = f"{clean(entry.body.get('text', ''))} · {entry.observer}"
+        return [(f"{hour_minute(entry.utc)} ", "soft"), (fit(text, room - 7), "text")]
+
+    if most < 3:
+        return [row((" REMARKS     ", "strong"), *said(remarks[-1], width - 13))]
+    return [
+        row((" REMARKS", "strong")),
+        *[row(" ", *said(entry, width - 1)) for entry in remarks[-max(1, most - 1) :]],
+    ]
 
 
 def initialisation_rows(run: Initialisation, width: int) -> list[Row]:
     """One initialisation: times, epochs, used or not and why, offset from the mean; two lines on a narrow leaf."""
     offset = "no offset"
     if run.offset_enu_m is not None:
-        parts = [f"{axis} {1000 * value:+.0f}" for axis, value in zip("enu", run.offset_enu_m, strict=False)]
+        parts = [
+            f"{axis} –" if value is None else f"{axis} {1000 * value:+.0f}"
+            for axis, value in zip("enu", run.offset_enu_m, strict=False)
+        ]
         offset = "  ".join(parts) + " mm"
     used = ("used", "good") if run.used else ("not used", "warn")
     reason = f"  {run.reason}" if run.reason else ("" if run.independent else "  resumed")

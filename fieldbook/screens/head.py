@@ -106,12 +106,20 @@ def rule_row(notice: tuple[str, str] | None, width: int) -> Row:
     return row(("── ", "rule"), (shown, style), " ", ("─" * max(0, width - width_of(shown) - 4), "rule"))
 
 
+SHORT = {
+    "horizontal_95_m": "95 % horizontal",
+    "vertical_95_m": "95 % height",
+    "minimum_time_s": "time",
+    "initialisations": "another initialisation",
+}
+
+
 def open_text(line: LeaveLine) -> str:
     """An open line of the leave check in a few words."""
     if line.line == "height_readings":
-        return "height reading after" if line.have == "before" else "height readings"
+        return "height after" if line.have == "before" else "height readings"
     go = f" {duration(line.time_to_go_s)}" if line.time_to_go_s else ""
-    return leave_word(line.line) + go
+    return SHORT.get(line.line, leave_word(line.line)) + go
 
 
 def leave_row(view: LiveView | None, width: int) -> Row:
@@ -130,12 +138,15 @@ def leave_row(view: LiveView | None, width: int) -> Row:
     word = leave.verdict.upper()
     spans: list[Span] = [(f" {word} ", VERDICT.get(leave.verdict, "warn"))]
     if missing:
-        text = " · ".join(open_text(item) for item in missing)
-        count = f" · {len(missing)} of {len(own)} open"
-        spans.append((f"  {fit(text, width - len(word) - len(count) - 5)}{count}", "text"))
+        text = f"  {len(missing)} of {len(own)} open: " + " · ".join(open_text(item) for item in missing)
+        spans.append((fit(text, width - len(word) - 3), "text"))
     else:
-        later = "  every line of this set-up is met"
-        later += "; of the mark: " + " · ".join(open_text(item) for item in mark_open) if mark_open else ""
+        later = "  all of this set-up is met"
+        later += (
+            "; the mark: " + " · ".join(dict.fromkeys(item.text or open_text(item) for item in mark_open))
+            if mark_open
+            else ""
+        )
         spans.append((fit(later, width - len(word) - 3), "text"))
     return tuple(spans)
 

@@ -9,7 +9,7 @@ from typing import ClassVar
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import LeaveLine
 from fieldbook.screens.page import Page
-from fieldbook.screens.plain import fit, pad
+from fieldbook.screens.plain import fit, pad, width_of
 from fieldbook.screens.rows import BLANK, Row, paragraph, row
 from fieldbook.screens.words import VERDICT, duration, leave_word, length_95
 
@@ -74,8 +74,9 @@ def figure(value: float | str | None, unit: str) -> str:
 
 def _line(item: LeaveLine, width: int, name_width: int) -> list[Row]:
     shape: tuple[str, str] = ("✓", "good") if item.met else ("○", "warn")
-    left = name_width + 3 + 18 + 14
-    last = "–" if item.met else (duration(item.time_to_go_s) if item.time_to_go_s else "")
+    room = width - (name_width + 3 + 18 + 14) - 1
+    said = "" if item.met else item.text
+    beside = said if said and width_of(said) <= room else (duration(item.time_to_go_s) if item.time_to_go_s else "")
     head = row(
         " ",
         shape,
@@ -83,8 +84,8 @@ def _line(item: LeaveLine, width: int, name_width: int) -> list[Row]:
         (pad(leave_word(item.line), name_width), "text" if item.met else "strong"),
         pad(figure(item.wanted, item.unit), 18),
         (pad(figure(item.have, item.unit), 14), "strong"),
-        (fit(last, width - left - 1), "text" if item.met else "warn"),
+        ("–" if item.met else fit(beside, room), "text" if item.met else "warn"),
     )
-    if item.met or not item.text:
+    if not said or beside == said:
         return [head]
-    return [head, *paragraph(item.text, width - 3, style="warn", indent=3, most=2)]
+    return [head, *paragraph(said, width - 3, style="warn", indent=3, most=2)]

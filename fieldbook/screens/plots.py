@@ -16,7 +16,6 @@ from fieldbook.model.epoch import Satellite
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import Ellipse95, Trace
 from fieldbook.screens.canvas import Canvas, ellipse_points, nice_length
-from fieldbook.screens.figures import wanted_rows_uncertainty
 from fieldbook.screens.plain import fit, pad
 from fieldbook.screens.rows import BLANK, Row, beside, cropped, heading, paragraph, row
 
@@ -89,7 +88,7 @@ def plan_rows(view: LiveView, columns: int, rows: int, look: Look = Look()) -> l
     trace = view.trace
     if trace is None or not trace.east_m:
         return [BLANK] * (rows // 2) + [row(("  no fixes yet", "soft"))]
-    ellipse = wanted_rows_uncertainty(view.reduction).ellipse95 if view.reduction else None
+    ellipse = view.reduction.uncertainty.ellipse95 if view.reduction else None  # of what was measured
     half = plan_half_width_m(trace, ellipse)
     scale = (min(canvas.width, canvas.height) - 2) / (2.0 * half)  # dots per metre
     middle_x, middle_y = (canvas.width - 1) / 2.0, (canvas.height - 1) / 2.0

@@ -9,13 +9,14 @@ from fieldbook.screens.ask import Question
 from fieldbook.screens.heights import disagree
 from fieldbook.screens.page import Desk, next_tree, open_occupation
 from fieldbook.screens.setup import current_readings, current_session
-from fieldbook.screens.words import stopwatch
+from fieldbook.screens.words import leave_word, stopwatch
 
 
 def start(desk: Desk) -> None:
     """Begin the occupation and its recorder, or start the recorder of the open one again."""
     view = desk.view
     if view is None:
+        desk.tell("The book is still being opened: press again in a moment.", "bad")
         return
     opened = open_occupation(view)
     bridge = desk.bridge
@@ -80,7 +81,7 @@ def end(desk: Desk, then: Callable[[], None] | None = None) -> None:
         text.append("Nothing is reduced yet: the leave check says NOT YET.")
     elif missing:
         text.append(f"The leave check says {leave.verdict.upper()}: {len(missing)} lines of this set-up are open.")
-        text += [f"○ {item.text}" for item in missing if item.text][:4]
+        text += [f"○ {leave_word(item.line)}: {item.text}" for item in missing if item.text][:4]
     bridge, number = desk.bridge, opened.number
 
     def ended(_: Any) -> None:

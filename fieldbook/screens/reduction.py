@@ -126,7 +126,7 @@ def _grid(item: Reduction, width: int) -> list[Row]:
     decimals = decimals_for(wanted_rows_uncertainty(item).horizontal95_m, most=4)
     factor = "not known" if grid.combined_factor is None else f"{grid.combined_factor:.8f}"
     return [
-        labelled("Grid", f"{grid.crs_name} {grid.crs} {grid.zone_text}".strip(), width),
+        labelled("Grid", f"{grid.zone_text or grid.crs_name} ({grid.crs})", width),
         labelled("", f"E {grid.easting_m:.{decimals}f}   N {grid.northing_m:.{decimals}f} m", width, style="strong"),
         *labelled_lines(
             "", f"convergence {signed_dms_text(grid.convergence_deg)}, combined factor {factor}", width, style="soft"

@@ -37,8 +37,9 @@ class Terminal:
         self._stream = pyte.ByteStream(self.screen)
         master, slave = pty.openpty()
         fcntl.ioctl(slave, termios.TIOCSWINSZ, struct.pack("HHHH", lines, columns, 0, 0))
-        surroundings = {**os.environ, "TERM": "xterm-256color", "LANG": "C.UTF-8", "PYTHONUTF8": "1", **(env or {})}
-        surroundings.pop("NO_COLOR", None)
+        outside = {key: value for key, value in os.environ.items() if key not in ("NO_COLOR", "COLORTERM")}
+        fixed = {"TERM": "xterm-256color", "COLORTERM": "truecolor", "LANG": "C.UTF-8", "PYTHONUTF8": "1"}
+        surroundings = {**outside, **fixed, **(env or {})}
         self.child = subprocess.Popen(
             list(command),
             stdin=slave,

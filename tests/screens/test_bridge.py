@@ -2,16 +2,21 @@
 
 from __future__ import annotations
 
+import time
+from collections.abc import Callable, Iterator
 from pathlib import Path
 
 import pytest
 
 from fieldbook.book.store import Book
-from fieldbook.clock import FakeClock
+from fieldbook.clock import FakeClock, SystemClock
 from fieldbook.errors import UsageError
+from fieldbook.occupy import detached
 from fieldbook.screens.bridge import Bridge
 
 from .fakes import NOW_MS, SESSION_TREE
+
+SAMPLE = Path(__file__).resolve().parents[2] / "sample_sessions" / "kestrel-ridge-1"
 
 
 @pytest.fixture
@@ -20,6 +25,14 @@ def bridge(tmp_path: Path) -> Bridge:
     path = tmp_path / "kestrel.book"
     Book.create(path, clock=clock, observer="R. Kell", session_tree=SESSION_TREE).close_clean()
     return Bridge(path, clock, "R. Kell")
+
+
+@pytest.fixture(autouse=True)
+def recorders_gone() -> Iterator[None]:
+    """Recorder processes of a test have ended before the next one begins, and are reaped."""
+    yield
+    wait_for(lambda: all(child.poll() is not None for child in detached._children), "the recorders' end")
+    detached._children.clear()
 
 
 def test_nobody_signs_nothing_is_written(bridge: Bridge) -> None:
@@ -63,3 +76,71 @@ def test_heights_are_those_of_the_reduction(bridge: Bridge) -> None:
     assert made.height is not None
     assert made.height.height_arp_m == pytest.approx(1.49464, abs=5e-6)
     assert bridge.heights(session, [{"method": "slant", "value": "0.1", "unit": "m", "when": "before"}]).problem
+
+
+def test_a_recorded_file_is_begun_reduced_and_named_ready(tmp_path: Path) -> None:
+    """The shipped sample through the real recorder process: what the screens show next is there."""
+    clock = SystemClock()
+    bridge = Bridge(tmp_path / "sample.book", clock, "R. Kell")
+    tree = bridge.session_file(str(SAMPLE / "session.toml"))
+    assert tree["receiver"]["link"] == f"file:{SAMPLE / 'receiver.nmea'}"  # no longer relative to the session file
+    Book.create(bridge.path, clock=clock, observer="R. Kell", session_tree=tree).close_clean()
+    assert bridge.begin(tree) == (1, False)
+    wait_for(lambda: ended(bridge), "the end of the file")
+    reduced = bridge.reduce()
+    assert not reduced.failures
+    (made,) = reduced.reductions
+    assert made.mark == tree["mark"]["name"]
+    assert made.client is not None
+    assert made.leave is not None
+    assert bridge.missing(made) == []
+    kinds = [entry.kind for entry in bridge.entries()]
+    assert kinds.count("occupation") == kinds.count("end") == 1
+    assert not bridge.strikeable(next(entry for entry in bridge.entries() if entry.kind == "raw"))
+
+
+def test_simulated_receiver_is_recorded_and_ended_from_the_bridge(bridge: Bridge) -> None:
+    bridge.clock = SystemClock()
+    number, resumed = bridge.begin({**SESSION_TREE, "receiver": {"link": "sim:rtk?seed=7&speed=60"}})
+    assert (number, resumed) == (1, False)
+    wait_for(lambda: epochs(bridge) > 60, "a minute of epochs")
+    height = bridge.add_height(1, {"method": "slant", "value": "1.5330", "unit": "m", "when": "after"})
+    bridge.end(1)
+    assert ended(bridge)
+    with Book.open(bridge.path, clock=bridge.clock) as book:
+        assert [item.seq for item in book.state().occupations[1].heights][-1] == height.seq
+    assert "simulated" in " ".join(bridge.missing(bridge.reduce().reductions[0]))
+
+
+def ended(bridge: Bridge) -> bool:
+    with Book.open(bridge.path, clock=bridge.clock) as book:
+        return book.state().open_occupation is None
+
+
+def epochs(bridge: Bridge) -> int:
+    with Book.open(bridge.path, clock=bridge.clock) as book:
+        return len(book.epochs(1))
+
+
+def wait_for(condition: Callable[[], bool], what: str, within_s: float = 30.0) -> None:
+    deadline = time.monotonic() + within_s
+    while not condition():
+        assert time.monotonic() < deadline, f"never came: {what}"
+        time.sleep(0.05)  # another process is waited for
+
+
+def test_snapshot_is_the_picture_of_the_real_book(bridge: Bridge) -> None:
+    bridge.clock = SystemClock()
+    try:
+        before = bridge.snapshot()
+        assert before.occupation is None
+        assert before.state.session is not None
+        bridge.begin({**SESSION_TREE, "receiver": {"link": "sim:rtk?seed=7&speed=60"}})
+        wait_for(lambda: bridge.snapshot().reduction is not None, "the first reduction")
+        view = bridge.snapshot()
+        assert view.recorder_alive
+        assert view.trace is not None
+        bridge.end(1)
+        assert not bridge.snapshot().recorder_alive
+    finally:
+        bridge.close()

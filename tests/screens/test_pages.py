@@ -126,7 +126,7 @@ def test_good_to_leave_says_what_the_mark_still_wants() -> None:
         bridge = FakeBridge(recording=True)
         bridge.reduction = reduction(met=True)
         async with opened(bridge) as pilot:
-            await see(pilot, "GOOD TO LEAVE", "every line of this set-up is met", "of the mark: occupations")
+            await see(pilot, "GOOD TO LEAVE", "all of this set-up is met", "the mark: Come back from 13:40 UTC")
 
     asyncio.run(go())
 
