@@ -71,8 +71,8 @@ def _initialisation(item: Initialisation) -> Tree:
     }
 
 
-def _millimetres(value_m: float) -> str:
-    return rounded(value_m * 1000, 0)
+def _millimetres(value_m: float | None) -> str:
+    return "–" if value_m is None else rounded(value_m * 1000, 0)
 
 
 def _interruption(entry: Entry) -> Tree:

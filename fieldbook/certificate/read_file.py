@@ -96,8 +96,13 @@ def _reader(data: bytes) -> Any:
 def text_lines(data: bytes, extension: str) -> list[str]:
     """The text of a file as a person sees it, line by line, spaces evened out."""
     if extension == "pdf":
+        from pypdf.errors import PyPdfError
+
         pages = _reader(data).pages
-        text = "\n".join(page.extract_text() for page in pages)
+        try:
+            text = "\n".join(page.extract_text() for page in pages)
+        except PyPdfError as error:
+            raise Unreadable(f"its pages are damaged ({type(error).__name__})") from error
     elif extension == "html":
         text = html.unescape(_TAG.sub("\n", _HIDDEN.sub("", data.decode("utf-8", "replace"))))
     else:

@@ -85,7 +85,7 @@ def _initialisations(reduced: Reduced, occupation: Occupation) -> Iterator[Findi
         figures = {"difference_enu_m": [east, north, up_m], "share": judged.leading_share}
         yield Finding("initialisations_disagree", "stop", text, figures)
     independent = sum(item.used and item.independent for item in judged.initialisations)
-    if reduced.fix_class.is_rtk_fixed and independent < 2:
+    if reduced.estimate.fix_class.is_rtk_fixed and independent < 2:
         text = "One initialisation only: a wrong fix common to the whole session cannot be seen. Re-initialise."
         yield Finding("single_initialisation", "caution", text, {"independent": independent})
     by_decision = [item.number for item in judged.initialisations if item.code == "operator"]
@@ -95,20 +95,17 @@ def _initialisations(reduced: Reduced, occupation: Occupation) -> Iterator[Findi
 
 
 def _resolution(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
-    resolution = reduced.resolution
+    resolution = reduced.estimate.resolution
     few = [
         name
         for name in ("latitude", "longitude")
         if resolution.digits[name].count_distinct < FEW_DISTINCT and reduced.reduction.kept >= 30
     ]
-    sd_e, sd_n, _ = reduced.sd_enu_m
-    coarse = (
-        resolution.latitude_step_m is not None
-        and resolution.longitude_step_m is not None
-        and (resolution.latitude_step_m > 2 * (sd_n or 0.0) or resolution.longitude_step_m > 2 * (sd_e or 0.0))
-    )
+    sd_e, sd_n, _ = reduced.estimate.sd_enu_m
+    step_e, step_n, _ = resolution.step_enu_m
+    coarse = (step_e or 0.0) > 2 * (sd_e or 0.0) or (step_n or 0.0) > 2 * (sd_n or 0.0)
     if (few or coarse) and reduced.screened.frozen_share <= FROZEN_CAUTION:
-        step = max(resolution.latitude_step_m or 0.0, resolution.longitude_step_m or 0.0)
+        step = max(step_e or 0.0, step_n or 0.0)
         text = f"The coordinates come in steps of {1000 * step:.1f} mm: resolution governs. Set the receiver to more decimals."
         yield Finding("resolution_coarse", "caution", text, {"step_m": step})
     u_m = resolution.separation_u_m
@@ -122,7 +119,7 @@ def _resolution(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
 
 
 def _separation(reduced: Reduced) -> Iterator[Finding]:
-    digits = reduced.resolution.digits["separation"]
+    digits = reduced.estimate.resolution.digits["separation"]
     values = sorted(digits.distinct)
     if values == [0]:
         text = "The geoid separation is exactly zero throughout: the altitude may already be ellipsoidal. Check the receiver."
@@ -142,8 +139,8 @@ def _separation(reduced: Reduced) -> Iterator[Finding]:
 
 def _receiver_estimate(reduced: Reduced) -> Iterator[Finding]:
     for axis, verdict, value in (
-        ("in plan", reduced.gst.horizontal, reduced.gst.horizontal_m),
-        ("in height", reduced.gst.vertical, reduced.gst.vertical_m),
+        ("in plan", reduced.estimate.gst.horizontal, reduced.estimate.gst.horizontal_m),
+        ("in height", reduced.estimate.gst.vertical, reduced.estimate.gst.vertical_m),
     ):
         if verdict == "beyond":
             text = f"The receiver's own estimate {axis}, {value:.3f} m, contradicts its fix quality. Check the fix."
@@ -154,7 +151,7 @@ def _receiver_estimate(reduced: Reduced) -> Iterator[Finding]:
 
 
 def _session(reduced: Reduced) -> Iterator[Finding]:
-    mean, fix_class = reduced.mean, reduced.fix_class
+    mean, fix_class = reduced.mean, reduced.estimate.fix_class
     if mean.governed_by == "class":
         text = (
             f"The session is {mean.ratio:.1f} correlation times long (about {mean.tau_s:.0f} s each): its scatter cannot "

@@ -32,7 +32,8 @@ Pair = tuple[float | None, float | None, float | None]
 class Resolution:
     """What the received digits allow. Steps and standard uncertainties in metres, None without heights.
 
-    distinct: number of distinct received values of latitude, longitude, altitude, separation (counted up to 64).
+    distinct: number of distinct received values of latitude, longitude, altitude, separation (counted up to 64);
+    digits: what was seen of each.
     """
 
     step_enu_m: Pair
@@ -40,6 +41,7 @@ class Resolution:
     separation_decimals: int | None
     separation_u_m: float | None
     distinct: dict[str, int]
+    digits: dict[str, Digits]
 
 
 @dataclass(frozen=True)
@@ -145,6 +147,7 @@ def resolution_of(
         decimals,
         None if decimals is None else constant_resolution_u_m(decimals),
         {name: digits[name].count_distinct for name in names},
+        digits,
     )
 
 

@@ -16,8 +16,6 @@ from dataclasses import dataclass, field
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
-import numpy as np
-
 from fieldbook.clock import utc_text
 from fieldbook.errors import ReductionError
 from fieldbook.model.epoch import Epoch
@@ -38,35 +36,19 @@ from fieldbook.model.reduction import Initialisation as InitialisationRecord
 from fieldbook.model.state import Occupation
 from fieldbook.reduce import frames, terms
 from fieldbook.reduce.antenna import AntennaReduction, reduce_antenna
-from fieldbook.reduce.blocks import Blocks
 from fieldbook.reduce.budget import Combined, Term, combine, welch_satterthwaite
-from fieldbook.reduce.correlated_mean import CorrelatedMean, correlated_mean
-from fieldbook.reduce.fix_classes import ClassOfFix, GstVerdict, governing_class, with_receiver_estimate
+from fieldbook.reduce.correlated_mean import CorrelatedMean
+from fieldbook.reduce.estimate import Estimate, estimate
 from fieldbook.reduce.gates import Limits
 from fieldbook.reduce.geodesy import moved_along_normal, moved_by_enu
 from fieldbook.reduce.geoid import height_above_geoid
 from fieldbook.reduce.initialisations import InitialisationJudge, Judgement
-from fieldbook.reduce.kept_sums import InitialisationSums, median_of
 from fieldbook.reduce.prediction import TimeToGo, TypeA, time_to_go, type_a
-from fieldbook.reduce.quantisation import Digits, constant_resolution_u_m, coordinate_quantum_m, mean_resolution_u_m
 from fieldbook.reduce.region import coverage_factor_95
-from fieldbook.reduce.screening import Screened, Screening, counts_of
+from fieldbook.reduce.screening import Screened, Screening
 from fieldbook.reduce.trace import TraceStore
 
 METHOD = "Gauss-Markov mean with slow companion, class of fix as prior, GUM budget; bivariate t region"
-
-
-@dataclass(frozen=True)
-class Resolution:
-    """Steps of the received digits, and what they do to the mean (standard uncertainties, metres)."""
-
-    latitude_step_m: float | None
-    longitude_step_m: float | None
-    coordinate_u_en_m: tuple[float, float]
-    altitude_u_m: float | None
-    separation_decimals: int | None
-    separation_u_m: float | None
-    digits: dict[str, Digits]
 
 
 @dataclass
@@ -79,14 +61,15 @@ class Reduced:
     vertical: TimeToGo
     horizontal_forbidden_by: str
     vertical_forbidden_by: str
-    mean: CorrelatedMean
-    fix_class: ClassOfFix
-    gst: GstVerdict
+    estimate: Estimate
     screened: Screened
     judged: Judgement
-    resolution: Resolution
-    sd_enu_m: tuple[float | None, float | None, float | None]
     notes: list[Finding] = field(default_factory=list)  # findings of the steps themselves
+
+    @property
+    def mean(self) -> CorrelatedMean:
+        """The mean with its Type A uncertainty."""
+        return self.estimate.mean
 
 
 def reduce_occupation(occupation: Occupation, epochs: Iterable[Epoch], search_dirs: Sequence[Path]) -> Reduced:
@@ -133,19 +116,15 @@ class OccupationReducer:
         screened = self._screening.evaluate(day0_known=occupation.day0 is not None)
         if screened.kept == 0 or screened.frame is None:
             raise _nothing_usable(screened)
-        sums = screened.initialisations
-        fix_class, gst = _class_of(list(sums.values()), occupation)
         judged = self._judge.judge(screened, occupation.initialisation_decisions)
-        if not judged.used:
+        found = estimate(screened, judged, self._override)
+        if found is None:
             raise ReductionError(
                 "No initialisation is left to reduce: all were set aside.",
                 "Strike the decision that sets one aside, or occupy the mark again.",
                 code="no_usable_fix",
             )
-        blocks = screened.blocks.of_initialisations(judged.used)
-        mean = _mean_of(blocks, fix_class)
-        position = _Position(occupation, screened, blocks, mean, judged, fix_class)
-        return position.reduced(gst, self._traces, search_dirs)
+        return _Steps(occupation, screened, judged, found).reduced(self._traces, search_dirs)
 
 
 def _nothing_usable(screened: Screened) -> ReductionError:
@@ -162,46 +141,16 @@ def _nothing_usable(screened: Screened) -> ReductionError:
     return ReductionError(f"None of {screened.heard} epochs can be used ({counts}).", remedy, code="no_usable_fix")
 
 
-def _class_of(sums: list[InitialisationSums], occupation: Occupation) -> tuple[ClassOfFix, GstVerdict]:
-    qualities = {quality for item in sums for quality in item.qualities}
-    fix_class = governing_class(qualities, occupation.session.receiver.fix_class)
-    horizontal, up = InitialisationSums(0, False, 0, 0).gst_horizontal, InitialisationSums(0, False, 0, 0).gst_up
-    for item in sums:
-        horizontal.update(item.gst_horizontal)
-        up.update(item.gst_up)
-    medians = [None if (found := median_of(counter)) is None else found * 1e-5 for counter in (horizontal, up)]
-    return with_receiver_estimate(fix_class, *medians)
-
-
-def _mean_of(blocks: Blocks, fix_class: ClassOfFix) -> CorrelatedMean:
-    east, north, up = (blocks.bins(axis) for axis in range(3))
-    if east is None or north is None:
-        raise ReductionError("No kept epoch is left.", "Occupy the mark again.", code="no_usable_fix")
-    return correlated_mean(
-        east.without_thin(), north.without_thin(), None if up is None else up.without_thin(), fix_class
-    )
-
-
-class _Position:
+class _Steps:
     """Steps 4 to 9 for one evaluation."""
 
-    def __init__(
-        self,
-        occupation: Occupation,
-        screened: Screened,
-        blocks: Blocks,
-        mean: CorrelatedMean,
-        judged: Judgement,
-        fix_class: ClassOfFix,
-    ) -> None:
-        self.occupation, self.screened, self.blocks = occupation, screened, blocks
-        self.mean, self.judged, self.fix_class = mean, judged, fix_class
+    def __init__(self, occupation: Occupation, screened: Screened, judged: Judgement, found: Estimate) -> None:
+        self.occupation, self.screened, self.judged, self.found = occupation, screened, judged, found
         self.session = occupation.session
+        self.mean = found.mean
         self.notes: list[Finding] = []
-        self.resolution = _resolution(screened, judged, blocks)
         self.antenna = self._antenna()
-        self.epoch_utc = self._epoch_utc()
-        self.epoch_of_observation = frames.decimal_year(self.epoch_utc)
+        self.epoch_of_observation = frames.decimal_year(self._epoch_utc())
 
     def _antenna(self) -> AntennaReduction:
         explained = any("height_difference" in entry.body for entry in self.occupation.decisions)
@@ -213,14 +162,13 @@ class _Position:
 
     def _epoch_utc(self) -> datetime:
         """Mean UTC of the kept epochs."""
-        instant_ms = self.blocks.mean_instant_ms
-        if self.occupation.day0 is None or instant_ms is None:
+        if self.occupation.day0 is None:
             raise ReductionError(
                 "The date of the occupation is not known.",
                 "Record it: `fieldbook entry BOOK decision --set date=YYYY-MM-DD --set reason=...`.",
                 code="date_unknown",
             )
-        return self._utc(instant_ms)
+        return self._utc(self.found.mean_instant_ms)
 
     def _utc(self, instant_ms: float) -> datetime:
         day0 = self.occupation.day0
@@ -237,10 +185,7 @@ class _Position:
 
     def mark(self) -> tuple[float, float, float | None]:
         """The mark in the receiver's frame: mean of the reported point, then the antenna."""
-        frame = self.screened.frame
-        assert frame is not None  # noqa: S101 - evaluate() refuses earlier
-        up = self.mean.up
-        lat, lon, h = frame.geodetic(self.mean.east.mean_m, self.mean.north.mean_m, None if up is None else up.mean_m)
+        lat, lon, h = self.found.lat_deg, self.found.lon_deg, self.found.h_m
         east, north, down = self.antenna.offset_enu_m
         level = 0.0 if h is None else h
         if east or north:
@@ -253,22 +198,19 @@ class _Position:
 
     def own_terms(self, part: TypeA) -> list[Term]:
         """All lines of the mark in the receiver's frame, for the Type A part as it is or as predicted."""
-        has_height = self.mean.up is not None
-        floor_e, _, floor_u = self.fix_class.floor_enu_m
-        floor_up = floor_u if has_height else None
-        found = [
+        found, resolution = self.found, self.found.resolution
+        east_m, north_m, up_m = resolution.u_enu_m
+        separation_m = resolution.separation_u_m if self.mean.up is not None else None
+        return [
             terms.mean_term(part.u_enu_m, part.dof_enu, part.rho_en),
-            terms.floor_term(floor_e, floor_up, self.fix_class.name),
+            *terms.floor_terms(found.floor_enu_m, found.fix_class.name),
+            *terms.resolution_terms((east_m or 0.0, north_m or 0.0), up_m, separation_m),
+            *terms.setup_terms(self.session.setup, self.antenna),
+            *terms.station_terms(self.session.corrections),
+            *terms.disagreement_term(self.judged.disagreement_enu_m),
         ]
-        found += terms.resolution_terms(
-            self.resolution.coordinate_u_en_m, self.resolution.altitude_u_m, self.resolution.separation_u_m
-        )
-        found += terms.setup_terms(self.session.setup, self.antenna)
-        found += terms.station_terms(self.session.corrections)
-        found += terms.disagreement_term(self.judged.disagreement_enu_m)
-        return found
 
-    def reduced(self, gst: GstVerdict, traces: TraceStore, search_dirs: Sequence[Path]) -> Reduced:
+    def reduced(self, traces: TraceStore, search_dirs: Sequence[Path]) -> Reduced:
         """Everything."""
         choice = self.session.frame
         lat, lon, h = self.mark()
@@ -290,32 +232,23 @@ class _Position:
         in_client = self.session.requirement.in_frame == "client frame"
         judged_terms = extra if in_client else []
         horizontal, vertical = self._times_to_go(judged_terms)
-        codes = self.judged.codes
-        mean_enu = (
-            self.mean.east.mean_m,
-            self.mean.north.mean_m,
-            None if self.mean.up is None else self.mean.up.mean_m,
-        )
-        assert self.screened.frame is not None  # noqa: S101
+        up = self.mean.up
+        mean_enu = (self.mean.east.mean_m, self.mean.north.mean_m, None if up is None else up.mean_m)
         return Reduced(
             reduction=reduction,
-            trace=traces.trace(codes, self.screened.initialisation, self.screened.frame, mean_enu),
+            trace=traces.trace(self.judged.codes, self.screened.initialisation, self.found.frame, mean_enu),
             horizontal=horizontal,
             vertical=vertical,
             horizontal_forbidden_by=_largest([*own[1:], *judged_terms], (0, 1)),
             vertical_forbidden_by=_largest([*own[1:], *judged_terms], (2,)),
-            mean=self.mean,
-            fix_class=self.fix_class,
-            gst=gst,
+            estimate=self.found,
             screened=self.screened,
             judged=self.judged,
-            resolution=self.resolution,
-            sd_enu_m=self.blocks.sd_m(),
             notes=self.notes,
         )
 
     def _times_to_go(self, extra: list[Term]) -> tuple[TimeToGo, TimeToGo]:
-        requirement, margin = self.session.requirement, self.fix_class.margin
+        requirement, margin = self.session.requirement, self.found.fix_class.margin
 
         def printed(part: TypeA) -> Combined:
             return combine([*self.own_terms(part), *extra])
@@ -392,24 +325,21 @@ class _Position:
         operation: Operation,
     ) -> Reduction:
         occupation, screened = self.occupation, self.screened
-        codes = self.judged.codes
-        kept = int(np.count_nonzero(codes == 0))
-        used = [screened.initialisations[number] for number in self.judged.used]
-        step_s = (screened.median_step_ms or 0) / 1000.0
+        found = self.found
         return Reduction(
             mark=occupation.mark,
             occupation=occupation.number,
             open=occupation.open,
             ended_by=occupation.ended_by,
-            started=self._utc_text(min(item.first_ms for item in used)),
-            ended=self._utc_text(max(item.last_ms for item in used)),
+            started=self._utc_text(found.first_ms),
+            ended=self._utc_text(found.last_ms),
             heard_from=self._utc_text(screened.heard_from_ms),
             heard_to=self._utc_text(screened.heard_to_ms),
-            kept_s=kept * step_s,
+            kept_s=found.kept_s,
             heard=screened.heard,
-            kept=kept,
-            without_height=sum(item.kept - item.with_height for item in used),
-            set_aside=counts_of(codes),
+            kept=found.kept,
+            without_height=found.without_height,
+            set_aside=self.judged.set_aside,
             initialisations=self._records(),
             receiver=position,
             client=client,
@@ -459,44 +389,6 @@ class _Position:
 
 def _vector(offset: tuple[float, float, float | None] | None) -> list[float | None] | None:
     return None if offset is None else list(offset)
-
-
-def _resolution(screened: Screened, judged: Judgement, blocks: Blocks) -> Resolution:
-    frame = screened.frame
-    assert frame is not None  # noqa: S101 - evaluate() refuses earlier
-    digits = {
-        name: _merged([screened.initialisations[number].digits[name] for number in judged.used])
-        for name in ("latitude", "longitude", "altitude", "separation")
-    }
-    sd_e, sd_n, sd_u = blocks.sd_m()
-    metre_per_unit = coordinate_quantum_m(8)
-    steps = [digits[name].step_units(8) for name in ("latitude", "longitude")]
-    latitude_m = None if steps[0] is None else steps[0] * metre_per_unit
-    longitude_m = None if steps[1] is None else steps[1] * metre_per_unit * frame.cos_latitude
-    altitude_step = digits["altitude"].step_units(5)
-    has_up = blocks.bins(2) is not None
-    separation = digits["separation"].fewest_decimals
-    return Resolution(
-        latitude_step_m=latitude_m,
-        longitude_step_m=longitude_m,
-        coordinate_u_en_m=(
-            mean_resolution_u_m(longitude_m or 0.0, sd_e or 0.0),
-            mean_resolution_u_m(latitude_m or 0.0, sd_n or 0.0),
-        ),
-        altitude_u_m=(
-            mean_resolution_u_m(altitude_step * 1e-5, sd_u or 0.0) if has_up and altitude_step is not None else None
-        ),
-        separation_decimals=separation,
-        separation_u_m=constant_resolution_u_m(separation) if has_up and separation is not None else None,
-        digits=digits,
-    )
-
-
-def _merged(found: list[Digits]) -> Digits:
-    result = Digits()
-    for item in found:
-        result = result.merged(item)
-    return result
 
 
 def _largest(found: list[Term], axes: tuple[int, ...]) -> str:

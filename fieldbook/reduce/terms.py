@@ -18,10 +18,10 @@ from fieldbook.model.reduction import Operation
 from fieldbook.model.session import Corrections, Setup
 from fieldbook.reduce.antenna import ASSUMED_READING_SIGMA_M, AntennaReduction
 from fieldbook.reduce.budget import Term, Triple
+from fieldbook.reduce.fix_classes import FLOOR_DOF
 
-FLOOR_DOF = 8.0
 PLUMB_LINE_ARCSEC = 15.0  # deflection of the vertical, typical size; from memory, medium
-COMMON_NOTE = "half of its variance is common to all occupations with this station and antenna"
+COMMON_NOTE = "common to all occupations with this station and antenna"
 
 
 def mean_term(u_enu_m: Triple, dof_enu: Triple, rho_en: float) -> Term:
@@ -29,19 +29,22 @@ def mean_term(u_enu_m: Triple, dof_enu: Triple, rho_en: float) -> Term:
     return Term("mean of the kept epochs", "A", "t", u_enu_m, dof_enu, rho_en=rho_en)
 
 
-def floor_term(floor_horizontal_m: float, floor_up_m: float | None, label: str) -> Term:
+def floor_terms(floor_enu_m: Triple, label: str) -> list[Term]:
     """Least uncertainty claimed for this kind of fix: base, ephemeris, slow atmosphere, initialisation.
 
-    One term of 8 dof: both halves (common, and of this occupation) are the same quantity.
+    Half of its variance is common to all occupations with this station and antenna, half belongs to this one. Both
+    lines are ONE quantity of 8 dof (`group`), so they combine as if they stood in one line.
     """
-    return Term(
-        f"least uncertainty claimed for this kind of fix ({label})",
-        "B",
-        "normal",
-        (floor_horizontal_m, floor_horizontal_m, floor_up_m),
-        (FLOOR_DOF, FLOOR_DOF, FLOOR_DOF),
-        note=COMMON_NOTE,
-    )
+    half = [None if value is None else value / math.sqrt(2) for value in floor_enu_m]
+    u: Triple = (half[0], half[1], half[2])
+    dof: Triple = (FLOOR_DOF, FLOOR_DOF, FLOOR_DOF)
+    what = f"least uncertainty claimed for this kind of fix ({label})"
+    return [
+        Term(
+            f"{what}: of this occupation", "B", "normal", u, dof, group="floor", note="one quantity with the next line"
+        ),
+        Term(f"{what}: of station and antenna", "B", "normal", u, dof, common=True, group="floor", note=COMMON_NOTE),
+    ]
 
 
 def resolution_terms(

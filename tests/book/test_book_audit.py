@@ -1,6 +1,6 @@
 """Every stored value of an ended book is covered: each is changed once, and the change is found."""
 
-# ruff: noqa: S608 - names of tables and columns are the tests' own
+
 from __future__ import annotations
 
 import random

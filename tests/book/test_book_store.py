@@ -1,6 +1,6 @@
 """Create, append, record, seal, pack and read a book."""
 
-# ruff: noqa: S608 - names of tables and columns are the tests' own
+
 from __future__ import annotations
 
 import os

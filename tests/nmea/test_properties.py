@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import random
-import time
 
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -111,16 +110,13 @@ def test_two_megabytes_of_mutated_sentences() -> None:
     assert decoder.counters["good"] > decoder.counters["bad_checksum"] > 0
 
 
-def test_one_endless_frame_keeps_memory_bounded_and_time_linear() -> None:
+def test_one_endless_frame_keeps_memory_bounded() -> None:
     for byte in (b"A", b"$", b"\\", b"*", b"\x00"):
         framer = Framer()
-        start = time.perf_counter()
         framer.feed(b"$GNGGA,")
         for _ in range(50):
             framer.feed(byte * 10_000)
         assert framer.pending_bytes <= 256
-        # generous: a quadratic one would need minutes
-        assert time.perf_counter() - start < 5
 
 
 def test_the_number_of_types_kept_is_bounded() -> None:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-import time
 from dataclasses import replace
 
 import numpy as np
@@ -179,17 +178,6 @@ def test_short_uncertainty_is_near_the_full_one() -> None:
         bins = bins_of(gauss_markov(rng, n, 2.0, 200.0, 0.007), 2.0)
         full = correlated_mean(bins, bins, None, RTK_FIXED).east.u_m
         assert 1 / 2.5 < short_uncertainty_m(bins, 0.008, 200.0) / full < 2.5
-
-
-def test_one_evaluation_of_three_components_is_cheap() -> None:
-    rng = np.random.default_rng(5)
-    bins = [bins_of(rng.normal(0, 0.01, 32)) for _ in range(3)]
-    costs = []
-    for _ in range(15):
-        begun = time.perf_counter()
-        correlated_mean(bins[0], bins[1], bins[2], RTK_FIXED)
-        costs.append(time.perf_counter() - begun)
-    assert sorted(costs)[7] < 0.015
 
 
 def test_boundaries_of_what_governs() -> None:
