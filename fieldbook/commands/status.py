@@ -132,6 +132,6 @@ def _lines(tree: dict[str, Any]) -> list[str]:
     said.append(figures_line(tree))
     said += [f"alarm: {alarm}" for alarm in recorder.get("alarms", [])]
     if figures is not None:
-        said += [f"open: {item['text']}" for item in figures["open_lines"]]
+        said += [f"open: {item['line']}: {item['text']}" for item in figures["open_lines"]]
         said += [f"{item['severity']}: {item['text']}" for item in figures["findings"] if item["severity"] != "info"]
     return said

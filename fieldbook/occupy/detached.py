@@ -21,8 +21,7 @@ from fieldbook.errors import BookError, FieldbookError, LinkError, UsageError
 
 START_WAIT_S = 20.0
 STARTED = "started"
-
-_children: list[subprocess.Popen[bytes]] = []  # kept so that a finished one is reaped, not left a zombie
+REAPER = "fieldbook-reaper"
 
 
 def start_recorder(book_path: Path, occupation: int, *, link_text: str | None = None) -> None:
@@ -49,7 +48,8 @@ def start_recorder(book_path: Path, occupation: int, *, link_text: str | None = 
         env=_environment(),
         **_apart(),
     )
-    _children.append(child)
+    # whoever started it may live on for days: a recorder that has ended must not stay as a zombie
+    threading.Thread(target=child.wait, name=REAPER, daemon=True).start()
     said = _first_line(child)
     if said != STARTED:
         if child.poll() is None and not said:
@@ -60,9 +60,6 @@ def start_recorder(book_path: Path, occupation: int, *, link_text: str | None = 
 
 def recorder_alive(book_path: Path) -> bool:
     """Whether some recorder holds the lock of this book."""
-    for child in list(_children):
-        if child.poll() is not None:
-            _children.remove(child)
     return held(book_path)
 
 

@@ -11,6 +11,7 @@ import os
 import signal
 import subprocess
 import sys
+import threading
 import time
 from typing import Any
 
@@ -20,7 +21,7 @@ from fieldbook.book.lock import held
 from fieldbook.book.store import Book
 from fieldbook.clock import SystemClock
 from fieldbook.model.item import ItemKind
-from fieldbook.occupy.detached import recorder_alive, start_recorder
+from fieldbook.occupy.detached import REAPER, recorder_alive, start_recorder
 from fieldbook.occupy.ending import request_end, request_leave
 from fieldbook.occupy.rebuild import compare
 
@@ -186,8 +187,12 @@ def test_the_detached_recorder_outlives_its_starter(recorders: Recorders, port: 
     start_recorder(recorders.book, 1)
     until(lambda: recorders.epochs() >= count + 6)
     request_end(recorders.book, 1, "R. Kell", wait_s=20)
-    until(lambda: not recorder_alive(recorders.book))
+    until(lambda: not recorder_alive(recorders.book) and reaped())
     identical(recorders)
+
+
+def reaped() -> bool:
+    return all(thread.name != REAPER for thread in threading.enumerate())
 
 
 def test_the_detached_recorder_reports_why_it_does_not_start(recorders: Recorders, port: Port, session) -> None:
@@ -205,7 +210,7 @@ def test_the_detached_recorder_reports_why_it_does_not_start(recorders: Recorder
         start_recorder(recorders.book, 1)
     assert refused.value.code == "locked"
     request_end(recorders.book, 1, "R. Kell", wait_s=20)
-    until(lambda: not recorder_alive(recorders.book))
+    until(lambda: not recorder_alive(recorders.book) and reaped())
 
 
 def test_ending_without_a_recorder_does_what_it_would_have_done(recorders: Recorders, port: Port) -> None:
