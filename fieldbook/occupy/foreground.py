@@ -14,6 +14,7 @@ from pathlib import Path
 from fieldbook.book.lock import RecorderLock
 from fieldbook.book.store import Book
 from fieldbook.clock import Clock
+from fieldbook.errors import UsageError
 from fieldbook.links import open_link
 from fieldbook.links.address import LinkAddress
 from fieldbook.links.base import Link
@@ -50,7 +51,10 @@ def observe(
     """
     lock = RecorderLock(book_path)
     if book_path.exists():
+        Book.open(book_path, clock=clock).close()  # what is no book gets no lock file beside it either
         lock.acquire()
+    elif not book_path.absolute().parent.is_dir():
+        raise UsageError(f"There is no folder {book_path.absolute().parent}.", "Make it first, or correct the path.")
     try:
         plan, link = _checked(book_path, wish, clock)
         try:

@@ -239,6 +239,10 @@ def test_what_is_no_book_is_exit_4(tmp_path, session, receiver, fieldbook) -> No
     path.write_bytes(b"my notes\n" * 100)
     assert fieldbook("observe", path, "--session", session).code == 4
     assert path.read_bytes() == b"my notes\n" * 100
+    (tmp_path / "folder").mkdir()
+    assert fieldbook("observe", tmp_path / "folder", "--session", session).code == 4
+    assert fieldbook("observe", tmp_path / "none" / "x.book", "--session", session).code == 2
+    assert sorted(item.name for item in tmp_path.iterdir()) == ["folder", "job.book", "receiver.nmea", "session.toml"]
 
 
 def test_a_packed_file_is_received_as_its_content(tmp_path, session, fieldbook) -> None:
