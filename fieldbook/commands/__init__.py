@@ -106,7 +106,7 @@ def run(arguments: list[str]) -> int:
     except (click.Abort, KeyboardInterrupt):
         write_error(Interrupted("Interrupted.", "Everything received is committed."), as_json=as_json)
         return int(ExitCode.INTERRUPTED)
-    except BrokenPipeError:
+    except (BrokenPipeError, SystemExit):  # click turns the first into the second, with a code that is verify's
         # the reader of our output went away (`| head`): nothing is wrong, and nothing can be said any more
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return int(ExitCode.OK)

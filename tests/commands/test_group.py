@@ -85,6 +85,17 @@ def test_errors_become_text_or_json_and_the_exit_code(error, code, monkeypatch, 
     assert said.json == {"schema": "fieldbook.error/1", "error": {"code": error.code, "text": "t", "remedy": "r"}}
 
 
+@pytest.mark.skipif(sys.platform == "win32", reason="not run: no pipes of this kind")
+def test_a_reader_that_goes_away_is_no_failure(book) -> None:
+    listed = subprocess.Popen(
+        [sys.executable, "-m", "fieldbook", "marks", "list", str(book)], stdout=subprocess.PIPE, stderr=subprocess.PIPE
+    )
+    assert listed.stdout is not None
+    listed.stdout.close()
+    _, err = listed.communicate(timeout=20)
+    assert (listed.returncode, err) == (0, b"")
+
+
 @pytest.mark.parametrize(("raised", "code"), [(KeyboardInterrupt(), 130), (BrokenPipeError(), 0)])
 def test_interrupt_and_a_closed_pipe(raised, code) -> None:
     script = (
