@@ -137,7 +137,8 @@ def _nothing_usable(screened: Screened) -> ReductionError:
     counts = ", ".join(f"{code} {count}" for code, count in screened.set_aside.items())
     remedy = "Check the fix, and accept_quality and the gates in [requirement]."
     if "date_unknown" in screened.set_aside:
-        remedy = "The receiver sent no date: `fieldbook entry BOOK decision --set date=YYYY-MM-DD --set reason=...`."
+        remedy = "The receiver sent no date (without a fix it has none to send): look at the fix first; if it had one, "
+        remedy += "record the date: `fieldbook entry BOOK decision --set date=YYYY-MM-DD --set reason=...`."
     return ReductionError(f"None of {screened.heard} epochs can be used ({counts}).", remedy, code="no_usable_fix")
 
 
