@@ -1,6 +1,6 @@
 """The open book: head line, index tabs, one page, leave check, keys. It is the desk the pages work at.
 
-A timer asks the feed for a picture and draws what has come: figures twice a second, sketch and sky once a second.
+A timer asks the feed for a picture once a second, and at once after anything was written, and draws what has come.
 Only lines that changed are painted. What is written goes through a hand, never through the drawing.
 """
 
@@ -40,6 +40,7 @@ from fieldbook.screens.reduction import ReductionPage
 from fieldbook.screens.setup import SetupPage
 
 TICK_S = 0.25
+ASK_EVERY = 4  # ticks: a picture a second; each one is a whole reduction of what was heard so far
 PAGE_CLASSES: tuple[type[Page], ...] = (
     CoverPage,
     MarksPage,
@@ -118,9 +119,9 @@ class BookScreen(Screen[None]):
     # --- the picture
 
     def tick(self) -> None:
-        """Draw what has come; ask for more every second time."""
+        """Draw what has come; ask for more once a second."""
         self._ticks += 1
-        if self._ticks % 2:
+        if self._ticks % ASK_EVERY == 1:
             self.feed.request()
         came = self.feed.latest
         if self.feed.problem is not None and came is None:
@@ -128,8 +129,10 @@ class BookScreen(Screen[None]):
         if came is not None and came is not self.view:
             self.view = came
             self._arrived()
-            self.current.redraw(plots=self._ticks % 4 < 2)
-        self._lines()
+            self.current.redraw()
+            self._lines()
+        elif self._ticks % 2:
+            self._lines()  # the clock
 
     def _arrived(self) -> None:
         if self._first and self.view is not None:

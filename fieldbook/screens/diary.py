@@ -31,11 +31,11 @@ class DiaryPage(Page):
         """Read the entries again."""
         self._read()
 
-    def redraw(self, *, plots: bool = True) -> None:
+    def redraw(self) -> None:
         """Read again when the book has grown."""
         if self.view is not None and self.view.state.head_seq != self._read_at:
             self._read()
-        super().redraw(plots=plots)
+        super().redraw()
 
     def _read(self) -> None:
         if self._reading or self.view is None:

@@ -14,7 +14,7 @@ from fieldbook.model.reduction import Initialisation, LeaveLine, Reduction, Unce
 from fieldbook.model.rounding import decimals_for
 from fieldbook.screens.plain import clean, fit, pad
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
-from fieldbook.screens.words import SEVERITY, duration, hour_minute, length_95, set_aside_word, stopwatch
+from fieldbook.screens.words import SEVERITY, duration, hour_minute, length_95, set_aside_word, signed_mm, stopwatch
 
 SETTLED_LENGTHS = 5.0  # under five correlation times the 95 % rests on the kind of fix (design, section 6)
 
@@ -38,7 +38,10 @@ def occupation_rows(view: LiveView | None, width: int, height: int) -> list[Row]
     if view.reduction is None:
         rows += [BLANK, *_problem(view, width)]
     else:
-        rows += [*position_rows(view.reduction, width), *([BLANK] if height > 20 else [])]
+        rows += [
+            *position_rows(view.reduction, width, view.occupation.session.requirement.in_frame),
+            *([BLANK] if height > 20 else []),
+        ]
         rows += _evidence(view, view.reduction, width)
     findings = _findings(view.reduction, width, max(2, height - len(rows) - 2 - (2 if height > 20 else 1)))
     rows += [BLANK, *findings]
@@ -76,7 +79,7 @@ def wanted_rows_uncertainty(reduction: Reduction) -> Uncertainty:
     return reduction.uncertainty
 
 
-def position_rows(reduction: Reduction, width: int) -> list[Row]:
+def position_rows(reduction: Reduction, width: int, judged_in: str) -> list[Row]:
     """The mark in the client's frame with the 95 % of that frame; below, what is wanted and reached, in its own frame.
 
     The two 95 % differ by what the frame operation adds, so each stands beside the words it belongs to.
@@ -98,12 +101,12 @@ def position_rows(reduction: Reduction, width: int) -> list[Row]:
         figure("Longitude", lon, f"95 % {length_95(stated.horizontal95_m)} circle"),
         figure("Ell. height", h_text, f"95 % {length_95(stated.vertical95_m)}"),
         row((fit(f" of the mark, in {place.frame_name} ({place.frame}){epoch}", width - 1), "soft")),
-        *_reached(reduction, "horizontal_95_m", "Horizontal"),
-        *_reached(reduction, "vertical_95_m", "Height"),
+        *_reached(reduction, "horizontal_95_m", "Horizontal", judged_in),
+        *_reached(reduction, "vertical_95_m", "Height", judged_in),
     ]
 
 
-def _reached(reduction: Reduction, name: str, label: str) -> list[Row]:
+def _reached(reduction: Reduction, name: str, label: str, judged_in: str) -> list[Row]:
     line = _line(reduction, name)
     if line is None:
         return []
@@ -115,8 +118,9 @@ def _reached(reduction: Reduction, name: str, label: str) -> list[Row]:
             (" " + pad(label, 12), "soft"),
             ("95 % ", "text"),
             (pad(have, 8), "strong"),
-            f"wanted {pad(wanted, 8)}",
+            f"wanted {pad(wanted, 7)} ",
             state,
+            (f"  in the {judged_in}", "soft"),
         )
     ]
 
@@ -206,10 +210,7 @@ def initialisation_rows(run: Initialisation, width: int) -> list[Row]:
     """One initialisation: times, epochs, used or not and why, offset from the mean; two lines on a narrow leaf."""
     offset = "no offset"
     if run.offset_enu_m is not None:
-        parts = [
-            f"{axis} –" if value is None else f"{axis} {1000 * value:+.0f}"
-            for axis, value in zip("enu", run.offset_enu_m, strict=False)
-        ]
+        parts = [f"{axis} {signed_mm(value)}" for axis, value in zip("enu", run.offset_enu_m, strict=False)]
         offset = "  ".join(parts) + " mm"
     used = ("used", "good") if run.used else ("not used", "warn")
     reason = f"  {run.reason}" if run.reason else ("" if run.independent else "  resumed")

@@ -63,7 +63,7 @@ def figure(value: float | str | None, unit: str) -> str:
     if value is None:
         return "–"
     if isinstance(value, str):
-        return value
+        return "both" if value == "before and after" else value
     if unit == "m":
         return length_95(value)
     if unit == "s":

@@ -116,10 +116,10 @@ class Page(Widget, can_focus=False):
         """Rows of the facing page."""
         raise NotImplementedError
 
-    def redraw(self, *, plots: bool = True) -> None:
+    def redraw(self) -> None:
         """Ask the panels for their rows again."""
         for panel in self.query(Panel):
-            if panel.display and (plots or not panel.has_class("right") or not self.facing):
+            if panel.display:
                 panel.redraw()
 
     def opened(self) -> None:

@@ -53,15 +53,19 @@ def sketch_rows(view: LiveView | None, width: int, height: int, look: Look = Loo
 
 def legend_rows(view: LiveView, width: int) -> list[Row]:
     """What the strokes mean, where there is room beside the sketch."""
-    runs = sorted(set(view.trace.initialisation)) if view.trace else []
-    rows: list[Row] = [row(("dots", "strong"), ("  fixes kept", "soft"))]
-    for index in range(1, len(runs)):
-        shape = SHAPES[(index - 1) % len(SHAPES)]
-        rows.append(row((f"{shape}   ", "strong"), (f"  of initialisation {index + 1}", "soft")))
+    rows: list[Row] = []
+    for index, number in enumerate(runs_of(view.trace) if view.trace else []):
+        shape = "dots" if index == 0 else SHAPES[(index - 1) % len(SHAPES)].ljust(4)
+        rows.append(row((shape, "strong"), (f"  fixes kept, initialisation {number}", "soft")))
     rows += [row((f"{ASIDE}   ", "warn"), ("  set aside", "soft")), BLANK]
     rows += paragraph("The ellipse is the 95 % region of the mean, not of the fixes.", width, style="accent", indent=0)
     rows += [BLANK, *paragraph("Sky: capitals are used, small letters are not.", width, style="soft", indent=0)]
     return [cropped(line, width) for line in rows]
+
+
+def runs_of(trace: Trace) -> list[int]:
+    """Numbers of the initialisations that have kept fixes, in order; the first is drawn in dots."""
+    return sorted({number for number, kept in zip(trace.initialisation, trace.kept, strict=True) if kept})
 
 
 def _arrays(trace: Trace) -> tuple[Floats, Floats, NDArray[np.bool_], NDArray[np.int64]]:
@@ -94,7 +98,7 @@ def plan_rows(view: LiveView, columns: int, rows: int, look: Look = Look()) -> l
     middle_x, middle_y = (canvas.width - 1) / 2.0, (canvas.height - 1) / 2.0
     east, north, kept, run = _arrays(trace)
     x, y = middle_x + scale * east, middle_y - scale * north
-    runs = sorted(set(run[kept].tolist()))
+    runs = runs_of(trace)
     canvas.dots(x[kept], y[kept], "text")
     for line, column, index in _majority(x[kept], y[kept], run[kept], runs):
         if index > 0:
@@ -109,7 +113,7 @@ def plan_rows(view: LiveView, columns: int, rows: int, look: Look = Look()) -> l
     return [
         *canvas.rows_of_spans(("text", "accent"), ascii_only=look.ascii_only),
         _bar(bar_m, scale, columns),
-        _legend(len(runs), int((~kept).sum()), aside_outside + kept_outside, columns),
+        _legend(runs, int((~kept).sum()), aside_outside + kept_outside, columns),
     ]
 
 
@@ -143,13 +147,16 @@ def _bar(bar_m: float, scale: float, columns: int) -> Row:
     return row(bar, " ", (fit(text, columns - len(bar) - 1), "soft"))
 
 
-def _legend(runs: int, aside: int, outside: int, columns: int) -> Row:
-    parts = [" ".join(f"{SHAPES[(i - 1) % len(SHAPES)]} init. {i + 1}" for i in range(1, runs))] if runs > 1 else []
+def _legend(runs: list[int], aside: int, outside: int, columns: int) -> Row:
+    parts = [f"{SHAPES[(index - 1) % len(SHAPES)]} init. {number}" for index, number in enumerate(runs) if index]
     if aside:
         parts.append(f"{ASIDE} aside {aside}")
     if outside:
-        parts.append(f"{outside} outside")
-    return row((fit(" ".join(parts), columns), "soft"))
+        parts.append(f"({outside} outside)")
+    text = " ".join(parts)
+    if len(text) > columns:
+        text = text.replace("init. ", "").replace(" aside", "").replace(" outside", " out")
+    return row((fit(text, columns), "soft"))
 
 
 def sky_rows(sky: list[Satellite], columns: int, rows: int, look: Look = Look()) -> list[Row]:

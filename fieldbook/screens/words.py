@@ -55,6 +55,14 @@ def millimetres(value_m: float) -> str:
     return f"{value_m * 1000:.0f} mm"
 
 
+def signed_mm(value_m: float | None) -> str:
+    """`+3`, `-12`, `0` whole millimetres, without a unit; a dash where it is not known."""
+    if value_m is None:
+        return "–"
+    whole = round(1000 * value_m)
+    return f"{whole:+d}" if whole else "0"
+
+
 def duration(seconds: float | None) -> str:
     """`58 s`, `14 min 2 s`, `2 h 5 min`."""
     if seconds is None:

@@ -8,10 +8,10 @@ from pathlib import Path
 
 import pytest
 
+from fieldbook.book.lock import held
 from fieldbook.book.store import Book
 from fieldbook.clock import FakeClock, SystemClock
 from fieldbook.errors import UsageError
-from fieldbook.occupy import detached
 from fieldbook.screens.bridge import Bridge
 
 from .fakes import NOW_MS, SESSION_TREE
@@ -20,19 +20,12 @@ SAMPLE = Path(__file__).resolve().parents[2] / "sample_sessions" / "kestrel-ridg
 
 
 @pytest.fixture
-def bridge(tmp_path: Path) -> Bridge:
+def bridge(tmp_path: Path) -> Iterator[Bridge]:
     clock = FakeClock(0, NOW_MS)
     path = tmp_path / "kestrel.book"
     Book.create(path, clock=clock, observer="R. Kell", session_tree=SESSION_TREE).close_clean()
-    return Bridge(path, clock, "R. Kell")
-
-
-@pytest.fixture(autouse=True)
-def recorders_gone() -> Iterator[None]:
-    """Recorder processes of a test have ended before the next one begins, and are reaped."""
-    yield
-    wait_for(lambda: all(child.poll() is not None for child in detached._children), "the recorders' end")
-    detached._children.clear()
+    yield Bridge(path, clock, "R. Kell")
+    wait_for(lambda: not held(path), "the recorder's end")
 
 
 def test_nobody_signs_nothing_is_written(bridge: Bridge) -> None:

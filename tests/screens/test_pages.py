@@ -131,6 +131,36 @@ def test_good_to_leave_says_what_the_mark_still_wants() -> None:
     asyncio.run(go())
 
 
+def test_two_95_percents_stand_beside_their_own_frame() -> None:
+    """The client's includes the frame operation, the requirement here is judged in the receiver frame."""
+
+    async def go() -> None:
+        async with opened(FakeBridge(recording=True)) as pilot:
+            await see(pilot, "95 % 19 mm circle", "95 % 17 mm   wanted 20 mm   ✓ reached  in the receiver frame")
+
+    asyncio.run(go())
+
+
+def test_bell_rings_once_per_change() -> None:
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge) as pilot:
+            rung: list[int] = []
+            pilot.app.bell = lambda: rung.append(1)  # type: ignore[method-assign]
+            bridge.silence_s = 7.0
+            await see(pilot, "NO DATA 7 s")
+            bridge.silence_s = 8.0
+            await see(pilot, "NO DATA 8 s")
+            assert len(rung) == 1
+            bridge.silence_s = 0.1
+            await see(pilot, "RTK fixed")
+            bridge.alive = False
+            await see(pilot, "RECORDER GONE")
+            assert len(rung) == 2
+
+    asyncio.run(go())
+
+
 def test_equal_pictures_paint_nothing() -> None:
     async def go() -> None:
         bridge = FakeBridge(recording=True)
