@@ -15,7 +15,12 @@ HEAVY = ("numpy", "scipy", "pyproj", "textual", "sqlite_utils", "pynmea2", "typs
 
 def test_import_contracts_hold() -> None:
     done = subprocess.run(
-        [sys.executable, "-c", "from importlinter.cli import lint_imports_command; lint_imports_command()", "--no-cache"],
+        [
+            sys.executable,
+            "-c",
+            "from importlinter.cli import lint_imports_command; lint_imports_command()",
+            "--no-cache",
+        ],
         cwd=ROOT,
         capture_output=True,
         text=True,
