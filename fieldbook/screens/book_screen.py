@@ -19,7 +19,7 @@ from textual.widgets import ContentSwitcher
 
 from fieldbook.clock import Clock
 from fieldbook.model.live import LiveView
-from fieldbook.screens import entry_forms, recording, setup_forms
+from fieldbook.screens import entry_forms, height_form, recording, setup_forms
 from fieldbook.screens.actions import ACTIONS, BY_NAME, PAGES
 from fieldbook.screens.big import BigView
 from fieldbook.screens.bridge import Bridge, Reduced
@@ -256,7 +256,7 @@ class BookScreen(Screen[None]):
         entry_forms.remark(self)
 
     def do_height(self) -> None:
-        setup_forms.height(self)
+        height_form.height(self)
 
     def do_antenna(self) -> None:
         setup_forms.antenna(self)
@@ -294,7 +294,7 @@ class BookScreen(Screen[None]):
 
     def do_strike(self) -> None:
         if self.page == "setup":
-            setup_forms.strike_reading(self)
+            height_form.strike_reading(self)
         else:
             self.query_one(DiaryPage).strike()
 

@@ -8,137 +8,16 @@ of the occupation (`height`, `setup`). A reading that does not agree may be writ
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from typing import Any
 
 from fieldbook.errors import FieldbookError
 from fieldbook.model.canonical import Tree
-from fieldbook.model.session import Session
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
-from fieldbook.screens.heights import drawing, judgement
 from fieldbook.screens.page import Desk, next_tree, open_occupation
-from fieldbook.screens.rows import BLANK, Row, paragraph, row
-from fieldbook.screens.setup import current_readings, current_session
-from fieldbook.settings.schema import METHODS, OCCASIONS, REPORTED_POINTS, TABLES, UNITS, words
-
-
-def height(desk: Desk) -> None:
-    """Ask for a height reading and write it."""
-    session, problem = current_session(desk.view, desk.bridge)
-    if session is None:
-        desk.tell(problem or "The book is still being opened.", "bad")
-        return
-    readings = current_readings(desk.view)
-    desk.ask(_height_form(desk, session, readings), lambda values: _write_height(desk, values))
-
-
-def _height_form(desk: Desk, session: Session, readings: Sequence[Tree]) -> Form:
-    last = readings[-1] if readings else None
-    slant = session.antenna.slant_radius_m is not None and session.antenna.slant_mark_above_arp_m is not None
-    opened = open_occupation(desk.view)
-    fields = [
-        Field(
-            "method",
-            "Method",
-            words(*METHODS),
-            last["method"] if last else ("slant" if slant else "vertical"),
-            required=True,
-        ),
-        Field("value", "Reading", "positive", required=True, hint="as read from the tape"),
-        Field("unit", "Unit", words(*UNITS), last["unit"] if last else "m", required=True),
-        Field("when", "When", words(*OCCASIONS), "before" if opened is None else "after", required=True),
-        Field("at", "At", hint="notch 1, ..."),
-        Field("reader", "Read by", value=desk.bridge.observer),
-    ]
-
-    def judged(values: Values) -> tuple[float | None, list[Row]]:
-        tree = reading_of(values)
-        if Field("value", "", "positive", required=True).error(values["value"]):
-            return None, []
-        made = desk.bridge.heights(session, [*readings, tree])
-        if made.height is None:
-            return None, []  # the reason stands beside the field once writing is tried
-        own = next((item for item in reversed(made.height.readings)), None)
-        return (own.arp_m if own else None), judgement(made.height.readings, made.findings, 37)
-
-    def sketch(values: Values, width: int, height: int) -> list[Row]:
-        arp_m, said = judged(values)
-        typed = f"{values['value']} {values['unit']}" if values["value"] else ""
-        return [*drawing(values["method"], typed, arp_m, session.antenna), BLANK, *said]
-
-    def check(values: Values) -> dict[str, str]:
-        if values["method"] == "slant" and not slant:
-            return {"method": "the antenna's rim radius and notch height are not stated: press Esc, then A"}
-        made = desk.bridge.heights(session, [reading_of(values)])
-        return {"value": made.problem} if made.height is None else {}
-
-    limits = "Readings more than 3 mm apart: read again, or write a remark why."
-    return Form("HEIGHT OF ANTENNA: which distance are you reading?", fields, note=limits, check=check, sketch=sketch)
-
-
-def reading_of(values: Values) -> Tree:
-    """The form's texts as keys of [[setup.height]]."""
-    return {key: values[key] for key in ("method", "value", "unit", "when", "at", "reader") if values.get(key)}
-
-
-def _write_height(desk: Desk, values: Values | None) -> None:
-    if values is None or desk.view is None:
-        return
-    reading = reading_of(values)
-    opened = open_occupation(desk.view)
-    said = f"written: {reading['method']} {reading['value']} {reading['unit']} {reading['when']}"
-    bridge = desk.bridge
-    if opened is not None:
-        number = opened.number
-        desk.write(lambda: bridge.add_height(number, reading), lambda entry: desk.tell(f"{said} (entry {entry.seq})"))
-        return
-    tree = next_tree(desk.view)
-    if tree is None:
-        return
-    setup = dict(tree["setup"])
-    setup["height"] = [*setup.get("height", []), reading]
-    desk.write(
-        lambda: bridge.save_session({**tree, "setup": setup}), lambda entry: desk.tell(f"{said} (entry {entry.seq})")
-    )
-
-
-def strike_reading(desk: Desk) -> None:
-    """Strike the last reading out, with a reason."""
-    view, bridge = desk.view, desk.bridge
-    readings = current_readings(view)
-    if view is None or not readings:
-        desk.tell("There is no reading to strike out.", "bad")
-        return
-    last, opened, tree = readings[-1], open_occupation(view), next_tree(view)
-    said = f"{last['method']} {last['value']} {last['unit']} {last['when']}"
-    seq = opened.heights[-1].seq if opened else None
-    if opened is not None and seq in (None, opened.entry_seq):
-        desk.tell(f"{said} stands in the occupation's own entry: read again, and write a remark why.", "bad")
-        return
-
-    def struck(values: Values | None) -> None:
-        if values is None:
-            return
-        reason = values["reason"]
-        if seq is not None:
-            desk.write(
-                lambda: bridge.strike(seq, reason), lambda entry: desk.tell(f"struck: {said} (entry {entry.seq})")
-            )
-        elif tree is not None:
-            setup = {**tree["setup"], "height": readings[:-1]}
-            if not readings[:-1]:
-                setup.pop("height")
-            remark = f"reading {said} taken back before the occupation: {reason}"
-
-            def job() -> Any:
-                bridge.add_remark(None, remark)
-                return bridge.save_session({**tree, "setup": setup})
-
-            desk.write(job, lambda entry: desk.tell(f"taken back: {said} (entry {entry.seq})"))
-
-    note = f"{said}. The entry stays in the diary."
-    desk.ask(Form("STRIKE OUT the last reading", [Field("reason", "Reason", required=True)], note=note), struck)
+from fieldbook.screens.rows import Row, paragraph, row
+from fieldbook.screens.setup import current_session
+from fieldbook.settings.schema import REPORTED_POINTS, TABLES, words
 
 
 def _change(desk: Desk, changes: Tree) -> None:

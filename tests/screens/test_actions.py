@@ -167,6 +167,29 @@ def test_height_before_occupation_joins_the_next_session() -> None:
     asyncio.run(go())
 
 
+def test_reading_after_the_end_belongs_to_the_last_occupation() -> None:
+    async def go() -> None:
+        bridge = FakeBridge(ended=True)
+        async with opened(bridge) as pilot:
+            await pilot.press("3", "h")
+            await form(pilot)
+            await see(pilot, "of the next occupation")
+            await typed(pilot, "1.5330")
+            await pilot.press("down", "down", "d")
+            await see(pilot, "of occupation 1, KR-07")
+            await pilot.press("enter", "enter", "enter")
+            await see(pilot, "no occupation is open")
+            await pilot.press("a")
+            await see(pilot, "readings agree: 1.0 mm apart")
+            await pilot.press("enter", "enter", "enter")
+            await on_desk(pilot)
+            await see(pilot, "occupation 1 (entry")
+            kind, body = bridge.calls[0]
+            assert (kind, body["occupation"], body["when"]) == ("height", 1, "after")
+
+    asyncio.run(go())
+
+
 def test_reading_that_cannot_be_is_refused_with_the_reason() -> None:
     async def go() -> None:
         bridge = FakeBridge()

@@ -89,6 +89,13 @@ def test_a_recorded_file_is_begun_reduced_and_named_ready(tmp_path: Path) -> Non
     assert bridge.missing(made) == []
     kinds = [entry.kind for entry in bridge.entries()]
     assert kinds.count("occupation") == kinds.count("end") == 1
+    paper = bridge.certify(made.mark, 1, str(tmp_path / "paper.txt"), "A. Firth; 1234", "")
+    assert paper.number is not None
+    assert paper.number in Path(paper.path).read_text(encoding="utf-8")
+    again = bridge.certify(made.mark, 1, str(tmp_path / "again.json"), "A. Firth; 1234", "")
+    assert again.number == paper.number
+    with pytest.raises(UsageError, match="exists already"):
+        bridge.certify(made.mark, 1, str(tmp_path / "paper.txt"), "A. Firth; 1234", "")
     assert not bridge.strikeable(next(entry for entry in bridge.entries() if entry.kind == "raw"))
 
 
@@ -100,6 +107,7 @@ def test_simulated_receiver_is_recorded_and_ended_from_the_bridge(bridge: Bridge
     height = bridge.add_height(1, {"method": "slant", "value": "1.5330", "unit": "m", "when": "after"})
     bridge.end(1)
     assert ended(bridge)
+    height = bridge.add_height(1, {"method": "slant", "value": "1.5330", "unit": "m", "when": "after"})
     with Book.open(bridge.path, clock=bridge.clock) as book:
         assert [item.seq for item in book.state().occupations[1].heights][-1] == height.seq
     assert "simulated" in " ".join(bridge.missing(bridge.reduce().reductions[0]))

@@ -1,0 +1,170 @@
+"""The height reading: which distance, its ARP height at once, whether it agrees, and to which occupation it belongs.
+
+    an occupation is open                    the reading is a `height` entry of it
+    none is open, read `before`              it stands in the session of the next one
+    none is open, read `after`               it is a `height` entry of the last one: the tripod still stands there
+
+A reading that does not agree may be written, and stands as not agreeing until it is struck out or read again.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+from fieldbook.model.canonical import Tree
+from fieldbook.model.live import LiveView
+from fieldbook.model.session import Session
+from fieldbook.model.state import Occupation
+from fieldbook.screens.fields import Field
+from fieldbook.screens.forms import Form, Values
+from fieldbook.screens.heights import drawing, judgement
+from fieldbook.screens.page import Desk, next_tree, open_occupation
+from fieldbook.screens.rows import BLANK, Row, row
+from fieldbook.screens.setup import current_readings, current_session, reading_tree
+from fieldbook.settings.schema import METHODS, OCCASIONS, UNITS, words
+
+SKETCH_CELLS = 37
+VALUE = Field("value", "Reading", "positive", required=True, hint="as read from the tape")
+
+
+def owner(view: LiveView, when: str) -> Occupation | None:
+    """The occupation a reading belongs to; None: the next one."""
+    opened = view.state.open_occupation
+    if opened is not None or when == "before":
+        return opened
+    return next(reversed(view.state.occupations.values()), None)
+
+
+def height(desk: Desk) -> None:
+    """Ask for a height reading and write it."""
+    session, problem = current_session(desk.view, desk.bridge)
+    if session is None or desk.view is None:
+        desk.tell(problem or "The book is still being opened: press again in a moment.", "bad")
+        return
+    desk.ask(_form(desk, session), lambda values: _write(desk, values))
+
+
+def reading_of(values: Values) -> Tree:
+    """The form's texts as keys of [[setup.height]]."""
+    return {key: values[key] for key in ("method", "value", "unit", "when", "at", "reader") if values.get(key)}
+
+
+def _form(desk: Desk, session: Session) -> Form:
+    readings = current_readings(desk.view)
+    last = readings[-1] if readings else None
+    has_rim = session.antenna.slant_radius_m is not None and session.antenna.slant_mark_above_arp_m is not None
+    method = last["method"] if last else ("slant" if has_rim else "vertical")
+    when = "before" if open_occupation(desk.view) is None else "after"
+    fields = [
+        Field("method", "Method", words(*METHODS), method, required=True),
+        VALUE,
+        Field("unit", "Unit", words(*UNITS), last["unit"] if last else "m", required=True),
+        Field("when", "When", words(*OCCASIONS), when, required=True),
+        Field("at", "At", hint="notch 1, ..."),
+        Field("reader", "Read by", value=desk.bridge.observer),
+    ]
+    return Form(
+        "HEIGHT OF ANTENNA: which distance are you reading?",
+        fields,
+        note="Readings more than 3 mm apart: read again, or write a remark why.",
+        check=lambda values: _check(desk, session, values),
+        sketch=lambda values, width, height: _sketch(desk, session, values),
+    )
+
+
+def _context(desk: Desk, session: Session, values: Values) -> tuple[Session, list[Tree], str]:
+    """Session and readings a reading is judged with, and whose it is, in words."""
+    view = desk.view
+    whose = owner(view, values["when"]) if view else None
+    if whose is None:
+        return session, current_readings(view), "of the next occupation"
+    return whose.session, [reading_tree(item) for item in whose.heights], f"of occupation {whose.number}, {whose.mark}"
+
+
+def _sketch(desk: Desk, session: Session, values: Values) -> list[Row]:
+    judged_in, readings, whose = _context(desk, session, values)
+    typed = f"{values['value']} {values['unit']}" if values["value"] else ""
+    arp_m: float | None = None
+    said: list[Row] = []
+    if not VALUE.error(values["value"]):
+        made = desk.bridge.heights(judged_in, [*readings, reading_of(values)])
+        if made.height is not None:  # else the reason stands beside the field once writing is tried
+            arp_m = made.height.readings[-1].arp_m
+            said = judgement(made.height.readings, made.findings, SKETCH_CELLS)
+    picture = drawing(values["method"], typed, arp_m, judged_in.antenna)
+    return [row((f" {whose}", "soft")), *picture, BLANK, *said]
+
+
+def _check(desk: Desk, session: Session, values: Values) -> dict[str, str]:
+    judged_in, _, _ = _context(desk, session, values)
+    antenna = judged_in.antenna
+    if values["method"] == "slant" and (antenna.slant_radius_m is None or antenna.slant_mark_above_arp_m is None):
+        return {"method": "the antenna's rim radius and notch height are not stated: press Esc, then A"}
+    if open_occupation(desk.view) is None and values["when"] != "before":
+        if values["when"] == "during":
+            return {"when": "no occupation is open: take 'before' for the next one or 'after' for the last one"}
+        if desk.view is not None and owner(desk.view, "after") is None:
+            return {"when": "there was no occupation yet: take 'before'"}
+    made = desk.bridge.heights(judged_in, [reading_of(values)])
+    return {"value": made.problem} if made.height is None else {}
+
+
+def _write(desk: Desk, values: Values | None) -> None:
+    if values is None or desk.view is None:
+        return
+    reading, bridge = reading_of(values), desk.bridge
+    whose = owner(desk.view, reading["when"])
+    said = f"written: {reading['method']} {reading['value']} {reading['unit']} {reading['when']}"
+    if whose is not None:
+        number = whose.number
+        desk.write(
+            lambda: bridge.add_height(number, reading),
+            lambda entry: desk.tell(f"{said}, occupation {number} (entry {entry.seq})"),
+        )
+        return
+    tree = next_tree(desk.view)
+    if tree is None:
+        return
+    setup = {**tree["setup"], "height": [*tree["setup"].get("height", []), reading]}
+    desk.write(
+        lambda: bridge.save_session({**tree, "setup": setup}),
+        lambda entry: desk.tell(f"{said}, next occupation (entry {entry.seq})"),
+    )
+
+
+def strike_reading(desk: Desk) -> None:
+    """Strike the last reading out, with a reason."""
+    view, bridge = desk.view, desk.bridge
+    readings = current_readings(view)
+    if view is None or not readings:
+        desk.tell("There is no reading to strike out.", "bad")
+        return
+    last, opened, tree = readings[-1], open_occupation(view), next_tree(view)
+    said = f"{last['method']} {last['value']} {last['unit']} {last['when']}"
+    seq = opened.heights[-1].seq if opened else None
+    if opened is not None and seq in (None, opened.entry_seq):
+        desk.tell(f"{said} stands in the occupation's own entry: read again, and write a remark why.", "bad")
+        return
+
+    def struck(values: Values | None) -> None:
+        if values is None:
+            return
+        reason = values["reason"]
+        if seq is not None:
+            desk.write(
+                lambda: bridge.strike(seq, reason), lambda entry: desk.tell(f"struck: {said} (entry {entry.seq})")
+            )
+        elif tree is not None:
+            setup = {**tree["setup"], "height": readings[:-1]}
+            if not readings[:-1]:
+                setup.pop("height")
+            remark = f"reading {said} taken back before the occupation: {reason}"
+
+            def job() -> Any:
+                bridge.add_remark(None, remark)
+                return bridge.save_session({**tree, "setup": setup})
+
+            desk.write(job, lambda entry: desk.tell(f"taken back: {said} (entry {entry.seq})"))
+
+    note = f"{said}. The entry stays in the diary."
+    desk.ask(Form("STRIKE OUT the last reading", [Field("reason", "Reason", required=True)], note=note), struck)
