@@ -1,8 +1,8 @@
 """Forms to fill in by keyboard: one line per field, what is wrong beside the field, the remedy with it.
 
 Enter or the down arrow goes on, the up arrow back, Enter on the last line writes, Esc leaves without writing. A
-choice is turned with the left and right arrows or by the first letter of a word. A form may show a drawing that
-follows what is typed.
+choice is turned with the left and right arrows or by the first letter of a word. A form may show a drawing and say
+what follows from what is typed; the drawing gives way where the terminal is narrow, the words never.
 
 The form itself takes every key, in the order of typing: with one input widget per field a fast hand's Enter can
 overtake the figures typed before it, and a height would be written with its last digits missing.
@@ -27,12 +27,14 @@ from fieldbook.screens.rows import BLANK, Row, paragraph, row
 
 Values = dict[str, str]
 Check = Callable[[Values], dict[str, str]]
-Sketch = Callable[[Values, int, int], Sequence[Row]]
+Sketch = Callable[[Values], Sequence[Row]]
+Said = Callable[[Values, int], Sequence[Row]]
 
 
 class Form(ModalScreen[Values | None]):
     """Asks for some fields; dismissed with their texts, or None after Esc."""
 
+    HORIZONTAL_BREAKPOINTS = [(0, "-tight"), (76, "-roomy")]  # noqa: RUF012 - Textual declares it without ClassVar
     # keys are taken in on_key; these are what Textual would otherwise do with them
     BINDINGS: ClassVar[list[BindingType]] = [Binding("tab,shift+tab,ctrl+p,super+c", "nothing", show=False)]
 
@@ -44,11 +46,12 @@ class Form(ModalScreen[Values | None]):
         note: str = "",
         check: Check | None = None,
         sketch: Sketch | None = None,
+        said: Said | None = None,
     ) -> None:
         super().__init__()
         self.title_text, self.fields, self.note = title, tuple(fields), note
         self.lines = [FieldLine(field) for field in self.fields]
-        self._check, self._sketch = check, sketch
+        self._check, self._sketch, self._said = check, sketch, said
         self.errors: dict[str, str] = {}
         self._asked = False  # errors stand beside the fields once writing was tried
         empty = [n for n, field in enumerate(self.fields) if not field.value and not field.words]
@@ -77,7 +80,7 @@ class Form(ModalScreen[Values | None]):
         return [row((" Enter on the last line writes · ↑ ↓ line · ← → word · Esc: not written", "soft"))]
 
     def _drawing(self, width: int, height: int) -> list[Row]:
-        return list(self._sketch(self.values(), width, height)) if self._sketch else []
+        return list(self._sketch(self.values())) if self._sketch else []
 
     def _fields(self, width: int, height: int) -> list[Row]:
         label_width = 15 if self._sketch else 19
@@ -90,6 +93,8 @@ class Form(ModalScreen[Values | None]):
                 rows += paragraph(error, width, style="bad", mark=("▲", "bad"), most=6)
             if number == self.here:
                 last_needed = len(rows)
+        if self._said:
+            rows += [BLANK, *self._said(self.values(), width)]
         if self.note:
             rows += [BLANK, *paragraph(self.note, width, style="soft")]
         return rows[max(0, last_needed - height) :]  # the line being filled is always in sight

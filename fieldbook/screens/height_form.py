@@ -15,15 +15,15 @@ from fieldbook.model.canonical import Tree
 from fieldbook.model.live import LiveView
 from fieldbook.model.session import Session
 from fieldbook.model.state import Occupation
+from fieldbook.screens.bridge import Heights
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.heights import drawing, judgement
 from fieldbook.screens.page import Desk, next_tree, open_occupation
-from fieldbook.screens.rows import BLANK, Row, row
+from fieldbook.screens.rows import Row, row
 from fieldbook.screens.setup import current_readings, current_session, reading_tree
 from fieldbook.settings.schema import METHODS, OCCASIONS, UNITS, words
 
-SKETCH_CELLS = 37
 VALUE = Field("value", "Reading", "positive", required=True, hint="as read from the tape")
 
 
@@ -68,7 +68,8 @@ def _form(desk: Desk, session: Session) -> Form:
         fields,
         note="Readings more than 3 mm apart: read again, or write a remark why.",
         check=lambda values: _check(desk, session, values),
-        sketch=lambda values, width, height: _sketch(desk, session, values),
+        sketch=lambda values: _sketch(desk, session, values),
+        said=lambda values, width: _said(desk, session, values, width),
     )
 
 
@@ -81,18 +82,35 @@ def _context(desk: Desk, session: Session, values: Values) -> tuple[Session, lis
     return whose.session, [reading_tree(item) for item in whose.heights], f"of occupation {whose.number}, {whose.mark}"
 
 
+def _judged(desk: Desk, session: Session, values: Values) -> Heights | None:
+    """The reading judged with the others; None while there is nothing to judge."""
+    if VALUE.error(values["value"]):
+        return None
+    judged_in, readings, _ = _context(desk, session, values)
+    made = desk.bridge.heights(judged_in, [*readings, reading_of(values)])
+    return made if made.height is not None else None  # else the reason stands beside the field once writing is tried
+
+
 def _sketch(desk: Desk, session: Session, values: Values) -> list[Row]:
-    judged_in, readings, whose = _context(desk, session, values)
+    judged_in, _, _ = _context(desk, session, values)
+    made = _judged(desk, session, values)
     typed = f"{values['value']} {values['unit']}" if values["value"] else ""
-    arp_m: float | None = None
-    said: list[Row] = []
-    if not VALUE.error(values["value"]):
-        made = desk.bridge.heights(judged_in, [*readings, reading_of(values)])
-        if made.height is not None:  # else the reason stands beside the field once writing is tried
-            arp_m = made.height.readings[-1].arp_m
-            said = judgement(made.height.readings, made.findings, SKETCH_CELLS)
-    picture = drawing(values["method"], typed, arp_m, judged_in.antenna)
-    return [row((f" {whose}", "soft")), *picture, BLANK, *said]
+    arp_m = made.height.readings[-1].arp_m if made and made.height else None
+    return drawing(values["method"], typed, arp_m, judged_in.antenna)
+
+
+def _said(desk: Desk, session: Session, values: Values, width: int) -> list[Row]:
+    _, _, whose = _context(desk, session, values)
+    made = _judged(desk, session, values)
+    rows = [row((f" {whose}", "soft"))]
+    if made is None or made.height is None:
+        return rows
+    arp = made.height.readings[-1].arp_m
+    return [
+        *rows,
+        row(" ARP above mark ", (f"{arp:.4f} m", "strong")),
+        *judgement(made.height.readings, made.findings, width),
+    ]
 
 
 def _check(desk: Desk, session: Session, values: Values) -> dict[str, str]:

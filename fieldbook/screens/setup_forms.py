@@ -4,8 +4,6 @@ Before the occupation they change what the book offers for it (a `session` entry
 of the occupation (`height`, `setup`). A reading that does not agree may be written, and stands as not agreeing.
 """
 
-# ruff: noqa: ARG001 - every maker of rows takes the size, and some do not need it
-
 from __future__ import annotations
 
 from typing import Any
@@ -15,8 +13,8 @@ from fieldbook.model.canonical import Tree
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.page import Desk, next_tree, open_occupation
-from fieldbook.screens.rows import Row, paragraph, row
-from fieldbook.screens.setup import current_session
+from fieldbook.screens.rows import Row, paragraph
+from fieldbook.screens.setup import CONSEQUENCE, current_session
 from fieldbook.settings.schema import REPORTED_POINTS, TABLES, words
 
 
@@ -169,15 +167,12 @@ def point(desk: Desk) -> None:
     def changes(values: Values) -> Tree:
         return {"setup": {key: text for key, text in values.items() if text}}
 
-    def sketch(values: Values, width: int, height: int) -> list[Row]:
-        from fieldbook.screens.setup import CONSEQUENCE
-
-        said = CONSEQUENCE.get(values["reported_point"], "")
-        return [row((" What is done with it", "soft")), *paragraph(said, width, style="strong")]
+    def said(values: Values, width: int) -> list[Row]:
+        return paragraph(CONSEQUENCE.get(values["reported_point"], ""), width, style="strong", mark=("→", "accent"))
 
     note = "Look at the receiver's own settings: a height taken off twice is the classic blunder."
     form = Form(
-        "WHAT POINT DOES THE RECEIVER REPORT?", fields, note=note, check=_session_check(desk, changes), sketch=sketch
+        "WHAT POINT DOES THE RECEIVER REPORT?", fields, note=note, check=_session_check(desk, changes), said=said
     )
     desk.ask(form, lambda values: _change(desk, changes(values)) if values else None)
 
