@@ -280,3 +280,133 @@ class Trace:
     kept: list[bool]
     initialisation: list[int]
     step: int = 1  # every step-th epoch is here
+
+
+@dataclass
+class Independence:
+    """How far two occupations of a mark stand apart. Keys of `marks[].repeats[].independence`:
+
+    grade           "independent", "partly independent" or "not independent"
+    hours_apart     end of the earlier to start of the later one
+    sky_apart_h     the same on a dial of one repeat of the GPS sky (86 153 s): 0 = the same satellites in the same places
+    hours_wanted    what both are held against
+    changed, same   what differs and what does not: "antenna height", "tribrach", "antenna", "observer", "station",
+                    "receiver"
+    not_known       what was not stated
+    text            one sentence
+    """
+
+    grade: str
+    hours_apart: float | None
+    sky_apart_h: float | None
+    hours_wanted: float
+    changed: list[str]
+    same: list[str]
+    not_known: list[str]
+    text: str
+
+
+@dataclass
+class Repeat:
+    """Two occupations of a mark against each other. Keys of `marks[].repeats[]`:
+
+    first, second            occupation numbers; the difference is second minus first
+    difference_enu_m         metres east, north, up; up null when one has no height
+    plan_m                   its horizontal length
+    u_enu_m, dof_enu         of the difference: what both share has dropped out; dof null = infinite
+    plan_significance        probability of a larger plan difference if nothing is wrong (F)
+    height_significance      the same in height (t, two-sided)
+    level                    what a significance is held against: 0.05 shared by all tests of the mark
+    plan_tolerance_m, height_tolerance_m    the fixed tolerances
+    agrees                   false when one of the tests is not passed
+    text                     one sentence
+    """
+
+    first: int
+    second: int
+    difference_enu_m: list[float | None]
+    plan_m: float
+    u_enu_m: list[float | None]
+    dof_enu: list[float | None]
+    plan_significance: float
+    height_significance: float | None
+    level: float
+    plan_tolerance_m: float
+    height_tolerance_m: float
+    agrees: bool
+    text: str
+    independence: Independence
+
+
+@dataclass
+class MarkOccupation:
+    """One combined occupation. Keys of `marks[].used[]`:
+
+    occupation, open, fix_class, kept_s
+    weight_enu               share per axis; each axis sums to one over the mark, 0 where it has no part
+    residual_enu_m           this occupation minus the combined mark
+    residual_u_enu_m         standard uncertainty of that difference
+    plan_significance, height_significance   probability of a larger residual if nothing is wrong
+    """
+
+    occupation: int
+    open: bool
+    fix_class: str
+    kept_s: float
+    weight_enu: list[float]
+    residual_enu_m: list[float | None]
+    residual_u_enu_m: list[float | None]
+    plan_significance: float
+    height_significance: float | None
+
+
+@dataclass
+class NotCombined:
+    """An occupation left out. Keys of `marks[].not_combined[]`: occupation, code, text (why, and what to do)."""
+
+    occupation: int
+    code: str
+    text: str
+
+
+@dataclass
+class MarkResult:
+    """All occupations of one mark in one book. Keys of `marks[]` in `fieldbook reduce --json`:
+
+    mark
+    occupations              numbers of all reduced occupations of the mark
+    used                     those that are combined (one alone included), see MarkOccupation
+    not_combined             those that are not, each with its reason
+    odd_one                  the occupation that disagrees with all others, if one can be named, else null
+    started, ended           first and last kept epoch of the used ones
+    kept_s                   sum over the used ones
+    receiver_frame           frame all used ones were observed in
+    client, grid, height     as in a reduction, of the combined mark; null when there is no common position
+    uncertainty              U of the mark as measured, without the frame operation
+    uncertainty_client       U with the frame operation, in the client's frame; null without client
+    repeats                  every pair of used ones, see Repeat
+    findings                 of the mark as a whole; those of the occupations stay with them
+    leave                    the mark's own verdict: lines of scope "mark" on the combined figures
+    """
+
+    mark: str
+    occupations: list[int]
+    used: list[MarkOccupation]
+    not_combined: list[NotCombined]
+    odd_one: int | None
+    started: str | None
+    ended: str | None
+    kept_s: float
+    receiver_frame: str | None
+    client: ClientPosition | None
+    grid: GridPosition | None
+    height: Height | None
+    uncertainty: Uncertainty | None
+    uncertainty_client: Uncertainty | None
+    repeats: list[Repeat] = field(default_factory=list)
+    findings: list[Finding] = field(default_factory=list)
+    leave: Leave | None = None
+
+    def to_json(self) -> dict[str, Any]:
+        """The tree of one element of `marks`: finite numbers or null."""
+        return {item.name: _plain(getattr(self, item.name)) for item in dataclasses.fields(self)}
