@@ -72,6 +72,8 @@ ACTIONS: tuple[Action, ...] = (
            "fieldbook certify BOOK MARK", ("certificate",), 1),
     Action("strike", "x", "X", "strike", "Strike out, with a reason: an entry, or the last reading. It stays legible.",
            "fieldbook strike BOOK SEQ", ("diary", "setup"), 3),
+    Action("explain", "v", "V", "explain", "Say why height readings differ and still stand: a decision, printed with them.",
+           "fieldbook entry BOOK decision", ("setup", "occupation", "leave"), 8),
     Action("whole", "w", "W", "whole diary", "Show or hide the recorder's own entries.", "", ("diary",), 2),
     Action("choose", "enter", "Enter", "choose", "Choose the line, or go to the next page of the work.", "",
            ("cover", "marks", "links"), 1),

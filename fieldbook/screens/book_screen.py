@@ -258,6 +258,9 @@ class BookScreen(Screen[None]):
     def do_height(self) -> None:
         height_form.height(self)
 
+    def do_explain(self) -> None:
+        height_form.explain(self)
+
     def do_antenna(self) -> None:
         setup_forms.antenna(self)
 

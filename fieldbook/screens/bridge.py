@@ -100,13 +100,18 @@ class Bridge:
         failures = tuple((item.mark, item.occupation, item.error.text, item.error.remedy) for item in failed)
         return Reduced(tuple(item.reduction for item in reduced), failures)
 
-    def heights(self, session: Session, readings: Sequence[Tree]) -> Heights:
-        """Readings (keys of [[setup.height]]) reduced to the ARP and judged; pure, no disk."""
+    def heights(self, session: Session, readings: Sequence[Tree], *, explained: bool = False) -> Heights:
+        """Readings (keys of [[setup.height]]) reduced to the ARP and judged; pure, no disk.
+
+        Args:
+            explained: a decision says why they differ; the finding stays, as information.
+        """
         from fieldbook.reduce.antenna import reduce_antenna
         from fieldbook.settings.session import reading_from_tree
 
         try:
-            made = reduce_antenna(session.setup, session.antenna, [reading_from_tree(item) for item in readings])
+            items = [reading_from_tree(item) for item in readings]
+            made = reduce_antenna(session.setup, session.antenna, items, difference_explained=explained)
         except FieldbookError as problem:
             return Heights(None, (), f"{problem.text} {problem.remedy}")
         return Heights(made.height, tuple(made.findings))
@@ -173,6 +178,10 @@ class Bridge:
     def add_height(self, occupation: int, tree: Tree) -> Entry:
         """A height reading of an occupation that has begun."""
         return self.write("height", {"occupation": occupation, **tree})
+
+    def explain_heights(self, occupation: int, reason: str) -> Entry:
+        """The decision that readings which differ stand, and why."""
+        return self.write("decision", {"occupation": occupation, "height_difference": "explained", "reason": reason})
 
     def add_setup(self, occupation: int, changes: Tree) -> Entry:
         """Changed keys of an occupation that has begun, as {table: {key: value}}."""

@@ -18,7 +18,7 @@ from fieldbook.model.state import Occupation
 from fieldbook.screens.bridge import Heights
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
-from fieldbook.screens.heights import drawing, judgement
+from fieldbook.screens.heights import disagree, drawing, judgement
 from fieldbook.screens.page import Desk, next_tree, open_occupation
 from fieldbook.screens.rows import Row, row
 from fieldbook.screens.setup import current_readings, current_session, reading_tree
@@ -66,7 +66,7 @@ def _form(desk: Desk, session: Session) -> Form:
     return Form(
         "HEIGHT OF ANTENNA: which distance are you reading?",
         fields,
-        note="Readings more than 3 mm apart: read again, or write a remark why.",
+        note="Readings more than 3 mm apart: read again, or say why (V).",
         check=lambda values: _check(desk, session, values),
         sketch=lambda values: _sketch(desk, session, values),
         said=lambda values, width: _said(desk, session, values, width),
@@ -186,3 +186,28 @@ def strike_reading(desk: Desk) -> None:
 
     note = f"{said}. The entry stays in the diary."
     desk.ask(Form("STRIKE OUT the last reading", [Field("reason", "Reason", required=True)], note=note), struck)
+
+
+def explain(desk: Desk) -> None:
+    """Say why readings of the open or last occupation differ and still stand."""
+    view, bridge = desk.view, desk.bridge
+    whose = owner(view, "after") if view else None
+    if whose is None:
+        desk.tell("There is no occupation yet: read again, and strike the wrong reading out (X).", "bad")
+        return
+    made = bridge.heights(whose.session, [reading_tree(item) for item in whose.heights])
+    wrong = disagree(made.findings)
+    if not wrong:
+        desk.tell(f"The readings of occupation {whose.number} agree; nothing is to be explained.", "bad")
+        return
+    number = whose.number
+
+    def written(values: Values | None) -> None:
+        if values:
+            desk.write(
+                lambda: bridge.explain_heights(number, values["reason"]),
+                lambda entry: desk.tell(f"decision written: the readings stand (entry {entry.seq})"),
+            )
+
+    title = f"WHY DO THE READINGS OF OCCUPATION {number} DIFFER?"
+    desk.ask(Form(title, [Field("reason", "Reason", required=True)], note=wrong), written)

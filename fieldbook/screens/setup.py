@@ -127,9 +127,11 @@ class SetupPage(Page):
     def _heights(self, session: Session) -> Heights:
         """Judged once per change, not once per drawing."""
         readings = current_readings(self.view)
-        key = (session, tuple(tuple(sorted(item.items())) for item in readings))
+        opened = open_occupation(self.view)
+        explained = opened is not None and any("height_difference" in entry.body for entry in opened.decisions)
+        key = (session, tuple(tuple(sorted(item.items())) for item in readings), explained)
         if self._judged is None or self._judged[0] != key:
-            self._judged = (key, self.desk.bridge.heights(session, readings))
+            self._judged = (key, self.desk.bridge.heights(session, readings, explained=explained))
         return self._judged[1]
 
 

@@ -190,6 +190,28 @@ def test_reading_after_the_end_belongs_to_the_last_occupation() -> None:
     asyncio.run(go())
 
 
+def test_readings_that_differ_may_be_explained_by_a_decision() -> None:
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge) as pilot:
+            await pilot.press("4", "v")
+            await see(pilot, "nothing is to be explained")
+            bridge.add_height(1, {"method": "slant", "value": "1.6", "unit": "m", "when": "after"})
+            await wait_until(pilot, lambda: len(desk(pilot).view.state.occupations[1].heights) == 2, "the reading")  # type: ignore[union-attr]
+            await pilot.press("v")
+            await form(pilot)
+            await see(pilot, "WHY DO THE READINGS", "differ by")
+            await pilot.press(*"sank", "enter")
+            await on_desk(pilot)
+            await see(pilot, "decision written")
+            assert bridge.calls[-1] == (
+                "decision",
+                {"occupation": 1, "height_difference": "explained", "reason": "sank"},
+            )
+
+    asyncio.run(go())
+
+
 def test_reading_that_cannot_be_is_refused_with_the_reason() -> None:
     async def go() -> None:
         bridge = FakeBridge()

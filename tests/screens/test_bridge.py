@@ -110,6 +110,7 @@ def test_simulated_receiver_is_recorded_and_ended_from_the_bridge(bridge: Bridge
     height = bridge.add_height(1, {"method": "slant", "value": "1.5330", "unit": "m", "when": "after"})
     with Book.open(bridge.path, clock=bridge.clock) as book:
         assert [item.seq for item in book.state().occupations[1].heights][-1] == height.seq
+    assert bridge.explain_heights(1, "the tripod sank").kind == "decision"
     assert "simulated" in " ".join(bridge.missing(bridge.reduce().reductions[0]))
 
 
