@@ -13,6 +13,7 @@ from fieldbook.commands.output import line, note, write_json
 from fieldbook.errors import ExitCode
 
 if TYPE_CHECKING:
+    from fieldbook.model.reduction import MarkResult
     from fieldbook.occupy.reductions import Failure
     from fieldbook.reduce.occupation import Reduced
 
@@ -25,12 +26,14 @@ if TYPE_CHECKING:
 def command(book: Path, mark: str | None, check: bool, as_json: bool) -> int:
     """Reduce the occupations of BOOK."""
     from fieldbook.book.store import Book
-    from fieldbook.occupy.reductions import reduce_book
+    from fieldbook.occupy.marks_combined import combine_marks
+    from fieldbook.occupy.reductions import reduce_book, search_dirs
     from fieldbook.reduce.frames import versions
 
     with Book.open(book, clock=SystemClock()) as opened:
         reduced, failed = reduce_book(opened, mark)
         state = opened.state()
+        marks = combine_marks(state, reduced, search_dirs(opened))
         notes = opened.notes
         without_wal = opened.copied_without_wal
     for text in notes:
@@ -45,11 +48,12 @@ def command(book: Path, mark: str | None, check: bool, as_json: bool) -> int:
                 "program": {"version": __version__, "proj": used.proj, "epsg": used.epsg},
                 "book": {"id": state.id, "path": str(book), "head": state.head_hash},
                 "reductions": [item.reduction.to_json() for item in reduced],
+                "marks": [item.to_json() for item in marks],
                 "failed": [_failure(item) for item in failed],
             }
         )
     else:
-        _print(reduced, failed)
+        _print(reduced, marks, failed)
     if failed and not reduced:
         return int(ExitCode.REDUCTION)
     if not reduced:
@@ -64,12 +68,18 @@ def _failure(item: Failure) -> dict[str, object]:
     return {"mark": item.mark, "occupation": item.occupation, "error": error}
 
 
-def _print(reduced: list[Reduced], failed: list[Failure]) -> None:
+def _print(reduced: list[Reduced], marks: list[MarkResult], failed: list[Failure]) -> None:
+    from fieldbook.commands.marks_text import mark_lines
     from fieldbook.commands.reduction_text import reduction_lines
 
     for item in reduced:
         for text in reduction_lines(item.reduction):
             line(text)
         line()
+    for mark in marks:
+        if len(mark.occupations) > 1:
+            for text in mark_lines(mark):
+                line(text)
+            line()
     for failure in failed:
         note(f"{failure.mark}, occupation {failure.occupation}: not reduced. {failure.error}")
