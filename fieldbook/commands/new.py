@@ -17,12 +17,17 @@ from fieldbook.commands.output import line, write_json
 def command(book: Path, session_path: Path, *, as_json: bool) -> None:
     """Check the session, then make the file."""
     from fieldbook.book.store import Book
+    from fieldbook.links.address import parse_link
     from fieldbook.occupy.frame_check import check_session_frames
-    from fieldbook.settings.session import load_session
+    from fieldbook.settings.session import load_session, merged
 
     session = load_session(session_path)
     check_session_frames(session)
-    made = Book.create(book, clock=SystemClock(), observer=session.job.observer, session_tree=session.tree)
+    address = parse_link(session.receiver.link, session_path.resolve().parent)
+    tree = merged(
+        session.tree, {"receiver": {"link": address.text}}
+    )  # a relative file stays the one beside the session
+    made = Book.create(book, clock=SystemClock(), observer=session.job.observer, session_tree=tree)
     try:
         state = made.state()
     finally:
