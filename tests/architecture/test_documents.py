@@ -12,6 +12,8 @@ import pytest
 from fieldbook.book.kinds import KINDS
 from fieldbook.commands import COMMANDS
 from fieldbook.errors import ExitCode
+from fieldbook.screens.actions import ACTIONS
+from fieldbook.settings.schema import TABLES
 
 ROOT = Path(__file__).parents[2]
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -51,3 +53,17 @@ def test_the_readme_has_two_commands_and_ci_runs_the_second() -> None:
     for number in (1, 2):
         assert f"<!-- command {number} -->" in README
     assert "command 2" in (ROOT / ".ci" / "run").read_text(encoding="utf-8")
+
+
+@pytest.mark.parametrize("table", TABLES)
+def test_every_session_key_is_in_the_readme(table: str) -> None:
+    section = README.split("## The session file")[1].split("\n## ")[0]
+    for key in TABLES[table]:
+        assert re.search(rf"\b{key}\b", section), f"{table}.{key}"
+
+
+def test_every_key_of_the_screen_is_in_the_readme() -> None:
+    section = README.split("## Keys of the screen")[1].split("\n## ")[0]
+    for action in ACTIONS:
+        if action.name not in {"up", "down", "page_up", "page_down", "previous", "next"}:
+            assert action.help in section, action.name
