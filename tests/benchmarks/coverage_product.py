@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from fieldbook.check.findings import findings_of
 from fieldbook.check.leave import Figures, leave_check
-from fieldbook.model.reduction import Finding, Leave
+from fieldbook.model.reduction import Finding, Leave, Uncertainty
 from fieldbook.model.session import (
     Antenna,
     Corrections,
@@ -28,7 +28,8 @@ from fieldbook.model.session import (
     Session,
     Setup,
 )
-from fieldbook.model.state import Occupation
+from fieldbook.model.state import BookState, Occupation
+from fieldbook.occupy.marks_combined import combine_marks
 from fieldbook.reduce.occupation import OccupationReducer, Reduced
 
 NOTHING_M = 1e-9
@@ -36,29 +37,26 @@ FRAME = FrameChoice("EPSG:7912", "EPSG:7912", receiver_epoch="observation", clie
 
 
 @dataclass
-class Stated:
-    """What the product states of one occupation, and how far it is from the truth."""
+class Held:
+    """A stated uncertainty and how far the stated position is from the truth."""
 
-    reduced: Reduced
+    uncertainty: Uncertainty
     gap_m: NDArray[np.float64]  # stated minus true, east, north, up
-    findings: list[Finding]
-    leave: Leave
 
     @property
     def u95_m(self) -> NDArray[np.float64]:
         """Half-widths at 95 % of east, north, up."""
-        uncertainty = self.reduced.reduction.uncertainty
-        return np.array([k * u for k, u in zip(uncertainty.k95_enu, uncertainty.u_enu_m, strict=True)])
+        return np.array([k * u for k, u in zip(self.uncertainty.k95_enu, self.uncertainty.u_enu_m, strict=True)])
 
     @property
     def circle(self) -> bool:
         """The stated circle holds the truth."""
-        return float(np.hypot(*self.gap_m[:2])) <= self.reduced.reduction.uncertainty.horizontal95_m
+        return float(np.hypot(*self.gap_m[:2])) <= self.uncertainty.horizontal95_m
 
     @property
     def ellipse(self) -> bool:
         """The stated 95 % ellipse holds the truth, from its printed semi-axes and azimuth."""
-        axes = self.reduced.reduction.uncertainty.ellipse95
+        axes = self.uncertainty.ellipse95
         azimuth = np.radians(axes.azimuth_deg)
         along = self.gap_m[0] * np.sin(azimuth) + self.gap_m[1] * np.cos(azimuth)
         across = self.gap_m[0] * np.cos(azimuth) - self.gap_m[1] * np.sin(azimuth)
@@ -67,8 +65,17 @@ class Stated:
     @property
     def vertical(self) -> bool:
         """The stated height interval holds the truth."""
-        figure = self.reduced.reduction.uncertainty.vertical95_m
+        figure = self.uncertainty.vertical95_m
         return figure is not None and abs(float(self.gap_m[2])) <= figure
+
+
+@dataclass
+class Stated(Held):
+    """What the product states of one occupation."""
+
+    reduced: Reduced
+    findings: list[Finding]
+    leave: Leave
 
 
 def occupation_of(
@@ -107,6 +114,16 @@ class Line:
             self._made.regime.quality, self._occupation.session.receiver.fix_class, wanted_m
         )
 
+    @property
+    def place(self) -> Place:
+        """The true mark."""
+        return self._made.place
+
+    def numbered(self, number: int) -> tuple[Occupation, Reduced]:
+        """The occupation and its reduction as number so-and-so of a book."""
+        self._occupation.number = number
+        return self._occupation, self.at().reduced
+
     def at(self, seconds: float | None = None) -> Stated:
         """What is stated after the first `seconds` (None = all)."""
         stop = len(self._made.index) if seconds is None else self._made.first(seconds)
@@ -125,4 +142,22 @@ def _stated(reduced: Reduced, place: Place, occupation: Occupation) -> Stated:
         reduced.horizontal, reduced.vertical, reduced.horizontal_forbidden_by, reduced.vertical_forbidden_by
     )
     leave = leave_check(occupation.session.requirement, reduced.reduction, figures, [])
-    return Stated(reduced, place.gap_m(position.lat_deg, position.lon_deg, position.h_m), findings, leave)
+    gap_m = place.gap_m(position.lat_deg, position.lon_deg, position.h_m)
+    return Stated(reduced.reduction.uncertainty, gap_m, reduced, findings, leave)
+
+
+def mark_of(lines: list[Line]) -> Held:
+    """All occupations of one mark as the product combines them; the frame is the client's, which is the receiver's."""
+    occupations, reductions = {}, []
+    for number, line in enumerate(lines, start=1):
+        occupation, reduced = line.numbered(number)
+        occupations[number] = occupation
+        reductions.append(reduced)
+    state = BookState("simulated", 0, "", "2027-03-04T00:00:00.000Z", None, occupations)
+    (mark,) = combine_marks(state, reductions, [])
+    client, uncertainty = mark.client, mark.uncertainty_client
+    assert client is not None
+    assert client.h_m is not None
+    assert uncertainty is not None
+    assert len(mark.used) == len(lines), mark.not_combined
+    return Held(uncertainty, lines[0].place.gap_m(client.lat_deg, client.lon_deg, client.h_m))

@@ -286,20 +286,3 @@ def epochs_of(made: Made, start: int = 0, stop: int | None = None) -> list[Epoch
 def _received(values: Floats, decimals: int, unit_decimals: int) -> list[int]:
     steps = np.rint(values * 10.0**decimals).astype(np.int64)
     return (steps * 10 ** (unit_decimals - decimals)).tolist()
-
-
-def occupations_of_one_mark(
-    regime: Regime, length_s: float, rng: np.random.Generator, floor_enu_m: tuple[float, float, float], count: int = 2
-) -> list[Made]:
-    """Occupations of one mark with the floor's error drawn: half its variance common to all, half for each.
-
-    The hook for combined occupations: same place, the common half drawn once per mark.
-    """
-    half = np.array(floor_enu_m) / math.sqrt(2)
-    place, common = Place.drawn(rng), half * rng.normal(size=3)
-    found = []
-    for _ in range(count):
-        made = simulate(regime, length_s, rng, replace(place, start_s=int(rng.integers(0, 86_400))))
-        made.floor_m = common + half * rng.normal(size=3)
-        found.append(made)
-    return found

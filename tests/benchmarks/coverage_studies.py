@@ -1,4 +1,4 @@
-"""Studies beside the coverage table: wrong initialisations, time to go, class values wrong by 2, floor error drawn.
+"""Studies beside the coverage table: wrong initialisations, time to go, class values wrong by 2.
 
 Each makes tasks, lets `run(function, tasks)` do them in order, and yields the lines of its table.
 """
@@ -13,7 +13,7 @@ import numpy as np
 from coverage_product import Line, Stated
 from coverage_regimes import REGIMES, RTK, TIME_TO_GO
 from coverage_rows import generator, row_of
-from coverage_simulator import Made, occupations_of_one_mark, simulate
+from coverage_simulator import Made, simulate
 from coverage_tables import duration, percent, table
 
 from fieldbook.model.session import FixClass
@@ -201,39 +201,3 @@ def wrong_class(run: Run, seeds: int) -> Iterator[str]:
             cells.append(f"{circle:.1f} / {plan:.1f} / {height:.1f}, {np.median(part[:, 3]):.2f}")
         body.append([name, duration(t), *cells])
     yield from table(("regime", "length", *FACTORS), body)
-
-
-# -- floor error drawn -------------------------------------------------------------------------------------------
-
-FLOOR_CASES = [(name, t) for name in ("rtk", "rtk_flicker", "dgps", "autonomous") for t in (300, 3600, 14400)]
-
-
-def two_occupations(name: str, length_s: int, seed: int) -> tuple[list[Made], list[Stated]]:
-    """Two occupations of one mark, the common half of the floor's error drawn once: the hook for combining them."""
-    regime = REGIMES[name]
-    rng = generator(f"floor {name}", length_s, seed)
-    made = occupations_of_one_mark(regime, length_s, rng, class_of_quality(regime.quality).floor_enu_m)
-    return made, [Line(item).at() for item in made]
-
-
-def _floored(task: tuple[str, int, int]) -> list[float]:
-    _, stated = two_occupations(*task)
-    first, second = stated
-    difference = np.abs(first.gap_m - second.gap_m)
-    apart = float(np.mean(difference <= np.hypot(first.u95_m, second.u95_m)))
-    each = [np.mean([getattr(s, name) for s in stated]) for name in ("circle", "ellipse", "vertical")]
-    plan = np.mean([np.abs(s.gap_m[:2]) <= s.u95_m[:2] for s in stated])
-    return [*map(float, each), float(plan), apart]
-
-
-def floor(run: Run, seeds: int) -> Iterator[str]:
-    """Coverage of each occupation, and how often both agree within the root sum of squares of their U95."""
-    tasks = [(name, t, seed) for name, t in FLOOR_CASES for seed in range(seeds)]
-    found: dict[tuple[str, int], list[list[float]]] = {}
-    for task, item in zip(tasks, run(_floored, tasks, chunksize=5), strict=True):
-        found.setdefault(task[:2], []).append(item)
-    body = [
-        [name, duration(t), str(2 * len(found[name, t])), *[f"{100 * v:.1f}" for v in np.mean(found[name, t], axis=0)]]
-        for name, t in FLOOR_CASES
-    ]
-    yield from table(("regime", "length", "n", "circle %", "ellipse %", "V %", "E, N %", "agree %"), body)
