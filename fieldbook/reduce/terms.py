@@ -20,6 +20,7 @@ from fieldbook.reduce.antenna import ASSUMED_READING_SIGMA_M, AntennaReduction
 from fieldbook.reduce.budget import Term, Triple
 from fieldbook.reduce.fix_classes import FLOOR_DOF
 
+PPM_OF_DISTANCE = 1e-6
 PLUMB_LINE_ARCSEC = 15.0  # deflection of the vertical, typical size; from memory, medium
 COMMON_NOTE = "common to all occupations with this station and antenna"
 
@@ -99,20 +100,21 @@ def setup_terms(setup: Setup, antenna: AntennaReduction) -> list[Term]:
 
 
 def station_terms(corrections: Corrections) -> list[Term]:
-    """The correction station's own coordinates, when their uncertainty is stated; every mark shares it."""
-    if corrections.u95_m is None:
-        return []
-    u_m = corrections.u95_m / 1.959964
-    return [
-        Term(
-            f"coordinates of station {corrections.station or ''}".strip(),
-            "B",
-            "normal",
-            (u_m, u_m, u_m),
-            common=True,
-            note=f"stated as 95 %: {corrections.source or 'source not stated'}",
+    """What the correction source adds: distance to the station, and the station's own coordinates, where stated."""
+    terms = []
+    if corrections.distance_m is not None:
+        u_m = corrections.distance_m * PPM_OF_DISTANCE
+        note = (
+            "1 ppm of the distance, one sigma: NGS, User Guidelines for Single Base Real Time GNSS Positioning, p. 42"
         )
-    ]
+        source = f"distance to the correction station, {corrections.distance_m / 1000:.1f} km"
+        terms.append(Term(source, "B", "normal", (u_m, u_m, u_m), note=note + " (second-hand)"))
+    if corrections.u95_m is not None:
+        u_m = corrections.u95_m / 1.959964
+        source = f"coordinates of station {corrections.station or ''}".strip()
+        note = f"stated as 95 %: {corrections.source or 'source not stated'}"
+        terms.append(Term(source, "B", "normal", (u_m, u_m, u_m), common=True, note=note))
+    return terms
 
 
 def disagreement_term(half_width_enu_m: Sequence[float] | None) -> list[Term]:

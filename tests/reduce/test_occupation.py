@@ -257,3 +257,14 @@ def test_coarse_output_is_not_a_sigma() -> None:
         row.latitude_e8min = round((row.latitude_e8min or 0) / 10_000) * 10_000
         row.longitude_e8min = round((row.longitude_e8min or 0) / 10_000) * 10_000
     assert reduced(rows=rows).reduction.uncertainty.horizontal95_m > 0.08
+
+
+def test_what_the_correction_source_adds() -> None:
+    """1 ppm of the distance (NGS single-base guidelines, p. 42, second-hand) and the station's stated 95 %."""
+    plain = reduced().reduction.uncertainty
+    far = reduced({"corrections": {"distance_m": "10000", "u95_m": "0.0196"}}).reduction.uncertainty
+    lines = {line.source: line for line in far.budget}
+    assert lines["distance to the correction station, 10.0 km"].u_enu_m == pytest.approx([0.010, 0.010, 0.010])
+    assert lines["coordinates of station 0042"].u_enu_m == pytest.approx([0.010] * 3, rel=1e-5)
+    assert lines["coordinates of station 0042"].common
+    assert far.horizontal95_m > plain.horizontal95_m + 0.015
