@@ -265,6 +265,6 @@ def test_what_the_correction_source_adds() -> None:
     far = reduced({"corrections": {"distance_m": "10000", "u95_m": "0.0196"}}).reduction.uncertainty
     lines = {line.source: line for line in far.budget}
     assert lines["distance to the correction station, 10.0 km"].u_enu_m == pytest.approx([0.010, 0.010, 0.010])
-    assert lines["coordinates of station 0042"].u_enu_m == pytest.approx([0.010] * 3, rel=1e-5)
+    assert lines["coordinates of station 0042"].u_enu_m == pytest.approx([0.0196 / 1.959964] * 3)
     assert lines["coordinates of station 0042"].common
     assert far.horizontal95_m > plain.horizontal95_m + 0.015
