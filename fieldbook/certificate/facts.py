@@ -85,7 +85,7 @@ def build_facts(
         "antenna": antenna,
         "receiver": receiver,
         "corrections": evidence.corrections_facts(occupation),
-        "requirement": _requirement(session, reduction),
+        "requirement": requirement_facts(session, reduction),
         "findings": findings,
         "decisions": evidence.decisions_facts(occupation),
         "remarks": evidence.entries_facts(occupation.remarks),
@@ -97,7 +97,7 @@ def build_facts(
         "cautions": _cautions(session, reduction),
         "trace": evidence.trace_facts(trace),
     }
-    facts["not_stated"] = _not_stated(facts)
+    facts["not_stated"] = not_stated(facts)
     facts["missing"] = missing_items(occupation, reduction, signed=facts["sign_off"] is not None)
     tree: Tree = normalised(facts)
     return tree
@@ -171,7 +171,8 @@ def _uncertainty(reduction: Reduction) -> Tree:
     return facts
 
 
-def _requirement(session: Session, reduction: Reduction) -> Tree:
+def requirement_facts(session: Session, reduction: Reduction) -> Tree:
+    """The requirement with every line of the leave check, and the decision rule where a line says 'meets'."""
     requirement = session.requirement
     lines = [_requirement_line(line) for line in (reduction.leave.lines if reduction.leave else [])]
     meets = any(line["verdict"] == "meets" for line in lines)
@@ -278,7 +279,8 @@ OPTIONAL = (
 )
 
 
-def _not_stated(facts: Tree) -> list[str]:
+def not_stated(facts: Tree) -> list[str]:
+    """Names of the optional statements that are missing."""
     return [name for table, key, name in OPTIONAL if facts[table].get(key) in (None, "", [])]
 
 

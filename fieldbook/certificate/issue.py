@@ -7,6 +7,7 @@ a file, and the same command writes the file of that number.
 
     no sign-off                          entry `draft`, no number, DRAFT across the page
     sign-off, but items are missing      UsageError naming them
+    several occupations, none named      of all that can be combined; its number and revisions are its own
     first of this mark and occupation    entry `certificate` with the next number of the book
     facts as in the standing one         the standing certificate again, in the format asked for
     facts changed                        next number, needs a reason (`supersede`), names its predecessor
@@ -27,6 +28,7 @@ from typing import Any, Protocol
 
 import fieldbook
 from fieldbook.certificate import as_html, as_json, as_pdf, as_text
+from fieldbook.certificate.combined import WholeMarkEvidence, build_combined_facts
 from fieldbook.certificate.facts import build_facts, parse_sign_off
 from fieldbook.certificate.identity import (
     certificate_number,
@@ -96,6 +98,15 @@ class _Document:
     supersedes: str | None = None
 
 
+@dataclass(frozen=True)
+class _Subject:
+    """What a certificate is of: one occupation of a mark, or (occupation None) several together."""
+
+    mark: str
+    occupation: int | None
+    together: tuple[int, ...] = ()
+
+
 def certify(
     book: CertificateBook,
     mark: str,
@@ -106,10 +117,11 @@ def certify(
     supersede: str | None = None,
     replace: bool = False,
     reductions: Prepared | Callable[[int], Prepared],
+    combined: Callable[[], WholeMarkEvidence] | None = None,
     versions: dict[str, str],
     clock: Clock,
 ) -> Issued:
-    """Write the certificate, or the draft, of one occupation of a mark.
+    """Write the certificate, or the draft, of one occupation of a mark, or of all of them together.
 
     Args:
         out: `.pdf`, `.html`, `.txt` or `.json`.
@@ -118,28 +130,28 @@ def certify(
         supersede: why a standing certificate is replaced.
         replace: overwrite `out`.
         reductions: the reduction, trace and repeats of the occupation, or a function of its number that makes them.
+        combined: makes the combined mark where it has several occupations and none is named; without it one must be.
         versions: proj, epsg and pyproj as the reduction used them; program and typesetter are added here.
 
     Raises:
         UsageError: unknown mark or occupation, open occupation, wrong ending, `out` exists, sign-off while items are
             missing, changed facts without `supersede`. Nothing was written.
-        ReductionError: from `reductions`.
+        ReductionError: from `reductions` or `combined`.
     """
     extension = _extension(out)
     _check_target(book, out, replace=replace)
     parse_sign_off(sign_off)
     state = book.state()
-    chosen = choose_occupation(state, mark, occupation)
-    reduction, trace, repeats = reductions(chosen.number) if callable(reductions) else reductions
-    facts = build_facts(
-        state,
-        chosen,
-        reduction,
-        trace,
-        sign_off=sign_off,
-        repeats=repeats,
-        versions={**versions, **program_versions()},
-    )
+    made = {**versions, **program_versions()}
+    if combined is not None and occupation is None and len(state.of_mark(mark)) > 1:
+        whole = combined()
+        facts = build_combined_facts(state, whole, sign_off=sign_off, versions=made)
+        subject = _Subject(mark, None, tuple(item.number for item, _ in whole.members))
+    else:
+        chosen = choose_occupation(state, mark, occupation)
+        reduction, trace, repeats = reductions(chosen.number) if callable(reductions) else reductions
+        facts = build_facts(state, chosen, reduction, trace, sign_off=sign_off, repeats=repeats, versions=made)
+        subject = _Subject(mark, chosen.number)
     missing = [item["text"] for item in facts["missing"]]
     if sign_off is not None and missing:
         raise UsageError(
@@ -149,9 +161,9 @@ def certify(
         )
     issued_utc = utc_text(clock.utc_ms())
     if sign_off is None:
-        document = _draft(state, facts, chosen, issued_utc)
+        document = _draft(state, facts, subject, issued_utc)
     else:
-        document = _certificate(book, state, facts, chosen, supersede, issued_utc)
+        document = _certificate(book, state, facts, subject, supersede, issued_utc)
     _write(book, document, out, extension, RENDERERS[extension], facts, replace=replace)
     number = document.facts["document"]["number"]
     return Issued(
@@ -210,36 +222,36 @@ def choose_occupation(state: BookState, mark: str, number: int | None) -> Occupa
     return chosen
 
 
-def standing_entry(state: BookState, kind: str, occupation: Occupation) -> Entry | None:
-    """The latest `certificate` or `draft` entry of this mark and occupation that is not struck."""
+def standing_entry(state: BookState, kind: str, mark: str, occupation: int | None) -> Entry | None:
+    """The latest `certificate` or `draft` entry of this mark and occupation (None: combined) that is not struck."""
     found = [
         entry
         for entry in state.documents
         if entry.kind == kind
-        and entry.body.get("mark") == occupation.mark
-        and entry.body.get("occupation") == occupation.number
+        and entry.body.get("mark") == mark
+        and entry.body.get("occupation") == occupation
         and entry.seq not in state.strikes
     ]
     return found[-1] if found else None
 
 
-def _draft(state: BookState, facts: Tree, occupation: Occupation, issued_utc: str) -> _Document:
-    standing = standing_entry(state, "draft", occupation)
+def _draft(state: BookState, facts: Tree, subject: _Subject, issued_utc: str) -> _Document:
+    standing = standing_entry(state, "draft", subject.mark, subject.occupation)
     if standing is not None and facts_equal(standing.body["facts"], facts):
         return _Document(sealed(standing.body["facts"]), None)
     facts = {**facts, "document": {"kind": "draft", "number": None, "issued_utc": issued_utc}}
-    return _Document(sealed(facts), _body(facts, occupation))
+    return _Document(sealed(facts), _body(facts, subject))
 
 
 def _certificate(
     book: CertificateBook,
     state: BookState,
     facts: Tree,
-    occupation: Occupation,
+    subject: _Subject,
     supersede: str | None,
     issued_utc: str,
 ) -> _Document:
-    standing = standing_entry(state, "certificate", occupation)
+    standing = standing_entry(state, "certificate", subject.mark, subject.occupation)
     if standing is not None:
         before = standing.body["facts"]
         if facts_equal(before, facts):
@@ -247,7 +259,7 @@ def _certificate(
         if not (supersede or "").strip():
             changed = ", ".join(changed_parts(comparable(before), comparable(facts), limit=6))
             raise UsageError(
-                f"Certificate {standing.body['number']} of {occupation.mark} stands, and its facts have changed "
+                f"Certificate {standing.body['number']} of {subject.mark} stands, and its facts have changed "
                 f"({changed}).",
                 "To replace it give the reason: --supersede REASON.",
                 code="supersede",
@@ -265,7 +277,7 @@ def _certificate(
             "changed": [] if standing is None else changes(standing.body["facts"], facts),
         },
     }
-    return _Document(sealed(facts), _body(facts, occupation), replaced)
+    return _Document(sealed(facts), _body(facts, subject), replaced)
 
 
 def _running(book: CertificateBook) -> int:
@@ -278,18 +290,20 @@ def _running(book: CertificateBook) -> int:
     return max(used, default=0) + 1
 
 
-def _body(facts: Tree, occupation: Occupation) -> Tree:
+def _body(facts: Tree, subject: _Subject) -> Tree:
     """Body of a `certificate` or `draft` entry (DEVELOPERS.md, section 2)."""
     document = facts["document"]
     body: Tree = {
-        "mark": occupation.mark,
-        "occupation": occupation.number,
+        "mark": subject.mark,
+        "occupation": subject.occupation,
         "facts": {key: value for key, value in facts.items() if key != "digest"},
         "digest": facts_digest(facts),
         "supersedes": document.get("supersedes"),
         "reason": document.get("reason"),
         "issued_utc": document["issued_utc"],
     }
+    if subject.together:
+        body["occupations"] = list(subject.together)
     return body if document["number"] is None else {"number": document["number"], **body}
 
 

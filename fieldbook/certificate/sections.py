@@ -10,6 +10,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import Any
 
+from fieldbook.certificate import sections_combined as several
 from fieldbook.certificate import sections_evidence as evidence
 from fieldbook.certificate import sections_position as position
 from fieldbook.certificate.blocks import Block, Bullets, Pairs, Section, Sentences, said, utc
@@ -75,7 +76,7 @@ def first_page(facts: Tree) -> FirstPage:
         grid=position.grid_rows(facts),
         geocentric=position.geocentric_rows(facts),
         frame_lines=position.frame_lines(facts),
-        evidence=evidence.summary_rows(facts),
+        evidence=several.summary_rows(facts) if facts.get("combined") else evidence.summary_rows(facts),
         watermark=watermark(facts),
         running_head=position.running_head(facts),
         code=code,
@@ -104,6 +105,18 @@ def sections(facts: Tree) -> list[Section]:
         position.as_observed(facts),
         position.uncertainty(facts),
         position.frames(facts),
+        *_evidence(facts),
+        _limits(facts),
+        Section("Cautions", [Bullets(facts["cautions"])]),
+        _record(facts),
+    ]
+
+
+def _evidence(facts: Tree) -> list[Section]:
+    if facts.get("combined"):
+        own = [evidence.requirement(facts), evidence.findings(facts), several.combined(facts)]
+        return [*own, *several.members(facts)]
+    return [
         evidence.occupation(facts),
         evidence.setup(facts),
         evidence.instruments(facts),
@@ -111,9 +124,6 @@ def sections(facts: Tree) -> list[Section]:
         evidence.findings(facts),
         evidence.remarks(facts),
         evidence.repeats(facts),
-        _limits(facts),
-        Section("Cautions", [Bullets(facts["cautions"])]),
-        _record(facts),
     ]
 
 
@@ -142,7 +152,7 @@ def _record(facts: Tree) -> Section:
         ("Other versions", _others(versions)),
         ("Book", f"{book['id']}, up to entry {book['head_seq']}"),
         ("Hash of that entry", book["head_hash"]),
-        *_received(facts["occupation"]),
+        *(several.received_rows(facts) if facts.get("combined") else _received(facts["occupation"])),
         ("Digest of these facts", facts["digest"]),
         *_revision(facts["document"]),
         ("Not stated by the party", ", ".join(facts["not_stated"]) or "nothing"),

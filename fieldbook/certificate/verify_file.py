@@ -160,7 +160,8 @@ def _standing_lines(book: CertificateBook, entries: list[Entry], entry: Entry) -
         strike = strikes[entry.seq]
         lines.append((True, f"STRUCK OUT on {strike.utc[:10]} by {strike.observer}: {strike.body.get('reason')}"))
     head = entry.body["facts"]["book"]["head_seq"]
-    rested = {item.seq: item for item in entries if item.body.get("occupation") == entry.body["occupation"]}
+    numbers = entry.body.get("occupations") or [entry.body["occupation"]]
+    rested = {item.seq: item for item in entries if item.body.get("occupation") in numbers}
     for seq, strike in sorted(strikes.items()):
         if seq in rested and seq <= head < strike.seq:
             lines.append(

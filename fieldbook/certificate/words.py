@@ -51,6 +51,7 @@ REQUIREMENT_WORDS = {
     "initialisations": "independent initialisations that agree",
     "occupations": "occupations of the mark",
     "hours_between": "hours between occupations",
+    "repeats": "occupations that agree with each other",
     "height_readings": "antenna height readings",
     "accept_quality": "fix quality",
     "max_hdop": "HDOP at most",
@@ -86,6 +87,8 @@ PART_WORDS = {
     "uncertainty": "uncertainty",
     "operation": "frame operation",
     "mark": "description of the mark",
+    "combined": "occupations combined, their weights and agreement",
+    "members": "evidence of the occupations",
     "occupation": "epochs and times",
     "setup": "set-up and height readings",
     "antenna": "antenna",
@@ -129,6 +132,10 @@ COVERS = (
     "the least uncertainty claimed for this kind of fix, which no single occupation can make smaller",
     "the digits the receiver prints, of coordinates and of geoid separation",
     "antenna height readings, centring over the mark, phase centre and plumb line, as far as the budget lists them",
+)
+COVERS_COMBINED = (
+    "of several occupations: what each has of its own, weighted, and in full what they share (half of the least "
+    "uncertainty claimed by station and antenna, phase centre, separation of the receiver, frame operation)"
 )
 COVERS_CLIENT = (
     "for the client's frame also the frame operation, each step with the accuracy its authority states, taken as "

@@ -14,7 +14,7 @@ from fieldbook.commands.output import line, note, plain, write_json
 @click.argument("book", type=click.Path(path_type=Path))
 @click.argument("mark")
 @click.option("--out", required=True, type=click.Path(path_type=Path), help="File to write: .pdf .html .txt .json.")
-@click.option("--occupation", type=int, help="Which occupation, where the mark has several.")
+@click.option("--occupation", type=int, help="Which occupation; without it all that can be combined.")
 @click.option("--sign-off", help='"name; licence" of the responsible surveyor; without it a draft.')
 @click.option("--supersede", metavar="REASON", help="Why a standing certificate is replaced.")
 @click.option("--replace", is_flag=True, help="Overwrite the file.")

@@ -5,10 +5,12 @@ from __future__ import annotations
 from pathlib import Path
 
 from fieldbook.book.store import Book
+from fieldbook.certificate.combined import WholeMarkEvidence
 from fieldbook.certificate.issue import Issued, Prepared, certify
 from fieldbook.certificate.repeats import repeats_of
 from fieldbook.clock import SystemClock
 from fieldbook.occupy.reductions import record_operation, reductions_of_mark
+from fieldbook.occupy.whole_mark import whole_mark
 from fieldbook.reduce.frames import versions
 
 
@@ -35,6 +37,13 @@ def issue(
         record_operation(book, own)
         return own.reduction, own.trace, repeats_of(own.reduction, [item.reduction for item in others])
 
+    def together() -> WholeMarkEvidence:
+        whole = whole_mark(book, mark)
+        for _, reduced in whole.members:
+            record_operation(book, reduced)
+        members = [(one, reduced.reduction) for one, reduced in whole.members]
+        return WholeMarkEvidence(whole.result, whole.principal, whole.reduction, whole.trace, members)
+
     return certify(
         book,
         mark,
@@ -44,6 +53,7 @@ def issue(
         supersede=supersede,
         replace=replace,
         reductions=prepared,
+        combined=together,
         versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
         clock=SystemClock(),
     )

@@ -33,7 +33,7 @@ def command(book: Path, mark: str | None, check: bool, as_json: bool) -> int:
     with Book.open(book, clock=SystemClock()) as opened:
         reduced, failed = reduce_book(opened, mark)
         state = opened.state()
-        marks = combine_marks(state, reduced, search_dirs(opened))
+        marks = combine_marks(state, reduced, search_dirs(opened), failed)
         notes = opened.notes
         without_wal = opened.copied_without_wal
     for text in notes:

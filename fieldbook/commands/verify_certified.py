@@ -16,9 +16,11 @@ from fieldbook.certificate.identity import facts_digest
 from fieldbook.clock import SystemClock
 from fieldbook.errors import FieldbookError
 from fieldbook.model.entry import Entry
+from fieldbook.model.reduction import Reduction
 from fieldbook.model.state import BookState
 from fieldbook.occupy.reductions import reductions_of_mark
 from fieldbook.occupy.verifying import Verified
+from fieldbook.occupy.whole_mark import whole_mark
 
 TOLERANCE_M = 1e-5
 TOLERANCE_DEG = 1e-10  # 0.01 mm on the ground
@@ -41,11 +43,11 @@ def _lines(book: Book) -> Iterator[Verified]:
             yield Verified(False, str(name), "the facts do not fit their digest", entry.seq)
             continue
         try:
-            own, _ = reductions_of_mark(book, int(entry.body["occupation"]))
+            again = _again(book, entry)
         except FieldbookError as error:
-            yield Verified(False, str(name), f"the occupation can no longer be reduced: {error.text}", entry.seq)
+            yield Verified(False, str(name), f"it can no longer be reduced: {error.text}", entry.seq)
             continue
-        differences = list(_differences(facts, own.reduction.to_json()))
+        differences = list(_differences(facts, again.to_json()))
         if differences:
             text = f"reduced again, the book gives something else: {'; '.join(differences[:4])}"
             yield Verified(False, str(name), text + ". Was evidence struck or added since?", entry.seq)
@@ -53,11 +55,19 @@ def _lines(book: Book) -> Iterator[Verified]:
             yield Verified(True, str(name), "reduced again, the book gives the certified coordinates")
 
 
+def _again(book: Book, entry: Entry) -> Reduction:
+    """The occupation reduced again, or the mark combined again."""
+    number = entry.body["occupation"]
+    if number is None:
+        return whole_mark(book, str(entry.body["mark"])).reduction
+    return reductions_of_mark(book, int(number))[0].reduction
+
+
 def _standing(state: BookState) -> list[Entry]:
     """The latest certificate of each mark and occupation, else its latest draft."""
-    latest: dict[tuple[str, int], Entry] = {}
+    latest: dict[tuple[str, str], Entry] = {}
     for entry in state.documents:
-        key = (str(entry.body["mark"]), int(entry.body["occupation"]))
+        key = (str(entry.body["mark"]), str(entry.body["occupation"]))
         known = latest.get(key)
         if known is None or entry.kind == "certificate" or known.kind == "draft":
             latest[key] = entry

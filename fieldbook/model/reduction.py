@@ -374,7 +374,7 @@ class MarkResult:
     """All occupations of one mark in one book. Keys of `marks[]` in `fieldbook reduce --json`:
 
     mark
-    occupations              numbers of all reduced occupations of the mark
+    occupations              numbers of all its occupations, also of those that could not be reduced
     used                     those that are combined (one alone included), see MarkOccupation
     not_combined             those that are not, each with its reason
     odd_one                  the occupation that disagrees with all others, if one can be named, else null

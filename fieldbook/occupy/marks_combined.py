@@ -33,6 +33,7 @@ from fieldbook.model.reduction import (
 )
 from fieldbook.model.session import Requirement, Session
 from fieldbook.model.state import BookState, Occupation
+from fieldbook.occupy.reductions import Failure
 from fieldbook.reduce import frames
 from fieldbook.reduce.budget import welch_satterthwaite
 from fieldbook.reduce.combine import (
@@ -76,13 +77,16 @@ class _Member:
         return self.occupation.session
 
 
-def combine_marks(state: BookState, reduced: Sequence[Reduced], search_dirs: Sequence[Path]) -> list[MarkResult]:
+def combine_marks(
+    state: BookState, reduced: Sequence[Reduced], search_dirs: Sequence[Path], failed: Sequence[Failure] = ()
+) -> list[MarkResult]:
     """One result per mark that has a reduction, in order of the first occupation.
 
     Args:
         state: the folded book the reductions were made from.
         reduced: with findings (`occupy.reductions.judge`), all occupations of each mark.
         search_dirs: folders in which a geoid model is looked for before the package's own.
+        failed: occupations that could not be reduced; they are listed as not combined.
 
     Raises:
         ReductionError: grid or geoid of the combined mark cannot be reached (each occupation's own could).
@@ -91,14 +95,22 @@ def combine_marks(state: BookState, reduced: Sequence[Reduced], search_dirs: Seq
     for item in sorted(reduced, key=lambda one: one.reduction.occupation):
         member = _Member(item, state.occupations[item.reduction.occupation])
         marks.setdefault(member.occupation.mark, []).append(member)
-    return [_mark(name, members, search_dirs) for name, members in marks.items()]
+    return [
+        _mark(name, members, [item for item in failed if item.mark == name], search_dirs)
+        for name, members in marks.items()
+    ]
 
 
-def _mark(name: str, members: list[_Member], search_dirs: Sequence[Path]) -> MarkResult:
+def _mark(name: str, members: list[_Member], failed: list[Failure], search_dirs: Sequence[Path]) -> MarkResult:
     used, left_out = _chosen(members)
+    left_out += [
+        NotCombined(item.occupation, item.error.code, f"It was not reduced: {item.error.text} {item.error.remedy}")
+        for item in failed
+    ]
+    left_out.sort(key=lambda item: item.occupation)
     result = MarkResult(
         mark=name,
-        occupations=[item.number for item in members],
+        occupations=sorted([*(item.number for item in members), *(item.occupation for item in failed)]),
         used=[],
         not_combined=left_out,
         odd_one=None,
@@ -152,7 +164,7 @@ def _chosen(members: list[_Member]) -> tuple[list[_Member], list[NotCombined]]:
     for group in groups:
         if group is not best:
             left_out += [NotCombined(item.number, *_why_not(best[0], item)) for item in group]
-    return best, sorted(left_out, key=lambda item: item.occupation)
+    return best, left_out
 
 
 def _worth(group: list[_Member], requirement: Requirement) -> tuple[int, float, int]:

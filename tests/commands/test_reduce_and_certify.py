@@ -166,8 +166,12 @@ def test_certificate_life(book: Path, tmp_path: Path, run_fieldbook: Run) -> Non
     assert f"superseded by {second['number']}" in out.lower() or second["number"] in out
 
 
-def test_several_occupations_need_a_choice(book: Path, tmp_path: Path, run_fieldbook: Run) -> None:
-    code, _, err = run_fieldbook("certify", book, "KR-07", "--out", tmp_path / "x.pdf")
+def test_occupations_that_cannot_be_combined_need_a_choice(
+    sample_books: dict[str, Path], tmp_path: Path, run_fieldbook: Run
+) -> None:
+    path = tmp_path / "saltpan.book"
+    shutil.copy(sample_books["saltpan"], path)
+    code, _, err = run_fieldbook("certify", path, "SP-12", "--out", tmp_path / "x.pdf")
     assert code == 2
     assert "--occupation" in err
 
