@@ -59,7 +59,7 @@ def _again(book: Book, entry: Entry) -> Reduction:
     """The occupation reduced again, or the mark combined again."""
     number = entry.body["occupation"]
     if number is None:
-        return whole_mark(book, str(entry.body["mark"])).reduction
+        return whole_mark(book, str(entry.body["mark"]), entry.body.get("occupations")).reduction
     return reductions_of_mark(book, int(number))[0].reduction
 
 

@@ -8,6 +8,7 @@ right to a nanometre). Its trace is moved alike, so that the figures show its fi
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 from fieldbook.book.store import Book
@@ -38,8 +39,11 @@ class WholeMark:
     members: list[tuple[Occupation, Reduced]]
 
 
-def whole_mark(book: Book, mark: str) -> WholeMark:
+def whole_mark(book: Book, mark: str, only: Sequence[int] | None = None) -> WholeMark:
     """The mark of all its occupations together.
+
+    Args:
+        only: these occupations alone, as a certificate issued before later ones has them.
 
     Raises:
         UsageError: no such mark; fewer than two occupations go together; one is open; a finding of the mark stops it.
@@ -47,8 +51,13 @@ def whole_mark(book: Book, mark: str) -> WholeMark:
     """
     state = book.state()
     reduced, failed = reduce_book(book, mark)
+    if only is not None:
+        reduced = [item for item in reduced if item.reduction.occupation in only]
+        failed = [item for item in failed if item.occupation in only]
     results = combine_marks(state, reduced, search_dirs(book), failed)
-    result = next(item for item in results if item.mark == mark)
+    result = next((item for item in results if item.mark == mark), None)
+    if result is None:
+        raise failed[0].error if failed else UsageError(f"Mark {mark} has none of those occupations any more.")
     _check(result)
     by_number = {item.reduction.occupation: item for item in reduced}
     members = [(state.occupations[item.occupation], by_number[item.occupation]) for item in result.used]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gzip
 import json
 from pathlib import Path
 from typing import Any
@@ -84,6 +85,33 @@ def test_a_changed_reading_needs_a_reason(book: Path, tmp_path: Path, capsys) ->
     made = certified(book, out, *SIGNED, "--supersede", "one more reading", capsys=capsys)
     assert made["supersedes"]
     assert run(["verify", str(out), str(tmp_path / "before.json")]) == 0
+
+
+def test_a_later_occupation_leaves_the_issued_certificate_right(tmp_path: Path, capsys) -> None:
+    """A third occupation of the mark, a day later: the certificate of the first two is what they give, as before."""
+    path = tmp_path / "later.fieldbook"
+    for name in ("kestrel-ridge-1", "kestrel-ridge-2"):
+        record_into(path, SAMPLES / name / "session.toml")
+    certified(path, tmp_path / "two.json", *SIGNED, capsys=capsys)
+    session = (SAMPLES / "kestrel-ridge-2" / "session.toml").read_text(encoding="utf-8")
+    lines = gzip.decompress((SAMPLES / "kestrel-ridge-2" / "receiver.nmea.gz").read_bytes()).splitlines(keepends=True)
+    part = tmp_path / "part"
+    part.mkdir()
+    (part / "session.toml").write_text(session.replace("receiver.nmea.gz", "receiver.nmea"), encoding="utf-8")
+    moved = [line for line in lines if b"RMC" in line or b"GGA" in line][:240]
+    (part / "receiver.nmea").write_bytes(b"".join(dated(line) for line in moved))
+    assert record_into(path, part / "session.toml") == 3
+    capsys.readouterr()
+    assert run(["verify", str(tmp_path / "two.json"), str(path)]) == 0, capsys.readouterr().out
+
+
+def dated(line: bytes) -> bytes:
+    """The sentence one day later (RMC carries the date), with its checksum made anew."""
+    body = line.strip()[1:].split(b"*")[0].replace(b",060327,", b",070327,")
+    checksum = 0
+    for byte in body:
+        checksum ^= byte
+    return b"$" + body + f"*{checksum:02X}\r\n".encode()
 
 
 def test_what_cannot_be_combined_needs_a_number(book: Path, tmp_path: Path, capsys) -> None:
