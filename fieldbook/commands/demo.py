@@ -88,12 +88,24 @@ def _one_book(path: Path, sessions: list[Path]) -> list[Path]:
         note(f"{failure.mark}, occupation {failure.occupation}: {failure.error}")
     written: list[Path] = []
     for mark in dict.fromkeys(item.reduction.mark for item in reduced):
-        best = min(
-            (item for item in reduced if item.reduction.mark == mark),
-            key=lambda item: item.reduction.uncertainty.horizontal95_m,
-        )
-        written += _certify(path, best)
+        written += _certify(path, mark, _chosen(path, mark, reduced))
     return written
+
+
+def _chosen(path: Path, mark: str, reduced: list[Reduced]) -> int | None:
+    """None = all occupations of the mark together, where they combine; else the one with the smallest 95 % circle."""
+    from fieldbook.book.store import Book
+    from fieldbook.occupy.whole_mark import whole_mark
+
+    try:
+        with Book.open(path, clock=SystemClock()) as book:
+            whole_mark(book, mark)
+    except UsageError as why:
+        note(f"{mark}: certified from one occupation. {why.text}")
+    else:
+        return None
+    own = [item.reduction for item in reduced if item.reduction.mark == mark]
+    return min(own, key=lambda item: item.uncertainty.horizontal95_m).occupation
 
 
 def _record(path: Path, folder: Path) -> None:
@@ -107,12 +119,11 @@ def _record(path: Path, folder: Path) -> None:
     note(f"{path.name}: {session.mark.name} recorded from {folder.name}, occupation {result.occupation}")
 
 
-def _certify(path: Path, best: Reduced) -> list[Path]:
+def _certify(path: Path, mark: str, number: int | None) -> list[Path]:
     from fieldbook.book.store import Book
     from fieldbook.certificate.verify_file import verify_certificate
     from fieldbook.commands.paper import issue
 
-    mark, number = best.reduction.mark, best.reduction.occupation
     written: list[Path] = []
     with Book.open(path, clock=SystemClock(), write=True) as book:
         for ending in FORMATS:

@@ -12,6 +12,7 @@ from fieldbook.clock import SystemClock
 from fieldbook.occupy.reductions import record_operation, reductions_of_mark
 from fieldbook.occupy.whole_mark import whole_mark
 from fieldbook.reduce.frames import versions
+from fieldbook.reduce.occupation import Reduced
 
 
 def issue(
@@ -31,20 +32,20 @@ def issue(
         ReductionError: the occupation cannot be reduced.
     """
     used = versions()
+    certified: list[Reduced] = []
 
     def prepared(number: int) -> Prepared:
         own, others = reductions_of_mark(book, number)
-        record_operation(book, own)
+        certified.append(own)
         return own.reduction, own.trace, repeats_of(own.reduction, [item.reduction for item in others])
 
     def together() -> WholeMarkEvidence:
         whole = whole_mark(book, mark)
-        for _, reduced in whole.members:
-            record_operation(book, reduced)
+        certified.extend(reduced for _, reduced in whole.members)
         members = [(one, reduced.reduction) for one, reduced in whole.members]
         return WholeMarkEvidence(whole.result, whole.principal, whole.reduction, whole.trace, members)
 
-    return certify(
+    issued = certify(
         book,
         mark,
         out,
@@ -57,3 +58,6 @@ def issue(
         versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
         clock=SystemClock(),
     )
+    for reduced in certified:
+        record_operation(book, reduced)  # only now: a refusal writes nothing
+    return issued

@@ -238,12 +238,12 @@ class Bridge:
         from fieldbook.occupy.reductions import record_operation, reductions_of_mark
         from fieldbook.reduce.frames import versions
 
-        used = versions()
+        used, certified = versions(), []
         with Book.open(self.path, clock=self.clock, write=True) as book:
 
             def prepared(number: int) -> Prepared:
                 own, others = reductions_of_mark(book, number)
-                record_operation(book, own)
+                certified.append(own)
                 return own.reduction, own.trace, repeats_of(own.reduction, [item.reduction for item in others])
 
             made = certify(
@@ -257,6 +257,8 @@ class Bridge:
                 versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
                 clock=self.clock,
             )
+            for own in certified:
+                record_operation(book, own)  # only now: a refusal writes nothing
         return Issued(str(made.path), made.number, tuple(made.missing))
 
     def missing(self, reduction: Reduction) -> list[str]:
