@@ -23,6 +23,7 @@ from fieldbook.reduce.gates import CONFLICT, DUPLICATE, TIME_BACK, Codes, Limits
 Ints = NDArray[np.int64]
 
 SILENCE_MS = 10_000
+MOST_STATIONS = 8  # named; all changes are counted
 _OUT_OF_ORDER = (TIME_BACK, DUPLICATE, CONFLICT)
 _SAME = ("latitude_e8min", "longitude_e8min", "altitude_e5m", "quality")
 
@@ -83,6 +84,8 @@ class Splitter:
 
     limits: Limits
     independent: list[bool] = field(default_factory=list)
+    stations: list[str] = field(default_factory=list)  # correction stations in order of appearance, the first 8
+    station_changes: int = 0
     _lost: bool = False
     _broken: bool = False
     _last_ms: int | None = None
@@ -144,4 +147,13 @@ class Splitter:
             first = columns.stations[int(stations[0])]
             changes[rows[0]] = self._station is not None and first != self._station
             self._station = columns.stations[int(stations[-1])]
+            self.station_changes += int(np.count_nonzero(changes))
+            self._name_stations(columns, stations)
         return changes
+
+    def _name_stations(self, columns: EpochColumns, stations: Ints) -> None:
+        found, first_rows = np.unique(stations, return_index=True)
+        for code in found[np.argsort(first_rows)]:
+            name = columns.stations[int(code)]
+            if name not in self.stations and len(self.stations) < MOST_STATIONS:
+                self.stations.append(name)

@@ -56,6 +56,8 @@ class Screened:
     heard_from_ms: int | None
     heard_to_ms: int | None
     root_of: dict[int, int]  # initialisation -> the independent one whose ambiguities it shares
+    stations: tuple[str, ...] = ()  # correction stations heard with accepted fixes, in order, the first 8
+    station_changes: int = 0
 
     @property
     def heard(self) -> int:
@@ -161,6 +163,8 @@ class Screening:
             heard_from_ms=self._from_ms,
             heard_to_ms=self._to_ms,
             root_of=self._splitter.roots(sums.by_number),
+            stations=tuple(self._splitter.stations),
+            station_changes=self._splitter.station_changes,
         )
 
     def _remember(self, codes: NDArray[np.uint8], numbers: Ints) -> int:

@@ -1,0 +1,163 @@
+"""Steps without loss of fix, and bursts: what the 60 s windows of screening let through.
+
+Step: with m(k) the 10 s means, a place where m(k+1) - m(k-1) exceeds max(6 MAD of all such differences, the tolerance
+of two initialisations of this kind of fix: 30 mm in plan and 60 mm in height for RTK), and where the medians of the
+minutes before and after differ by as much, without a block of one minute reaching into the other's half: a burst of
+less than a minute has its edges, but does not last. Looked for within one initialisation only:
+between initialisations the comparison of their places speaks. It runs on cleaned blocks: on raw ones it fires at the
+edges of bursts.
+
+Burst: 10 s means beyond 6 MAD of their initialisation's median that come back. The MAD is never below half a received
+step (rounded output has a MAD of zero), nor below half the class sigma: a bulge within what the kind of fix does by
+itself is none.
+
+MAD = 1.4826 x median |x - median|. Limits: from a simulation study for this program.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fieldbook.reduce.estimate import Estimate
+from fieldbook.reduce.fix_classes import ClassOfFix
+from fieldbook.reduce.initialisations import tolerances_m
+from fieldbook.reduce.series import AXES, Series
+from fieldbook.reduce.windows import MAD_TO_SIGMA
+
+Floats = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+
+LIMIT_MADS = 6.0
+MINUTE_BLOCKS = 6
+LEAST_BLOCKS = 12
+_LONGEST_REACH = 9  # places of 10 s that six blocks may cover when some are missing
+
+
+@dataclass(frozen=True)
+class Step:
+    """A lasting change within one initialisation. Instant in ms of the occupation's clock; size of the axis, metres."""
+
+    axis: str
+    at_ms: int
+    size_m: float
+
+
+@dataclass(frozen=True)
+class Bursts:
+    """10 s blocks that lie apart and come back: their number, that of all blocks, the largest distance in metres."""
+
+    blocks: int
+    of: int
+    axis: str
+    largest_m: float
+
+
+def steps(series: Series, fix_class: ClassOfFix) -> list[Step]:
+    """Steps in order of time, one per place (the axis that exceeds its limit most)."""
+    if len(series) < 2 * MINUTE_BLOCKS:
+        return []
+    horizontal, vertical = tolerances_m(fix_class)
+    least = np.array([horizontal, horizontal, vertical])
+    means, index, number = series.means_m, series.index, series.initialisation
+    near = (number[2:] == number[:-2]) & (index[2:] - index[:-2] <= 4)
+    change = np.where(near[:, None], means[2:] - means[:-2], np.nan)
+    limit = np.maximum(_mads(change) * LIMIT_MADS, least)
+    with np.errstate(invalid="ignore"):
+        excess = np.abs(change) / limit
+    candidates = np.flatnonzero((np.nan_to_num(excess) > 1.0).any(axis=1)) + 1
+    found: list[tuple[float, Step]] = []
+    for row in candidates[:200]:
+        size = _lasting(series, int(row))
+        if size is None:
+            continue
+        with np.errstate(invalid="ignore"):
+            ratio = np.where(np.abs(size) > limit, np.nan_to_num(excess[row - 1]), 0.0)
+        axis = int(ratio.argmax())
+        if ratio[axis] > 1.0:
+            step = Step(AXES[axis], int(index[row]) * series.length_s * 1000, float(size[axis]))
+            found.append((float(ratio[axis]), step))
+    return _one_per_place(found)
+
+
+def _one_per_place(found: list[tuple[float, Step]]) -> list[Step]:
+    """Of neighbouring places, within a minute, the one that exceeds its limit most."""
+    result: list[tuple[float, Step]] = []
+    for ratio, step in found:
+        if result and step.at_ms - result[-1][1].at_ms <= 60_000:
+            if ratio > result[-1][0]:
+                result[-1] = (ratio, step)
+        else:
+            result.append((ratio, step))
+    return [step for _, step in result]
+
+
+def _lasting(series: Series, row: int) -> Floats | None:
+    """Median of the minute after a row minus median of the minute before; 0 where the minutes are not apart.
+
+    None when either minute is not whole, or belongs to another initialisation.
+    """
+    before, after = slice(row - MINUTE_BLOCKS, row), slice(row + 1, row + 1 + MINUTE_BLOCKS)
+    if before.start < 0 or after.stop > len(series):
+        return None
+    rows = series.index[before.start], series.index[row], series.index[after.stop - 1]
+    whole = series.initialisation[before.start] == series.initialisation[after.stop - 1]
+    if not whole or rows[1] - rows[0] > _LONGEST_REACH or rows[2] - rows[1] > _LONGEST_REACH:
+        return None
+    old, new = series.means_m[before], series.means_m[after]
+    difference: Floats = np.median(new, axis=0) - np.median(old, axis=0)
+    gap = np.where(difference > 0, new.min(axis=0) - old.max(axis=0), old.min(axis=0) - new.max(axis=0))
+    apart: Floats = np.where(gap > 0.5 * np.abs(difference), difference, 0.0)
+    return apart
+
+
+def bursts(series: Series, found: Estimate) -> Bursts | None:
+    """Blocks beyond 6 MAD of their initialisation's median; None if there are none."""
+    apart, of = np.zeros((len(series), 3), dtype=np.bool_), 0
+    distance = np.zeros((len(series), 3))
+    for rows in _runs(series):
+        if len(rows) < LEAST_BLOCKS:
+            continue
+        of += len(rows)
+        off = series.means_m[rows] - _medians(series.means_m[rows])
+        distance[rows] = np.nan_to_num(off)
+        apart[rows] = np.abs(distance[rows]) > LIMIT_MADS * _scale(_mads(off), found)
+    count = int(apart.any(axis=1).sum())
+    if count == 0:
+        return None
+    size = np.where(apart, np.abs(distance), 0.0)
+    axis = int((size / np.array(found.fix_class.sigma_enu_m)).max(axis=0).argmax())
+    return Bursts(count, of, AXES[axis], float(size[:, axis].max()))
+
+
+def _scale(mads: Floats, found: Estimate) -> Floats:
+    floors = [
+        max((step or 0.0) / 2, sigma / 2)
+        for step, sigma in zip(found.resolution.step_enu_m, found.fix_class.sigma_enu_m, strict=True)
+    ]
+    scale: Floats = np.maximum(mads, np.array(floors))
+    return scale
+
+
+def _runs(series: Series) -> list[NDArray[np.int64]]:
+    """Rows of each initialisation."""
+    order = np.argsort(series.initialisation, kind="stable")
+    edges = np.flatnonzero(np.diff(series.initialisation[order])) + 1
+    return list(np.split(order, edges)) if len(order) else []
+
+
+def _medians(values: Floats) -> Floats:
+    """Median per column, NaN ignored, 0 for an empty column; values (n, 3)."""
+    result = np.zeros(values.shape[1])
+    for column in range(values.shape[1]):
+        known = values[np.isfinite(values[:, column]), column]
+        if known.size:
+            result[column] = np.median(known)
+    return result
+
+
+def _mads(values: Floats) -> Floats:
+    """1.4826 x median |x - median| per column, NaN ignored, 0 for an empty column."""
+    return MAD_TO_SIGMA * _medians(np.abs(values - _medians(values)))
