@@ -12,13 +12,19 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+from fieldbook.check.behaviour import behaviour_findings
 from fieldbook.model.reduction import Finding
 from fieldbook.model.state import Occupation
+from fieldbook.reduce.antenna import BETWEEN_OCCASIONS_LIMIT_M
 from fieldbook.reduce.occupation import Reduced
 from fieldbook.reduce.quantisation import FEW_DISTINCT
 
 FROZEN_CAUTION, FROZEN_STOP = 0.10, 0.90
 SEPARATION_SHARE = 1 / 3  # of the vertical requirement
+# A receiver's own sigma against the scatter about the mean, limits of ours. The scatter leaves out what is common to the
+# session, so a scatter of three sigmas disproves the sigma; the other way round only a long session can speak.
+SCATTER_ABOVE, SCATTER_BELOW, LONG_SESSION = 3.0, 0.1, 20.0
+HEIGHT_CHANGE_M = 0.001  # below it two readings of a tape agree
 GATE_NAMES = {
     "max_hdop": "HDOP",
     "max_pdop": "PDOP",
@@ -31,11 +37,15 @@ def findings_of(reduced: Reduced, occupation: Occupation) -> list[Finding]:
     """All findings on epochs, initialisations, digits, mean and budget of one occupation, worst first."""
     found = [
         *_output(reduced),
+        *behaviour_findings(reduced),
         *_initialisations(reduced, occupation),
         *_resolution(reduced, occupation),
         *_separation(reduced),
         *_receiver_estimate(reduced),
+        *_receiver_estimate_and_scatter(reduced),
         *_session(reduced),
+        *_height_readings(reduced),
+        *_station(reduced, occupation),
         *_evidence(reduced, occupation),
     ]
     rank = {"stop": 0, "caution": 1, "info": 2}
@@ -108,6 +118,7 @@ def _resolution(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
         step = max(step_e or 0.0, step_n or 0.0)
         text = f"The coordinates come in steps of {1000 * step:.1f} mm: resolution governs. Set the receiver to more decimals."
         yield Finding("resolution_coarse", "caution", text, {"step_m": step})
+    yield from _altitude_resolution(reduced)
     u_m = resolution.separation_u_m
     wanted_m = occupation.session.requirement.vertical_95_m
     if u_m is not None and 1.96 * u_m > SEPARATION_SHARE * wanted_m:
@@ -116,6 +127,22 @@ def _resolution(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
             f"{1000 * u_m * 3**0.5:.0f} mm alike, more than a third of the requirement. Set the receiver to more decimals."
         )
         yield Finding("separation_coarse", "stop", text, {"u_m": u_m, "decimals": resolution.separation_decimals})
+
+
+def _altitude_resolution(reduced: Reduced) -> Iterator[Finding]:
+    step_m, sd_m = reduced.estimate.resolution.step_enu_m[2], reduced.estimate.sd_enu_m[2]
+    if step_m is None or sd_m is None or reduced.screened.frozen_share > FROZEN_CAUTION:
+        return
+    few = reduced.estimate.resolution.digits["altitude"].count_distinct < FEW_DISTINCT and reduced.reduction.kept >= 30
+    # a step well below what the kind of fix can tell is no lack, however still the height stands
+    matters = step_m > reduced.estimate.fix_class.vertical_m / 2
+    if matters and (few or step_m > 2 * sd_m):
+        text = (
+            f"The altitude comes in steps of {1000 * step_m:.0f} mm: resolution governs the height. "
+            "Set the receiver to more decimals."
+        )
+        u_m = reduced.estimate.resolution.u_enu_m[2]
+        yield Finding("altitude_coarse", "caution", text, {"step_m": step_m, "u_m": u_m})
 
 
 def _separation(reduced: Reduced) -> Iterator[Finding]:
@@ -150,6 +177,33 @@ def _receiver_estimate(reduced: Reduced) -> Iterator[Finding]:
             yield Finding("gst_used", "info", text, {"sigma_m": value})
 
 
+def _receiver_estimate_and_scatter(reduced: Reduced) -> Iterator[Finding]:
+    """The receiver's own sigma (GST, median) against the scatter of the epochs it speaks of."""
+    gst, (east, north, up) = reduced.estimate.gst, reduced.estimate.sd_enu_m
+    plan = None if east is None or north is None else max(east, north)
+    # in the class's own correlation times: a sigma that was taken as prior makes the fitted one long
+    long_enough = reduced.mean.observed_s >= LONG_SESSION * reduced.estimate.fix_class.correlation_s
+    for axis, sigma_m, scatter_m in (
+        ("in plan", gst.horizontal_m, plan),
+        ("in height", gst.vertical_m, up),
+    ):
+        if sigma_m is None or not sigma_m > 0 or scatter_m is None:
+            continue
+        figures = {"axis": axis, "sigma_m": sigma_m, "scatter_m": scatter_m}
+        if scatter_m > SCATTER_ABOVE * sigma_m:
+            text = (
+                f"The receiver calls itself good to {1000 * sigma_m:.0f} mm {axis}, its epochs scatter by "
+                f"{1000 * scatter_m:.0f} mm: its own estimate is not believed. Do not rely on the receiver's display."
+            )
+            yield Finding("gst_scatter", "caution", text, figures)
+        elif scatter_m < SCATTER_BELOW * sigma_m and long_enough:
+            text = (
+                f"The receiver calls itself good to {1000 * sigma_m:.0f} mm {axis}, its epochs scatter by only "
+                f"{1000 * scatter_m:.0f} mm in a long session. Look for static hold or smoothing in the receiver."
+            )
+            yield Finding("gst_scatter", "caution", text, figures)
+
+
 def _session(reduced: Reduced) -> Iterator[Finding]:
     mean, fix_class = reduced.mean, reduced.estimate.fix_class
     if mean.governed_by == "class":
@@ -159,13 +213,42 @@ def _session(reduced: Reduced) -> Iterator[Finding]:
         )
         figures = {"correlation_time_s": mean.tau_s, "ratio": mean.ratio, "class": fix_class.name}
         yield Finding("class_governs", "info", text, figures)
-    floor = fix_class.floor_enu_m
-    if floor[0] > max(mean.east.u_m, mean.north.u_m):
+    floor, plan_m = fix_class.floor_enu_m, max(mean.east.u_m, mean.north.u_m)
+    if floor[0] > plan_m and (mean.up is None or floor[2] > mean.up.u_m):
         text = "Staying longer in this session hardly helps; a second occupation hours later does."
-        yield Finding("floor_governs", "info", text, {"floor_m": floor[0], "u_mean_m": mean.east.u_m})
+        yield Finding("floor_governs", "info", text, {"floor_m": floor[0], "u_mean_m": plan_m})
     if fix_class.name == "autonomous":
         text = "Autonomous positions: metres, not millimetres, whatever the scatter says."
         yield Finding("autonomous", "caution", text)
+
+
+def _height_readings(reduced: Reduced) -> Iterator[Finding]:
+    """The antenna height before and after: changed, but within the limit (beyond it the readings disagree: a stop)."""
+    antenna = reduced.reduction.antenna
+    if antenna.before_m is None or antenna.after_m is None:
+        return
+    change_m = antenna.after_m - antenna.before_m
+    u_m, u_up_m = antenna.height_u_m, reduced.reduction.uncertainty.u_enu_m[2]
+    if HEIGHT_CHANGE_M < abs(change_m) <= BETWEEN_OCCASIONS_LIMIT_M and u_m is not None and u_up_m:
+        share = (u_m / u_up_m) ** 2
+        text = (
+            f"The antenna height changed by {1000 * change_m:+.1f} mm between before and after: the readings are "
+            f"{100 * share:.0f} % of the height's variance. Press the tripod feet in, and read twice."
+        )
+        yield Finding("height_changed", "info", text, {"change_m": change_m, "u_m": u_m, "share": share})
+
+
+def _station(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
+    changes, stations = reduced.screened.station_changes, list(reduced.screened.stations)
+    if changes:
+        times = "once" if changes == 1 else f"{changes} times"
+        text = (
+            f"The correction station changed {times} ({', '.join(stations)}): each has an error of its own. "
+            "Keep to one station for an occupation."
+        )
+        # a network may renumber its virtual stations; a base of one's own may not
+        severity = "info" if occupation.session.corrections.kind == "network" else "caution"
+        yield Finding("station_changed", severity, text, {"changes": changes, "stations": stations})
 
 
 def _evidence(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
