@@ -86,7 +86,7 @@ def main() -> int:
             rows = all_rows(run, names, seeds)
             show("Coverage and width; the simulator adds no floor error", tables.coverage(rows))
             show("Width U95 / (1.96 sqrt(known-covariance^2 + floor^2)), median, pooled", tables.pooled_width(rows))
-            show("Location: root-mean-square error, known-covariance mean = 1", tables.location(rows))
+            show("Location: RMS error, product / known covariance and / best usual mean", tables.location(rows))
             show("Summary: circle / ellipse / height coverage in percent", tables.compact(rows))
             show("Sums", tables.sums(rows))
         if "wrong" in parts:

@@ -111,6 +111,7 @@ class Regime:
     wrong_share: tuple[float, float] = (0.08, 0.38)  # of the time
     gaps: bool = False
     outliers: bool = False
+    burst_s: tuple[int, int] = (3, 20)
     frozen: bool = False
 
 
@@ -235,14 +236,14 @@ def _freeze(made: Made, rng: np.random.Generator) -> None:
 
 
 def _spoil(made: Made, rng: np.random.Generator) -> None:
-    """1 % single outliers of 20 sigma and bursts of 3 to 20 s of 5 to 20 sigma, in all components."""
+    """1 % single outliers of 20 sigma and bursts (3 to 20 s if not stated) of 5 to 20 sigma, in all components."""
     count = len(made.index)
     sigma = np.sqrt([made.covariance(axis, 1)[0] for axis in range(3)])
     rows = np.flatnonzero(rng.random(count) < OUTLIER_SHARE)
     made.errors_m[rows] += OUTLIER_SIGMAS * sigma * rng.normal(size=(len(rows), 3))
     made.clean[rows] = False
     for start in np.flatnonzero(rng.random(count) < made.regime.step_s / BURST_EVERY_S):
-        stop = start + int(rng.integers(3, 21))
+        stop = start + int(rng.integers(made.regime.burst_s[0], made.regime.burst_s[1] + 1))
         made.errors_m[start:stop] += rng.uniform(5, 20) * sigma * rng.choice([-1, 1], size=3)
         made.clean[start:stop] = False
 

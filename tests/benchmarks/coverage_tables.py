@@ -91,24 +91,29 @@ def pooled_width(rows: Rows) -> Iterator[str]:
 
 
 def location(rows: Rows) -> Iterator[str]:
-    """Root-mean-square error over all axes in units of the known-covariance mean's own error."""
+    """Root-mean-square error of the product over that of the known-covariance mean / over the best usual mean's."""
+    lengths = sorted({length_s for _, length_s in rows})
     body = []
-    for (name, length_s), items in rows.items():
-        regime = REGIMES[name]
-        if regime.group != "clean" and name not in ("rtk_outliers", "rtk_gaps", "rtk_frozen"):
+    for name in dict.fromkeys(name for name, _ in rows):
+        disturbed = name in ("rtk_outliers", "rtk_long_bursts", "rtk_gaps", "rtk_frozen")
+        if REGIMES[name].group != "clean" and not disturbed:
             continue
-        own = _rms([item.product for item in items]) / (known := _rms([item.oracle for item in items]))
-        usual = [_rms([item.means[k] for item in items]) / known for k in range(len(MEANS))]
-        disturbed = regime.group != "clean"
-        enough = len(items) >= LEAST_TO_JUDGE
-        missed = own > (LOCATION_DISTURBED if disturbed else LOCATION_AGAINST_KNOWN)
-        missed |= not disturbed and own / min(usual) > LOCATION_AGAINST_MEANS
-        body.append([
-            name, duration(length_s), str(len(items)), f"{own:.3f}{' !' if missed and enough else ''}", f"{own / min(usual):.3f}",
-            *[f"{value:.3f}" for value in usual], f"{np.median([item.kept for item in items]):.3f}",
-        ])  # fmt: skip
-    head = ("regime", "length", "n", "product / known covariance", "product / best usual", *MEANS, "kept / good epochs")
+        cells = [_located(rows[name, length_s], disturbed) for length_s in lengths]
+        every = [item for length_s in lengths for item in rows[name, length_s]]
+        known = _rms([item.oracle for item in every])
+        usual = [f"{_rms([item.means[k] for item in every]) / known:.3f}" for k in range(len(MEANS))]
+        kept = 100 * float(np.mean([item.kept for item in every]))
+        body.append([name, *cells, *usual, f"{kept:.1f}"])
+    head = ("regime", *map(duration, lengths), *(f"{name}, all lengths" for name in MEANS), "kept / good epochs %")
     yield from table(head, body)
+
+
+def _located(items: list[Row], disturbed: bool) -> str:
+    own, known = _rms([item.product for item in items]), _rms([item.oracle for item in items])
+    best = min(_rms([item.means[k] for item in items]) for k in range(len(MEANS)))
+    missed = own / known > (LOCATION_DISTURBED if disturbed else LOCATION_AGAINST_KNOWN)
+    missed |= not disturbed and own / best > LOCATION_AGAINST_MEANS
+    return f"{own / known:.3f} / {own / best:.3f}" + (" !" if missed and len(items) >= LEAST_TO_JUDGE else "")
 
 
 def _rms(errors: Sequence[object]) -> float:
