@@ -92,10 +92,10 @@ def _background(power: Floats, n: int) -> Floats:
 
 
 def _refined(power: Floats, n: int, tau: float, rho: float) -> Floats:
-    """Two finer looks about the best point of the coarse grid."""
+    """Three finer looks about the best point of the coarse grid."""
     result = power
-    for width in (1.6, 1.2):
-        around = np.exp(np.linspace(-math.log(width), math.log(width), 5))
+    for width in (1.6, 1.3, 1.15):
+        around = np.array([1 / width, 1.0, width])
         taus, rhos = (item.ravel() for item in np.meshgrid(tau * around, rho * around**2))
         shapes = _shapes(n, taus, rhos)
         amplitude = (power / shapes).mean(axis=1)

@@ -27,6 +27,7 @@ class TraceStore:
         self._heard = 0
         self._rows: list[int] = []
         self._epochs: list[Epoch] = []
+        self._columns = EpochColumns()  # of the first len(self._columns) epochs: a look turns only new ones to numbers
 
     def push(self, epochs: Iterable[Epoch]) -> None:
         """Take in epochs in order of hearing."""
@@ -38,6 +39,7 @@ class TraceStore:
                     self._step *= 2
                     self._rows = self._rows[::2]
                     self._epochs = self._epochs[::2]
+                    self._columns = EpochColumns()
             self._heard += 1
 
     def trace(
@@ -48,7 +50,8 @@ class TraceStore:
         mean_enu_m: tuple[float, float, float | None],
     ) -> Trace:
         """The remembered epochs that have a time and a position, in metres about the mean."""
-        columns = EpochColumns.from_epochs(self._epochs)
+        self._columns.append(self._epochs[len(self._columns) :])
+        columns = self._columns
         usable = np.flatnonzero((columns.latitude_e8min != MISSING) & (columns.instant_ms != MISSING))
         rows = np.array(self._rows, dtype=np.int64)[usable]
         east, north, up = frame.of_columns(columns, usable)
