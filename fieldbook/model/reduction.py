@@ -410,3 +410,19 @@ class MarkResult:
     def to_json(self) -> dict[str, Any]:
         """The tree of one element of `marks`: finite numbers or null."""
         return {item.name: _plain(getattr(self, item.name)) for item in dataclasses.fields(self)}
+
+
+@dataclass
+class Convergence:
+    """The running mean of one occupation and its 95 % figures as they would have been printed. Lists of equal length.
+
+    Offsets in metres from the final mean of the reported point. Made on request, not part of `reduce --json`.
+    """
+
+    times_s: Vector  # seconds since the first heard epoch, as in Trace
+    east_m: Vector
+    north_m: Vector
+    up_m: list[float | None]
+    horizontal95_m: Vector
+    vertical95_m: list[float | None]
+    inside_since: str | None = None  # UTC from which both figures met the requirement without a break; None: they do not

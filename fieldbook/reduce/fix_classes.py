@@ -37,6 +37,12 @@ class ClassOfFix:
     reason: str
     source: str
     margin: float
+    stated: bool = False  # figures of a session file or of the user's settings, not of the table below
+
+    @property
+    def label(self) -> str:
+        """Name for the budget; figures stated for this receiver carry their source."""
+        return f"{self.name}; stated for this receiver: {self.source}" if self.stated else self.name
 
     @property
     def floor_enu_m(self) -> tuple[float, float, float]:
@@ -111,6 +117,7 @@ def governing_class(qualities: Iterable[int], override: FixClass | None = None) 
         correlation_s=override.correlation_s,
         reason="stated for this receiver",
         source=override.source,
+        stated=True,
     )
 
 

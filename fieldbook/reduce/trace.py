@@ -48,14 +48,19 @@ class TraceStore:
         initialisation: NDArray[np.int32],
         frame: LocalFrame,
         mean_enu_m: tuple[float, float, float | None],
+        start_ms: int | None = None,
     ) -> Trace:
-        """The remembered epochs that have a time and a position, in metres about the mean."""
+        """The remembered epochs that have a time and a position, in metres about the mean.
+
+        start_ms: zero of the times on the occupation's clock; None = the first of them.
+        """
         self._columns.append(self._epochs[len(self._columns) :])
         columns = self._columns
         usable = np.flatnonzero((columns.latitude_e8min != MISSING) & (columns.instant_ms != MISSING))
         rows = np.array(self._rows, dtype=np.int64)[usable]
         east, north, up = frame.of_columns(columns, usable)
-        start = int(columns.instant_ms[usable[0]]) if usable.size else 0
+        first = int(columns.instant_ms[usable[0]]) if usable.size else 0
+        start = first if start_ms is None else start_ms
         level = mean_enu_m[2]
         ups = [None if value == MISSING or level is None else value / UNITS_PER_M - level for value in up.tolist()]
         return Trace(
