@@ -6,6 +6,7 @@
     raw_tail                        empty once its occupation has ended; only known occupations
     end                             number and SHA-256 of the received bytes, number of epochs
     epoch, epoch_form               complete and consistent; their values are compared with a rebuild by the caller
+    epoch_pack                      the same, and its stored bytes against their SHA-256
     recorder_state                  not covered: a heartbeat
 
 Nothing here raises, whatever the file is: what cannot be read is a finding. All reading happens in one read
@@ -30,6 +31,7 @@ from fieldbook.model.canonical import Tree, canonical_json
 from fieldbook.model.entry import GENESIS, entry_hash
 
 from . import connect, migrations
+from .audit_epochs import audit_epochs
 from .audit_raw import audit_raw
 from .kinds import KINDS, MAX_BODY_BYTES, checked_body
 
@@ -112,7 +114,7 @@ def _audited(connection: connect.BookConnection, time_limit_s: float) -> list[Au
         ("entry", _check_entries),
         ("migrations", _check_migrations),
         ("raw", audit_raw),
-        ("epoch", _check_epochs),
+        ("epoch", audit_epochs),
         ("file", lambda found: _check_wal(found, connection)),
     ]
     try:
@@ -238,44 +240,6 @@ def _body_problem(text: str) -> str:
     except (ValueError, RecursionError) as error:
         return f"its body cannot be read ({connect.printable(error)})"
     return "" if canonical else "its body is not in canonical form"
-
-
-def _check_epochs(audit: Audit) -> None:
-    connection = audit.connection
-    known = {occupation for occupation, _, _ in audit.by_occupation("occupation")}
-    origins = {occupation for occupation, _, _ in audit.by_occupation("origin")}
-    ended = {occupation: (seq, body.get("epochs")) for occupation, seq, body in audit.by_occupation("end")}
-    for occupation, count, first, last, placed in connection.execute(
-        "SELECT occupation, count(*), min(number), max(number),"
-        " count(latitude_offset_e8min) + count(longitude_offset_e8min) FROM epoch GROUP BY occupation"
-    ).fetchall():
-        where = f"epochs of occupation {occupation}"
-        if occupation not in known:
-            audit.find("epoch", f"{where}: no entry begins this occupation")
-        if (first, last) != (1, count):
-            audit.find("epoch", f"{where}: numbers run from {first} to {last}, but there are {count}")
-        if placed and occupation not in origins:
-            audit.find("epoch", f"{where}: they have positions and no origin")
-        seq, stated = ended.pop(occupation, (None, count))
-        if stated != count:
-            audit.find("epoch", f"{where}: there are {count}, entry {seq} states {stated!r:.40}", seq)
-    for occupation, (seq, stated) in ended.items():
-        if stated != 0:
-            audit.find("epoch", f"epochs of occupation {occupation}: none, entry {seq} states {stated!r:.40}", seq)
-    forms, used = "SELECT occupation, form FROM epoch_form", "SELECT DISTINCT occupation, form FROM epoch"
-    for row in connection.execute(f"{used} EXCEPT {forms} LIMIT 5").fetchall():
-        audit.find("epoch", f"epochs of occupation {row[0]} name form {row[1]}, which is missing")
-    for row in connection.execute(f"{forms} EXCEPT {used} LIMIT 5").fetchall():
-        audit.find("epoch", f"form {row[1]} of occupation {row[0]} belongs to no epoch")
-    for occupation, form, *texts in connection.execute(
-        "SELECT occupation, form, source, talker, code, station, datum FROM epoch_form"
-    ):
-        if any(text is not None and not _is_text(text) for text in texts):
-            audit.find("epoch", f"form {form} of occupation {occupation} holds a damaged text")
-
-
-def _is_text(value: object) -> bool:
-    return isinstance(value, str) and not any("\ud800" <= letter <= "\udfff" for letter in value)
 
 
 def _check_wal(audit: Audit, connection: connect.BookConnection) -> None:

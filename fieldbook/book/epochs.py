@@ -3,7 +3,7 @@
 A row holds what changes from epoch to epoch, as integers; the position is an offset from the occupation's origin
 (entry `origin`). What hardly ever changes (talker, decimals, quality, station, ...) is one row of `epoch_form`,
 which the epoch row names by number. Numbers of forms are given in order of first use, so that a rebuild from the
-same epochs writes the same rows. About 50 bytes per epoch.
+same epochs writes the same rows. About 50 bytes per epoch, until `epoch_packs` takes the rows of an ended occupation.
 """
 
 from __future__ import annotations
@@ -42,14 +42,14 @@ PLAIN_FIELDS = (
     "received_monotonic_ms",
     "received_utc_ms",
 )
-_form_of = attrgetter(*FORM_FIELDS)
-_plain_of = attrgetter(*PLAIN_FIELDS)
+form_of = attrgetter(*FORM_FIELDS)
+plain_of = attrgetter(*PLAIN_FIELDS)
 _FORM_COLUMNS = ", ".join(FORM_FIELDS)
 _COLUMNS = "number, form, day, time_ms, latitude_offset_e8min, longitude_offset_e8min, " + ", ".join(PLAIN_FIELDS)
 _INSERT_FORM = f"INSERT INTO epoch_form (occupation, form, {_FORM_COLUMNS}) VALUES (?, ?{', ?' * len(FORM_FIELDS)})"  # noqa: S608
 _INSERT = f"INSERT INTO epoch (occupation, {_COLUMNS}) VALUES (?, ?, ?, ?, ?, ?, ?{', ?' * len(PLAIN_FIELDS)})"  # noqa: S608
 _SELECT_FORMS = f"SELECT form, {_FORM_COLUMNS} FROM epoch_form WHERE occupation = ? ORDER BY form"  # noqa: S608
-_SELECT = f"SELECT {_COLUMNS} FROM epoch WHERE occupation = ? AND number > ? ORDER BY number"  # noqa: S608
+_SELECT = f"SELECT {_COLUMNS} FROM epoch WHERE occupation = ? AND number > ? ORDER BY number LIMIT ?"  # noqa: S608
 
 Form = tuple[Any, ...]
 Origin = tuple[int, int]  # latitude, longitude in 1e-8 arc-minute
@@ -83,7 +83,7 @@ def insert_epochs(
     rows: list[tuple[Any, ...]] = []
     new_forms: list[tuple[Any, ...]] = []
     for epoch in epochs:
-        form = _form_of(epoch)
+        form = form_of(epoch)
         number = forms.get(form)
         if number is None:
             number = forms[form] = len(forms) + 1
@@ -98,7 +98,7 @@ def insert_epochs(
                 epoch.time_ms,
                 None if north is None else north - latitude,
                 None if east is None else east - longitude,
-                *_plain_of(epoch),
+                *plain_of(epoch),
             )
         )
     if new_forms:
@@ -108,19 +108,21 @@ def insert_epochs(
 
 def delete_epochs(connection: sqlite3.Connection, occupation: int) -> None:
     """Forget the decoded epochs of an occupation: a cache, made again from what was received."""
-    connection.execute("DELETE FROM epoch WHERE occupation = ?", (occupation,))
-    connection.execute("DELETE FROM epoch_form WHERE occupation = ?", (occupation,))
+    for table in ("epoch", "epoch_form", "epoch_pack"):
+        connection.execute(f"DELETE FROM {table} WHERE occupation = ?", (occupation,))  # noqa: S608 - constants
 
 
-def read_epochs(connection: sqlite3.Connection, occupation: int, origin: Origin | None, after: int = 0) -> list[Epoch]:
-    """Epochs of an occupation with a number above `after`, in order. The caller holds a read transaction.
+def read_epochs(
+    connection: sqlite3.Connection, occupation: int, origin: Origin | None, after: int = 0, limit: int | None = None
+) -> list[Epoch]:
+    """Epoch rows of an occupation with a number above `after`, in order. The caller holds a read transaction.
 
     Raises:
         ValueError: a row names a form that is not there, or an offset and no origin exists.
     """
     forms = {row[0]: row[1:] for row in connection.execute(_SELECT_FORMS, (occupation,))}
     epochs: list[Epoch] = []
-    for row in connection.execute(_SELECT, (occupation, after)):
+    for row in connection.execute(_SELECT, (occupation, after, -1 if limit is None else limit)):
         number, form, day, time_ms, north, east, altitude, satellites, hdop, pdop, vdop, age, *rest = row
         if form not in forms:
             raise ValueError(f"epoch {number} of occupation {occupation} names a form that is not there")

@@ -62,6 +62,10 @@ class Known:
             raise UsageError(f"There is no occupation {occupation} in this book.", "Begin it first.")
         return entry.observer
 
+    def has_ended(self, occupation: int) -> bool:
+        """Whether an `end` entry stands for the occupation."""
+        return any(self.of("end", occupation))
+
     def origin_of(self, occupation: int) -> Origin | None:
         """The origin of the occupation's epoch rows; None as long as it has no position."""
         if occupation not in self._origins:

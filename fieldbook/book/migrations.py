@@ -9,6 +9,7 @@ in the `book` and `migrated` entries, so that the chain covers them.
 Append-only is enforced three times: BEFORE UPDATE and BEFORE DELETE triggers, a guard BEFORE INSERT on existing
 keys (INSERT OR REPLACE deletes without firing delete triggers unless recursive_triggers is on), and the hash chain
 for whoever drops the triggers. Two rows may go: a tail row once a chunk covers it, a chunk once a pack covers it.
+Decoded epochs (`epoch`, `epoch_form`, `epoch_pack`) are a cache: they may go as a whole and be made again.
 """
 
 from __future__ import annotations
@@ -197,8 +198,38 @@ M001_BOOK: tuple[str, ...] = (
     "CREATE TABLE recorder_state (id INTEGER PRIMARY KEY CHECK (id = 1), state TEXT NOT NULL) STRICT",
 )
 
+# The epochs of an ended occupation, in pieces. Like `epoch` a cache: it may be deleted and made again, not changed.
+M002_EPOCH_PACK: tuple[str, ...] = (
+    """CREATE TABLE epoch_pack (
+  occupation INTEGER NOT NULL,
+  first INTEGER NOT NULL,
+  last INTEGER NOT NULL,
+  codec TEXT NOT NULL,
+  count INTEGER NOT NULL,
+  sha256 TEXT NOT NULL,
+  data BLOB NOT NULL,
+  PRIMARY KEY (occupation, first)
+) STRICT, WITHOUT ROWID""",
+    *_never("epoch_pack", "UPDATE"),
+    _guard(
+        "epoch_pack",
+        "no_replace",
+        "INSERT",
+        "NEW.last < NEW.first OR EXISTS (SELECT 1 FROM epoch_pack WHERE occupation = NEW.occupation"
+        " AND first <= NEW.last AND last >= NEW.first)",
+        "these epochs are packed already",
+    ),
+    _guard(
+        "epoch",
+        "not_packed",
+        "INSERT",
+        "EXISTS (SELECT 1 FROM epoch_pack WHERE occupation = NEW.occupation AND last >= NEW.number)",
+        "this epoch is packed already",
+    ),
+)
+
 # Append only. The name of a migration is recorded in every book.
-MIGRATIONS: list[tuple[str, tuple[str, ...]]] = [("m001_book", M001_BOOK)]
+MIGRATIONS: list[tuple[str, tuple[str, ...]]] = [("m001_book", M001_BOOK), ("m002_epoch_pack", M002_EPOCH_PACK)]
 
 
 def version() -> int:

@@ -25,7 +25,7 @@ from fieldbook.model.item import Item, ItemKind
 from fieldbook.model.recorder import RecorderState
 from fieldbook.model.state import BookState
 
-from . import chain, connect, epochs, migrations, raw
+from . import chain, connect, epoch_packs, epochs, heartbeat, migrations, raw
 from .begin import new_book
 from .known import Known
 from .press import LARGE_BYTES, Presser
@@ -284,11 +284,7 @@ class Book:
             if epochs:
                 self._write_epochs(occupation, epochs)
             if state is not None:
-                self._connection.execute(
-                    "INSERT INTO recorder_state (id, state) VALUES (1, ?)"
-                    " ON CONFLICT (id) DO UPDATE SET state = excluded.state",
-                    (state.to_json(),),
-                )
+                heartbeat.write(self._connection, state)
         self._tail_bytes += 0 if large else size
 
     def _free_id(self, occupation: int) -> int:
@@ -327,12 +323,18 @@ class Book:
         epochs.insert_epochs(self._connection, occupation, rows, origin, forms)
 
     def replace_epochs(self, occupation: int, rows: Iterable[Epoch]) -> None:
-        """Put newly decoded epochs in the place of an occupation's epochs, as one commit."""
+        """Put newly decoded epochs in the place of an occupation's epochs, as one commit; packed if it has ended."""
         decoded = list(rows)  # may read `items`, so before the transaction
+        packs: list[epoch_packs.Pack] = []
+        with connect.occupation_errors(self.path, occupation):
+            if self._known.has_ended(occupation):
+                packs = [epoch_packs.packed(piece) for piece in epoch_packs.pieces_of_epochs(decoded)]
         with self.transaction():
             epochs.delete_epochs(self._connection, occupation)
             self._forms[occupation] = {}
-            self._write_epochs(occupation, decoded)
+            epoch_packs.insert(self._connection, occupation, packs)
+            if left := decoded[sum(pack.count for pack in packs) :]:
+                self._write_epochs(occupation, left)
 
     def seal(self, occupation: int) -> list[Entry]:
         """Move the tail of an occupation into chunks of at most about 512 KiB, each with its `raw` entry.
@@ -356,17 +358,18 @@ class Book:
         return written
 
     def pack(self, occupation: int) -> int:
-        """Seal the tail, move all chunks of an occupation into packs, and let the file shrink.
+        """Seal the tail, move all chunks of an occupation into packs, and let the file shrink; epochs too if it ended.
 
-        Every chunk's SHA-256 is compared with its `raw` entry before and after compression. Returns the number of
-        chunks packed.
+        Every chunk's SHA-256 is compared with its `raw` entry before and after compression, every epoch with what
+        reads back. Returns the number of chunks packed.
 
         Raises:
-            BookError: a chunk is damaged or missing (then it stays as it is), or any of `transaction`.
+            BookError: a chunk or an epoch is damaged or missing (then it stays as it is), or any of `transaction`.
         """
         self.seal(occupation)
         packed = 0
         with connect.occupation_errors(self.path, occupation):
+            smaller = self._pack_epochs(occupation)  # first: the presser is still at the last chunks
             left = raw.unpacked(self._connection, occupation)
             due = [sealed for sealed in self._known.sealed(occupation) if sealed.chunk in left]
             for group in raw.pack_groups(due):
@@ -376,18 +379,25 @@ class Book:
                     body = raw.insert_pack(self._connection, group, data).body()
                     chain.insert_entry(self._connection, "packed", body, observer, self._now())
                 packed += len(group)
-            if packed:
-                self._shrink()
+            if smaller or packed:
+                connect.shrink(self._connection)
         return packed
 
-    def _shrink(self) -> None:
-        """Give free pages back. VACUUM if it can have the book at once, else the free pages only, else later."""
-        for statement in ("VACUUM", "PRAGMA incremental_vacuum"):
-            try:
-                self._connection.executescript(statement)  # runs it to its end; execute() frees one page
-                break
-            except sqlite3.OperationalError:
-                continue  # busy or no room for a second copy: the book is whole, only larger than need be
+    def _pack_epochs(self, occupation: int) -> bool:
+        """Move the epoch rows of an ended occupation into packs, compressed outside the transaction."""
+        if not self._known.has_ended(occupation):
+            return False
+        forms = epochs.load_forms(self._connection, occupation)
+        origin = self._known.origin_of(occupation)
+        pieces = epoch_packs.pieces_of_rows(self._connection, occupation, origin, forms)
+        packs = [epoch_packs.packed(piece) for piece in pieces]
+        with self.transaction():
+            heartbeat.forget_sky(self._connection, occupation)
+            if packs:
+                epoch_packs.insert(self._connection, occupation, packs)
+                epoch_packs.clear_rows(self._connection, occupation, packs)
+        self._forms.pop(occupation, None)
+        return bool(packs)
 
     # -- reading what was recorded -------------------------------------------------------------------------
 
@@ -418,22 +428,16 @@ class Book:
         """SHA-256 of the received bytes alone: the same for the same file, whatever the times and events."""
         return self.received_digest(occupation)[1]
 
-    def epochs(self, occupation: int, after: int = 0) -> list[Epoch]:
-        """Decoded epochs of an occupation with a number above `after`.
+    def epochs(self, occupation: int, after: int = 0, limit: int | None = None) -> list[Epoch]:
+        """Decoded epochs of an occupation with a number above `after`, in order; the first `limit` of them if given.
 
         Raises:
             BookError: damaged.
         """
         with connect.occupation_errors(self.path, occupation), self._reading():
-            return epochs.read_epochs(self._connection, occupation, self._known.origin_of(occupation), after)
+            return epoch_packs.read(self._connection, occupation, self._known.origin_of(occupation), after, limit)
 
     def recorder_state(self) -> RecorderState | None:
         """What the recorder last said of itself; None if there never was one, or it cannot be read."""
         with connect.book_errors(self.path):
-            row = self._connection.execute("SELECT state FROM recorder_state WHERE id = 1").fetchone()
-        if row is None:
-            return None
-        try:
-            return RecorderState.from_json(row[0])
-        except (ValueError, TypeError, AttributeError, RecursionError):
-            return None  # not chained and rewritten at each commit: a heartbeat that makes no sense is none
+            return heartbeat.read(self._connection)

@@ -6,48 +6,19 @@ import dataclasses
 from pathlib import Path
 
 import small_books as small
+from any_epochs import any_epoch, numbered
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from fieldbook.book import epochs as rows
 from fieldbook.book.store import Book
-from fieldbook.model.epoch import Epoch, SetAside
-
-_int = st.integers(-(2**62), 2**62)
-_small = st.integers(0, 99)
-
-
-def _maybe(strategy: st.SearchStrategy[object]) -> st.SearchStrategy[object]:
-    return st.none() | strategy
-
-
-_text = st.text(st.characters(codec="utf-8", exclude_characters="\0"), max_size=8)
-_fields = {
-    "source": st.sampled_from(["GGA", "GNS", "RMC"]),
-    "talker": _text,
-    "code": _maybe(st.sampled_from([item.value for item in SetAside])),
-    "station": _maybe(_text),
-    "datum": _maybe(_text),
-    "flags": st.integers(0, 127),
-    "latitude_e8min": _maybe(st.integers(-324_000_000_000, 324_000_000_000)),
-    "longitude_e8min": _maybe(st.integers(-648_000_000_000, 648_000_000_000)),
-}
-_epoch = st.builds(
-    Epoch,
-    number=st.just(1),
-    **_fields,
-    **{
-        item.name: _maybe(_small if "decimals" in item.name else _int)
-        for item in dataclasses.fields(Epoch)
-        if item.name not in {*_fields, "number"}
-    },
-)
+from fieldbook.model.epoch import Epoch
 
 
 @settings(max_examples=60, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
-@given(st.lists(_epoch, max_size=12), st.integers(0, 12))
+@given(st.lists(any_epoch, max_size=12), st.integers(0, 12))
 def test_epochs_come_back_exactly(tmp_path_factory, epochs: list[Epoch], first_burst: int) -> None:
-    epochs = [dataclasses.replace(epoch, number=number) for number, epoch in enumerate(epochs, 1)]
+    epochs = numbered(epochs)
     path = tmp_path_factory.mktemp("epochs") / "a.book"
     with small.begun(path) as book:
         book.write_burst(1, [], epochs[:first_burst])
