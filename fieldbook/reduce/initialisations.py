@@ -8,13 +8,16 @@ least uncertainty claimed. Those within a tolerance of one another form clusters
 
 but never more than twice (H) or 4/3 of (V) the first figure: the tolerance of very short initialisations must not
 grow to hide a wrong fix of 0.1 m. The cluster with most kept epochs leads. With several clusters it decides only when
-it holds 60 % of the epochs and two independent initialisations agree in it; otherwise the longest is reduced, the
-distance to the others is a rectangular half-width of the budget, and the finding `initialisations_disagree` stops the
+it holds 60 % of the epochs and two independent initialisations agree in it. If none does, the largest tolerance is tried:
+right ones a little too far apart in a noisy session must not let a wrong one take the lead. It counts only if another
+cluster stays apart and the question is then decided, so it never hides a disagreement. Otherwise the longest is reduced,
+the distance to the others is a rectangular half-width of the budget, and the finding `initialisations_disagree` stops the
 certificate. Under 5 kept epochs an initialisation is not used. The operator's decisions come first.
 """
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
@@ -122,7 +125,7 @@ class InitialisationJudge:
         fix_class = governing_class({q for item in sums for q in item.qualities}, self.override)
         items = self._judged(screened, sums, fix_class)
         compared = [item for item in items if _admitted(item, decided)]
-        labels = _clusters([item.place for item in compared], fix_class)
+        labels = _labels(compared, fix_class)
         for item, label in zip(compared, labels, strict=True):
             item.cluster = label
         leading = _leading(compared, decided)
@@ -197,7 +200,27 @@ def tolerances_m(fix_class: ClassOfFix) -> tuple[float, float]:
     return by_class
 
 
-def _clusters(places: list[Place], fix_class: ClassOfFix) -> list[int]:
+def _labels(compared: list[Judged], fix_class: ClassOfFix) -> list[int]:
+    """Clusters; at the largest tolerance where only that decides the question and leaves another cluster apart."""
+    places = [item.place for item in compared]
+    labels = _clusters(places, fix_class)
+    if len(set(labels)) < 3 or _decides(compared, labels):
+        return labels
+    wider = _clusters(places, fix_class, widest=True)
+    return wider if len(set(wider)) > 1 and _decides(compared, wider) else labels
+
+
+def _decides(compared: list[Judged], labels: list[int]) -> bool:
+    """Does one cluster hold 60 % of the epochs, with two independent initialisations?"""
+    times: Counter[int] = Counter()
+    for item, label in zip(compared, labels, strict=True):
+        times[label] += item.kept
+    largest, kept = times.most_common(1)[0]
+    roots = {item.root for item, label in zip(compared, labels, strict=True) if label == largest}
+    return kept >= DECIDING_SHARE * times.total() and len(roots) >= DECIDING_INDEPENDENT
+
+
+def _clusters(places: list[Place], fix_class: ClassOfFix, *, widest: bool = False) -> list[int]:
     """Single linkage by a breadth-first walk; one vectorised row at a time, memory O(n)."""
     if not places:
         return []
@@ -213,19 +236,22 @@ def _clusters(places: list[Place], fix_class: ClassOfFix) -> list[int]:
         queue = [seed]
         while queue:
             here = queue.pop()
-            near = np.flatnonzero(_linked(enu, spread, here, fix_class) & (labels == 0))
+            near = np.flatnonzero(_linked(enu, spread, here, fix_class, widest=widest) & (labels == 0))
             labels[near] = label
             queue += [int(row) for row in near]
     return [int(label) for label in labels]
 
 
-def _linked(enu: Floats, spread: Floats, here: int, fix_class: ClassOfFix) -> NDArray[np.bool_]:
+def _linked(
+    enu: Floats, spread: Floats, here: int, fix_class: ClassOfFix, *, widest: bool = False
+) -> NDArray[np.bool_]:
     gap = enu - enu[here]
     u_d = np.hypot(spread, spread[here])
     distance = np.column_stack([np.hypot(gap[:, 0], gap[:, 1]), np.abs(gap[:, 2])])
     linked = np.ones(len(enu), dtype=np.bool_)
     for axis, least in enumerate(tolerances_m(fix_class)):
-        tolerance = np.clip(UNCERTAINTIES * u_d[:, axis], least, least * MOST_OF_TOLERANCE[axis])
+        most = least * MOST_OF_TOLERANCE[axis]
+        tolerance = np.clip(most if widest else UNCERTAINTIES * u_d[:, axis], least, most)
         # without a height on either side nothing vertical speaks against it
         linked &= ~(distance[:, axis] > np.where(np.isnan(tolerance), least, tolerance))
     return linked
