@@ -58,7 +58,7 @@ def _packs(audit: Audit) -> dict[int, _Numbers]:
         return found
     ended = {occupation for occupation, _, _ in audit.by_occupation("end")}
     for occupation, *columns in connection.execute(
-        f"SELECT occupation, {_PACK_COLUMNS} FROM epoch_pack ORDER BY occupation, first"  # noqa: S608 - a constant
+        f"SELECT occupation, {_PACK_COLUMNS} FROM epoch_pack ORDER BY rowid"  # noqa: S608 - a constant
     ):
         pack = epoch_packs.Pack(*columns)
         where = f"the pack of epochs {pack.first} to {pack.last} of occupation {occupation}"

@@ -41,7 +41,7 @@ _SELECT = (
     f" {', '.join(PLAIN_FIELDS)} FROM epoch WHERE occupation = ? AND number > ? ORDER BY number LIMIT ?"
 )
 _SELECT_PACKS = (
-    "SELECT first, last, codec, count, sha256, data FROM epoch_pack WHERE occupation = ? AND last > ? ORDER BY first"
+    "SELECT first, last, codec, count, sha256, data FROM epoch_pack WHERE occupation = ? AND last > ? ORDER BY rowid"
 )
 _EPOCH_FIELDS = tuple(field.name for field in dataclasses.fields(Epoch))[1:]  # `number` is the first
 

@@ -199,6 +199,8 @@ M001_BOOK: tuple[str, ...] = (
 )
 
 # The epochs of an ended occupation, in pieces. Like `epoch` a cache: it may be deleted and made again, not changed.
+# Without a key: few rows, read in the order they were written; an index, or a table that is one, costs a page or two
+# in every book, which counts beside a short log.
 M002_EPOCH_PACK: tuple[str, ...] = (
     """CREATE TABLE epoch_pack (
   occupation INTEGER NOT NULL,
@@ -207,24 +209,16 @@ M002_EPOCH_PACK: tuple[str, ...] = (
   codec TEXT NOT NULL,
   count INTEGER NOT NULL,
   sha256 TEXT NOT NULL,
-  data BLOB NOT NULL,
-  PRIMARY KEY (occupation, first)
-) STRICT, WITHOUT ROWID""",
+  data BLOB NOT NULL
+) STRICT""",
     *_never("epoch_pack", "UPDATE"),
     _guard(
         "epoch_pack",
         "no_replace",
         "INSERT",
         "NEW.last < NEW.first OR EXISTS (SELECT 1 FROM epoch_pack WHERE occupation = NEW.occupation"
-        " AND first <= NEW.last AND last >= NEW.first)",
+        " AND last >= NEW.first)",
         "these epochs are packed already",
-    ),
-    _guard(
-        "epoch",
-        "not_packed",
-        "INSERT",
-        "EXISTS (SELECT 1 FROM epoch_pack WHERE occupation = NEW.occupation AND last >= NEW.number)",
-        "this epoch is packed already",
     ),
 )
 
