@@ -43,3 +43,9 @@ def run_fieldbook(monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture
         return code, out.out, out.err
 
     return call
+
+
+@pytest.fixture(autouse=True)
+def no_settings_of_the_user(tmp_path_factory: pytest.TempPathFactory, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Tests must not depend on who runs them."""
+    monkeypatch.setenv("XDG_CONFIG_HOME", str(tmp_path_factory.getbasetemp() / "no-settings"))

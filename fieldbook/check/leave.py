@@ -97,7 +97,7 @@ def _accuracy(line: str, wanted_m: float, have_m: float | None, go: TimeToGo, fo
     if go.state == "not safely reachable":
         text = "not safely reachable here: the prediction just meets it and may be missed; a second occupation helps"
         return LeaveLine(line, "set-up", wanted_m, have_m, "m", False, None, text)
-    text = f"cannot be reached by staying: '{forbidden_by}' alone forbids it" if forbidden_by else "cannot be reached"
+    text = f"cannot be reached by staying: '{forbidden_by}' forbids it" if forbidden_by else "cannot be reached"
     return LeaveLine(line, "set-up", wanted_m, have_m, "m", False, None, text)
 
 

@@ -29,6 +29,8 @@ from fieldbook.occupy.ending import end_directly
 from fieldbook.occupy.file_scan import FileScan, scan_file
 from fieldbook.occupy.rebuild import session_decoder_options
 from fieldbook.occupy.spans import Claimed, claimed_times
+from fieldbook.settings.session import session_from_tree
+from fieldbook.settings.user import with_user_class
 
 # What may differ between the session of an open occupation and the one it is taken up with: a port changes its
 # name when it is plugged in again, and a moved file is still recognised by its bytes.
@@ -58,6 +60,9 @@ def plan_occupation(book: Book | None, session: Session, address: LinkAddress, *
     if book is not None and opened is not None and not new:
         _must_match(book, opened, session, address)
         resume = opened
+    else:
+        # a new occupation takes the user's own figures of this receiver along; a settings file that is wrong refuses here
+        session = session_from_tree(with_user_class(session.tree))
     if not address.live:
         _judge_file(book, state, session, address, resume)
     return Plan(
@@ -161,9 +166,16 @@ def _differing(stored: Tree, given: Tree) -> list[str]:
         names += [
             f"{table}.{key}"
             for key in sorted({*left, *right})
-            if left.get(key) != right.get(key) and f"{table}.{key}" not in FREE_KEYS
+            if left.get(key) != right.get(key)
+            and f"{table}.{key}" not in FREE_KEYS
+            and not _from_user(table, key, given)
         ]
     return names
+
+
+def _from_user(table: str, key: str, given: Tree) -> bool:
+    """A class of fix that was taken from the user's settings when the occupation began is in no session file."""
+    return (table, key) == ("receiver", "class") and "class" not in given.get("receiver", {})
 
 
 def _judge_file(
