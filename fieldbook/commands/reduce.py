@@ -47,7 +47,9 @@ def command(book: Path, mark: str | None, check: bool, as_json: bool) -> int:
                 "schema": "fieldbook.reduce/1",
                 "program": {"version": __version__, "proj": used.proj, "epsg": used.epsg},
                 "book": {"id": state.id, "path": str(book), "head": state.head_hash},
-                "reductions": [item.reduction.to_json() for item in reduced],
+                "reductions": [
+                    {**item.reduction.to_json(), "convergence": item.convergence().to_json()} for item in reduced
+                ],
                 "marks": [item.to_json() for item in marks],
                 "failed": [_failure(item) for item in failed],
             }
@@ -70,11 +72,12 @@ def _failure(item: Failure) -> dict[str, object]:
 
 def _print(reduced: list[Reduced], marks: list[MarkResult], failed: list[Failure]) -> None:
     from fieldbook.commands.marks_text import mark_lines
-    from fieldbook.commands.reduction_text import reduction_lines
+    from fieldbook.commands.reduction_text import reduction_lines, settled_line
 
     for item in reduced:
         for text in reduction_lines(item.reduction):
             line(text)
+        line(settled_line(item.convergence()))
         line()
     for mark in marks:
         if len(mark.occupations) > 1:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from fieldbook.model.angles import latitude_text, longitude_text, signed_dms_text
-from fieldbook.model.reduction import Reduction, Uncertainty
+from fieldbook.model.reduction import Convergence, Reduction, Uncertainty
 from fieldbook.model.rounding import decimals_for, rounded, rounded_up
 
 SECONDS_PER_METRE_DECIMALS = 2  # one second of latitude is 31 m: two decimals of it for each of a metre's, less one
@@ -83,3 +83,10 @@ def _figures(u: Uncertainty) -> str:
     digits = decimals_for(u.horizontal95_m)
     axes = f"{rounded_up(ellipse.major_m, digits)} x {rounded_up(ellipse.minor_m, digits)} m"
     return f"circle {horizontal} m, ellipse {axes} at {ellipse.azimuth_deg:.0f}°, height ± {vertical} m"
+
+
+def settled_line(convergence: Convergence) -> str:
+    """Since when both figures have been inside the requirement."""
+    if convergence.inside_since is None:
+        return "  settled: not inside the requirement at the end"
+    return f"  settled: inside the requirement since {convergence.inside_since[11:19]} UTC"

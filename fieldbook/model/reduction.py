@@ -416,7 +416,7 @@ class MarkResult:
 class Convergence:
     """The running mean of one occupation and its 95 % figures as they would have been printed. Lists of equal length.
 
-    Offsets in metres from the final mean of the reported point. Made on request, not part of `reduce --json`.
+    Offsets in metres from the final mean of the reported point. Key `convergence` of a reduction in `reduce --json`.
     """
 
     times_s: Vector  # seconds since the first heard epoch, as in Trace
@@ -425,4 +425,9 @@ class Convergence:
     up_m: list[float | None]
     horizontal95_m: Vector
     vertical95_m: list[float | None]
-    inside_since: str | None = None  # UTC from which both figures met the requirement without a break; None: they do not
+    inside_since: str | None = None  # UTC from which both figures met the requirement without a break, if they do
+
+    def to_json(self) -> dict[str, Any]:
+        """Finite numbers or null."""
+        tree: dict[str, Any] = _plain(self)
+        return tree

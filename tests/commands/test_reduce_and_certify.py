@@ -69,6 +69,9 @@ def test_reduce_json_holds_every_key_of_the_contract(book: Path, run_fieldbook: 
             assert set(line) >= {"line", "scope", "wanted", "have", "unit", "met", "time_to_go_s", "text"}
         for item in reduction["initialisations"]:
             assert set(item) >= {"number", "from", "to", "kept", "used", "offset_enu_m"}
+        curve = reduction["convergence"]
+        assert curve["horizontal95_m"][-1] == reduction["uncertainty"]["horizontal95_m"]
+        assert curve["inside_since"] is not None
         epochs = reduction["epochs"]
         assert epochs["heard"] == epochs["kept"] + sum(epochs["set_aside"].values())
 
