@@ -78,7 +78,7 @@ class LiveReader:
         if self._reducer is None or occupation.number != self._occupation or not self._reducer.fits(occupation):
             self._reducer, self._occupation, self._rows = OccupationReducer(occupation), occupation.number, 0
             self._first_instant_ms = self._last_instant_ms = None
-        rows = book.epochs(occupation.number, after=self._rows)[:MOST_EPOCHS_A_LOOK]
+        rows = book.epochs(occupation.number, after=self._rows, limit=MOST_EPOCHS_A_LOOK)
         if rows:
             self._reducer.push(rows)
             self._rows = rows[-1].number
