@@ -22,7 +22,6 @@ from fieldbook.check.mark_leave import mark_leave
 from fieldbook.check.repeats import Circumstance, Judged, compare, repeat_findings
 from fieldbook.model.reduction import (
     ClientPosition,
-    Ellipse95,
     Finding,
     GridPosition,
     Height,
@@ -53,6 +52,7 @@ from fieldbook.reduce.occupation import METHOD, Reduced
 from fieldbook.reduce.prediction import type_a
 from fieldbook.reduce.region import coverage_factor_95
 from fieldbook.reduce.shared import Equipment, equipment_of, split_terms
+from fieldbook.reduce.stated import stated_uncertainty
 from fieldbook.reduce.terms import mean_term
 
 METHOD_SEVERAL = (
@@ -301,23 +301,14 @@ def _inputs(
 
 
 def _uncertainty(form: LinearForm, used: list[_Member], *, with_common: bool) -> Uncertainty:
-    combined = form.combined
-    ellipse = combined.region.ellipse
-    lines = printed_lines(form.terms)
     governed = {item.reduced.mean.governed_by for item in used}
-    return Uncertainty(
-        u_enu_m=list(combined.u_enu_m),
-        cov_en_m2=[list(row) for row in combined.cov_en_m2],
-        dof_enu=list(combined.dof_enu),
-        k95_enu=list(combined.k95_enu),
-        ellipse95=Ellipse95(ellipse.major, ellipse.minor, ellipse.azimuth_deg),
-        horizontal95_m=combined.horizontal95_m,
-        vertical95_m=combined.vertical95_m,
+    return stated_uncertainty(
+        form.combined,
+        printed_lines(form.terms),
         correlation_time_s=used[0].reduced.mean.tau_s if len(used) == 1 else None,
         governed_by=governed.pop() if len(governed) == 1 else "class and data",
         method=METHOD if len(used) == 1 else METHOD_SEVERAL,
-        budget=lines,
-        common=[line.source for line in lines if line.common] if with_common else None,
+        with_common=with_common,
     )
 
 

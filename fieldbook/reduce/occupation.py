@@ -20,10 +20,8 @@ from fieldbook.clock import utc_text
 from fieldbook.errors import ReductionError
 from fieldbook.model.epoch import Epoch
 from fieldbook.model.reduction import (
-    BudgetLine,
     ClientPosition,
     Convergence,
-    Ellipse95,
     Finding,
     Geodetic,
     GridPosition,
@@ -48,6 +46,7 @@ from fieldbook.reduce.initialisations import InitialisationJudge, Judgement
 from fieldbook.reduce.prediction import TimeToGo, TypeA, time_to_go, type_a
 from fieldbook.reduce.region import coverage_factor_95
 from fieldbook.reduce.screening import Screened, Screening
+from fieldbook.reduce.stated import stated_uncertainty
 from fieldbook.reduce.trace import TraceStore
 
 METHOD = "Gauss-Markov mean with slow companion, class of fix as prior, GUM budget; bivariate t region"
@@ -402,21 +401,13 @@ class _Steps:
         ]
 
     def _uncertainty(self, combined: Combined, found: list[Term], *, with_common: bool = False) -> Uncertainty:
-        ellipse = combined.region.ellipse
-        lines: list[BudgetLine] = [term.line() for term in found]
-        return Uncertainty(
-            u_enu_m=list(combined.u_enu_m),
-            cov_en_m2=[list(row) for row in combined.cov_en_m2],
-            dof_enu=list(combined.dof_enu),
-            k95_enu=list(combined.k95_enu),
-            ellipse95=Ellipse95(ellipse.major, ellipse.minor, ellipse.azimuth_deg),
-            horizontal95_m=combined.horizontal95_m,
-            vertical95_m=combined.vertical95_m,
+        return stated_uncertainty(
+            combined,
+            [term.line() for term in found],
             correlation_time_s=self.mean.tau_s,
             governed_by=self.mean.governed_by,
             method=METHOD,
-            budget=lines,
-            common=[line.source for line in lines if line.common] if with_common else None,
+            with_common=with_common,
         )
 
 

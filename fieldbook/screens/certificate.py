@@ -10,7 +10,8 @@ from fieldbook.model.reduction import Reduction
 from fieldbook.screens.bridge import Issued
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
-from fieldbook.screens.page import Desk, Page
+from fieldbook.screens.one_by_one import OccupationByOccupation
+from fieldbook.screens.page import Desk
 from fieldbook.screens.plain import fit, pad
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, paragraph, row
 from fieldbook.screens.words import length_95
@@ -19,32 +20,11 @@ from fieldbook.settings.schema import words
 FORMATS = ("pdf", "html", "txt", "json")
 
 
-class CertificatePage(Page):
+class CertificatePage(OccupationByOccupation):
     """One occupation at a time."""
 
     name_of_page: ClassVar[str] = "certificate"
-    index = -1
     _missing: tuple[tuple[str, int, int], tuple[str, ...]] | None = None
-
-    def opened(self) -> None:
-        """Reduce when the page comes into sight."""
-        self.desk.reduce()
-
-    def chosen(self) -> Reduction | None:
-        """The reduction the paper would state."""
-        reduced = self.desk.reduced
-        if reduced is None or not reduced.reductions:
-            return None
-        if not 0 <= self.index < len(reduced.reductions):
-            self.index = len(reduced.reductions) - 1
-        return reduced.reductions[self.index]
-
-    def side(self, step: int) -> None:
-        """The occupation before or after."""
-        reduced = self.desk.reduced
-        if reduced is not None and reduced.reductions:
-            self.index = (self.index + step) % len(reduced.reductions)
-            self.redraw()
 
     def left(self, width: int, height: int) -> list[Row]:
         """Which occupation, what is missing, what was issued."""

@@ -10,38 +10,17 @@ from fieldbook.model.angles import latitude_text, longitude_text, signed_dms_tex
 from fieldbook.model.reduction import Reduction, Uncertainty
 from fieldbook.model.rounding import decimals_for
 from fieldbook.screens.figures import initialisation_rows, wanted_rows_uncertainty
-from fieldbook.screens.page import Page
+from fieldbook.screens.one_by_one import OccupationByOccupation
 from fieldbook.screens.plain import fit, pad, wrapped
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
 from fieldbook.screens.words import SEVERITY, hour_minute, length_95, set_aside_word
 
 
-class ReductionPage(Page):
+class ReductionPage(OccupationByOccupation):
     """One occupation at a time; left and right arrows turn to the others."""
 
     name_of_page: ClassVar[str] = "reduction"
     facing: ClassVar[bool] = True
-    index = -1
-
-    def opened(self) -> None:
-        """Reduce when the page comes into sight."""
-        self.desk.reduce()
-
-    def chosen(self) -> Reduction | None:
-        """The reduction shown."""
-        reduced = self.desk.reduced
-        if reduced is None or not reduced.reductions:
-            return None
-        if not 0 <= self.index < len(reduced.reductions):
-            self.index = len(reduced.reductions) - 1
-        return reduced.reductions[self.index]
-
-    def side(self, step: int) -> None:
-        """The occupation before or after."""
-        reduced = self.desk.reduced
-        if reduced is not None and reduced.reductions:
-            self.index = (self.index + step) % len(reduced.reductions)
-            self.redraw()
 
     def left(self, width: int, height: int) -> list[Row]:
         """Coordinates."""
