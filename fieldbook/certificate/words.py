@@ -6,7 +6,7 @@ fix qualities keep their NMEA 0183 meaning, uncertainty terms are those of the G
 
 from __future__ import annotations
 
-from fieldbook.model.epoch import SetAside
+from fieldbook.model.epoch import QUALITY_WORDS, SetAside
 
 NOT_STATED = "not stated"
 TITLE = "Certificate of a control mark"
@@ -30,17 +30,6 @@ NOT_USED_WORDS: dict[str, str] = {
     SetAside.OUTLIER: "outlier within its minute",
     SetAside.INITIALISATION: "of an initialisation that is not used",
     SetAside.OPERATOR: "taken out by the observer, with reason",
-}
-
-QUALITY_WORDS = {
-    1: "autonomous",
-    2: "differential",
-    3: "PPS",
-    4: "RTK fixed",
-    5: "RTK float",
-    6: "dead reckoning",
-    7: "manual",
-    8: "simulator",
 }
 
 # Requirement keys of the session file -> the line's name on paper, in the order of the session file.

@@ -4,26 +4,15 @@ from __future__ import annotations
 
 from typing import Any
 
+from fieldbook.model.epoch import QUALITY_WORDS
 from fieldbook.model.rounding import decimals_for, rounded_up
-
-QUALITY = {
-    0: "no fix",
-    1: "autonomous",
-    2: "differential",
-    3: "PPS",
-    4: "RTK fixed",
-    5: "RTK float",
-    6: "dead reckoning",
-    7: "manual",
-    8: "simulator",
-}  # NMEA 0183, GGA field 6
 
 
 def quality_words(quality: int | None) -> str:
     """`RTK fixed` for 4; the number itself where the standard gives none."""
     if quality is None:
         return "no quality"
-    return QUALITY.get(quality, f"quality {quality}")
+    return QUALITY_WORDS.get(quality, f"quality {quality}")
 
 
 def head_line(status: dict[str, Any]) -> str:

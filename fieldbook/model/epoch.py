@@ -15,6 +15,20 @@ E8MIN_PER_DEG = 60 * 10**8
 DAY_MS = 86_400_000
 
 
+# Fix quality by its NMEA 0183 meaning, GGA field 6: the one spelling for screens, commands and paper.
+QUALITY_WORDS = {
+    0: "no fix",
+    1: "autonomous",
+    2: "differential",
+    3: "PPS",
+    4: "RTK fixed",
+    5: "RTK float",
+    6: "dead reckoning",
+    7: "manual",
+    8: "simulator",
+}
+
+
 class SetAside(StrEnum):
     """Why an epoch is not used: one code each, the first that applies in this order (contract, section 3)."""
 

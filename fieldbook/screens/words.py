@@ -3,13 +3,9 @@
 from __future__ import annotations
 
 from fieldbook.clock import utc_text
+from fieldbook.model.epoch import QUALITY_WORDS
 from fieldbook.model.rounding import rounded_up
 
-# NMEA 0183 GGA, quality indicator (field 6); not paraphrased
-QUALITY = {
-    0: "no fix", 1: "autonomous", 2: "differential", 3: "PPS", 4: "RTK fixed", 5: "RTK float",
-    6: "dead reckoning", 7: "manual", 8: "simulator",
-}  # fmt: skip
 LEAVE_LINES = {
     "horizontal_95_m": "95 % horizontal",
     "vertical_95_m": "95 % height",
@@ -26,7 +22,7 @@ VERDICT = {"good to leave": "good", "not yet": "warn", "cannot reach": "bad"}
 
 def quality_word(quality: int | None) -> str:
     """The fix quality by its NMEA 0183 meaning."""
-    return "no fix yet" if quality is None else QUALITY.get(quality, f"quality {quality}")
+    return "no fix yet" if quality is None else QUALITY_WORDS.get(quality, f"quality {quality}")
 
 
 def set_aside_word(code: str) -> str:
