@@ -13,7 +13,7 @@ from string import Template
 
 from fieldbook.certificate.as_pdf import qr_svg
 from fieldbook.certificate.blocks import Block, Bullets, Pairs, Sentences, Table
-from fieldbook.certificate.figures import height_svg, plan_svg
+from fieldbook.certificate.figures import captions, height_svg, plan_svg
 from fieldbook.certificate.printable import printable
 from fieldbook.certificate.sections import FirstPage, first_page, sections
 from fieldbook.model.canonical import Tree, normalised
@@ -95,9 +95,10 @@ def _small_table(rows: list[list[str]]) -> str:
 def _figures(facts: Tree) -> str:
     trace = facts["trace"]
     drawn = f"{trace['drawn']} of {max(trace['epochs'], trace['drawn'])} epochs drawn"
+    plan, height = captions(facts)
     return (
-        f'<div class="figures"><figure><figcaption>Plan of the fixes, equal scales <small>{drawn}</small></figcaption>'
-        f"{plan_svg(facts)}</figure>\n<figure><figcaption>Height of the fixes about their mean</figcaption>"
+        f'<div class="figures"><figure><figcaption>{_e(plan)} <small>{drawn}</small></figcaption>'
+        f"{plan_svg(facts)}</figure>\n<figure><figcaption>{_e(height)}</figcaption>"
         f"{height_svg(facts)}</figure></div>"
     )
 

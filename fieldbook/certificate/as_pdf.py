@@ -16,7 +16,7 @@ from typing import Any
 
 from fieldbook.certificate import as_json
 from fieldbook.certificate.blocks import Block, Section, Table
-from fieldbook.certificate.figures import height_svg, plan_svg
+from fieldbook.certificate.figures import captions, height_svg, plan_svg
 from fieldbook.certificate.printable import for_face, printable
 from fieldbook.certificate.sections import first_page, qr_text, sections
 from fieldbook.clock import utc_ms_of
@@ -43,6 +43,7 @@ def render(facts: Tree) -> bytes:
         "author": _set(printable(facts["job"]["firm"] or "")),
         "note": _face_note(facts),
         "figure_note": _figure_note(facts),
+        "captions": list(captions(facts)),
     }
     template = resources.files("fieldbook.certificate") / "templates" / "certificate.typ"
     made: bytes = typst.compile(

@@ -292,3 +292,15 @@ def _svg(width: float, height: float, parts: list[str], title: str) -> str:
         f'<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 {width:.0f} {height:.0f}" '
         f'font-family="{FONT}" font-size="27" role="img"><title>{escape(title)}</title>{"".join(parts)}</svg>'
     )
+
+
+def captions(facts: Tree) -> tuple[str, str]:
+    """Captions of plan and height trace; of a combined mark they say whose fixes are drawn, and about what."""
+    combined = facts.get("combined")
+    if not combined:
+        return "Plan of the fixes, equal scales", "Height of the fixes about their mean"
+    drawn = combined["drawn"]
+    return (
+        f"Fixes of occupation {drawn} about the combined mark, equal scales",
+        f"Height of the fixes of occupation {drawn} about the combined mark",
+    )

@@ -11,6 +11,7 @@ import io
 import json
 import logging
 import re
+import struct
 import zlib
 from typing import Any
 
@@ -21,6 +22,7 @@ LIMIT_BYTES = 50_000_000
 # What parsers are known to raise on damaged input.
 PARSER_ERRORS = (
     ArithmeticError,
+    AssertionError,
     AttributeError,
     LookupError,
     MemoryError,
@@ -30,6 +32,7 @@ PARSER_ERRORS = (
     RuntimeError,
     TypeError,
     ValueError,
+    struct.error,
     zlib.error,
 )
 _FACTS = re.compile(r'<script type="application/json" id="facts">(.*?)</script>', re.DOTALL)
@@ -73,7 +76,12 @@ def _embedded(data: bytes) -> str:
 
 
 def _attached(data: bytes) -> str:
-    attachments = _reader(data).attachments.get(ATTACHMENT, [])
+    from pypdf.errors import PyPdfError
+
+    try:
+        attachments = _reader(data).attachments.get(ATTACHMENT, [])
+    except PyPdfError as error:  # pypdf reads a file piece by piece, as it is asked
+        raise Unreadable(f"its attachments are damaged ({type(error).__name__})") from error
     if len(attachments) != 1:
         raise Unreadable(f"it has {len(attachments) or 'no'} attached facts where one is expected")
     return bytes(attachments[0]).decode("utf-8")
@@ -98,9 +106,8 @@ def text_lines(data: bytes, extension: str) -> list[str]:
     if extension == "pdf":
         from pypdf.errors import PyPdfError
 
-        pages = _reader(data).pages
         try:
-            text = "\n".join(page.extract_text() for page in pages)
+            text = "\n".join(page.extract_text() for page in _reader(data).pages)
         except PyPdfError as error:
             raise Unreadable(f"its pages are damaged ({type(error).__name__})") from error
     elif extension == "html":
