@@ -6,7 +6,6 @@ A key is `name` in the command's own table, or dotted as in a session file: `ant
 
 from __future__ import annotations
 
-import tomllib
 from collections.abc import Iterable
 from decimal import Decimal
 from typing import Any
@@ -14,6 +13,7 @@ from typing import Any
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree, normalised
 from fieldbook.settings.schema import REQUIRED, TABLES
+from fieldbook.settings.toml_text import BadToml, toml_tree
 from fieldbook.settings.values import nearest, value_from_text
 
 
@@ -120,8 +120,8 @@ def _nested(kind: str, where: str, value: Any) -> Any:
 
 def _toml(where: str, text: str) -> Any:
     try:
-        return tomllib.loads(f"value = {text}", parse_float=Decimal)["value"]
-    except (tomllib.TOMLDecodeError, KeyError):
+        return toml_tree(f"value = {text}")["value"]
+    except (BadToml, KeyError):
         raise UsageError(
             f"{where} is not written as in TOML: {text}.", "Write a list or table as in a session file."
         ) from None

@@ -18,7 +18,7 @@ import re
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
-from urllib.parse import unquote
+from urllib.parse import quote, unquote
 
 from fieldbook.errors import UsageError
 
@@ -130,7 +130,7 @@ def _options(text: str, kind: str, query: str) -> dict[str, str]:
             raise UsageError(f"Link '{text}': option '{key}' has no value.", f"Write {key}=VALUE.")
         if key in found:
             raise UsageError(f"Link '{text}': option '{key}' is given twice.", "Keep one of the two.")
-        found[key] = unquote(value)
+        found[key] = unquote(value, errors="surrogateescape")
     return found
 
 
@@ -139,6 +139,8 @@ def _file(rest: str, base_dir: Path | None) -> LinkAddress:
         raise UsageError("The link 'file:' names no file.", "Write file:PATH, as in file:receiver.nmea.")
     folder = Path.cwd() if base_dir is None else base_dir
     path = Path(os.path.abspath(folder / rest))  # noqa: PTH100 - removes "..", and leaves symbolic links as named
+    if str(path) != str(path).rstrip():  # the text of an address is read without the spaces around it
+        raise UsageError(f"The name of the file {path} ends in a space.", "Rename it.")
     return LinkAddress(kind="file", text=f"file:{path}", live=False, path=path)
 
 
@@ -198,7 +200,7 @@ def _tcp(text: str, body: str, options: dict[str, str]) -> LinkAddress:  # noqa:
 def _udp(text: str, body: str, options: dict[str, str]) -> LinkAddress:
     host, port, written = _host_port(text, "udp", body)
     sender = options.get("from")
-    tail = "" if sender is None else f"?from={sender}"
+    tail = "" if sender is None else f"?from={quote(sender, safe='[]:', errors='surrogateescape')}"
     if sender is not None:
         sender = sender.removeprefix("[").removesuffix("]")
     canonical = f"udp://{written}:{port}{tail}"

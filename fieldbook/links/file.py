@@ -12,6 +12,7 @@ import bz2
 import codecs
 import gzip
 import itertools
+import struct
 import zipfile
 import zlib
 from collections.abc import Iterator
@@ -27,7 +28,11 @@ LARGEST_BYTES = 2 << 30  # inflated; a day at 20 Hz with all sentences is below 
 LARGEST_RATIO = 200
 RATIO_FROM_BYTES = 16 << 20  # smaller ones cannot do harm, whatever their ratio
 _DAMAGED_REMEDY = "Copy the file from the receiver again, or unpack what can be saved and name that."
-_DAMAGE = (OSError, zlib.error, zipfile.BadZipFile, RuntimeError, NotImplementedError, ValueError)
+_DAMAGE = (
+    *(OSError, zlib.error, zipfile.BadZipFile, struct.error, RuntimeError, NotImplementedError, ValueError),
+    *(ArithmeticError, LookupError, AssertionError, MemoryError),
+)
+_ZIP_METHODS = (zipfile.ZIP_STORED, zipfile.ZIP_DEFLATED, zipfile.ZIP_BZIP2)  # LZMA asks for any memory it likes
 
 
 class FileLink:
@@ -116,6 +121,12 @@ class FileLink:
         if members[0].flag_bits & 1:
             raise LinkError(
                 f"The archive {self._path} is encrypted.", "Unpack it and name the log inside.", code="other"
+            )
+        if members[0].compress_type not in _ZIP_METHODS:
+            raise LinkError(
+                f"The archive {self._path} is packed in a way that is not read here.",
+                "Unpack it and name the log inside.",
+                code="other",
             )
         return self._stack.enter_context(archive.open(members[0])), members[0].compress_size
 

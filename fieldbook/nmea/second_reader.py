@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Iterator
-from decimal import ROUND_HALF_EVEN, Decimal, InvalidOperation
+from decimal import ROUND_HALF_EVEN, Context, Decimal, InvalidOperation, localcontext
 from typing import Any, NamedTuple
 
 _LONGEST = 256
@@ -18,6 +18,9 @@ _CANDIDATE = re.compile(rb"\$([A-Z]{2}(?:GGA|GNS),[ -#%-)+-~]*\*[0-9A-Fa-f]{2})"
 _FOOT_M = Decimal("0.3048")
 _QUALITY = {"A": 1, "D": 2, "E": 6, "F": 5, "M": 7, "N": 0, "P": 3, "R": 4, "S": 8}
 _BEST_FIRST = "RFPDAEMSN"
+_DIGITS = frozenset("+-.0123456789")  # NMEA knows no exponent, no `_` and no `nan`; Decimal does
+_MOST_BEFORE_POINT = 9  # more is no length and no angle
+_EXACT = Context(prec=2 * _LONGEST)  # no field is longer, so nothing is rounded but where it is meant
 
 
 class SecondReading(NamedTuple):
@@ -46,7 +49,8 @@ def second_readings(received: Iterable[bytes]) -> Iterator[SecondReading]:
             message = pynmea2.parse(text, check=True)
         except pynmea2.ParseError:
             continue
-        reading = _reading(message)
+        with localcontext(_EXACT):
+            reading = _reading(message)
         if reading is not None:
             yield reading
 
@@ -88,11 +92,13 @@ def _reading(message: Any) -> SecondReading | None:
 
 
 def _number(text: str) -> Decimal | None:
+    if not _DIGITS.issuperset(text):
+        return None
     try:
         value = Decimal(text)
     except InvalidOperation:
         return None
-    return value if value.is_finite() else None
+    return value if value.adjusted() < _MOST_BEFORE_POINT else None
 
 
 def _scaled(value: Decimal, places: int) -> int:

@@ -202,7 +202,7 @@ def read_record(path: Path) -> GeoidRecord:
             f"Write {path.name} beside it, with name, kind, frame, u_m and source.",
             code="geoid_record",
         ) from error
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
+    except (ValueError, RecursionError) as error:  # not text, no TOML, nested too deeply, an endless number
         raise _bad_record(path, str(error)) from error
     return _record(path, tree)
 

@@ -7,7 +7,6 @@ Whether a frame code may be used at all is the gateway's question (`reduce.frame
 
 from __future__ import annotations
 
-import tomllib
 from decimal import Decimal
 from pathlib import Path
 from typing import Any
@@ -17,6 +16,7 @@ from fieldbook.model import session as model
 from fieldbook.model.canonical import Tree, normalised
 from fieldbook.settings.schema import REQUIRED, TABLES, TOP_LEVEL
 from fieldbook.settings.toml_lines import line_of
+from fieldbook.settings.toml_text import BadToml, toml_tree
 from fieldbook.settings.values import BadValue, checked, nearest
 
 MAX_BYTES = 1 << 20  # a session file is a page of text; a megabyte is a mistake or an attack
@@ -50,10 +50,10 @@ def load_session(path: Path) -> model.Session:
         ) from None
     try:
         text = data.decode("utf-8-sig")
-        tree = tomllib.loads(text, parse_float=Decimal)
+        tree = toml_tree(text)
     except UnicodeDecodeError:
         raise UsageError(f"{path} is no text file.", "Name the session's TOML file.") from None
-    except tomllib.TOMLDecodeError as problem:
+    except BadToml as problem:
         raise UsageError(f"{path} is no valid TOML: {problem}.", "Correct that line.") from None
     return _build(tree, _Where(path.name, text), stored=False)
 

@@ -17,14 +17,13 @@ computer must make the same of the same book.
 
 from __future__ import annotations
 
-import tomllib
-from decimal import Decimal
 from pathlib import Path
 from typing import Any
 
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree, normalised
 from fieldbook.settings.toml_lines import line_of
+from fieldbook.settings.toml_text import BadToml, toml_tree
 from fieldbook.settings.values import BadValue, checked, nearest
 
 FILE_NAME = "fieldbook.toml"
@@ -61,7 +60,7 @@ def user_classes(path: Path | None = None) -> dict[str, Tree]:
         if path.stat().st_size > MAX_BYTES:
             raise UsageError(f"{path} is larger than 1 MB and no settings file.", "Look at it, or move it away.")
         text = path.read_bytes().decode("utf-8-sig")
-        raw = tomllib.loads(text, parse_float=Decimal)
+        raw = toml_tree(text)
     except OSError as problem:
         raise UsageError(
             f"The user's settings {path} cannot be read: {problem.strerror or problem}.",
@@ -69,7 +68,7 @@ def user_classes(path: Path | None = None) -> dict[str, Tree]:
         ) from None
     except UnicodeDecodeError:
         raise UsageError(f"{path} is no text file.", "Write it anew, or move it away.") from None
-    except tomllib.TOMLDecodeError as problem:
+    except BadToml as problem:
         raise UsageError(f"{path} is no valid TOML: {problem}.", "Correct that line.") from None
     for name, value in raw.items():
         if name != "class":

@@ -14,6 +14,9 @@ from typing import Any
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import decimal_text
 
+LARGEST_INTEGER = 10**9
+MOST_DIGITS = 40  # of a number; written out, 1e999999 would be a megabyte
+
 
 class BadValue(ValueError):
     """A value that is not of its kind; the caller adds where it stands."""
@@ -39,6 +42,8 @@ def number_text(value: Any) -> str:
         raise BadValue(f"needs a number, not {_shown(value)}") from None
     if not number.is_finite():
         raise BadValue("needs a finite number")
+    if abs(number.adjusted()) > MOST_DIGITS or len(number.as_tuple().digits) > MOST_DIGITS:
+        raise BadValue(f"needs a number of a sensible size, of at most {MOST_DIGITS} digits")
     return decimal_text(number)
 
 
@@ -59,7 +64,10 @@ def checked(kind: str, value: Any, *, stored: bool) -> Any:
 
 
 def _shown(value: Any) -> str:
-    text = f'"{value}"' if isinstance(value, str) else str(value)
+    try:
+        text = f'"{value}"' if isinstance(value, str) else str(value)
+    except (ValueError, RecursionError):  # Python writes no integer of more than some thousand digits
+        return "that"
     return text if len(text) <= 60 else text[:57] + "..."
 
 
@@ -94,12 +102,14 @@ def _positive(value: Any, stored: bool) -> str:
 
 
 def _integer(value: Any, stored: bool) -> int:
-    if stored and isinstance(value, str) and value.isascii() and value.isdigit():
+    if stored and isinstance(value, str) and value.isascii() and value.isdigit() and len(value) <= MOST_DIGITS:
         value = int(value)
     if isinstance(value, bool) or not isinstance(value, int):
         raise BadValue(f"needs a whole number, not {_shown(value)}")
     if value < 1:
-        raise BadValue(f"needs a whole number of at least 1, not {value}")
+        raise BadValue(f"needs a whole number of at least 1, not {_shown(value)}")
+    if value > LARGEST_INTEGER:
+        raise BadValue(f"needs a whole number of at most {LARGEST_INTEGER}, not {_shown(value)}")
     return value
 
 

@@ -1,0 +1,133 @@
+"""What fuzzing found once, smallest form first seen; each failed before its repair."""
+
+from __future__ import annotations
+
+import io
+import json
+import zipfile
+from pathlib import Path
+
+import pytest
+
+from fieldbook.certificate.verify_file import verify_certificate
+from fieldbook.commands import assignments
+from fieldbook.errors import LinkError, ReductionError, UsageError
+from fieldbook.links.address import parse_link
+from fieldbook.links.file import FileLink
+from fieldbook.nmea.second_reader import second_readings
+from fieldbook.reduce.geoid import read_record
+from fieldbook.settings.session import load_session, session_from_tree
+from fieldbook.settings.user import user_classes
+
+from .mutations import mend
+
+SAMPLE = Path(__file__).parents[2] / "sample_sessions" / "kestrel-ridge-1" / "session.toml"
+HOSTILE_TOML = {
+    "arrays in arrays": b"x = " + b"[" * 5000,
+    "tables in tables": b"x = " + b"{a=" * 3000,
+    "an integer of 5,000 digits": b"x = " + b"9" * 5000,
+    "an exponent no number has": b"x = 1e99999999999999999999",
+}
+
+
+@pytest.mark.parametrize("text", HOSTILE_TOML.values(), ids=HOSTILE_TOML)
+def test_hostile_toml_is_one_clear_error(tmp_path: Path, text: bytes) -> None:
+    path = tmp_path / "hostile.toml"
+    path.write_bytes(text)
+    with pytest.raises(UsageError):
+        load_session(path)
+    with pytest.raises(UsageError):
+        user_classes(path)
+
+
+@pytest.mark.parametrize("text", HOSTILE_TOML.values(), ids=HOSTILE_TOML)
+def test_hostile_toml_of_the_command_line_and_of_a_geoid_record(tmp_path: Path, text: bytes) -> None:
+    with pytest.raises(UsageError):
+        assignments.in_table("setup", ["height=" + text.decode().removeprefix("x = ")])
+    path = tmp_path / "grid.toml"
+    path.write_bytes(text)
+    with pytest.raises(ReductionError):
+        read_record(path)
+
+
+@pytest.mark.parametrize("number", [b"1e999999", b"1e-999999", b"0e999999", b"1e400", b"0." + b"1" * 4000])
+def test_a_number_of_a_session_has_a_size_a_person_would_write(tmp_path: Path, number: bytes) -> None:
+    """Written out, 1e999999 is a megabyte; 1e400 is no float."""
+    path = tmp_path / "session.toml"
+    text = SAMPLE.read_bytes()
+    line = next(one for one in text.splitlines() if one.startswith(b"horizontal_95_m"))
+    path.write_bytes(text.replace(line, b"horizontal_95_m = " + number))
+    with pytest.raises(UsageError, match="horizontal_95_m"):
+        load_session(path)
+
+
+def test_huge_whole_numbers_of_a_session(tmp_path: Path) -> None:
+    text = SAMPLE.read_bytes()
+    line = next(one for one in text.splitlines() if one.startswith(b"occupations"))
+    path = tmp_path / "session.toml"
+    path.write_bytes(text.replace(line, b"occupations = 0x" + b"f" * 5000))
+    with pytest.raises(UsageError, match="occupations"):
+        load_session(path)
+    line = next(one for one in text.splitlines() if one.startswith(b"accept_quality"))
+    path.write_bytes(text.replace(line, b"accept_quality = [0x" + b"f" * 5000 + b"]"))
+    with pytest.raises(UsageError, match="accept_quality"):
+        load_session(path)
+    tree = load_session(SAMPLE).tree
+    stored = {**tree, "requirement": {**tree["requirement"], "occupations": "9" * 5000}}
+    with pytest.raises(UsageError, match="occupations"):
+        session_from_tree(json.loads(json.dumps(stored)))
+
+
+@pytest.mark.parametrize("field", ["9" * 40, "1E9999999", "1e5", "1_0", "nan", "-inf", "1" * 38 + ".5"])
+def test_the_second_reader_leaves_out_numbers_that_nmea_does_not_know(field: str) -> None:
+    gga = f"$GNGGA,011000.00,{field},S,{field},E,4,12,0.7,{field},M,{field},M,1.0,0042*00\r\n".encode()
+    (reading,) = second_readings([mend(gga)])
+    assert reading.latitude_e8min is None
+    assert reading.longitude_e8min is None
+    assert reading.altitude_e5m is None
+    assert reading.separation_e5m is None
+
+
+def _damaged_zip(method: int) -> bytes:
+    file = io.BytesIO()
+    with zipfile.ZipFile(file, "w", method) as archive:
+        archive.writestr("log.nmea", b"$GNGGA,011000.00*00\r\n" * 200)
+    data = bytearray(file.getvalue())
+    data[50:60] = bytes(10)
+    return bytes(data)
+
+
+@pytest.mark.parametrize("method", [zipfile.ZIP_DEFLATED, zipfile.ZIP_BZIP2, zipfile.ZIP_LZMA])
+def test_a_damaged_archive_is_a_link_error(tmp_path: Path, method: int) -> None:
+    path = tmp_path / "log.zip"
+    path.write_bytes(_damaged_zip(method))
+    link = FileLink(parse_link(f"file:{path}"))
+    with pytest.raises(LinkError):
+        link.open()
+    link.close()
+
+
+@pytest.mark.parametrize("text", ["udp://h:1?from=a%2541", "udp://h:1?from=a%26b", "file:a /."])
+def test_the_canonical_text_of_an_address_is_the_same_address(text: str) -> None:
+    try:
+        address = parse_link(text, Path("/here"))
+    except UsageError:
+        return
+    assert parse_link(address.text, Path("/there")) == address
+
+
+def test_a_pdf_whose_attachments_cannot_be_read(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """pypdf raises its own kind of error when attachments are looked up, not only when the file is opened."""
+    import pypdf
+    from pypdf.errors import PdfReadError
+
+    def broken(_self: object) -> object:
+        raise PdfReadError("damaged name tree")
+
+    monkeypatch.setattr(pypdf.PdfReader, "attachments", property(broken))
+    monkeypatch.setattr(pypdf.PdfReader, "__init__", lambda *_arguments: None)
+    path = tmp_path / "certificate.pdf"
+    path.write_bytes(b"%PDF-1.7\n")
+    ((holds, text),) = verify_certificate(path)
+    assert not holds
+    assert "not readable" in text
