@@ -1,7 +1,8 @@
 """`observe`: the same recorder, in the process that was called, from nothing to the end of an occupation.
 
 The order matters. A book that is there is locked first, so that 'another recorder' is said before anything else; a book
-that is not there is made last, when the session, the file or the port have proved good: an error leaves no empty book.
+that is not there is made last, when the session, the file or the port have proved good: an error leaves no empty book. If
+another recorder has made it by then, everything is judged again under the lock.
 """
 
 from __future__ import annotations
@@ -14,7 +15,7 @@ from pathlib import Path
 from fieldbook.book.lock import RecorderLock
 from fieldbook.book.store import Book
 from fieldbook.clock import Clock
-from fieldbook.errors import UsageError
+from fieldbook.errors import BookError, UsageError
 from fieldbook.links import open_link
 from fieldbook.links.address import LinkAddress
 from fieldbook.links.base import Link
@@ -50,15 +51,17 @@ def observe(
         BookError: not a book, newer, or another recorder holds it.
     """
     lock = RecorderLock(book_path)
-    if book_path.exists():
-        Book.open(book_path, clock=clock).close()  # what is no book gets no lock file beside it either
-        lock.acquire()
+    was_there = book_path.exists()
+    if was_there:
+        _lock_book(lock, book_path, clock)
     elif not book_path.absolute().parent.is_dir():
         raise UsageError(f"There is no folder {book_path.absolute().parent}.", "Make it first, or correct the path.")
     try:
         plan, link = _checked(book_path, wish, clock)
         try:
             lock.acquire()
+            if not was_there and book_path.exists():
+                plan = _planned(book_path, wish, clock)  # another recorder made it while this one was looking
             number = _entered(book_path, plan, clock)
         except BaseException:
             if link is not None:
@@ -79,19 +82,35 @@ def observe(
         lock.release()
 
 
+def _lock_book(lock: RecorderLock, book_path: Path, clock: Clock) -> None:
+    """Lock a book that is there, and bring one of an older version up to date."""
+    try:
+        Book.open(book_path, clock=clock).close()  # what is no book gets no lock file beside it either
+    except BookError as error:
+        if error.code != "older":
+            raise
+        lock.acquire()  # first: an older program may be recording into it
+        try:
+            Book.open(book_path, clock=clock, write=True).close()
+        except BaseException:
+            lock.release()
+            raise
+    lock.acquire()
+
+
 def _checked(book_path: Path, wish: Wish, clock: Clock) -> tuple[Plan, Link | None]:
     """The plan, and for a live link the link itself, opened."""
-    if book_path.exists():
-        book = Book.open(book_path, clock=clock, write=False)
-        try:
-            plan = plan_occupation(book, wish.session, wish.address, new=wish.new)
-        finally:
-            book.close()
-    else:
-        plan = plan_occupation(None, wish.session, wish.address, new=wish.new)
+    plan = _planned(book_path, wish, clock)
     if not wish.address.live:
         return plan, None
     return plan, open_link(wish.address, clock=clock)
+
+
+def _planned(book_path: Path, wish: Wish, clock: Clock) -> Plan:
+    if not book_path.exists():
+        return plan_occupation(None, wish.session, wish.address, new=wish.new)
+    with Book.open(book_path, clock=clock) as book:
+        return plan_occupation(book, wish.session, wish.address, new=wish.new)
 
 
 def _entered(book_path: Path, plan: Plan, clock: Clock) -> int:
