@@ -35,9 +35,10 @@ PARSER_ERRORS = (
     struct.error,
     zlib.error,
 )
-_FACTS = re.compile(r'<script type="application/json" id="facts">(.*?)</script>', re.DOTALL)
-_HIDDEN = re.compile(r"<(script|style|title)\b.*?</\1>", re.DOTALL)
-_TAG = re.compile(r"<[^>]*>")
+# Each is searched for in time that grows with the size of the text alone, whatever the text.
+_FACTS = '<script type="application/json" id="facts">'
+_HIDDEN = re.compile(r"<(script|style|title)\b")
+_TAG = re.compile(r"<[^<>]*>")
 
 
 class Unreadable(Exception):
@@ -69,10 +70,13 @@ def _plain(data: bytes) -> str:
 
 
 def _embedded(data: bytes) -> str:
-    found = _FACTS.findall(data.decode("utf-8"))
-    if len(found) != 1:
-        raise Unreadable("it holds no facts of a certificate" if not found else "it holds more than one set of facts")
-    return str(found[0])
+    _, *found = data.decode("utf-8").split(_FACTS, 2)
+    if len(found) > 1:
+        raise Unreadable("it holds more than one set of facts")
+    facts, end, _ = found[0].partition("</script>") if found else ("", "", "")
+    if not end:
+        raise Unreadable("it holds no facts of a certificate")
+    return facts
 
 
 def _attached(data: bytes) -> str:
@@ -111,8 +115,26 @@ def text_lines(data: bytes, extension: str) -> list[str]:
         except PyPdfError as error:
             raise Unreadable(f"its pages are damaged ({type(error).__name__})") from error
     elif extension == "html":
-        text = html.unescape(_TAG.sub("\n", _HIDDEN.sub("", data.decode("utf-8", "replace"))))
+        text = html.unescape(_TAG.sub("\n", _without_hidden(data.decode("utf-8", "replace"))))
     else:
         text = data.decode("utf-8", "replace")
     lines = (" ".join(line.split()) for line in text.splitlines())
     return [line for line in lines if line]
+
+
+def _without_hidden(text: str) -> str:
+    """HTML without the elements that a page does not show, from each opening tag to its closing one."""
+    kept: list[str] = []
+    unclosed: set[str] = set()
+    position = 0
+    for match in _HIDDEN.finditer(text):
+        name = match[1]
+        if match.start() < position or name in unclosed:
+            continue
+        end = text.find(f"</{name}>", match.end())
+        if end < 0:
+            unclosed.add(name)
+            continue
+        kept.append(text[position : match.start()])
+        position = end + len(name) + 3
+    return "".join([*kept, text[position:]])

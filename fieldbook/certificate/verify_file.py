@@ -14,12 +14,13 @@ from pathlib import Path
 from fieldbook.certificate.identity import changed_parts, facts_digest
 from fieldbook.certificate.issue import RENDERERS, CertificateBook, program_versions
 from fieldbook.certificate.printable import printable
-from fieldbook.certificate.read_file import PARSER_ERRORS, Unreadable, facts_of, text_lines
+from fieldbook.certificate.read_file import LIMIT_BYTES, PARSER_ERRORS, Unreadable, facts_of, text_lines
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.entry import Entry
 
 Line = tuple[bool, str]
+COMPARED_LINES = 300
 
 
 def verify_certificate(path: Path, book: CertificateBook | None = None) -> list[Line]:
@@ -43,7 +44,12 @@ def verify_certificate(path: Path, book: CertificateBook | None = None) -> list[
 
 
 def _lines(path: Path, extension: str, book: CertificateBook | None) -> list[Line]:
-    data = path.read_bytes()
+    try:
+        if path.stat().st_size > LIMIT_BYTES:
+            return [(False, f"{path.name} is larger than {LIMIT_BYTES // 1_000_000} MB and no certificate.")]
+        data = path.read_bytes()
+    except OSError as error:
+        raise UsageError(f"{path} cannot be read: {error.strerror or error}.", "Check its permissions.") from None
     try:
         facts = facts_of(data, extension)
         lines = [_digest_line(facts), *_page_lines(data, facts, extension)]
@@ -112,6 +118,10 @@ def _printed(tree: object, *, inside: bool = False) -> list[str]:
 
 def _difference(expected: list[str], found: list[str]) -> str:
     """The first differing lines, in words."""
+    same = next((n for n, (one, other) in enumerate(zip(expected, found, strict=False)) if one != other), None)
+    start = min(len(expected), len(found)) if same is None else same
+    # lines far behind the first difference are not compared: a hostile file can have millions of them
+    expected, found = expected[start : start + COMPARED_LINES], found[start : start + COMPARED_LINES]
     matcher = difflib.SequenceMatcher(a=expected, b=found, autojunk=False)
     said = []
     for kind, a, b, c, d in matcher.get_opcodes():

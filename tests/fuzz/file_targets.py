@@ -8,12 +8,15 @@ import io
 import json
 import zipfile
 import zlib
+from contextlib import suppress
 from functools import cache
 from pathlib import Path
 from typing import Any
 
+from fieldbook.certificate.as_pdf import ATTACHMENT
 from fieldbook.certificate.identity import sealed
 from fieldbook.certificate.issue import RENDERERS
+from fieldbook.certificate.read_file import PARSER_ERRORS, Unreadable, facts_of, text_lines
 from fieldbook.certificate.verify_file import verify_certificate
 from fieldbook.errors import LinkError, UsageError
 from fieldbook.links.address import parse_link
@@ -82,9 +85,9 @@ def _forged(script: bytes) -> Any:
 def certificate(data: bytes) -> None:
     """Lines of text that cannot steer a terminal, or a UsageError."""
     choice = data[:1].ljust(1, b"\0")[0]
-    ending = _ENDINGS[choice % 3] if choice < 240 else "pdf"
-    if choice % 3 == 2 and choice < 240 and choice & 56:
-        ending = "json"  # setting a page costs a tenth of a second: seldom
+    ending = _ENDINGS[choice % 2]
+    if choice & 63 == 63:
+        ending = "pdf"  # setting and reading pages takes seconds: seldom
     path = workshop() / f"certificate.{ending}"
     if choice & 64:
         facts = _forged(data[1:])
@@ -107,6 +110,28 @@ def certificate(data: bytes) -> None:
         assert text.isprintable(), "a line must not steer a terminal"
     if not choice & 192 and content != _certificates()[ending] and ending != "pdf":
         assert not all(holds for holds, _ in lines), "a changed certificate holds"
+
+
+def certificate_pdf(data: bytes) -> None:
+    """Facts out of a PDF, or Unreadable; what a damaged one makes pypdf raise is known."""
+    choice = data[:1].ljust(1, b"\0")[0]
+    content = data[1:] if choice & 128 else edited(_small_pdf() if choice & 64 else _certificates()["pdf"], data[1:])
+    for read in (facts_of, text_lines) if choice & 65 == 65 else (facts_of,):
+        with suppress(Unreadable, *(PARSER_ERRORS if read is text_lines else ())):  # as `verify_certificate` does
+            read(content, "pdf")
+
+
+@cache
+def _small_pdf() -> bytes:
+    """One page with an attachment, nothing compressed: every byte of it means something."""
+    import pypdf
+
+    writer = pypdf.PdfWriter()
+    writer.add_blank_page(100, 100)
+    writer.add_attachment(ATTACHMENT, b'{"schema":"fieldbook.certificate/1"}')
+    file = io.BytesIO()
+    writer.write(file)
+    return file.getvalue()
 
 
 def _zip(method: int, names: tuple[str, ...] = ("log.nmea",)) -> bytes:
@@ -163,13 +188,15 @@ def packed_log(data: bytes) -> None:
 
 
 def _certificate_seeds() -> list[bytes]:
-    forged = [bytes([64]) + bytes([0, n * 9, kind, 3]) + b"<b>" for n, kind in enumerate((0, 1, 2, 3, 4, 5, 6))]
-    plain = [bytes([choice]) + script_of((4000, what, 65, 9)) for choice in (0, 1, 2) for what in (0, 3, 5, 6, 7)]
-    html = (
-        bytes([129 if 129 % 3 == 1 else 130])
-        + b'<script type="application/json" id="facts">{"schema":"fieldbook.certificate/1"}</script>'
-    )
-    return [*forged, *plain, html, b"\x00", b"\x01", b"\x02", b"\xf0%PDF-1.7\n"]
+    forged = [bytes([64 + n % 2, 0, n * 9, kind, 3]) + b"<b>" for n, kind in enumerate((0, 1, 2, 3, 4, 5, 6))]
+    plain = [bytes([choice]) + script_of((4000, what, 65, 9)) for choice in (0, 1) for what in (0, 3, 5, 6, 7)]
+    page = b'\x81<script type="application/json" id="facts">{"schema":"fieldbook.certificate/1"}</script>'
+    return [*forged, *plain, page, b'\x80{"schema":"fieldbook.certificate/1","mark":{}}', b"\x00", b"\x01"]
+
+
+def _pdf_seeds() -> list[bytes]:
+    edits = [bytes([choice]) + script_of((300, what, 65, 9)) for choice in (0, 64, 65) for what in (0, 3, 5, 6, 7)]
+    return [*edits, b"\x00", b"\x40", b"\x80" + _small_pdf()]
 
 
 def _log_seeds() -> list[bytes]:
@@ -199,6 +226,7 @@ _PDF = (
 )
 _HTML = (b"<script>", b"</script>", b"<!--", b"<", b"&#0;", b"</title>", b"\x1b[2J", "\u202e".encode())
 TARGETS = [
-    Target("certificate", "certificate file", certificate, lambda: _certificate_seeds() + kept("certificate"), smoke=60, words=(*_PDF, *_HTML), most_bytes=400),
+    Target("certificate", "certificate file", certificate, lambda: _certificate_seeds() + kept("certificate"), smoke=40, words=_HTML, most_bytes=400),
+    Target("certificate_pdf", "facts of a PDF", certificate_pdf, lambda: _pdf_seeds() + kept("certificate_pdf"), smoke=100, words=_PDF, most_bytes=2000),
     Target("packed_log", "packed log", packed_log, lambda: _log_seeds() + kept("packed_log"), words=(b"PK\x03\x04", b"PK\x05\x06", b"\x1f\x8b\x08", b"BZh9", b"\xff\xfe"), most_bytes=2000),
 ]  # fmt: skip

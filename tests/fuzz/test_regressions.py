@@ -6,9 +6,12 @@ import io
 import json
 import zipfile
 from pathlib import Path
+from time import perf_counter
 
 import pytest
 
+from fieldbook.certificate.identity import sealed
+from fieldbook.certificate.issue import RENDERERS
 from fieldbook.certificate.verify_file import verify_certificate
 from fieldbook.commands import assignments
 from fieldbook.errors import LinkError, ReductionError, UsageError
@@ -22,6 +25,7 @@ from fieldbook.settings.user import user_classes
 from .mutations import mend
 
 SAMPLE = Path(__file__).parents[2] / "sample_sessions" / "kestrel-ridge-1" / "session.toml"
+GOLDEN = Path(__file__).parents[1] / "golden" / "certificate_kr07.json"
 HOSTILE_TOML = {
     "arrays in arrays": b"x = " + b"[" * 5000,
     "tables in tables": b"x = " + b"{a=" * 3000,
@@ -131,3 +135,39 @@ def test_a_pdf_whose_attachments_cannot_be_read(tmp_path: Path, monkeypatch: pyt
     ((holds, text),) = verify_certificate(path)
     assert not holds
     assert "not readable" in text
+
+
+_FACTS = b'<script type="application/json" id="facts">'
+
+
+@pytest.mark.parametrize("piece", [_FACTS, b"<script ", b"<title>", b"<", b"</", b"<b>x\n"])
+def test_a_hostile_page_is_read_in_linear_time(tmp_path: Path, piece: bytes) -> None:
+    """Four million bytes; what grows with the square of the size would take an hour."""
+    path = tmp_path / "certificate.html"
+    sound = RENDERERS["html"](sealed(json.loads(GOLDEN.read_bytes())))
+    path.write_bytes(sound + piece * (4_000_000 // len(piece)))
+    start = perf_counter()
+    lines = verify_certificate(path)
+    assert perf_counter() - start < 15
+    assert not all(holds for holds, _ in lines)
+
+
+def test_a_file_larger_than_any_certificate_is_not_read(tmp_path: Path) -> None:
+    path = tmp_path / "certificate.json"
+    with path.open("wb") as file:
+        file.truncate(1 << 40)  # a terabyte of nothing
+    ((holds, text),) = verify_certificate(path)
+    assert not holds
+    assert "larger" in text
+
+
+def test_a_certificate_that_may_not_be_read(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    path = tmp_path / "certificate.json"
+    path.write_bytes(b"{}")
+
+    def refused(_path: Path) -> bytes:
+        raise PermissionError(13, "Permission denied")
+
+    monkeypatch.setattr(Path, "read_bytes", refused)
+    with pytest.raises(UsageError, match="cannot be read"):
+        verify_certificate(path)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from functools import cache
 from pathlib import Path
 from typing import Any
 
@@ -87,13 +88,18 @@ def session_tree(data: bytes) -> None:
     _stored_again(session.tree)
 
 
+@cache
+def _sample_tree() -> dict[str, Any]:
+    return load_session(_SAMPLES[0]).tree
+
+
 def user_settings(data: bytes) -> None:
     """Classes, or a UsageError; put into a session they make a session."""
     path = workshop() / "fieldbook.toml"
     path.write_bytes(data)
-    session = load_session(_SAMPLES[0])
-    receiver = {key: value for key, value in session.tree["receiver"].items() if key != "class"}
-    tree = {**session.tree, "receiver": receiver}
+    sample = _sample_tree()
+    receiver = {key: value for key, value in sample["receiver"].items() if key != "class"}
+    tree = {**sample, "receiver": receiver}
     try:
         classes = user_classes(path)
         for name in list(classes)[:3]:
