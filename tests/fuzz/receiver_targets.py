@@ -76,7 +76,7 @@ def _seeds() -> list[bytes]:
 
 
 def _pieces(data: bytes, chance: random.Random) -> Iterator[bytes]:
-    start, longest = 0, chance.choice((1, 3, 40, 400, 5000))
+    start, longest = 0, chance.choice((1 if len(data) < 400 else 20, 3 if len(data) < 1000 else 40, 40, 400, 5000))
     while start < len(data):
         size = chance.randint(0 if longest > 1 else 1, longest)
         yield data[start : start + size]
@@ -86,7 +86,7 @@ def _pieces(data: bytes, chance: random.Random) -> Iterator[bytes]:
 def _split(data: bytes) -> tuple[random.Random, bytes]:
     """Four bytes choose cuts, times and options; the rest is the stream."""
     chance = random.Random(data[:4])
-    return chance, data[4:] * chance.choice((*[1] * 15, 6))  # seldom beyond the framer's slices of 4096
+    return chance, data[4:] * chance.choice((*[1] * 30, 6))  # seldom beyond the framer's slices of 4096
 
 
 def framer(data: bytes) -> None:
@@ -221,7 +221,7 @@ TARGETS = [
         "items to epochs",
         decoder,
         lambda: _seeds() + kept("decoder"),
-        smoke=800,
+        smoke=600,
         words=_WORDS,
         most_bytes=1200,
     ),
