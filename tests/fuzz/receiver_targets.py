@@ -68,7 +68,8 @@ def _sentences() -> list[bytes]:
         b"$GNGGA,235959.90,0000.0,N,00000.0,E,1,4,,9,f,1,M,,*00\r\n$GNGBS,011001.00,0.1,0.1,0.2,,,,*00\r\n"
         b"\\s:rover,c:1*00\\$GNRMC,000000.00,A,3416.4,S,14603.1,E,0.0,,311229,,,R,V*00\r\n"
     )
-    return [b"".join(lines[:8]), b"".join(lines[8:20]), b"".join(lines[20:34]), made]
+    long = [mend(b"$PXYZ," + b"7" * size + b"*00\r\n") for size in (246, 247, 248, 249, 190, 230)]  # about the limit
+    return [b"".join(lines[:8]), b"".join(lines[8:20]), b"".join(lines[20:34]), made, b"".join(long)]
 
 
 def _seeds() -> list[bytes]:

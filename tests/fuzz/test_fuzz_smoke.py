@@ -9,7 +9,9 @@ from time import perf_counter
 import pytest
 
 from fieldbook.model.item import Item, ItemKind
+from fieldbook.nmea import framing
 from fieldbook.nmea.decoder import Decoder, DecoderOptions
+from fieldbook.nmea.framing import Framer
 
 from .mutations import mutate
 from .target import CORPUS
@@ -83,3 +85,39 @@ def test_ten_megabytes_of_noise_in_bounded_memory_and_linear_time(kind: str) -> 
     parts = ("good_bytes", "damaged_bytes", "junk_bytes", "tag_bytes", "line_end_bytes", "pending_bytes")
     assert counters["received_bytes"] == sum(counters[part] for part in parts)
     assert counters["received_bytes"] == sum(map(len, pieces)) + sum(map(len, pieces[: half // 2]))
+
+
+def _fails(name: str, times: int = 400) -> bool:
+    target = TARGETS[name]
+    seeds = target.seeds()
+    chance = random.Random(name)
+    inputs = [*seeds, *(mutate(chance.choice(seeds), chance, target.words, seeds, 700) for _ in range(times))]
+    for data in inputs:
+        try:
+            target.run(data)
+        except Exception:
+            return True
+    return False
+
+
+def test_targets_notice_planted_faults(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A target that cannot fail would be worth nothing."""
+    with monkeypatch.context() as planted:  # a line end too few
+        planted.setattr(Framer, "_outside", lambda self, junk: setattr(self, "junk_bytes", self.junk_bytes + 1))
+        assert _fails("framer")
+        assert _fails("decoder")
+    with monkeypatch.context() as planted:
+        planted.setattr(framing, "_LONGEST_TEXT", 200)  # a limit that holds in one of two places
+        assert _fails("framer")
+    with monkeypatch.context() as planted:
+        planted.setattr("fieldbook.settings.session.MAX_BYTES", 10)
+        assert not _fails("session_file", 20)  # a refusal is no fault
+    with monkeypatch.context() as planted:
+        planted.setattr("fieldbook.settings.session._conditions", lambda tree, where: tree["no such"])
+        assert _fails("session_file", 20)
+    with monkeypatch.context() as planted:
+        planted.setattr("fieldbook.book.audit.audit_raw", lambda audit: None)  # an audit that looks away
+        assert _fails("book_values", 300)
+    with monkeypatch.context() as planted:
+        planted.setattr("fieldbook.links.file._DAMAGE", (OSError,))
+        assert _fails("packed_log")
