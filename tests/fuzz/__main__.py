@@ -78,7 +78,7 @@ def main() -> int:
         print(f"No target {unknown[0]}. There are: {', '.join(TARGETS)}.")
         return 2
     seconds = max(1, int(asked.minutes * 60 * asked.jobs / len(names)))
-    how = "coverage guided (atheris)" if guided else "not coverage guided (atheris is not installed)"
+    how = "coverage guided (atheris)" if guided else "not coverage guided"
     print(f"{len(names)} targets, {seconds} s each, {asked.jobs} at a time, seed {seed}, {how}", flush=True)
     with tempfile.TemporaryDirectory(prefix="fieldbook-fuzz-") as scratch, ThreadPoolExecutor(asked.jobs) as pool:
         base = asked.keep or Path(scratch)
