@@ -20,6 +20,7 @@ from fieldbook.clock import Clock, SystemClock
 from fieldbook.screens.actions import ACTIONS
 from fieldbook.screens.book_screen import BookScreen
 from fieldbook.screens.bridge import Bridge
+from fieldbook.screens.terminal_watch import leave_with_the_terminal
 from fieldbook.screens.themes import BY_NAME, PALETTES, textual_theme
 
 
@@ -86,4 +87,8 @@ def run(book_path: Path) -> int:
     """
     bridge = Bridge(Path(book_path))
     app = FieldbookApp(bridge, theme=first_theme())
-    return int(app.run(mouse=False) or 0)
+    watch = leave_with_the_terminal()
+    try:
+        return int(app.run(mouse=False) or 0)
+    finally:
+        watch.set()

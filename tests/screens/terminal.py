@@ -92,12 +92,18 @@ class Terminal:
             self._read(0.1)
         return self.child.returncode
 
+    def vanish(self) -> None:
+        """The window is closed: the terminal's other side is gone, the program goes on."""
+        os.close(self._master)
+        self._master = -1
+
     def close(self) -> None:
         """End the child, close the terminal."""
         if self.child.poll() is None:
             self.child.kill()
         self.child.wait()
-        os.close(self._master)
+        if self._master >= 0:
+            os.close(self._master)
 
 
 def python() -> str:

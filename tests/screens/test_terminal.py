@@ -219,3 +219,14 @@ def test_killed_screen_leaves_the_recorder_and_another_screen_attaches(book: Pat
     finally:
         second.close()
     assert held(book)
+
+
+def test_a_closed_terminal_ends_the_screen(book: Path) -> None:
+    """No hang-up signal reaches this child: it has no controlling terminal. It must leave all the same."""
+    made = Terminal([python(), "-m", "fieldbook", "open", str(book)])
+    try:
+        made.see("FIELD BOOK")
+        made.vanish()
+        assert made.child.wait(timeout=30) == 0
+    finally:
+        made.close()
