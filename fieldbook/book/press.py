@@ -1,16 +1,17 @@
 """Compression of large chunks beside the recording, so that the end of a file need not wait for it.
 
-Recording a file at full speed leaves a second core idle and ends with everything still to be packed. bz2 lets go
-of the interpreter while it works, so two threads compress each large chunk as soon as it is sealed, read their
-result back and compare. Only bytes cross: the threads never see the book. What it did not get to is compressed
+Recording a file at full speed leaves a second core idle and ends with everything still to be packed. The compressor
+lets go of the interpreter while it works, so a thread compresses each large chunk as soon as it is sealed, reads its
+result back and compares. Only bytes cross: the thread never sees the book. What it did not get to is compressed
 when the occupation is packed. Small chunks (a minute of a live link) are not sent here: they compress better
 together.
 """
 
 from __future__ import annotations
 
-import bz2
 from typing import TYPE_CHECKING
+
+from . import lines
 
 if TYPE_CHECKING:
     from concurrent.futures import Future, ThreadPoolExecutor
@@ -20,19 +21,19 @@ MOST_WAITING = 8  # chunks held in memory
 
 
 def press(plain: bytes) -> bytes:
-    """One bz2 stream.
+    """Pieces of `lines`.
 
     Raises:
         ValueError: reading it back gives something else (failing memory).
     """
-    data = bz2.compress(plain, 9)
-    if bz2.decompress(data) != plain:
+    data = lines.pressed(plain)
+    if lines.unpressed(data, len(plain)) != plain:
         raise ValueError("compressed data did not read back as it was; nothing was let go")
     return data
 
 
 class Presser:
-    """Streams of large chunks, made in two threads. `close` waits for the chunks at hand and drops the rest."""
+    """Streams of large chunks, made in a thread. `close` waits for the chunks at hand and drops the rest."""
 
     def __init__(self) -> None:
         self._pool: ThreadPoolExecutor | None = None
@@ -46,7 +47,7 @@ class Presser:
         if self._pool is None:
             from concurrent.futures import ThreadPoolExecutor
 
-            self._pool = ThreadPoolExecutor(max_workers=2, thread_name_prefix="press")
+            self._pool = ThreadPoolExecutor(max_workers=1, thread_name_prefix="press")
         self._streams[sha256] = self._pool.submit(press, plain)
 
     def take(self, sha256: str) -> bytes | None:

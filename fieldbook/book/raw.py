@@ -2,9 +2,9 @@
 
 A burst becomes plain rows of `raw_tail` at once. Sealing moves the tail into one zlib `raw_chunk`, whose SHA-256 over
 the canonical items enters the chain as a `raw` entry in the same transaction; a large piece of a file becomes chunks
-without passing through the tail. At the end of an occupation packing moves chunks into `raw_pack`, several bz2 streams
-of whole chunks behind one another; the hashes of the chunks stay those of the chain. (bz2, not xz: measured on two
-receiver logs 0.44 and 0.55 x gzip -9 at 17 MB/s, against xz's 0.63 and 0.65 at 4 MB/s, or 0.81 at its fastest; packing
+without passing through the tail. At the end of an occupation packing moves chunks into `raw_pack`, several streams of
+whole chunks behind one another, each made by `lines`; the hashes of the chunks stay those of the chain. (Measured on six
+receiver logs: 0.31 to 0.44 x gzip -9 at 75 MB/s; bz2, which packs of older books hold, 0.47 to 0.69 at 18 MB/s. Packing
 belongs to recording a file, which must keep pace with reading it.) Item ids run through the whole book without a gap
 inside a chunk, so that the place of an item in a chunk gives its id.
 
@@ -25,13 +25,15 @@ from dataclasses import dataclass
 from fieldbook.model.canonical import Tree
 from fieldbook.model.item import Item, ItemKind, canonical_items, parse_items
 
+from . import lines
 from .press import LARGE_BYTES, press
 
 CHUNK_BYTES = 512 * 1024  # a chunk is closed at about this size of data
 PACK_BYTES = 8 * 1024 * 1024  # canonical bytes in one pack: bounds memory in writing and in reading
-STREAM_BYTES = 900_000  # small chunks are compressed together up to this size: one block of bz2
+STREAM_BYTES = 900_000  # small chunks are compressed together up to about this size
 MAX_INFLATED_BYTES = 64 * 1024 * 1024  # of one chunk or pack; no writer makes larger ones
-CODEC = "bz2"
+CODEC = "lines-lzma"
+OLDER_CODEC = "bz2"  # read, not written any more
 Row = tuple[int, str, int | None, int | None, bytes]
 
 
@@ -245,11 +247,15 @@ def inflate_pack(codec: str, data: bytes, expected: int) -> bytes:
     """The canonical bytes of a pack.
 
     Raises:
-        ValueError: unknown codec, no bz2 data, not exactly `expected` bytes, or something behind it.
+        ValueError: unknown codec, damaged data, not exactly `expected` bytes, or something behind it.
     """
-    if codec != CODEC:
+    if codec not in (CODEC, OLDER_CODEC):
         raise ValueError(f"its codec is {codec!r:.20}, not '{CODEC}'")
     _check_size(expected)
+    return lines.unpressed(data, expected) if codec == CODEC else _inflate_bz2(data, expected)
+
+
+def _inflate_bz2(data: bytes, expected: int) -> bytes:
     parts: list[bytes] = []
     size = 0
     while data and size <= expected:
@@ -257,14 +263,14 @@ def inflate_pack(codec: str, data: bytes, expected: int) -> bytes:
         try:
             part = worker.decompress(data, expected + 1 - size)
         except OSError as error:
-            raise ValueError(f"its {CODEC} data is damaged ({error})") from error
+            raise ValueError(f"its {OLDER_CODEC} data is damaged ({error})") from error
         parts.append(part)
         size += len(part)
         if not worker.eof:
             break
         data = worker.unused_data
     if size != expected or data:
-        raise ValueError(f"its {CODEC} data does not hold exactly {expected} bytes")
+        raise ValueError(f"its {OLDER_CODEC} data does not hold exactly {expected} bytes")
     return b"".join(parts)
 
 
@@ -322,7 +328,7 @@ def pack_groups(chunks: Sequence[Sealed]) -> Iterator[list[Sealed]]:
 def compress_pack(
     connection: sqlite3.Connection, chunks: Sequence[Sealed], ready: Callable[[Sealed], bytes | None]
 ) -> bytes:
-    """bz2 streams of consecutive chunks. `press` reads each back and compares, before anything is let go.
+    """Streams of consecutive chunks. `press` reads each back and compares, before anything is let go.
 
     `ready` may give the stream of a chunk that was compressed beside the recording; the others are read from
     `raw_chunk` and compared with the SHA-256 of their entry.
