@@ -16,6 +16,7 @@ from __future__ import annotations
 
 import sqlite3
 from collections.abc import Callable
+from datetime import UTC, datetime
 from functools import lru_cache
 from typing import TYPE_CHECKING, Any
 
@@ -234,21 +235,38 @@ def version() -> int:
 def apply(connection: sqlite3.Connection) -> list[tuple[str, str, str]]:
     """Apply what is pending inside the caller's transaction; return the new rows of the migrations table.
 
-    sqlite-utils is imported here only: it takes 0.15 s, and a book that is up to date does not need it.
+    A new book gets its rows here, as sqlite-utils would write them (a test compares): importing that takes 0.15 s, and
+    nothing can be pending in part where there is nothing yet.
     """
+    before = len(applied(connection))
+    if before:
+        _upgrade(connection)
+    else:
+        _begin(connection)
+    connection.execute(f"PRAGMA user_version = {version()}")
+    return applied(connection)[before:]
+
+
+def _begin(connection: sqlite3.Connection) -> None:
+    for statement in BASE:
+        connection.execute(statement)
+    for name, statements in MIGRATIONS:
+        for statement in statements:
+            connection.execute(statement)
+        connection.execute(
+            f"INSERT INTO {MIGRATIONS_TABLE} (migration_set, name, applied_at) VALUES (?, ?, ?)",  # noqa: S608 - a constant
+            (MIGRATION_SET, name, str(datetime.now(UTC))),
+        )
+
+
+def _upgrade(connection: sqlite3.Connection) -> None:
     from sqlite_utils import Database
     from sqlite_utils.migrations import Migrations
 
-    before = len(applied(connection))
-    if not before:
-        for statement in BASE:
-            connection.execute(statement)
     migrations = Migrations(MIGRATION_SET)
     for name, statements in MIGRATIONS:
         migrations(name=name)(_runner(statements))
     migrations.apply(Database(connection))
-    connection.execute(f"PRAGMA user_version = {version()}")
-    return applied(connection)[before:]
 
 
 def _runner(statements: tuple[str, ...]) -> Callable[[Database], None]:
