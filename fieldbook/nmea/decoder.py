@@ -54,6 +54,7 @@ class _Route:
     name: str
     talker: str
     handle: Handler | None
+    keep: Callable[[bytes], None] | None  # for what needs no handling now: it costs less than a handler
     category: str | None
     count: int = 0
 
@@ -80,7 +81,7 @@ class Decoder:
             "ZDA": self._zda,
             "DTM": self._dtm,
             "GSA": self._gsa,
-            "GSV": self._sky.gsv,
+            "GSV": self._gsv,
         }
         self._routes: dict[bytes, _Route] = {}
         self._kinds: dict[tuple[str, str | None], _Route] = {}
@@ -172,20 +173,27 @@ class Decoder:
 
     def _sentences(self, found: list[Plain]) -> None:
         routes = self._routes
+        all_good = self._framer.all_good
         for one in found:
-            if type(one) is Damaged:
-                continue
             text = one[0]
-            if not one[1]:
-                self._without_checksum(text)
-                continue
+            if not all_good:
+                if type(one) is Damaged:
+                    continue
+                if not one[1]:
+                    self._without_checksum(text)
+                    continue
             route = routes.get(text[:7])
             if route is None:
                 route = self._route(text)
             route.count += 1
+            keep = route.keep
+            if keep is not None:
+                keep(text)
+                continue
             handle = route.handle
             if handle is not None:
                 handle(text, route.talker)
+        self._sky.tidy()
 
     def _without_checksum(self, text: bytes) -> None:
         if not self.options.accept_without_checksum:
@@ -212,7 +220,8 @@ class Decoder:
             route = self._kinds.get((name, category))
         if route is None:
             handler = self._handlers.get(kind) if category is None else None
-            route = self._kinds[name, category] = _Route(name, talker, handler, category)
+            keep = self._sky.held.append if handler == self._gsv else None
+            route = self._kinds[name, category] = _Route(name, talker, handler, keep, category)
         if len(address) == _ADDRESS_LENGTH and text[6:7] == b"," and route.name == name != "other":
             self._routes[text[:7]] = route
         return route
@@ -301,6 +310,9 @@ class Decoder:
         if name:
             self._assembler.datum(None if name in WGS84_DATUMS else name)
 
+    def _gsv(self, text: bytes, _talker: str) -> None:
+        self._sky.held.append(text)
+
     def _gsa(self, text: bytes, _talker: str) -> None:
         assembler = self._assembler
         self._sky.gsa(text, assembler.serial)
@@ -353,6 +365,7 @@ class Decoder:
     def counters(self) -> dict[str, int]:
         """Every case and how often it came; cases that never came are left out, byte and frame counters are not."""
         framer = self._framer
+        self._sky.settle()
         found = {
             "received_bytes": framer.received_bytes,
             "good_bytes": framer.good_bytes,

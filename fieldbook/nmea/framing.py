@@ -99,6 +99,7 @@ class Framer:
         self.junk_bytes = 0
         self.tag_bytes = 0
         self.line_end_bytes = 0
+        self.all_good = True  # of the latest feed: nothing damaged, no checksum missing
         self._pending = b""
         self._tail = b""
 
@@ -119,6 +120,7 @@ class Framer:
     def feed_plain(self, data: bytes) -> list[Plain]:
         """The same for the decoder: a whole frame may be a bare (text, checksum), which costs less to make."""
         self.received_bytes += len(data)
+        self.all_good = True
         found: list[Plain] = []
         if len(data) <= _SLICE:
             self._feed(data, found)
@@ -220,6 +222,7 @@ class Framer:
                 return
             tag = self._take_tag() if self._tail else None
             if kind == NO_CHECKSUM:
+                self.all_good = False
                 self.counts[NO_CHECKSUM] += 1
                 self.damaged_bytes += end - start
                 found.append(Frame(data[start:end], b"", tag))
@@ -228,6 +231,7 @@ class Framer:
             position = end
 
     def _damage(self, kind: str, raw: bytes, found: list[Plain]) -> None:
+        self.all_good = False
         self.counts[kind] += 1
         self.damaged_bytes += len(raw)
         found.append(Damaged(raw, kind))

@@ -1,13 +1,15 @@
 """The satellites of the latest cycle, for the sky view. Nothing of it enters a coordinate.
 
 Strategy. GSV and GSA are most of a receiver's output and the view is asked for once a second, so sentences are
-kept as received and read when asked. Message n of n makes a set complete, also when the numbering runs over
+kept as received and read when asked. GSV messages wait in `held` and are looked at many at a time: whole sets in
+their order, which is all that a sound link brings, are told by one expression. Message n of n makes a set complete, also when the numbering runs over
 several talkers or signals; a lost part leaves the set out. A set that was not repeated while another one came
 three times is gone.
 """
 
 from __future__ import annotations
 
+import re
 from collections import deque
 from collections.abc import Iterator
 
@@ -20,6 +22,11 @@ _MOST_MESSAGES = 32
 _MOST_SETS = 64
 _MOST_GSA = 32
 _GONE_AFTER = 3
+_MOST_HELD = 4096  # GSV messages that wait to be looked at
+# `total,number,` of the messages of whole sets, one digit each: `1,1,`, `2,1,2,2,` and so on
+_WHOLE_SETS = re.compile(
+    b"(?:%s)*" % b"|".join(b"".join(b"%d,%d," % (total, n + 1) for n in range(total)) for total in range(1, 10))
+)
 _NUMBER_AFTER = [str(n + 1).encode("ascii") for n in range(_MOST_MESSAGES + 1)]
 
 
@@ -28,13 +35,36 @@ class Sky:
 
     def __init__(self, counts: Counts) -> None:
         self._counts = counts
+        self.held: list[bytes] = []
         self._cycle: list[bytes] = []
         self._total = b""
         self._complete: deque[list[bytes]] = deque(maxlen=_MOST_SETS)
         self._gsa: list[bytes] = []
         self._gsa_epoch = -1
 
-    def gsv(self, text: bytes, _talker: str = "") -> None:
+    def tidy(self) -> None:
+        """Look at the messages held, if they are many. Nothing depends on when this is called."""
+        if len(self.held) >= _MOST_HELD:
+            self.settle()
+
+    def settle(self) -> None:
+        """Look at the messages held: counters and sets are then what they say."""
+        held = self.held
+        if not held:
+            return
+        begin = 0
+        while self._cycle and begin < len(held):
+            self._gsv(held[begin])
+            begin += 1
+        heads = b"".join([text[7:11] for text in held[begin:]])
+        whole = _WHOLE_SETS.match(heads)
+        if whole is not None and len(heads) == 4 * (len(held) - begin):  # none of them was shorter
+            begin += _start_of_last_sets(heads, whole.end() // 4)
+        for text in held[begin:]:
+            self._gsv(text)
+        held.clear()
+
+    def _gsv(self, text: bytes) -> None:
         """One GSV message."""
         total, number = text[7:8], text[9:10]
         if text[8:11:2] != b",,":  # two digits somewhere
@@ -80,12 +110,13 @@ class Sky:
         """One GSA of the epoch with this running number; a new epoch begins a new set."""
         if epoch != self._gsa_epoch:
             self._gsa_epoch = epoch
-            self._gsa = []
-        if len(self._gsa) < _MOST_GSA:
+            self._gsa = [text]
+        elif len(self._gsa) < _MOST_GSA:
             self._gsa.append(text)
 
     def satellites(self) -> list[Satellite]:
         """Every satellite in view once, with its strongest signal, ordered by system and number."""
+        self.settle()
         used = set(self._used())
         best: dict[tuple[str, int], Satellite] = {}
         for texts in self._latest():
@@ -109,6 +140,15 @@ class Sky:
                 number = fields.read_count(part, 3)
                 if number:
                     yield satellite_identity(system, number)
+
+
+def _start_of_last_sets(heads: bytes, end: int) -> int:
+    """Which of the first `end` messages, all of whole sets, begins the last _MOST_SETS; the others would be dropped."""
+    for _ in range(_MOST_SETS):
+        if not end:
+            break
+        end -= heads[4 * end - 4] - ord("0")  # every message of a set bears its total
+    return end
 
 
 def _read_gsv(text: bytes, used: set[tuple[str, int]]) -> Iterator[Satellite]:
