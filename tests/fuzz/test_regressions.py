@@ -22,6 +22,7 @@ from fieldbook.errors import BookError, LinkError, ReductionError, UsageError
 from fieldbook.links.address import parse_link
 from fieldbook.links.file import FileLink
 from fieldbook.model.item import Item, ItemKind
+from fieldbook.model.recorder import RecorderState
 from fieldbook.nmea.second_reader import second_readings
 from fieldbook.reduce.geoid import read_record
 from fieldbook.settings.session import load_session, session_from_tree
@@ -178,6 +179,43 @@ def test_a_certificate_that_may_not_be_read(tmp_path: Path, monkeypatch: pytest.
         verify_certificate(path)
 
 
+CLOCK = FakeClock(0, 1_804_122_600_000)
+
+
+def _open_book(folder: Path) -> Path:
+    path = folder / "forged.book"
+    body = {"occupation": 1, "mark": "KR-07", "session": load_session(SAMPLE).tree}
+    with Book.create(path, clock=CLOCK, observer="R. Kell") as book:
+        book.append("occupation", {**body, "link": "file:receiver.nmea", "simulated": False}, "R. Kell")
+        book.write_burst(1, [Item(ItemKind.BYTES, b"only bytes")], state=RecorderState(1))
+    return path
+
+
+def _one_byte(path: Path, place: int, value: int) -> None:
+    data = bytearray(path.read_bytes())
+    data[place] = value
+    path.write_bytes(data)
+
+
+@pytest.mark.xfail(strict=False, raises=TypeError, reason="open: Book.items gives text for bytes (book/raw.py)")
+def test_a_bit_that_makes_received_bytes_a_text_is_a_book_error(tmp_path: Path) -> None:
+    """One bit of a cell's serial type, and SQLite hands out str where STRICT promised a BLOB."""
+    path = _open_book(tmp_path)
+    data = path.read_bytes()
+    blob = 2 * len(b"only bytes") + 12
+    _one_byte(path, data.rindex(bytes([blob]), 0, data.index(b"only bytes")), blob + 1)
+    with Book.open(path, clock=CLOCK) as book, pytest.raises(BookError):
+        book.received_digest(1)
+
+
+@pytest.mark.xfail(strict=False, raises=BookError, reason="open: Book.recorder_state raises (book/heartbeat.py)")
+def test_a_damaged_heartbeat_is_none_as_its_docstring_says(tmp_path: Path) -> None:
+    path = _open_book(tmp_path)
+    _one_byte(path, path.read_bytes().index(b'"occupation": 1, "mark"') + 3, 0xF6)
+    with Book.open(path, clock=CLOCK) as book:
+        assert book.recorder_state() is None
+
+
 @pytest.mark.xfail(
     strict=False,
     raises=OverflowError,
@@ -185,12 +223,8 @@ def test_a_certificate_that_may_not_be_read(tmp_path: Path, monkeypatch: pytest.
 )
 def test_a_tail_whose_ids_are_used_up_is_a_book_error(tmp_path: Path) -> None:
     """A forged id of 2**63 - 1 leaves no next one; the recorder must meet a BookError."""
-    path = tmp_path / "forged.book"
-    clock = FakeClock(0, 1_804_122_600_000)
-    body = {"occupation": 1, "mark": "KR-07", "session": load_session(SAMPLE).tree}
-    with Book.create(path, clock=clock, observer="R. Kell") as book:
-        book.append("occupation", {**body, "link": "file:receiver.nmea", "simulated": False}, "R. Kell")
+    path = _open_book(tmp_path)
     with closing(sqlite3.connect(path)) as connection, connection:
         connection.execute("INSERT INTO raw_tail VALUES (?, 1, 'B', NULL, NULL, x'00')", (2**63 - 1,))
-    with Book.open(path, clock=clock, write=True) as book, pytest.raises(BookError):
+    with Book.open(path, clock=CLOCK, write=True) as book, pytest.raises(BookError):
         book.write_burst(1, [Item(ItemKind.BYTES, b"x")])
