@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 from fieldbook.model.item import ItemKind, parse_items
 
 from . import raw
+from .inflate import inflate_chunk
 
 if TYPE_CHECKING:
     from .audit import Audit
@@ -143,7 +144,7 @@ def _piece(audit: Audit, left: Sequence[raw.Sealed]) -> tuple[Iterator[tuple[raw
             raise ValueError("its row is not what its entry states")
         if pack is not None:
             raise ValueError("it stands in a chunk and in a pack")
-        return iter([(sealed, raw.checked(sealed, raw.inflate_chunk(row[7], sealed.bytes)))]), 1
+        return iter([(sealed, raw.checked(sealed, inflate_chunk(row[7], sealed.bytes)))]), 1
     if pack is None:
         raise ValueError("it is missing")
     if pack[0] != sealed.chunk:

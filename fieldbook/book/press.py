@@ -1,9 +1,8 @@
-"""Compression of large chunks beside the recording, so that the end of a file need not wait for it.
+"""Compression of large chunks beside the recording, so that a commit need not wait for it.
 
-Recording a file at full speed leaves a second core idle and ends with everything still to be packed. The compressor
-lets go of the interpreter while it works, so a thread compresses each large chunk as soon as it is sealed, reads its
-result back and compares. Only bytes cross: the thread never sees the book. What it did not get to is compressed
-when the occupation is packed. Small chunks (a minute of a live link) are not sent here: they compress better
+Recording a file at full speed leaves a second core idle. The compressor lets go of the interpreter while it works, so a
+thread compresses each large chunk while its sentences are decoded, reads its result back and compares. Only bytes cross: the thread never sees the book. What it did not get to is compressed
+when it is committed. Small chunks (a minute of a live link) are not sent here: they compress better
 together.
 """
 

@@ -2,7 +2,7 @@
 
 A burst becomes plain rows of `raw_tail` at once. Sealing moves the tail into one zlib `raw_chunk`, whose SHA-256 over
 the canonical items enters the chain as a `raw` entry in the same transaction; a large piece of a file becomes chunks
-without passing through the tail. At the end of an occupation packing moves chunks into `raw_pack`, several streams of
+without passing through the tail, made by `lines` as it will stand in its pack. At the end of an occupation packing moves chunks into `raw_pack`, several streams of
 whole chunks behind one another, each made by `lines`; the hashes of the chunks stay those of the chain. (Measured on six
 receiver logs: 0.31 to 0.44 x gzip -9 at 75 MB/s; bz2, which packs of older books hold, 0.47 to 0.69 at 18 MB/s. Packing
 belongs to recording a file, which must keep pace with reading it.) Item ids run through the whole book without a gap
@@ -14,7 +14,6 @@ anything that does not fit, which `Book` words as a BookError and `audit` as a f
 
 from __future__ import annotations
 
-import bz2
 import dataclasses
 import hashlib
 import sqlite3
@@ -25,15 +24,12 @@ from dataclasses import dataclass
 from fieldbook.model.canonical import Tree
 from fieldbook.model.item import Item, ItemKind, canonical_items, parse_items
 
-from . import lines
+from .inflate import CODEC, inflate_chunk, inflate_pack, made_by_lines
 from .press import LARGE_BYTES, press
 
 CHUNK_BYTES = 512 * 1024  # a chunk is closed at about this size of data
 PACK_BYTES = 8 * 1024 * 1024  # canonical bytes in one pack: bounds memory in writing and in reading
 STREAM_BYTES = 900_000  # small chunks are compressed together up to about this size
-MAX_INFLATED_BYTES = 64 * 1024 * 1024  # of one chunk or pack; no writer makes larger ones
-CODEC = "lines-lzma"
-OLDER_CODEC = "bz2"  # read, not written any more
 Row = tuple[int, str, int | None, int | None, bytes]
 
 
@@ -41,7 +37,7 @@ Row = tuple[int, str, int | None, int | None, bytes]
 class Sealed:
     """A chunk as its `raw` entry states it.
 
-    `bytes` counts canonical bytes: what `sha256` covers. `stored_sha256` covers the zlib data of the chunk's row, so
+    `bytes` counts canonical bytes: what `sha256` covers. `stored_sha256` covers the stored data of the chunk's row, so
     that not even a bit that inflates to the same bytes can change unseen.
     """
 
@@ -158,32 +154,52 @@ def item_of(row: Row) -> Item:
 
 @dataclass(frozen=True)
 class Chunk:
-    """A new chunk: its description, its canonical bytes and its zlib data."""
+    """A new chunk: its description and its stored data; `large`: made by `lines`, else by zlib."""
 
     sealed: Sealed
-    plain: bytes
+    large: bool
     data: bytes
 
 
-def chunk_of(occupation: int, chunk: int, first_id: int, items: Sequence[Item]) -> Chunk:
-    """A new chunk of items, whose ids run on from `first_id`."""
+def chunk_of(
+    occupation: int,
+    chunk: int,
+    first_id: int,
+    items: Sequence[Item],
+    ready: Callable[[str], bytes | None] = lambda _sha256: None,
+) -> Chunk:
+    """A new chunk of items, whose ids run on from `first_id`.
+
+    `ready` may give what `press` made of the canonical bytes with this SHA-256.
+
+    Raises:
+        ValueError: a large chunk did not read back as it was (failing memory).
+    """
     plain = canonical_items(items)
-    data = zlib.compress(plain, 1 if len(plain) >= LARGE_BYTES else 6)  # the large ones of a file are packed soon
+    name, large = sha256_of(plain), len(plain) >= LARGE_BYTES
+    data = ready(name) or press(plain) if large else zlib.compress(plain, 6)
     last_id = first_id + len(items) - 1
-    hashes = sha256_of(plain), sha256_of(data)
-    return Chunk(Sealed(occupation, chunk, first_id, last_id, len(items), len(plain), *hashes), plain, data)
+    hashes = name, sha256_of(data)
+    return Chunk(Sealed(occupation, chunk, first_id, last_id, len(items), len(plain), *hashes), large, data)
 
 
-def chunks_of(occupation: int, chunk: int, first_id: int, items: Sequence[Item]) -> list[Chunk]:
-    """New chunks of about CHUNK_BYTES from many items."""
-    chunks: list[Chunk] = []
+def chunks_of(
+    occupation: int, chunk: int, first_id: int, items: Sequence[Item], ready: Callable[[str], bytes | None]
+) -> Iterator[Chunk]:
+    """New chunks of about CHUNK_BYTES from many items, as `chunk_of`."""
+    for number, group in enumerate(groups_of(items), chunk):
+        yield chunk_of(occupation, number, first_id, group, ready)
+        first_id += len(group)
+
+
+def groups_of(items: Sequence[Item]) -> Iterator[Sequence[Item]]:
+    """Many items in groups of about CHUNK_BYTES."""
     begin = size = 0
     for end, item in enumerate(items, 1):
         size += len(item.data)
         if size >= CHUNK_BYTES or end == len(items):
-            chunks.append(chunk_of(occupation, chunk + len(chunks), first_id + begin, items[begin:end]))
+            yield items[begin:end]
             begin, size = end, 0
-    return chunks
 
 
 def items_of(rows: Sequence[Row]) -> list[Item]:
@@ -226,59 +242,6 @@ def clear_tail(connection: sqlite3.Connection, sealed: Sealed) -> None:
         raise ValueError(f"the tail of occupation {sealed.occupation} changed while it was sealed")
 
 
-def inflate_chunk(data: bytes, expected: int) -> bytes:
-    """The canonical bytes of a zlib chunk.
-
-    Raises:
-        ValueError: no zlib data, not exactly `expected` bytes, or something behind it.
-    """
-    _check_size(expected)
-    worker = zlib.decompressobj()
-    try:
-        plain = worker.decompress(data, expected + 1)
-    except zlib.error as error:
-        raise ValueError(f"its zlib data is damaged ({error})") from error
-    if len(plain) != expected or not worker.eof or worker.unused_data:
-        raise ValueError(f"its zlib data does not hold exactly {expected} bytes")
-    return plain
-
-
-def inflate_pack(codec: str, data: bytes, expected: int) -> bytes:
-    """The canonical bytes of a pack.
-
-    Raises:
-        ValueError: unknown codec, damaged data, not exactly `expected` bytes, or something behind it.
-    """
-    if codec not in (CODEC, OLDER_CODEC):
-        raise ValueError(f"its codec is {codec!r:.20}, not '{CODEC}'")
-    _check_size(expected)
-    return lines.unpressed(data, expected) if codec == CODEC else _inflate_bz2(data, expected)
-
-
-def _inflate_bz2(data: bytes, expected: int) -> bytes:
-    parts: list[bytes] = []
-    size = 0
-    while data and size <= expected:
-        worker = bz2.BZ2Decompressor()
-        try:
-            part = worker.decompress(data, expected + 1 - size)
-        except OSError as error:
-            raise ValueError(f"its {OLDER_CODEC} data is damaged ({error})") from error
-        parts.append(part)
-        size += len(part)
-        if not worker.eof:
-            break
-        data = worker.unused_data
-    if size != expected or data:
-        raise ValueError(f"its {OLDER_CODEC} data does not hold exactly {expected} bytes")
-    return b"".join(parts)
-
-
-def _check_size(expected: int) -> None:
-    if not 0 <= expected <= MAX_INFLATED_BYTES:
-        raise ValueError(f"it claims {expected} bytes, more than any writer puts into one piece")
-
-
 def checked(sealed: Sealed, plain: bytes) -> bytes:
     """The canonical bytes, if they are those the chain names.
 
@@ -292,10 +255,16 @@ def checked(sealed: Sealed, plain: bytes) -> bytes:
 
 def read_chunk(connection: sqlite3.Connection, sealed: Sealed) -> bytes | None:
     """The checked canonical bytes of a chunk that is not packed; None if it is not in `raw_chunk`."""
+    found = _read_chunk(connection, sealed)
+    return None if found is None else found[0]
+
+
+def _read_chunk(connection: sqlite3.Connection, sealed: Sealed) -> tuple[bytes, bytes] | None:
+    """The same with the stored data."""
     row = connection.execute(
         "SELECT data FROM raw_chunk WHERE occupation = ? AND chunk = ?", (sealed.occupation, sealed.chunk)
     ).fetchone()
-    return None if row is None else checked(sealed, inflate_chunk(row[0], sealed.bytes))
+    return None if row is None else (checked(sealed, inflate_chunk(row[0], sealed.bytes)), row[0])
 
 
 def split_pack(codec: str, data: bytes, chunks: Sequence[Sealed]) -> Iterator[tuple[Sealed, bytes]]:
@@ -330,8 +299,8 @@ def compress_pack(
 ) -> bytes:
     """Streams of consecutive chunks. `press` reads each back and compares, before anything is let go.
 
-    `ready` may give the stream of a chunk that was compressed beside the recording; the others are read from
-    `raw_chunk` and compared with the SHA-256 of their entry.
+    `ready` may give the stream of a chunk that this process has just written; the others are read from `raw_chunk` and
+    compared with the SHA-256 of their entry. A large chunk goes into the pack as it is stored.
 
     Raises:
         ValueError: a chunk is missing or damaged.
@@ -341,10 +310,13 @@ def compress_pack(
     for sealed in chunks:
         stream = ready(sealed)
         if stream is None:
-            plain = read_chunk(connection, sealed)
-            if plain is None:
+            found = _read_chunk(connection, sealed)
+            if found is None:
                 raise ValueError(f"chunk {sealed.chunk} of occupation {sealed.occupation} is missing")
-            waiting.append(plain)
+            if made_by_lines(found[1]):
+                stream = found[1]
+            else:
+                waiting.append(found[0])
         if waiting and (stream is not None or sum(map(len, waiting)) >= STREAM_BYTES):
             streams.append(press(b"".join(waiting)))
             waiting.clear()

@@ -21,7 +21,7 @@ from fieldbook.errors import BookError, UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.entry import Entry
 from fieldbook.model.epoch import Epoch
-from fieldbook.model.item import Item, ItemKind
+from fieldbook.model.item import Item, ItemKind, canonical_items
 from fieldbook.model.recorder import RecorderState
 from fieldbook.model.state import BookState
 
@@ -45,6 +45,7 @@ class Book:
         self._version_seen = -1
         self._tail_bytes = 0  # written since the last seal
         self._presser = Presser()
+        self._pressed: dict[str, bytes] = {}  # large chunks that were committed, for their pack
 
     # -- begin and end -------------------------------------------------------------------------------------
 
@@ -252,6 +253,13 @@ class Book:
 
     # -- recording -----------------------------------------------------------------------------------------
 
+    def prepare(self, items: Sequence[Item]) -> None:
+        """Begin to compress what `write_burst` will be given next, in a thread, if it is much; else nothing."""
+        if sum(len(item.data) for item in items) >= LARGE_BYTES:
+            for group in raw.groups_of(items):
+                plain = canonical_items(group)
+                self._presser.offer(raw.sha256_of(plain), plain)
+
     def write_burst(
         self,
         occupation: int,
@@ -286,6 +294,7 @@ class Book:
             if state is not None:
                 heartbeat.write(self._connection, state)
         self._tail_bytes += 0 if large else size
+        self._pressed.update((chunk.sealed.sha256, chunk.data) for chunk in chunks if chunk.large)
 
     def _free_id(self, occupation: int) -> int:
         """The next item id. Only the holder of the recorder's lock writes items, so it does not change meanwhile."""
@@ -298,10 +307,7 @@ class Book:
         """A large piece of a file goes into chunks at once: it would only pass through the tail."""
         with connect.occupation_errors(self.path, occupation):
             number = max((sealed.chunk for sealed in self._known.sealed(occupation)), default=0) + 1
-            chunks = raw.chunks_of(occupation, number, self._free_id(occupation), items)
-        for chunk in chunks:
-            self._presser.offer(chunk.sealed.sha256, chunk.plain)
-        return chunks
+            return list(raw.chunks_of(occupation, number, self._free_id(occupation), items, self._presser.take))
 
     def _insert_chunk(self, chunk: raw.Chunk) -> Entry:
         """A chunk with its `raw` entry, signed by whoever began the occupation."""
@@ -350,7 +356,6 @@ class Book:
             while rows := raw.tail_rows(self._connection, occupation, 0):
                 number = max((sealed.chunk for sealed in self._known.sealed(occupation)), default=0) + 1
                 chunk = raw.chunk_of(occupation, number, rows[0][0], raw.items_of(rows))
-                self._presser.offer(chunk.sealed.sha256, chunk.plain)
                 with self.transaction():
                     written.append(self._insert_chunk(chunk))
                     raw.clear_tail(self._connection, chunk.sealed)
@@ -369,11 +374,11 @@ class Book:
         self.seal(occupation)
         packed = 0
         with connect.occupation_errors(self.path, occupation):
-            smaller = self._pack_epochs(occupation)  # first: the presser is still at the last chunks
+            smaller = self._pack_epochs(occupation)
             left = raw.unpacked(self._connection, occupation)
             due = [sealed for sealed in self._known.sealed(occupation) if sealed.chunk in left]
             for group in raw.pack_groups(due):
-                data = raw.compress_pack(self._connection, group, lambda sealed: self._presser.take(sealed.sha256))
+                data = raw.compress_pack(self._connection, group, lambda sealed: self._pressed.pop(sealed.sha256, None))
                 observer = self._known.observer_of(occupation)
                 with self.transaction():
                     body = raw.insert_pack(self._connection, group, data).body()

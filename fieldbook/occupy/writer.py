@@ -128,6 +128,7 @@ class Writer:
 
     def write(self, items: list[Item]) -> None:
         """Decode and commit these items, then enter what they tell (gap, date, overlap)."""
+        self._book.prepare(items)  # compressed while they are decoded
         epochs = [epoch for item in items for epoch in self.take(item, fresh=True)]
         self.commit(items, epochs)
         self._rows += len(items)

@@ -6,10 +6,16 @@ import bz2
 import lzma
 import random
 import struct
+from pathlib import Path
 
 import pytest
+import small_books as small
 
 from fieldbook.book import lines, raw
+from fieldbook.book.audit import audit_book
+from fieldbook.book.store import Book
+from fieldbook.errors import BookError
+from fieldbook.model.item import Item, ItemKind
 
 _LOG = b"".join(
     f"$GNGGA,{second:06d}.00,1234.{second * 7919 % 10**7:07d},S,02345.{second:07d},W,4,{second % 20}*{second % 256:02X}\r\n"
@@ -111,3 +117,24 @@ def test_packs_of_older_books_are_still_read() -> None:
             raw.inflate_pack("bz2", data, wrong)
     with pytest.raises(ValueError, match="damaged"):
         raw.inflate_pack("bz2", b"x" + data, len(_LOG))
+
+
+def test_large_chunks_are_stored_as_they_are_packed_also_by_another_process(tmp_path: Path) -> None:
+    path, copy = tmp_path / "a.book", tmp_path / "b.book"
+    plain = _LOG * 5
+    items = [Item(ItemKind.BYTES, plain[start : start + 65_536]) for start in range(0, len(plain), 65_536)]
+    with small.begun(path) as book:
+        book.prepare(items)
+        book.write_burst(1, items)
+    assert audit_book(path) == []
+    copy.write_bytes(path.read_bytes())
+    small.tamper(
+        copy, "UPDATE raw_chunk SET data = CAST(substr(data, 1, length(data) - 1) || x'a5' AS BLOB) WHERE chunk = 1"
+    )
+    assert audit_book(copy) != []
+    with Book.open(copy, clock=small.clock(), write=True) as book, pytest.raises(BookError):
+        book.pack(1)
+    with Book.open(path, clock=small.clock(), write=True) as book:
+        assert book.pack(1) > 1
+        assert b"".join(book.received(1)) == plain
+    assert audit_book(path) == []
