@@ -4,7 +4,9 @@ from __future__ import annotations
 
 import io
 import json
+import lzma
 import sqlite3
+import struct
 import zipfile
 from contextlib import closing
 from pathlib import Path
@@ -12,6 +14,7 @@ from time import perf_counter
 
 import pytest
 
+from fieldbook.book import lines
 from fieldbook.book.store import Book
 from fieldbook.certificate.identity import sealed
 from fieldbook.certificate.issue import RENDERERS
@@ -228,3 +231,12 @@ def test_a_tail_whose_ids_are_used_up_is_a_book_error(tmp_path: Path) -> None:
         connection.execute("INSERT INTO raw_tail VALUES (?, 1, 'B', NULL, NULL, x'00')", (2**63 - 1,))
     with Book.open(path, clock=CLOCK, write=True) as book, pytest.raises(BookError):
         book.write_burst(1, [Item(ItemKind.BYTES, b"x")])
+
+
+@pytest.mark.xfail(
+    strict=False, raises=struct.error, reason="open: struct.error leaves lines.unpressed (book/lines.py)"
+)
+def test_a_pressed_piece_with_half_a_width_is_a_value_error() -> None:
+    stored = lzma.compress(bytes.fromhex("000000000d0d"), lzma.FORMAT_RAW, filters=lines._FILTERS)
+    with pytest.raises(ValueError, match="piece"):
+        lines.unpressed(lines._SIZES.pack(len(stored), 120) + stored, 120)
