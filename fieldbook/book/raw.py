@@ -27,7 +27,8 @@ from fieldbook.model.item import Item, ItemKind, canonical_items, parse_items
 from .inflate import CODEC, inflate_chunk, inflate_pack, made_by_lines
 from .press import LARGE_BYTES, press
 
-CHUNK_BYTES = 512 * 1024  # a chunk is closed at about this size of data
+CHUNK_BYTES = 512 * 1024  # a chunk of the tail is closed at about this size of data
+LARGE_CHUNK_BYTES = 1024 * 1024  # one of a large piece of a file: with the heads of its items one piece of `lines`
 PACK_BYTES = 8 * 1024 * 1024  # canonical bytes in one pack: bounds memory in writing and in reading
 STREAM_BYTES = 900_000  # small chunks are compressed together up to about this size
 Row = tuple[int, str, int | None, int | None, bytes]
@@ -186,18 +187,18 @@ def chunk_of(
 def chunks_of(
     occupation: int, chunk: int, first_id: int, items: Sequence[Item], ready: Callable[[str], bytes | None]
 ) -> Iterator[Chunk]:
-    """New chunks of about CHUNK_BYTES from many items, as `chunk_of`."""
+    """New chunks of about LARGE_CHUNK_BYTES from many items, as `chunk_of`."""
     for number, group in enumerate(groups_of(items), chunk):
         yield chunk_of(occupation, number, first_id, group, ready)
         first_id += len(group)
 
 
 def groups_of(items: Sequence[Item]) -> Iterator[Sequence[Item]]:
-    """Many items in groups of about CHUNK_BYTES."""
+    """Many items in groups of about LARGE_CHUNK_BYTES."""
     begin = size = 0
     for end, item in enumerate(items, 1):
         size += len(item.data)
-        if size >= CHUNK_BYTES or end == len(items):
+        if size >= LARGE_CHUNK_BYTES or end == len(items):
             yield items[begin:end]
             begin, size = end, 0
 

@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections import defaultdict
 from dataclasses import dataclass
 from datetime import date
+from functools import lru_cache
 
 from fieldbook.model.epoch import Epoch, EpochFlag
 from fieldbook.nmea import fields
@@ -46,7 +47,7 @@ class Rmc:
     mode: str
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(slots=True)
 class Gst:
     """Sigmas in 0.01 mm; None = not given or exactly zero."""
 
@@ -189,18 +190,27 @@ def rmc_heard(rmc: Rmc, counts: Counts) -> Heard:
 def read_gst(text: bytes, talker: str, counts: Counts) -> tuple[Gst, str]:
     """The sigmas of a GST, and its time field."""
     f = split(text, 9)
+    values, zero, bad = _sigmas(*f[6:9])
+    if bad:
+        counts["bad_field"] += bad
+    return Gst(talker, *values, zero), f[1]
+
+
+@lru_cache(maxsize=1024)  # a receiver's sigmas are few
+def _sigmas(*parts: str) -> tuple[tuple[int | None, int | None, int | None], bool, int]:
+    """Three sigmas, whether one is exactly zero, and how many are no sigma."""
     values: list[int | None] = []
-    zero = False
-    for part in f[6:9]:
-        found = _decimal(part, _METRE_PLACES, counts)
-        if found is not None and found[0] < 0:
-            counts["bad_field"] += 1
+    zero, bad = False, 0
+    for part in parts:
+        found = fields.read_decimal(part, _METRE_PLACES) if part else None
+        if part and (found is None or found[0] < 0):
+            bad += 1
             found = None
         if found is not None and found[0] == 0:
             zero = True
             found = None
         values.append(None if found is None else found[0])
-    return Gst(talker, values[0], values[1], values[2], zero), f[1]
+    return (values[0], values[1], values[2]), zero, bad
 
 
 def read_zda_date(parts: list[str], counts: Counts) -> date | None:
