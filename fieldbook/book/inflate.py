@@ -8,13 +8,13 @@ import zlib
 from . import lines
 
 MAX_INFLATED_BYTES = 64 * 1024 * 1024  # of one chunk or pack; no writer makes larger ones
-CODEC = "lines-lzma"
+CODEC = "lines"
 OLDER_CODEC = "bz2"  # of packs; read, not written any more
 
 
 def made_by_lines(data: bytes) -> bool:
-    """A zlib stream begins with 0x78, the length of a piece of `lines` with a zero."""
-    return data[:1] == b"\0"
+    """A zlib stream begins with 0x78, a piece of `lines` with its method."""
+    return data[:1] in (b"\0", b"\1")
 
 
 def inflate_chunk(data: bytes, expected: int) -> bytes:

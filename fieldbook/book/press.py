@@ -19,13 +19,13 @@ LARGE_BYTES = 256 * 1024
 MOST_WAITING = 8  # chunks held in memory
 
 
-def press(plain: bytes) -> bytes:
+def press(plain: bytes, method: int = lines.SMALL) -> bytes:
     """Pieces of `lines`.
 
     Raises:
         ValueError: reading it back gives something else (failing memory).
     """
-    data = lines.pressed(plain)
+    data = lines.pressed(plain, method)
     if lines.unpressed(data, len(plain)) != plain:
         raise ValueError("compressed data did not read back as it was; nothing was let go")
     return data
@@ -47,7 +47,7 @@ class Presser:
             from concurrent.futures import ThreadPoolExecutor
 
             self._pool = ThreadPoolExecutor(max_workers=1, thread_name_prefix="press")
-        self._streams[sha256] = self._pool.submit(press, plain)
+        self._streams[sha256] = self._pool.submit(press, plain, lines.QUICK)
 
     def take(self, sha256: str) -> bytes | None:
         """The stream of a chunk, waiting for it if it is being made; None if it was never begun."""

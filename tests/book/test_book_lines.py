@@ -6,6 +6,7 @@ import bz2
 import lzma
 import random
 import struct
+import zlib
 from pathlib import Path
 
 import pytest
@@ -48,9 +49,10 @@ _MIXED = random.Random(5).randbytes(400) + b"\r\n"
     ],
 )
 def test_any_bytes_read_back(plain: bytes) -> None:
-    data = lines.pressed(plain)
+    data, quick = lines.pressed(plain), lines.pressed(plain, lines.QUICK)
     assert lines.unpressed(data, len(plain)) == plain
-    assert lines.unpressed(data + data, 2 * len(plain)) == plain * 2
+    assert lines.unpressed(quick, len(plain)) == plain
+    assert lines.unpressed(data + quick, 2 * len(plain)) == plain * 2
 
 
 def test_random_mixtures_of_lines_read_back() -> None:
@@ -64,9 +66,10 @@ def test_a_log_is_smaller_than_with_bz2() -> None:
     assert len(lines.pressed(_LOG)) < len(bz2.compress(_LOG))
 
 
-def test_a_changed_byte_is_an_error_or_other_bytes_never_a_crash() -> None:
+@pytest.mark.parametrize("method", [lines.SMALL, lines.QUICK])
+def test_a_changed_byte_is_an_error_or_other_bytes_never_a_crash(method: int) -> None:
     plain = _LOG[:20_000]
-    data = bytearray(lines.pressed(plain))
+    data = bytearray(lines.pressed(plain, method))
     for place in range(len(data)):
         damaged = bytes(data[:place]) + bytes([data[place] ^ 0x15]) + bytes(data[place + 1 :])
         try:
@@ -79,9 +82,10 @@ def test_a_changed_byte_is_an_error_or_other_bytes_never_a_crash() -> None:
             lines.unpressed(bytes(data[:cut]), len(plain))
 
 
-def _forged(folded: bytes, makes: int) -> bytes:
-    stored = lzma.compress(folded, lzma.FORMAT_RAW, filters=lines._FILTERS)
-    return struct.pack(">II", len(stored), makes) + stored
+def _forged(folded: bytes, makes: int, method: int = lines.SMALL) -> bytes:
+    small = lzma.compress(folded, lzma.FORMAT_RAW, filters=lines._FILTERS)
+    stored = zlib.compress(folded) if method == lines.QUICK else small
+    return struct.pack(">BII", method, len(stored), makes) + stored
 
 
 @pytest.mark.parametrize(
@@ -99,8 +103,9 @@ def _forged(folded: bytes, makes: int) -> bytes:
     ],
 )
 def test_a_forged_piece_is_refused(folded: bytes, makes: int) -> None:
-    with pytest.raises(ValueError, match=r"."):
-        lines.unpressed(_forged(folded, makes), makes)
+    for method in (lines.SMALL, lines.QUICK, 2):
+        with pytest.raises(ValueError, match=r"."):
+            lines.unpressed(_forged(folded, makes, method), makes)
 
 
 def test_a_piece_may_not_claim_more_than_any_writer_makes() -> None:
