@@ -19,8 +19,7 @@ import numpy as np
 from fieldbook.model.reduction import Convergence
 from fieldbook.reduce.blocks import Blocks
 from fieldbook.reduce.correlated_mean import correlated_mean
-from fieldbook.reduce.estimate import Estimate
-from fieldbook.reduce.quantisation import mean_resolution_u_m
+from fieldbook.reduce.estimate import Estimate, u_of_steps
 
 MOST_INSTANTS = 40
 LEAST_SPAN_S = 30.0
@@ -85,15 +84,12 @@ def _up_to(found: Estimate, rows: int) -> Estimate | None:
     if east is None or north is None:
         return None
     mean, sd = correlated_mean(east, north, up, found.fix_class), blocks.sd_m()
-    u = [
-        None if step is None else mean_resolution_u_m(step, size or 0.0)
-        for step, size in zip(found.resolution.step_enu_m, sd, strict=True)
-    ]
+    u = u_of_steps(found.resolution.step_enu_m, sd, found.resolution.distinct)
     return replace(
         found,
         mean=mean,
         floor_enu_m=(found.floor_enu_m[0], found.floor_enu_m[1], None if mean.up is None else found.floor_enu_m[2]),
-        resolution=replace(found.resolution, u_enu_m=(u[0], u[1], u[2])),
+        resolution=replace(found.resolution, u_enu_m=u),
         sd_enu_m=sd,
         blocks=blocks,
     )

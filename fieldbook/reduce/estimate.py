@@ -137,18 +137,26 @@ def resolution_of(
         _times(digits["latitude"].step_units(8), per_unit),
         _times(digits["altitude"].step_units(5), 1e-5),
     )
-    u = [
-        None if step is None else mean_resolution_u_m(step, sd or 0.0) for step, sd in zip(steps, sd_enu_m, strict=True)
-    ]
+    distinct = {name: digits[name].count_distinct for name in names}
+    u = u_of_steps(steps, sd_enu_m, distinct)
     decimals = whole.fewest_decimals
     return Resolution(
         steps,
-        (u[0], u[1], u[2]),
+        u,
         decimals,
         None if decimals is None else constant_resolution_u_m(decimals),
-        {name: digits[name].count_distinct for name in names},
+        distinct,
         digits,
     )
+
+
+def u_of_steps(steps_enu_m: Pair, sd_enu_m: Pair, distinct: dict[str, int]) -> Pair:
+    """u_q of the mean per axis from steps, scatter and number of distinct received values; None without a step."""
+    east, north, up = (
+        None if step is None else mean_resolution_u_m(step, sd or 0.0, distinct.get(name))
+        for name, step, sd in zip(("longitude", "latitude", "altitude"), steps_enu_m, sd_enu_m, strict=True)
+    )
+    return east, north, up
 
 
 def _times(value: float | None, factor: float) -> float | None:

@@ -6,7 +6,10 @@ Strategy: the step of a coordinate is known from its digits (one minute of latit
     u_q = q/sqrt(12) exp(-2 pi^2 s^2/q^2),   s^2 = max(sd^2 - q^2/12, 0)
 
 (first harmonic of the rounding error of a normal variable). RTK with four decimals of a minute: the Type A figure
-alone covers 10 %, with u_q 97 %. The separation is a constant of the place: its rounding is never averaged.
+alone covers 10 %, with u_q 97 %. The scatter of few values is not noise: a mark near the edge of a step makes two values
+toggle with an sd of up to q/2 however still the receiver is. D distinct values span at least D - 2 steps, and a sample
+spans hardly less than six of its own standard deviations, so s is never taken larger than (D - 2) q/6: at most two
+values average nothing away, six and more leave the formula as it is. The separation is a constant of the place: its rounding is never averaged.
 Digits can also lie (a receiver that pads zeros), so the greatest common divisor of the received values is kept as a
 cross-check, and the larger of the two steps counts.
 """
@@ -21,6 +24,7 @@ from numpy.typing import NDArray
 
 METRES_PER_MINUTE = 1852.2
 FEW_DISTINCT = 6  # fewer distinct values than this: the resolution governs (finding)
+SPAN_SIGMAS = 6.0  # own choice: range of a sample in its standard deviations, for the noise that few values allow
 _MOST_DISTINCT = 64
 
 
@@ -29,11 +33,16 @@ def coordinate_quantum_m(decimals: int, cos_latitude: float = 1.0) -> float:
     return float(METRES_PER_MINUTE * 10.0**-decimals * cos_latitude)
 
 
-def mean_resolution_u_m(quantum_m: float, sd_m: float) -> float:
-    """u_q of a mean of readings rounded to `quantum_m` whose rounded values scatter with `sd_m`."""
+def mean_resolution_u_m(quantum_m: float, sd_m: float, distinct: int | None = None) -> float:
+    """u_q of a mean of readings rounded to `quantum_m` whose rounded values scatter with `sd_m`.
+
+    `distinct`: how many different values were received; None = many.
+    """
     if quantum_m <= 0:
         return 0.0
     variance = max(sd_m**2 - quantum_m**2 / 12, 0.0)
+    if distinct is not None:
+        variance = min(variance, (max(distinct - 2, 0) * quantum_m / SPAN_SIGMAS) ** 2)
     return quantum_m / math.sqrt(12) * math.exp(-2 * math.pi**2 * variance / quantum_m**2)
 
 
