@@ -139,7 +139,7 @@ def _unfolded(folded: bytes, makes: int) -> bytes:
     begin = _COUNTS.size + _WIDTH.size * kinds
     position = begin + count
     order = folded[begin:position]
-    if len(order) != count:
+    if begin > len(folded) or len(order) != count:
         raise ValueError("a piece is cut off")
     widths = [item[0] for item in _WIDTH.iter_unpack(folded[_COUNTS.size : begin])]
     each = [order.count(number) for number in range(kinds)]

@@ -92,6 +92,7 @@ def _forged(folded: bytes, makes: int, method: int = lines.SMALL) -> bytes:
     ("folded", "makes"),
     [
         (b"", 5),
+        (bytes.fromhex("000000000d0d"), 120),  # half a width
         (struct.pack(">IB", 10**9, 0), 5),  # lines that are not there
         (struct.pack(">IBH", 4, 1, 65_535) + bytes(4), 5),  # a width no writer makes
         (struct.pack(">IBH", 4, 1, 400) + bytes(4) + bytes(800), 100),  # makes 1606 bytes
