@@ -137,6 +137,7 @@ def open_reader(path: Path) -> BookConnection:
     """
     look(path)
     with book_errors(path):
+        _roll_back(path)
         empty_wal = foreign.size_beside(path, "-wal") == 0
         try:
             connection = _read_only(path, "mode=ro")
@@ -151,6 +152,17 @@ def open_reader(path: Path) -> BookConnection:
             raise
         connection.without_wal = empty_wal and mode == "wal"
         return connection
+
+
+def _roll_back(path: Path) -> None:
+    """A process killed while it switched to WAL or back leaves a -journal, which only a writer can roll back."""
+    if foreign.size_beside(path, "-journal") and folder_is_writable(path):
+        with suppress(sqlite3.Error):  # the reader's own attempt says what is wrong
+            connection = _connect(path, "mode=rw")
+            try:
+                connection.execute("SELECT count(*) FROM sqlite_master").fetchone()
+            finally:
+                connection.close()
 
 
 def _read_only(path: Path, query: str) -> BookConnection:
@@ -218,6 +230,13 @@ def begin_wal(connection: BookConnection) -> None:
                 connection.notes.append("the book could not be switched to WAL: somebody else holds it")
                 break
             time.sleep(0.02)
+    empty = foreign.size_beside(Path(connection.real_path), "-wal") == 0
+    if empty:
+        # The header says WAL from here on. A process killed now would leave that and an empty -wal, which is what a book
+        # copied without its -wal looks like: so there is one frame in it at once.
+        version = connection.execute("PRAGMA user_version").fetchone()[0]
+        with suppress(sqlite3.OperationalError):  # full or busy: the first commit will do it, or say so
+            connection.execute(f"PRAGMA user_version = {version}")
     connection.execute(f"PRAGMA journal_size_limit={WAL_KEPT_BYTES}")
 
 
@@ -233,6 +252,12 @@ def end_wal(connection: BookConnection) -> bool:
         return False
     finally:
         connection.execute(f"PRAGMA busy_timeout={BUSY_MS}")
+
+
+def write_back(connection: BookConnection) -> None:
+    """Write the -wal back into the file as far as it goes now. Never waits and never fails: nothing is lost without it."""
+    with suppress(sqlite3.OperationalError):
+        connection.execute("PRAGMA wal_checkpoint(PASSIVE)").fetchall()
 
 
 def shrink(connection: BookConnection) -> None:

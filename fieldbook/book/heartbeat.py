@@ -17,7 +17,12 @@ def write(connection: sqlite3.Connection, state: RecorderState) -> None:
 
 def read(connection: sqlite3.Connection) -> RecorderState | None:
     """What the recorder last said of itself; None if there never was one, or it cannot be read."""
-    row = connection.execute("SELECT state FROM recorder_state WHERE id = 1").fetchone()
+    try:
+        row = connection.execute("SELECT state FROM recorder_state WHERE id = 1").fetchone()
+    except sqlite3.OperationalError as error:
+        if "decode" in str(error):  # bytes that are no UTF-8
+            return None
+        raise
     if row is None:
         return None
     try:

@@ -21,6 +21,7 @@ import zlib
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
+from fieldbook.errors import BookError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.item import Item, ItemKind, canonical_items, parse_items
 
@@ -126,8 +127,16 @@ def insert_tail(connection: sqlite3.Connection, occupation: int, first_id: int, 
 
 
 def last_tail_id(connection: sqlite3.Connection) -> int:
-    """The highest id in the tail, 0 if it is empty."""
-    return int(connection.execute("SELECT coalesce(max(id), 0) FROM raw_tail").fetchone()[0])
+    """The highest id in the tail, 0 if it is empty.
+
+    Raises:
+        BookError: a number that no recorder reaches.
+    """
+    last = int(connection.execute("SELECT coalesce(max(id), 0) FROM raw_tail").fetchone()[0])
+    if last >= 2**62:
+        text = "The numbering of the received items is damaged."
+        raise BookError(text, "`fieldbook verify` says what still holds.", code="damaged")
+    return last
 
 
 def tail_rows(
@@ -142,7 +151,7 @@ def tail_rows(
     size = 0
     for row in cursor:
         rows.append(row)
-        size += len(row[4])
+        size += len(row[4]) if isinstance(row[4], bytes | str) else 0
         if size >= limit_bytes:
             break
     cursor.close()
@@ -150,7 +159,13 @@ def tail_rows(
 
 
 def item_of(row: Row) -> Item:
-    """The item of a tail row."""
+    """The item of a tail row.
+
+    Raises:
+        ValueError: no item. A damaged page can hand out a text where STRICT promised bytes.
+    """
+    if type(row[4]) is not bytes or not all(value is None or type(value) is int for value in row[2:4]):
+        raise ValueError(f"received item {row[0]} holds values of another type")
     return Item(ItemKind(row[1]), row[4], row[2], row[3])
 
 

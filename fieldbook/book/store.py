@@ -251,6 +251,10 @@ class Book:
         with connect.book_errors(self.path):
             return int(self._connection.execute("PRAGMA data_version").fetchone()[0])
 
+    def write_back(self) -> None:
+        """Write the -wal back into the file, as far as no reader holds it up: a copy of the file alone then has it too."""
+        connect.write_back(self._connection)
+
     # -- recording -----------------------------------------------------------------------------------------
 
     def prepare(self, items: Sequence[Item]) -> None:

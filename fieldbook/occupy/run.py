@@ -76,6 +76,7 @@ class Run:
             if meanwhile is None:
                 self._writer.resumed(live=False)
         self._writer.append("recorder", state="running", program=f"fieldbook {__version__}")
+        self._book.write_back()  # a copy without the -wal must know that a recorder was running
         self._writer.state.link_state = "open"
         self._writer.show_state(now=True)
 

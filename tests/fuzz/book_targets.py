@@ -277,7 +277,7 @@ def pressed_lines(data: bytes) -> None:
     if choice & 2:
         makes, content = len(_some_lines()), edited(lines._folded(_some_lines()), content)
     stored = lzma.compress(content, lzma.FORMAT_RAW, filters=lines._FILTERS)
-    piece = lines._SIZES.pack(len(stored), makes) + stored
+    piece = lines._SIZES.pack(lines.SMALL, len(stored), makes) + stored
     try:
         plain = lines.unpressed(piece, makes)
     except ValueError:
