@@ -102,6 +102,7 @@ def _forged(folded: bytes, makes: int, method: int = lines.SMALL) -> bytes:
         (struct.pack(">IB", 2, 0) + b"\xff\xff" + b"abcd", 4),  # two lines said, one there
         (bytes(100_000_000), 5),  # inflates to more than any piece
     ],
+    ids=range(10),  # never the bytes themselves: the last would be a name of 400 MB
 )
 def test_a_forged_piece_is_refused(folded: bytes, makes: int) -> None:
     for method in (lines.SMALL, lines.QUICK, 2):
