@@ -8,6 +8,7 @@ from typing import Any, ClassVar
 
 from fieldbook.model.reduction import Reduction
 from fieldbook.screens.bridge import Issued
+from fieldbook.screens.diary_text import occupations_of
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.one_by_one import OccupationByOccupation
@@ -94,7 +95,7 @@ class CertificatePage(OccupationByOccupation):
                 row(
                     f" {entry.utc[:16].replace('T', ' ')}  ",
                     (pad(what, 24), "strong" if number else "text"),
-                    f" occupation {entry.body.get('occupation')}  ",
+                    f" {occupations_of(entry.body)}  ",
                     (state, "warn"),
                 )
             )

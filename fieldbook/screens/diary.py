@@ -93,13 +93,13 @@ class DiaryPage(Page):
     def _line(self, entry: Entry, index: int, strikes: dict[int, Entry], width: int) -> Row:
         here = index == self.cursor
         struck = entry.seq in strikes
-        text_width = max(8, width - 40)
+        text_width = max(8, width - 41)
         look = "struck" if struck else ("chosen" if here else "text")
         return row(
             ("▶" if here else " ", "accent"),
             (f"{entry.seq:>5} ", "soft"),
             (entry.utc[5:16].replace("T", " ") + " ", "soft"),
-            (pad(entry.kind, 11), "strong"),
+            (pad(entry.kind, 11) + " ", "strong"),
             (fit(entry_text(entry), text_width), look),
             ("  ╌ struck" if struck else "", "warn"),
         )

@@ -67,7 +67,14 @@ def _gap(body: Tree) -> str:
 def _document(body: Tree) -> str:
     number = body.get("number")
     old = f", supersedes {body['supersedes']}: {body.get('reason')}" if body.get("supersedes") else ""
-    return f"{body.get('mark')}, occupation {body.get('occupation')}" + (f", number {number}{old}" if number else "")
+    return f"{body.get('mark')}, {occupations_of(body)}" + (f", number {number}{old}" if number else "")
+
+
+def occupations_of(body: Tree) -> str:
+    """`occupation 2`, or `occupations 1, 2` where a document combines them."""
+    if body.get("occupation") is not None:
+        return f"occupation {body['occupation']}"
+    return "occupations " + ", ".join(str(number) for number in body.get("occupations") or [])
 
 
 _TEXTS: dict[str, Callable[[Tree], str]] = {

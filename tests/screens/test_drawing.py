@@ -211,3 +211,10 @@ def test_lengths_round_up_and_durations_read_aloud() -> None:
         value_m = step * 2.7e-4
         text, unit = length_95(value_m).split()
         assert float(text) * (0.001 if unit == "mm" else 1.0) >= value_m * (1 - 0.006)
+
+
+def test_a_combined_document_names_its_occupations() -> None:
+    from fieldbook.screens.diary_text import occupations_of
+
+    assert occupations_of({"occupation": 2}) == "occupation 2"
+    assert occupations_of({"occupation": None, "occupations": [1, 2]}) == "occupations 1, 2"
