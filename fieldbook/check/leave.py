@@ -17,7 +17,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 from fieldbook.clock import utc_ms_of
-from fieldbook.model.reduction import Leave, LeaveLine, Reduction
+from fieldbook.model.reduction import Leave, LeaveLine, Reduction, Uncertainty
 from fieldbook.model.session import Requirement
 from fieldbook.reduce.prediction import TimeToGo
 
@@ -58,21 +58,21 @@ def leave_check(
     requirement: Requirement, reduction: Reduction, figures: Figures, others: Sequence[OtherOccupation]
 ) -> Leave:
     """All lines and the verdict for one occupation."""
-    judged = reduction.uncertainty
-    if requirement.in_frame == "client frame" and reduction.uncertainty_client is not None:
-        judged = reduction.uncertainty_client
+    judged: Uncertainty | None = reduction.uncertainty
+    if requirement.in_frame == "client frame":
+        judged = reduction.uncertainty_client  # none without a height: the receiver's figure must not stand in for it
     lines = [
         _accuracy(
             "horizontal_95_m",
             requirement.horizontal_95_m,
-            judged.horizontal95_m,
+            None if judged is None else judged.horizontal95_m,
             figures.horizontal,
             figures.horizontal_forbidden_by,
         ),
         _accuracy(
             "vertical_95_m",
             requirement.vertical_95_m,
-            judged.vertical95_m,
+            None if judged is None else judged.vertical95_m,
             figures.vertical,
             figures.vertical_forbidden_by,
         ),
@@ -87,6 +87,8 @@ def leave_check(
 def _accuracy(line: str, wanted_m: float, have_m: float | None, go: TimeToGo, forbidden_by: str) -> LeaveLine:
     if have_m is None:
         text = "no height yet: read the antenna height, or the receiver sends no geoid separation"
+        if line == "horizontal_95_m":
+            text = f"not known in the client's frame: {text}"
         return LeaveLine(line, "set-up", wanted_m, None, "m", False, None, text)
     met = have_m <= wanted_m
     if met:

@@ -30,7 +30,7 @@ def mark_leave(requirement: Requirement, result: MarkResult, used: Sequence[Redu
         _accuracy("horizontal_95_m", requirement.horizontal_95_m, None if judged is None else judged.horizontal95_m),
         _accuracy("vertical_95_m", requirement.vertical_95_m, None if judged is None else judged.vertical95_m),
     ]
-    counted = [item for item in used if _counts(requirement, item)]
+    counted = [item for item in used if reaches_accuracy(requirement, item)]
     lines.append(_occupations(requirement, counted, used))
     if requirement.hours_between is not None and requirement.occupations > 1:
         lines.append(_hours(requirement.hours_between, counted))
@@ -59,7 +59,8 @@ def _accuracy(line: str, wanted_m: float, have_m: float | None) -> LeaveLine:
     return LeaveLine(line, "mark", wanted_m, have_m, "m", met, 0.0 if met else None, text)
 
 
-def _counts(requirement: Requirement, reduction: Reduction) -> bool:
+def reaches_accuracy(requirement: Requirement, reduction: Reduction) -> bool:
+    """Does the occupation alone reach the required accuracy, in the frame the requirement speaks of?"""
     own: Uncertainty | None = reduction.uncertainty
     if requirement.in_frame == "client frame":
         own = reduction.uncertainty_client

@@ -18,7 +18,7 @@ from pathlib import Path
 import numpy as np
 
 from fieldbook.check.leave import NOT_BLOCKING
-from fieldbook.check.mark_leave import mark_leave
+from fieldbook.check.mark_leave import mark_leave, reaches_accuracy
 from fieldbook.check.repeats import Circumstance, Judged, compare, repeat_findings
 from fieldbook.model.reduction import (
     ClientPosition,
@@ -169,7 +169,7 @@ def _chosen(members: list[_Member]) -> tuple[list[_Member], list[NotCombined]]:
 
 def _worth(group: list[_Member], requirement: Requirement) -> tuple[int, float, int]:
     best_m = min(item.reduced.reduction.uncertainty.horizontal95_m for item in group)
-    return sum(_meets(item, requirement) for item in group), -best_m, -group[0].number
+    return sum(reaches_accuracy(requirement, item.reduced.reduction) for item in group), -best_m, -group[0].number
 
 
 def _requirement(members: list[_Member]) -> Requirement:
@@ -179,20 +179,6 @@ def _requirement(members: list[_Member]) -> Requirement:
         if item.session.requirement.horizontal_95_m <= found.horizontal_95_m:
             found = item.session.requirement
     return found
-
-
-def _meets(item: _Member, requirement: Requirement) -> bool:
-    """Does the occupation alone reach the required accuracy?"""
-    reduction = item.reduced.reduction
-    judged: Uncertainty | None = reduction.uncertainty
-    if requirement.in_frame == "client frame":
-        judged = reduction.uncertainty_client
-    return (
-        judged is not None
-        and judged.horizontal95_m <= requirement.horizontal_95_m
-        and judged.vertical95_m is not None
-        and judged.vertical95_m <= requirement.vertical_95_m
-    )
 
 
 def _same_frames(one: _Member, two: _Member) -> bool:
@@ -370,7 +356,7 @@ def _circumstance(item: _Member, requirement: Requirement) -> Circumstance:
         ended=reduction.ended,
         sigma_plan_m=kind.horizontal_m,
         sigma_height_m=kind.vertical_m,
-        meets=_meets(item, requirement),
+        meets=reaches_accuracy(requirement, item.reduced.reduction),
         arp_height_m=reduction.antenna.height_arp_m,
         tribrach=session.setup.tribrach_id,
         antenna=f"{antenna.model} {antenna.serial}" if antenna.serial else None,

@@ -41,7 +41,7 @@ def _judged_m(reduction: Reduction) -> float | None:
     """The 95 % that the leave check judges, in the frame the requirement names."""
     lines = reduction.leave.lines if reduction.leave else []
     line = next((item for item in lines if item.line == "horizontal_95_m"), None)
-    return float(line.have) if line and isinstance(line.have, int | float) else reduction.uncertainty.horizontal95_m
+    return float(line.have) if line and isinstance(line.have, int | float) else None
 
 
 def big_rows(view: LiveView | None, width: int, height: int) -> list[Row]:

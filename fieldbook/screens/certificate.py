@@ -10,6 +10,7 @@ from fieldbook.model.reduction import Reduction
 from fieldbook.screens.bridge import Issued
 from fieldbook.screens.diary_text import occupations_of
 from fieldbook.screens.fields import Field
+from fieldbook.screens.figures import wanted_rows_uncertainty
 from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.one_by_one import OccupationByOccupation
 from fieldbook.screens.page import Desk
@@ -35,7 +36,7 @@ class CertificatePage(OccupationByOccupation):
             text = "reducing …" if self.desk.reduced is None or self.desk.reducing else "No occupation is reduced yet."
             return [*rows, BLANK, row(f" {text}")]
         state = "open" if item.open else f"ended by {item.ended_by}"
-        stated = item.uncertainty_client or item.uncertainty
+        stated, place = wanted_rows_uncertainty(item), item.client or item.receiver
         rows += [
             labelled("Mark", f"{item.mark}, occupation {item.occupation}, {state}", width, style="strong"),
             labelled(
@@ -43,6 +44,7 @@ class CertificatePage(OccupationByOccupation):
                 f"95 % {length_95(stated.horizontal95_m)} horizontal, {length_95(stated.vertical95_m)} height",
                 width,
             ),
+            labelled("In", f"{place.frame_name} ({place.frame})", width),
             BLANK,
         ]
         rows += self._missing_rows(item, width)

@@ -175,6 +175,18 @@ def test_in_the_client_frame_the_clients_uncertainty_is_judged() -> None:
     assert found["vertical_95_m"].have == 0.035
 
 
+def test_the_receivers_figure_never_stands_in_for_the_clients() -> None:
+    client = replace(REQUIRED, in_frame="client frame")
+    made = reduction(vertical_m=None)
+    assert made.uncertainty_client is None
+    assert made.uncertainty.horizontal95_m <= REQUIRED.horizontal_95_m
+    verdict, found = check(client, made, Figures(REACHED, NEVER))
+    line = found["horizontal_95_m"]
+    assert (verdict, line.have, line.met) == ("not yet", None, False)
+    assert "client's frame" in line.text
+    assert "antenna height" in line.text
+
+
 def test_minimum_time_counts_what_was_kept() -> None:
     verdict, found = check(ALL, reduction(kept_s=260.5), others=(LATER,))
     line = found["minimum_time_s"]
