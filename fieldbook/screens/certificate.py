@@ -37,6 +37,7 @@ class CertificatePage(OccupationByOccupation):
             return [*rows, BLANK, row(f" {text}")]
         state = "open" if item.open else f"ended by {item.ended_by}"
         stated, place = wanted_rows_uncertainty(item), item.client or item.receiver
+        epoch = "" if place.epoch is None else f" at {place.epoch:.2f}"
         rows += [
             labelled("Mark", f"{item.mark}, occupation {item.occupation}, {state}", width, style="strong"),
             labelled(
@@ -44,7 +45,7 @@ class CertificatePage(OccupationByOccupation):
                 f"95 % {length_95(stated.horizontal95_m)} horizontal, {length_95(stated.vertical95_m)} height",
                 width,
             ),
-            labelled("In", f"{place.frame_name} ({place.frame})", width),
+            labelled("In", f"{place.frame_name} ({place.frame}){epoch}", width),
             BLANK,
         ]
         rows += self._missing_rows(item, width)
