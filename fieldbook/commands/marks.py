@@ -1,7 +1,8 @@
 """`fieldbook marks`: the marks of a book as a list, from CSV, to CSV.
 
-Columns: name, id, description, inscription, access, condition, lat_deg, lon_deg. The position is the approximate one
-(decimal degrees, for finding the mark and for judging a receiver's 0,0); it is never a coordinate of the mark.
+Columns: name, id, description, inscription, access, condition, lat_deg, lon_deg, or position instead of the last two: a
+text in any form of `settings.coordinates`. The position is the approximate one (for finding the mark and for judging a
+receiver's 0,0); it is never a coordinate of the mark.
 """
 
 from __future__ import annotations
@@ -13,7 +14,7 @@ from typing import Any
 
 import click
 
-from fieldbook.commands import assignments
+from fieldbook.commands import assignments, marks_coordinates
 from fieldbook.commands.open_book import reading, writing
 from fieldbook.commands.output import line, write_json
 from fieldbook.errors import UsageError
@@ -22,10 +23,11 @@ from fieldbook.settings.values import nearest
 
 TEXTS = ("name", "id", "description", "inscription", "access", "condition")
 COLUMNS = (*TEXTS, "lat_deg", "lon_deg")
+READ = (*COLUMNS, "position")
 MAX_BYTES = 4 * 1024 * 1024
 
 
-@click.group("marks", help="List, import or export the marks of a book.")
+@click.group("marks", help="List, import or export the marks of a book; their coordinates.")
 def command() -> None:
     """The group."""
 
@@ -66,8 +68,9 @@ def import_marks(book: Path, file: Path, observer: str, *, update: bool, as_json
     """Check every row, then write."""
     rows = _read(file)
     with writing(book) as opened:
-        known = opened.state().marks
-        wanted = [(row, _tree(row, place, known)) for place, row in rows]
+        state = opened.state()
+        known, frame = state.marks, state.session.frame.client if state.session is not None else None
+        wanted = [(row, _tree(_located(row, place, frame), place, known)) for place, row in rows]
         changed = [tree for _, tree in wanted if known.get(tree["name"]) != tree]
         differing = [tree["name"] for tree in changed if tree["name"] in known]
         if differing and not update:
@@ -123,8 +126,8 @@ def _read(file: Path) -> list[tuple[str, dict[str, Any]]]:
     try:
         names = [name.strip() for name in reader.fieldnames or []]
         for name in names:
-            if name not in COLUMNS:
-                raise UsageError(f'{file}: there is no column "{name}".{nearest(name, COLUMNS)}', _TAKES)
+            if name not in READ:
+                raise UsageError(f'{file}: there is no column "{name}".{nearest(name, READ)}', _TAKES)
         if "name" not in names:
             raise UsageError(f"{file} has no column name.", _TAKES)
         reader.fieldnames = names
@@ -136,7 +139,37 @@ def _read(file: Path) -> list[tuple[str, dict[str, Any]]]:
     return rows
 
 
-_TAKES = f"The columns are {', '.join(COLUMNS)}; name is needed, the others are optional."
+_TAKES = f"The columns are {', '.join(READ)}; name is needed, the others are optional."
+
+
+def _located(row: dict[str, Any], place: str, frame: str | None) -> dict[str, Any]:
+    """The row with its `position` as lat_deg and lon_deg; a grid or X, Y, Z is taken in the client's frame."""
+    typed = (row.get("position") or "").strip()
+    others = {key: value for key, value in row.items() if key != "position"}
+    if not typed:
+        return others
+    if others.get("lat_deg") or others.get("lon_deg"):
+        raise UsageError(f"{place}: the position is given twice.", "Give position, or lat_deg and lon_deg.")
+    from fieldbook.model.coordinates import Angular
+    from fieldbook.settings.coordinates import CoordinateError, parse_position
+
+    try:
+        position = parse_position(typed)
+    except CoordinateError as slip:
+        slip.text = f"{place}: {slip.text}"
+        raise
+    if isinstance(position, Angular):
+        lat, lon = float(position.lat_deg), float(position.lon_deg)
+    elif frame is None:
+        raise UsageError(
+            f"{place}: a grid or X, Y, Z needs a frame, and this book's session names none yet.",
+            "Write latitude and longitude.",
+        )
+    else:
+        from fieldbook.reduce.frames import located
+
+        lat, lon, _ = located(position, frame)
+    return {**others, "lat_deg": f"{lat:.8f}", "lon_deg": f"{lon:.8f}"}
 
 
 def _tree(row: dict[str, Any], place: str, known: dict[str, Tree]) -> Tree:
@@ -164,3 +197,6 @@ def _within(tree: Tree, place: str) -> None:
         value = tree.get("approximate", {}).get(key)
         if value is not None and abs(float(value)) > limit:
             raise UsageError(f"{place}: {key} {value} is not within {limit} degrees.", "Write decimal degrees.")
+
+
+command.add_command(marks_coordinates.command)

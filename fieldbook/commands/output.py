@@ -48,10 +48,16 @@ def write_json(tree: dict[str, Any]) -> None:
 
 def write_error(error: FieldbookError, *, as_json: bool) -> None:
     """An error with its remedy: `error: ...` on stderr, or one JSON object on stdout."""
+    typed, column = getattr(error, "typed", None), getattr(error, "column", 0)
     if as_json:
-        tree = {"code": error.code, "text": error.text, "remedy": error.remedy}
+        tree: dict[str, Any] = {"code": error.code, "text": error.text, "remedy": error.remedy}
+        if typed is not None:
+            tree |= {"typed": typed, "column": column}
         write_json({"schema": "fieldbook.error/1", "error": tree})
         return
+    if typed is not None:  # what was typed, and a mark under the character that is wrong
+        note(f"  {typed}")
+        note(f"  {' ' * len(plain(typed[:column]))}^")
     note(f"error: {error}")
 
 

@@ -76,3 +76,31 @@ def test_missing_files(tmp_path, book, fieldbook) -> None:
     assert fieldbook("marks", "import", book, tmp_path / "none.csv", "--by", "Q").code == 2
     (tmp_path / "text.book").write_text("no book")
     assert fieldbook("marks", "list", tmp_path / "text.book").code == 4
+
+
+def test_positions_in_any_form(tmp_path, book, fieldbook) -> None:
+    csv = write(
+        tmp_path,
+        "name;position\nA;23°40′12.41″ S 133°53′07.88″ E\nB;EPSG:7855 E 273741.297 N 5796489.777\nC;-42.16781 gon, 160.4720 gon\n",
+    )
+    assert fieldbook("marks", "import", book, csv, "--by", "Q").code == 0
+    places = {
+        mark["name"]: mark.get("approximate") for mark in fieldbook("marks", "list", book, "--json").json["marks"]
+    }
+    assert places["A"] == {"lat_deg": "-23.67011389", "lon_deg": "133.88552222"}
+    assert places["B"] == {"lat_deg": "-37.95103342", "lon_deg": "144.42486789"}
+    assert places["C"] == {"lat_deg": "-37.95102900", "lon_deg": "144.42480000"}
+
+
+def test_a_position_is_refused_at_its_character(tmp_path, book, fieldbook) -> None:
+    csv = write(tmp_path, "name;position\nA;23 61 12 S 133 53 7 E\n")
+    said = fieldbook("marks", "import", book, csv, "--by", "Q")
+    assert said.code == 2
+    lines = said.err.splitlines()
+    assert lines[0] == "  23 61 12 S 133 53 7 E"
+    assert lines[1] == "     ^"
+    assert "line 2: 61 minutes are 60 or more (character 4)" in lines[2]
+    error = fieldbook("marks", "import", book, csv, "--by", "Q", "--json").json["error"]
+    assert (error["typed"], error["column"]) == ("23 61 12 S 133 53 7 E", 3)
+    twice = write(tmp_path, "name,lat_deg,lon_deg,position\nA,1,2,1 2\n")
+    assert "given twice" in fieldbook("marks", "import", book, twice, "--by", "Q").err

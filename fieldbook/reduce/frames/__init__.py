@@ -6,6 +6,7 @@ whether there was a connection.
     registry     what a frame is               choice      is a choice complete: check_frames, epochs
     candidates   PROJ's offers, judged         route       which of them: direct, equalities, by an ITRF
     convert      transform_to_client           projection  project, check_grid        heightgrid  GeoTIFF geoid
+    located      typed positions, there and back
 """
 
 from __future__ import annotations
@@ -29,7 +30,8 @@ from fieldbook.reduce.frames.convert import (  # noqa: E402
     transform_to_client,
 )
 from fieldbook.reduce.frames.heightgrid import undulation_by_proj  # noqa: E402
-from fieldbook.reduce.frames.projection import check_grid, project  # noqa: E402
+from fieldbook.reduce.frames.located import located, printed  # noqa: E402
+from fieldbook.reduce.frames.projection import check_grid, project, unproject  # noqa: E402
 from fieldbook.reduce.frames.registry import (  # noqa: E402
     ITRF2020,
     FrameInfo,
@@ -56,13 +58,16 @@ __all__ = [
     "frame_info",
     "inside",
     "is_global_realisation",
+    "located",
     "motion_of",
     "operation_codes",
     "operation_epoch_of",
+    "printed",
     "project",
     "receiver_epoch_of",
     "same_frame",
     "transform_to_client",
     "undulation_by_proj",
+    "unproject",
     "versions",
 ]

@@ -15,6 +15,7 @@ from typing import Any
 
 from pyproj import CRS, Proj, Transformer
 from pyproj.crs import CoordinateOperation  # type: ignore[attr-defined]
+from pyproj.enums import TransformDirection
 from pyproj.exceptions import CRSError, ProjError
 
 from fieldbook.errors import ReductionError, UsageError
@@ -36,6 +37,9 @@ _WEB_MERCATOR = 1024  # Popular Visualisation Pseudo-Mercator: passes as conform
 # Bare conversions whose plane axes are east and north: transverse Mercator, Lambert conic 1SP and 2SP, Mercator A
 # and B, Hotine oblique Mercator A and B. South-orientated and polar ones get their axes from a CRS only.
 _EAST_NORTH_METHODS = {9807, 9801, 9802, 9804, 9805, 9812, 9815}
+
+
+_ROUND_TRIP_M = 1e-5
 
 
 @dataclass(frozen=True)
@@ -94,12 +98,7 @@ def project(
     grid = _grid(client.code, grid_code)
     lon_deg = wrapped_longitude(lon_deg)
     if not inside(grid.bounds, lat_deg, lon_deg) and not outside_area_accepted:
-        raise ReductionError(
-            f"The mark ({lat_deg:.4f}, {lon_deg:.4f}) is outside the area of use of {grid.code} {grid.name}: "
-            f"{shortened(grid.area_name)}",
-            "Give the grid of this place, or record a decision that accepts figures outside the area.",
-            code="outside_area",
-        )
+        raise _outside(grid, lat_deg, lon_deg)
     plane = evaluated(grid, lat_deg, lon_deg)
     elevation = None if h_m is None else elevation_factor(lat_deg, h_m, client.ellipsoid)
     return GridPosition(
@@ -113,6 +112,34 @@ def project(
         combined_factor=None if elevation is None else plane.scale_factor * elevation,
         zone_text=grid.text,
     )
+
+
+def unproject(client_code: str, grid_code: str, easting_m: float, northing_m: float) -> tuple[float, float]:
+    """Latitude and longitude in the client's frame of a plane position in metres east and north.
+
+    Raises:
+        UsageError: a grid of the wrong kind (`check_grid`).
+        ReductionError: no finite result, or one that does not lead back to the same figures within 0.01 mm (a point
+            far outside the projection); outside the grid's area of use.
+    """
+    grid = _grid(frame_info(client_code).code, grid_code)
+    numbers = [0.0, 0.0]
+    for value, (index, factor) in ((easting_m, grid.east), (northing_m, grid.north)):
+        numbers[index] = value / factor
+    try:
+        pair = grid.transformer.transform(numbers[0], numbers[1], direction=TransformDirection.INVERSE, errcheck=True)
+    except ProjError as error:
+        raise _no_result(grid) from error
+    lat, lon = (float(value) for value in (pair if grid.latitude_first else reversed(pair)))
+    if not (math.isfinite(lat) and math.isfinite(lon)):
+        raise _no_result(grid)
+    lon = wrapped_longitude(lon)
+    if not inside(grid.bounds, lat, lon):
+        raise _outside(grid, lat, lon)
+    again = evaluated(grid, lat, lon)
+    if math.hypot(again.easting_m - easting_m, again.northing_m - northing_m) > _ROUND_TRIP_M:
+        raise _no_result(grid)
+    return lat, lon
 
 
 def evaluated(grid: Projection, lat_deg: float, lon_deg: float) -> PlanePosition:
@@ -139,6 +166,15 @@ def evaluated(grid: Projection, lat_deg: float, lon_deg: float) -> PlanePosition
             code="grid_not_conformal",
         )
     return PlanePosition(east, north, convergence, scale)
+
+
+def _outside(grid: Projection, lat_deg: float, lon_deg: float) -> ReductionError:
+    return ReductionError(
+        f"The mark ({lat_deg:.4f}, {lon_deg:.4f}) is outside the area of use of {grid.code} {grid.name}: "
+        f"{shortened(grid.area_name)}",
+        "Give the grid of this place, or record a decision that accepts figures outside the area.",
+        code="outside_area",
+    )
 
 
 def _no_result(grid: Projection) -> ReductionError:
