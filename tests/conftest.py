@@ -3,12 +3,17 @@
 from __future__ import annotations
 
 import shutil
+import signal
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 import pytest
 from recorded_samples import SAMPLE_NAMES, SAMPLES, record_into
+
+if signal.getsignal(signal.SIGINT) is signal.SIG_IGN:
+    # a run in the background of a shell has Ctrl+C ignored, and would hand that on to every program that a test interrupts
+    signal.signal(signal.SIGINT, signal.default_int_handler)
 
 
 @pytest.fixture(scope="session")

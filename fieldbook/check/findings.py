@@ -13,9 +13,11 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from fieldbook.check.behaviour import behaviour_findings
+from fieldbook.check.gate_lines import mostly_shown
 from fieldbook.model.reduction import Finding
 from fieldbook.model.state import Occupation
 from fieldbook.reduce.antenna import BETWEEN_OCCASIONS_LIMIT_M
+from fieldbook.reduce.gate_reports import GateTally
 from fieldbook.reduce.occupation import Reduced
 from fieldbook.reduce.quantisation import FEW_DISTINCT
 
@@ -68,10 +70,13 @@ def _output(reduced: Reduced) -> Iterator[Finding]:
         text = f"{outliers} epochs lie far from their neighbours. Look for a reflecting surface or an obstruction."
         yield Finding("many_outliers", "caution", text, {"outliers": outliers, "kept": reduced.reduction.kept})
     for key, count in sorted(reduced.screened.not_applied.items()):
-        text = (
-            f"The receiver did not report its {GATE_NAMES.get(key, key)} for {count} epochs: that gate was not applied."
-        )
-        yield Finding("gate_not_applied", "caution", text, {"gate": key, "epochs": count})
+        name = GATE_NAMES.get(key, key)
+        text = f"The receiver did not report its {name} for {count} epochs: that gate was not applied."
+        severity = "caution"
+        if mostly_shown(reduced.screened.gates.get(key, GateTally())):
+            severity = "info"
+            text += " It did for their neighbours."
+        yield Finding("gate_not_applied", severity, text, {"gate": key, "epochs": count})
 
 
 def _initialisations(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:

@@ -13,12 +13,14 @@ A line that the requirement does not state is not judged. Figures are those of t
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
+from fieldbook.check.gate_lines import gate_lines
 from fieldbook.clock import utc_ms_of
 from fieldbook.model.reduction import Leave, LeaveLine, Reduction, Uncertainty
 from fieldbook.model.session import Requirement
+from fieldbook.reduce.gate_reports import GateTally
 from fieldbook.reduce.prediction import TimeToGo
 
 HOUR_MS = 3_600_000
@@ -27,21 +29,15 @@ NOT_BLOCKING = frozenset({"simulated"})  # a simulated receiver keeps the certif
 
 @dataclass(frozen=True)
 class OtherOccupation:
-    """Another occupation of the same mark: first and last kept epoch (`utc_text` form), its own 95 % figures."""
+    """Another occupation of the same mark: first and last kept epoch (`utc_text` form).
+
+    counts: it meets the accuracy lines itself; one that misses them is no second occupation for this requirement.
+    """
 
     number: int
     started: str
     ended: str
-    horizontal95_m: float
-    vertical95_m: float | None
-
-    def counts(self, requirement: Requirement) -> bool:
-        """An occupation that misses the accuracy lines is no second occupation for this requirement."""
-        return (
-            self.horizontal95_m <= requirement.horizontal_95_m
-            and self.vertical95_m is not None
-            and self.vertical95_m <= requirement.vertical_95_m
-        )
+    counts: bool
 
 
 @dataclass(frozen=True)
@@ -55,9 +51,13 @@ class Figures:
 
 
 def leave_check(
-    requirement: Requirement, reduction: Reduction, figures: Figures, others: Sequence[OtherOccupation]
+    requirement: Requirement,
+    reduction: Reduction,
+    figures: Figures,
+    others: Sequence[OtherOccupation],
+    gates: Mapping[str, GateTally],
 ) -> Leave:
-    """All lines and the verdict for one occupation."""
+    """All lines and the verdict for one occupation; gates: what was reported for the epochs that passed."""
     judged: Uncertainty | None = reduction.uncertainty
     if requirement.in_frame == "client frame":
         judged = reduction.uncertainty_client  # none without a height: the receiver's figure must not stand in for it
@@ -78,6 +78,7 @@ def leave_check(
         ),
     ]
     lines += _time_and_initialisations(requirement, reduction)
+    lines += gate_lines(requirement, reduction, gates)
     lines += _heights(requirement, reduction)
     lines += _stops(reduction)
     lines += _of_the_mark(requirement, reduction, others)
@@ -175,7 +176,7 @@ def _stops(reduction: Reduction) -> list[LeaveLine]:
 
 
 def _of_the_mark(requirement: Requirement, reduction: Reduction, others: Sequence[OtherOccupation]) -> list[LeaveLine]:
-    counted = [other for other in others if other.counts(requirement)]
+    counted = [other for other in others if other.counts]
     apart_h = _hours_apart(reduction, counted)
     lines = []
     if requirement.occupations > 1 or counted:
@@ -183,7 +184,7 @@ def _of_the_mark(requirement: Requirement, reduction: Reduction, others: Sequenc
         met = have >= requirement.occupations
         text = "done" if met else _come_back(requirement, reduction)
         if len(counted) < len(others):
-            poor = ", ".join(str(other.number) for other in others if not other.counts(requirement))
+            poor = ", ".join(str(other.number) for other in others if not other.counts)
             text += f"; occupation {poor} misses the accuracy lines and does not count"
         lines.append(
             LeaveLine("occupations", "mark", requirement.occupations, have, "", met, 0.0 if met else None, text)

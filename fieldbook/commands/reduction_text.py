@@ -36,15 +36,14 @@ def reduction_lines(reduction: Reduction) -> Iterator[str]:
         yield f"  MAY THE TRIPOD COME DOWN?  {reduction.leave.verdict.upper()}"
         for item in reduction.leave.lines:
             word = "met " if item.met else "OPEN"
-            wanted, have = _shown(item.wanted), _shown(item.have)
-            have = f"wanted {wanted} {item.unit}, have {have} {item.unit}"
-            yield f"    {word} {item.line} ({item.scope}): {have}; {item.text}"
+            wanted, have = _shown(item.wanted, item.unit), _shown(item.have, item.unit)
+            yield f"    {word} {item.line} ({item.scope}): wanted {wanted}, have {have}; {item.text}"
 
 
-def _shown(value: float | str | None) -> str:
+def _shown(value: float | str | None, unit: str) -> str:
     if value is None:
         return "–"
-    return value if isinstance(value, str) else f"{value:.4g}"
+    return value if isinstance(value, str) else f"{value:.4g} {unit}".strip()
 
 
 def _client(reduction: Reduction) -> Iterator[str]:

@@ -91,7 +91,7 @@ class LiveReader:
         except (ReductionError, UsageError) as error:
             return None, (error.code, error.text, error.remedy)
         others = self._others(book, state, occupation)
-        judge(reduced, occupation, others_of(reduced, [reduced, *others]))
+        judge(reduced, occupation, others_of(reduced, [reduced, *others], occupation.session.requirement))
         return reduced, None
 
     def _others(self, book: Book, state: BookState, occupation: Occupation) -> list[Reduced]:

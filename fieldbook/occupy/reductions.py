@@ -12,8 +12,10 @@ from pathlib import Path
 from fieldbook.book.store import Book
 from fieldbook.check.findings import findings_of
 from fieldbook.check.leave import Figures, OtherOccupation, leave_check
+from fieldbook.check.mark_leave import reaches_accuracy
 from fieldbook.errors import FieldbookError, ReductionError, UsageError
 from fieldbook.model.reduction import Finding
+from fieldbook.model.session import Requirement
 from fieldbook.model.state import BookState, Occupation
 from fieldbook.reduce import frames
 from fieldbook.reduce.occupation import Reduced, reduce_occupation
@@ -54,7 +56,8 @@ def reduce_book(book: Book, mark: str | None = None) -> tuple[list[Reduced], lis
         except (ReductionError, UsageError) as error:
             failed.append(Failure(occupation.mark, occupation.number, error))
     for item in reduced:
-        judge(item, state.occupations[item.reduction.occupation], others_of(item, reduced))
+        occupation = state.occupations[item.reduction.occupation]
+        judge(item, occupation, others_of(item, reduced, occupation.session.requirement))
     return reduced, failed
 
 
@@ -86,15 +89,14 @@ def reductions_of_mark(book: Book, number: int) -> tuple[Reduced, list[Reduced]]
     return own, [item for item in reduced if item is not own]
 
 
-def others_of(item: Reduced, all_reduced: list[Reduced]) -> list[OtherOccupation]:
-    """The mark's other occupations that have kept epochs."""
+def others_of(item: Reduced, all_reduced: list[Reduced], requirement: Requirement) -> list[OtherOccupation]:
+    """The mark's other occupations that have kept epochs, held against this one's requirement."""
     return [
         OtherOccupation(
             other.reduction.occupation,
             other.reduction.started,
             other.reduction.ended,
-            other.reduction.uncertainty.horizontal95_m,
-            other.reduction.uncertainty.vertical95_m,
+            reaches_accuracy(requirement, other.reduction),
         )
         for other in all_reduced
         if other.reduction.mark == item.reduction.mark
@@ -110,7 +112,7 @@ def judge(item: Reduced, occupation: Occupation, others: list[OtherOccupation]) 
     reduction.findings = [*book_findings(occupation), *item.notes, *findings_of(item, occupation)]
     reduction.findings.sort(key=lambda finding: SEVERITIES.index(finding.severity))
     figures = Figures(item.horizontal, item.vertical, item.horizontal_forbidden_by, item.vertical_forbidden_by)
-    reduction.leave = leave_check(occupation.session.requirement, reduction, figures, others)
+    reduction.leave = leave_check(occupation.session.requirement, reduction, figures, others, item.screened.gates)
 
 
 def book_findings(occupation: Occupation) -> list[Finding]:

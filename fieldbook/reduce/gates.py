@@ -85,7 +85,7 @@ def gate_codes(columns: EpochColumns, limits: Limits) -> tuple[Codes, Counter[st
     decoder = np.where(columns.code == DATE_UNKNOWN, 0, columns.code).astype(np.uint8)
     codes = np.where((decoder > 0) & ((codes == 0) | (decoder < codes)), decoder, codes)
     codes[columns.instant_ms == MISSING] = NO_TIME
-    return codes, _not_applied(columns, limits, codes, corrected)
+    return codes, _not_applied(columns, limits, codes)
 
 
 def _over(values: NDArray[np.int64], limit: float | None) -> Flags:
@@ -106,15 +106,23 @@ def _foreign_datum(columns: EpochColumns, limits: Limits) -> Flags:
     return result
 
 
-def _not_applied(columns: EpochColumns, limits: Limits, codes: Codes, corrected: Flags) -> Counter[str]:
-    gates = [
+def stated_gates(
+    columns: EpochColumns, limits: Limits
+) -> list[tuple[str, str, float | None, NDArray[np.int64], Flags]]:
+    """Code, requirement key, limit, values, and the epochs that the gate concerns."""
+    every = np.ones(len(columns), dtype=np.bool_)
+    corrected = np.isin(columns.quality, QUALITIES_WITH_CORRECTIONS)
+    return [
         ("age", "max_correction_age_s", limits.max_age_ms, columns.age_ms, corrected),
-        ("satellites", "min_satellites", limits.min_satellites, columns.satellites, True),
-        ("dop", "max_hdop", limits.max_hdop_milli, columns.hdop_milli, True),
-        ("dop", "max_pdop", limits.max_pdop_milli, columns.pdop_milli, True),
+        ("satellites", "min_satellites", limits.min_satellites, columns.satellites, every),
+        ("dop", "max_hdop", limits.max_hdop_milli, columns.hdop_milli, every),
+        ("dop", "max_pdop", limits.max_pdop_milli, columns.pdop_milli, every),
     ]
+
+
+def _not_applied(columns: EpochColumns, limits: Limits, codes: Codes) -> Counter[str]:
     found: Counter[str] = Counter()
-    for code, key, limit, values, concerned in gates:
+    for code, key, limit, values, concerned in stated_gates(columns, limits):
         reached = (codes == 0) | (codes >= CODE_NUMBER[code])
         count = int(np.count_nonzero((values == MISSING) & reached & concerned)) if limit is not None else 0
         if count:

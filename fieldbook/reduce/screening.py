@@ -24,6 +24,7 @@ from fieldbook.model.session import FixClass
 from fieldbook.reduce.blocks import Blocks
 from fieldbook.reduce.columns import CODE_NUMBER, CODES, MISSING, EpochColumns
 from fieldbook.reduce.frozen import FrozenRuns
+from fieldbook.reduce.gate_reports import GateReports, GateTally
 from fieldbook.reduce.gates import CONFLICT, DATE_UNKNOWN, DUPLICATE, NO_TIME, TIME_BACK, Limits, gate_codes
 from fieldbook.reduce.kept_sums import InitialisationSums, KeptSums, median_of
 from fieldbook.reduce.local_frame import LocalFrame
@@ -43,6 +44,7 @@ class Screened:
 
     codes: uint8 (n,), 0 = kept, else CODE_NUMBER; initialisation: int32 (n,), 0 = before the first.
     set_aside: code -> number of epochs. not_applied: requirement key -> epochs whose field was absent.
+    gates: requirement key of each stated gate -> what was reported for the epochs that passed.
     frame: None while no epoch has passed the gates. Instants in ms of the occupation's clock.
     """
 
@@ -52,6 +54,7 @@ class Screened:
     blocks: Blocks
     initialisations: dict[int, InitialisationSums]
     not_applied: dict[str, int]
+    gates: dict[str, GateTally]
     median_step_ms: int | None
     heard_from_ms: int | None
     heard_to_ms: int | None
@@ -112,6 +115,7 @@ class Screening:
 
     def __post_init__(self) -> None:
         self._order = TimeOrder()
+        self._reports = GateReports(self.limits)
         self._splitter = Splitter(self.limits)
         self._frozen = FrozenRuns(self.override)
 
@@ -124,6 +128,7 @@ class Screening:
         codes = self._order.apply(columns, codes)
         numbers = self._splitter.apply(columns, codes)
         self._not_applied += absent
+        self._reports.push(columns, codes)
         self._steps_of(columns, codes)
         first_row = self._remember(codes, numbers)
         rows = np.flatnonzero(codes == 0)
@@ -159,6 +164,7 @@ class Screening:
             blocks=sums.blocks(),
             initialisations=sums.by_number,
             not_applied=dict(self._not_applied),
+            gates=dict(self._reports.tallies),
             median_step_ms=median_of(self._steps),
             heard_from_ms=self._from_ms,
             heard_to_ms=self._to_ms,

@@ -141,7 +141,7 @@ def _stated(reduced: Reduced, place: Place, occupation: Occupation) -> Stated:
     figures = Figures(
         reduced.horizontal, reduced.vertical, reduced.horizontal_forbidden_by, reduced.vertical_forbidden_by
     )
-    leave = leave_check(occupation.session.requirement, reduced.reduction, figures, [])
+    leave = leave_check(occupation.session.requirement, reduced.reduction, figures, [], reduced.screened.gates)
     gap_m = place.gap_m(position.lat_deg, position.lon_deg, position.h_m)
     return Stated(reduced.reduction.uncertainty, gap_m, reduced, findings, leave)
 

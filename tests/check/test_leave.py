@@ -12,6 +12,7 @@ from typing import Any
 import pytest
 
 from fieldbook.check.leave import Figures, OtherOccupation, leave_check
+from fieldbook.check.mark_leave import reaches_accuracy
 from fieldbook.model.reduction import (
     AntennaHeight,
     Ellipse95,
@@ -25,6 +26,7 @@ from fieldbook.model.reduction import (
     Uncertainty,
 )
 from fieldbook.model.session import Requirement
+from fieldbook.reduce.gate_reports import GateTally
 from fieldbook.reduce.prediction import TimeToGo
 
 REQUIRED = Requirement(horizontal_95_m=0.020, vertical_95_m=0.040, accept_quality=(4,), occupations=1)
@@ -68,10 +70,8 @@ def reduction(
     return replace(made, **more)
 
 
-def other(
-    number: int, started: str, ended: str, horizontal_m: float = 0.015, vertical_m: float = 0.03
-) -> OtherOccupation:
-    return OtherOccupation(number, started, ended, horizontal_m, vertical_m)
+def other(number: int, started: str, ended: str, *, counts: bool = True) -> OtherOccupation:
+    return OtherOccupation(number, started, ended, counts)
 
 
 LATER = other(2, "2027-03-04T06:00:00.000Z", "2027-03-04T06:20:00.000Z")
@@ -87,8 +87,9 @@ def check(
     made: Reduction | None = None,
     figures: Figures = BOTH_REACHED,
     others: tuple[OtherOccupation, ...] = (),
+    gates: dict[str, GateTally] | None = None,
 ) -> tuple[str, dict[str, LeaveLine]]:
-    leave = leave_check(requirement, made or reduction(), figures, others)
+    leave = leave_check(requirement, made or reduction(), figures, others, gates or {})
     return leave.verdict, lines(leave)
 
 
@@ -96,8 +97,8 @@ def test_everything_met() -> None:
     verdict, found = check(ALL, others=(LATER,))
     assert verdict == "good to leave"
     assert list(found) == [
-        "horizontal_95_m", "vertical_95_m", "minimum_time_s", "initialisations", "height_readings", "occupations",
-        "hours_between",
+        "horizontal_95_m", "vertical_95_m", "minimum_time_s", "initialisations", "accept_quality", "height_readings",
+        "occupations", "hours_between",
     ]  # fmt: skip
     assert all(line.met and line.time_to_go_s == 0.0 for line in found.values())
     assert {name for name, line in found.items() if line.scope == "mark"} == {"occupations", "hours_between"}
@@ -105,7 +106,7 @@ def test_everything_met() -> None:
 
 def test_lines_that_are_not_stated_are_not_judged() -> None:
     bare = replace(REQUIRED, height_readings=None, initialisations=None)
-    assert list(check(bare)[1]) == ["horizontal_95_m", "vertical_95_m"]
+    assert list(check(bare)[1]) == ["horizontal_95_m", "vertical_95_m", "accept_quality"]
     code = replace(REQUIRED, accept_quality=(1, 2), initialisations=2)
     assert "initialisations" not in check(code)[1], "only where quality 4 is accepted"
 
@@ -274,9 +275,8 @@ def test_hours_between_run_from_end_to_start(started: str, ended: str, hours: fl
     assert found.met is met
 
 
-@pytest.mark.parametrize(("horizontal_m", "vertical_m"), [(0.021, 0.03), (0.015, 0.041)])
-def test_a_poor_repeat_does_not_count(horizontal_m: float, vertical_m: float) -> None:
-    poor = replace(LATER, horizontal95_m=horizontal_m, vertical95_m=vertical_m)
+def test_a_poor_repeat_does_not_count() -> None:
+    poor = replace(LATER, counts=False)
     verdict, found = check(ALL, others=(poor,))
     assert verdict == "good to leave"
     assert (found["occupations"].have, found["occupations"].met) == (1, False)
@@ -287,8 +287,60 @@ def test_a_poor_repeat_does_not_count(horizontal_m: float, vertical_m: float) ->
     assert "occupation 2 misses" in both.text
 
 
-def test_a_repeat_without_height_does_not_count() -> None:
-    assert check(ALL, others=(replace(LATER, vertical95_m=None),))[1]["occupations"].have == 1
+@pytest.mark.parametrize(
+    ("horizontal_m", "vertical_m", "counts"),
+    [(0.020, 0.040, True), (0.021, 0.030, False), (0.015, 0.041, False), (0.015, None, False)],
+)
+def test_an_occupation_counts_when_it_reaches_the_accuracy_alone(
+    horizontal_m: float, vertical_m: float | None, counts: bool
+) -> None:
+    assert reaches_accuracy(REQUIRED, reduction(horizontal_m, vertical_m)) is counts
+
+
+def test_an_occupation_counts_in_the_frame_the_requirement_speaks_of() -> None:
+    client = replace(REQUIRED, in_frame="client frame")
+    assert not reaches_accuracy(client, reduction(0.015, 0.030, client_m=(0.024, 0.030)))
+    assert reaches_accuracy(client, reduction(0.024, 0.030, client_m=(0.019, 0.030)))
+    assert not reaches_accuracy(client, reduction(0.015, 0.030)), "not known in the client's frame"
+
+
+GATED = replace(REQUIRED, max_hdop=3.0, max_pdop=4.0, max_correction_age_s=10.0, min_satellites=6)
+TALLIES = {
+    "max_hdop": GateTally(1200, 0, 1400),
+    "max_pdop": GateTally(1200, 0, 2150),
+    "max_correction_age_s": GateTally(1200, 0, 3000),
+    "min_satellites": GateTally(1200, 0, 9),
+}
+
+
+def test_every_stated_gate_is_a_line_with_the_worst_kept_value() -> None:
+    made = reduction(set_aside={"dop": 31, "age": 4, "quality": 20, "no_fix": 5}, heard=1260)
+    verdict, found = check(GATED, made, gates=TALLIES)
+    assert verdict == "good to leave"
+    assert (found["max_hdop"].wanted, found["max_hdop"].have, found["max_hdop"].unit) == (3.0, 1.4, "")
+    assert found["max_pdop"].have == 2.15
+    assert (found["max_correction_age_s"].have, found["max_correction_age_s"].unit) == (3.0, "s")
+    assert (found["min_satellites"].wanted, found["min_satellites"].have) == (6.0, 9.0)
+    assert found["max_hdop"].text == "worst of the epochs kept; 31 set aside"
+    assert found["accept_quality"].have == "1200 of 1260 epochs"
+    assert found["accept_quality"].text == "all epochs kept have it; 25 without it set aside"
+
+
+@pytest.mark.parametrize(("absent", "met"), [(60, True), (61, False), (1200, False)])
+def test_a_limit_that_the_receiver_does_not_report_is_open(absent: int, met: bool) -> None:
+    reported = 1200 - absent
+    tally = GateTally(reported, absent, 2150 if reported else None)
+    verdict, found = check(GATED, gates=TALLIES | {"max_pdop": tally})
+    assert (verdict, found["max_pdop"].met) == ("good to leave" if met else "not yet", met)
+    if not met:
+        assert "GSA" in found["max_pdop"].text
+        assert found["max_pdop"].time_to_go_s is None
+        assert ("not reported, so" in found["max_pdop"].text) is (reported == 0)
+
+
+def test_an_age_of_corrections_where_nothing_corrects_the_receiver_is_no_line_to_wait_for() -> None:
+    found = check(GATED, gates=TALLIES | {"max_correction_age_s": GateTally()})[1]["max_correction_age_s"]
+    assert (found.met, found.have, found.text) == (True, None, "no epoch that it concerns")
 
 
 def test_one_occupation_asked_and_another_there_is_shown() -> None:

@@ -92,7 +92,7 @@ def test_a_reader_that_goes_away_is_no_failure(book) -> None:
     )
     assert listed.stdout is not None
     listed.stdout.close()
-    _, err = listed.communicate(timeout=20)
+    _, err = listed.communicate(timeout=60)
     assert (listed.returncode, err) == (0, b"")
 
 

@@ -139,7 +139,7 @@ class Recorders:
 
     def finished(self, process: subprocess.Popen[str]) -> tuple[int, str, str]:
         """Exit code, stdout, stderr of a process that ends by itself."""
-        out, err = process.communicate(timeout=20)
+        out, err = process.communicate(timeout=60)
         return process.returncode, out, err
 
     def opened(self) -> Book:
@@ -164,7 +164,7 @@ class Recorders:
         for process in self._started:
             if process.poll() is None:
                 process.send_signal(signal.SIGKILL)
-            process.communicate(timeout=20)
+            process.communicate(timeout=60)
 
 
 @pytest.fixture

@@ -52,7 +52,8 @@ class Recorded:
     def reduced(self, occupations: dict[int, Occupation]) -> list[Reduced]:
         found = [reduce_occupation(item, self.epochs[number], []) for number, item in occupations.items()]
         for item in found:
-            judge(item, occupations[item.reduction.occupation], others_of(item, found))
+            held = occupations[item.reduction.occupation]
+            judge(item, held, others_of(item, found, held.session.requirement))
         return found
 
 

@@ -176,7 +176,7 @@ def test_the_detached_recorder_outlives_its_starter(recorders: Recorders, port: 
         "from pathlib import Path; from fieldbook.occupy.detached import start_recorder; "
         f"start_recorder(Path({str(recorders.book)!r}), 1)"
     )
-    subprocess.run([sys.executable, "-c", script], check=True, timeout=20)
+    subprocess.run([sys.executable, "-c", script], check=True, timeout=60)
     assert recorder_alive(recorders.book)
     count = recorders.epochs()
     until(lambda: recorders.epochs() >= count + 3)
@@ -249,7 +249,7 @@ def test_status_and_watch_tell_of_a_running_recorder(recorders: Recorders, port:
     assert watch.stdout is not None
     assert "RTK fixed" in watch.stdout.readline()
     watch.send_signal(signal.SIGINT)
-    _, err = watch.communicate(timeout=10)
+    _, err = watch.communicate(timeout=60)
     assert watch.returncode == 130
     assert "Traceback" not in err
 

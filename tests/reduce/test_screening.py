@@ -17,6 +17,7 @@ from fieldbook.model.session import Requirement
 from fieldbook.reduce.columns import CODES, EpochColumns
 from fieldbook.reduce.estimate import estimate
 from fieldbook.reduce.frozen import repeat_chance, run_limit
+from fieldbook.reduce.gate_reports import GateTally
 from fieldbook.reduce.gates import Limits
 from fieldbook.reduce.initialisations import InitialisationJudge
 from fieldbook.reduce.screening import Screened, Screening
@@ -126,6 +127,37 @@ def test_absent_fields_are_no_reason_and_are_counted() -> None:
         "max_hdop": 6,
         "max_pdop": 39,
     }
+    shown = {key: (tally.shown, tally.not_shown) for key, tally in result.gates.items()}
+    assert shown == {
+        "max_correction_age_s": (33, 6),
+        "min_satellites": (33, 6),
+        "max_hdop": (33, 6),
+        "max_pdop": (0, 39),
+    }
+
+
+def test_the_worst_value_is_that_of_the_epochs_that_passed() -> None:
+    epochs = quiet()
+    epochs[3].hdop_milli, epochs[4].hdop_milli, epochs[5].hdop_milli = 1700, 3001, None
+    epochs[6].satellites, epochs[7].satellites = 8, 5
+    epochs[8].age_ms = 4500
+    gates = screened(epochs, Limits((4,), max_hdop_milli=3000, max_age_ms=10_000, min_satellites=8)).gates
+    assert gates["max_hdop"].worst == 1700
+    assert gates["min_satellites"].worst == 8
+    assert gates["max_correction_age_s"].worst == 4500
+    assert "max_pdop" not in gates, "not stated"
+
+
+def test_a_report_every_few_seconds_speaks_for_the_epochs_between() -> None:
+    epochs = quiet(100)
+    for number, epoch in enumerate(epochs):
+        epoch.pdop_milli = 1500 if number in (0, 5, 10) else 4001 if number == 20 else None
+    gates = screened(epochs, Limits((4,), max_pdop_milli=4000)).gates
+    # 0 to 19 are shown by the first three; 20 is set aside, and 21 on have nothing but a report beyond the limit
+    assert gates["max_pdop"] == GateTally(20, 79, 1500)
+    epochs[20].pdop_milli = None
+    gates = screened(epochs, Limits((4,), max_pdop_milli=4000)).gates
+    assert gates["max_pdop"] == GateTally(41, 59, 1500), "the report at 10 s holds until 40 s"
 
 
 def test_age_counts_only_where_corrections_are_used() -> None:
@@ -312,6 +344,7 @@ def same(first: Screened, second: Screened) -> None:
     assert first.initialisations == second.initialisations
     assert first.median_step_ms == second.median_step_ms
     assert first.not_applied == second.not_applied
+    assert first.gates == second.gates
     assert first.frame == second.frame
     one, two = (InitialisationJudge().judge(item) for item in (first, second))
     assert np.array_equal(one.codes, two.codes)
