@@ -14,7 +14,7 @@ from typing import Any
 
 import click
 
-from fieldbook.commands import assignments, marks_coordinates
+from fieldbook.commands import assignments, marks_coordinates, marks_inverse
 from fieldbook.commands.open_book import reading, writing
 from fieldbook.commands.output import line, write_json
 from fieldbook.errors import UsageError
@@ -27,7 +27,7 @@ READ = (*COLUMNS, "position")
 MAX_BYTES = 4 * 1024 * 1024
 
 
-@click.group("marks", help="List, import or export the marks of a book; their coordinates.")
+@click.group("marks", help="List, import or export the marks of a book; their coordinates, and lines between.")
 def command() -> None:
     """The group."""
 
@@ -200,3 +200,4 @@ def _within(tree: Tree, place: str) -> None:
 
 
 command.add_command(marks_coordinates.command)
+command.add_command(marks_inverse.command)

@@ -6,7 +6,7 @@ whether there was a connection.
     registry     what a frame is               choice      is a choice complete: check_frames, epochs
     candidates   PROJ's offers, judged         route       which of them: direct, equalities, by an ITRF
     convert      transform_to_client           projection  project, check_grid        heightgrid  GeoTIFF geoid
-    located      typed positions, there and back
+    located      typed positions, there and back          geodesic    Karney's, by PROJ
 """
 
 from __future__ import annotations
@@ -29,6 +29,7 @@ from fieldbook.reduce.frames.convert import (  # noqa: E402
     operation_codes,
     transform_to_client,
 )
+from fieldbook.reduce.frames.geodesic import geodesic  # noqa: E402
 from fieldbook.reduce.frames.heightgrid import undulation_by_proj  # noqa: E402
 from fieldbook.reduce.frames.located import located, printed  # noqa: E402
 from fieldbook.reduce.frames.projection import check_grid, project, unproject  # noqa: E402
@@ -56,6 +57,7 @@ __all__ = [
     "decimal_year",
     "ellipsoidal_height_difference_to_itrf2020",
     "frame_info",
+    "geodesic",
     "inside",
     "is_global_realisation",
     "located",
