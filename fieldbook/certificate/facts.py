@@ -244,6 +244,11 @@ def _cautions(session: Session, reduction: Reduction) -> list[str]:
         )
     if height is not None and height.vertical95_m is None:
         found.append("The geoid model states no uncertainty, so the height by that model has no stated 95 %.")
+    if any(step.authority == "motion" for step in reduction.operation.steps):
+        found.append(
+            "The client's coordinates hold for another epoch than that of the observation: the motion in between was stated, "
+            "not measured, and an earthquake or a slide since would not show."
+        )
     found += [f"{item.code} was taken as {item.as_code} by declaration ({item.source})." for item in frame.taken_as]
     if reduction.uncertainty.governed_by != "data":
         found.append(

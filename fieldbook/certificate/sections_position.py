@@ -244,14 +244,22 @@ def frames(facts: Tree) -> Section:
         f"{item['code']} taken as {item['as_code']}, standard uncertainty {item['sigma_m']} m; "
         f"source: {item['source']}."
         for item in facts["taken_as"]
-    ] + [
-        f"Motion: {said(item['model'])}, plate {said(item['plate'])}; source: {said(item['source'])}."
-        for item in facts["motion"]
-    ]
+    ] + [_motion_text(item) for item in facts["motion"]]
     if declared:
         blocks.append(Bullets(declared))
     blocks.append(Pairs(_model_rows(grid, height)))
     return Section("Frames, height model and grid", blocks)
+
+
+def _motion_text(item: Tree) -> str:
+    """The stated motion; that it was applied, and over which years, stands among the steps."""
+    if item["velocity_m_per_year"]:
+        parts = ", ".join(trimmed(value, "m") for value in item["velocity_m_per_year"])
+        what = f"velocity X, Y, Z {parts} a year"
+    else:
+        what = f"plate model {item['model']}, plate {item['plate']}"
+    sigma = trimmed(item["sigma_m_per_year"], "m")
+    return f"Motion stated: {what}; standard uncertainty {sigma} a year; source: {said(item['source'])}."
 
 
 def _steps(operation: Tree) -> Table:

@@ -43,6 +43,7 @@ from fieldbook.reduce.gates import Limits
 from fieldbook.reduce.geodesy import moved_along_normal, moved_by_enu
 from fieldbook.reduce.geoid import height_above_geoid
 from fieldbook.reduce.initialisations import InitialisationJudge, Judgement
+from fieldbook.reduce.motion import motion_findings
 from fieldbook.reduce.prediction import TimeToGo, TypeA, time_to_go, type_a
 from fieldbook.reduce.region import coverage_factor_95
 from fieldbook.reduce.screening import Screened, Screening
@@ -315,6 +316,7 @@ class _Steps:
             if would != frames.operation_codes(operation):
                 text = f"PROJ would now choose {' + '.join(would)}; the recorded operation {' + '.join(keep)} was kept."
                 self.notes.append(Finding("operation_differs", "caution", text, {"recorded": keep, "would_use": would}))
+        self.notes += motion_findings(choice, operation, self.epoch_of_observation)
         return client, operation
 
     def _grid(self, client: ClientPosition | None) -> GridPosition | None:

@@ -14,7 +14,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
-from fieldbook.model.reduction import Operation
+from fieldbook.model.reduction import Operation, OperationStep
 from fieldbook.model.session import Corrections, Setup
 from fieldbook.reduce.antenna import ASSUMED_READING_SIGMA_M, AntennaReduction
 from fieldbook.reduce.budget import Term, Triple
@@ -22,6 +22,7 @@ from fieldbook.reduce.fix_classes import FLOOR_DOF
 
 PPM_OF_DISTANCE = 1e-6
 PLUMB_LINE_ARCSEC = 15.0  # deflection of the vertical, typical size; from memory, medium
+MOTION = "motion"  # authority of a step that is a stated motion, not an operation of a register
 COMMON_NOTE = "common to all occupations with this station and antenna"
 
 
@@ -129,6 +130,9 @@ def operation_terms(operation: Operation) -> list[Term]:
     """Each step of the frame operation: its stated accuracy as one standard uncertainty per axis, common."""
     terms = []
     for step in operation.steps:
+        if step.authority == MOTION:
+            terms.append(_motion_term(step))
+            continue
         accuracy_m = step.accuracy_m or 0.0
         note = "by definition" if accuracy_m == 0.0 else f"as stated by {step.authority}, probability not given"
         if step.remark:
@@ -144,3 +148,18 @@ def operation_terms(operation: Operation) -> list[Term]:
             )
         )
     return terms
+
+
+def _motion_term(step: OperationStep) -> Term:
+    """Uncertainty of the stated motion over the years between the epochs. Its name holds no dates: the same motion is the
+    same error in every mark, to the size of the shorter time (`shared`)."""
+    u_m = step.accuracy_m or 0.0
+    how = "stated velocity" if step.code.startswith("velocity") else "plate model, which has no vertical motion"
+    return Term(
+        f"motion of the ground between the epochs, {step.code}",
+        "B",
+        "normal",
+        (u_m, u_m, u_m),
+        common=True,
+        note=f"{how}; {step.name}; {step.remark}".rstrip("; "),
+    )

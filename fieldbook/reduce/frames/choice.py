@@ -15,6 +15,12 @@ from fieldbook.reduce.constants import PLATE_ROTATIONS
 from fieldbook.reduce.frames.projection import check_grid
 from fieldbook.reduce.frames.registry import FrameInfo, frame_info
 
+# The two ways there are, and the way round: nothing moves a mark by default.
+MOTION_REMEDY = (
+    "State how the mark moves in [[frame.motion]]: the plate of a published model (ITRF2020 or ITRF2014), or a velocity "
+    "with its source, either with sigma_m_per_year; or take the receiver's epoch for the client."
+)
+
 _FIRST_EPOCH, _LAST_EPOCH = 1980.0, 2100.0  # GPS time begins in 1980; a coordinate epoch of 0.0 is a slip
 _SAME_EPOCH_A = 1e-6
 
@@ -95,7 +101,7 @@ def motion_of(choice: FrameChoice, epoch_of_observation: float) -> tuple[Motion,
     if not choice.motion:
         raise ReductionError(
             f"The receiver's coordinates are at {have:.4f}, the client's shall be at {want:.4f}, both moving frames.",
-            "State how the mark moves in [[frame.motion]], or take the receiver's epoch for the client.",
+            MOTION_REMEDY,
             code="motion_unknown",
         )
     return choice.motion[0], have, want
@@ -186,7 +192,7 @@ def _check_motion(choice: FrameChoice, receiver: FrameInfo, client: FrameInfo) -
         raise UsageError(
             f"Receiver epoch {choice.receiver_epoch} and client epoch {choice.client_epoch} differ, and both "
             f"{receiver.name} and {client.name} are moving frames.",
-            "State how the mark moves in [[frame.motion]], or take the receiver's epoch for the client.",
+            MOTION_REMEDY,
             code="motion_unknown",
         )
     if not choice.motion:

@@ -16,7 +16,7 @@ from pyproj.exceptions import ProjError
 from fieldbook.errors import ReductionError
 from fieldbook.model.reduction import ClientPosition, GridFile, Operation, OperationStep
 from fieldbook.model.session import FrameChoice, Motion
-from fieldbook.reduce.constants import ACCURACY_LIMIT_M, PLATE_ROTATIONS
+from fieldbook.reduce.constants import ACCURACY_LIMIT_M, PLATE_ROTATIONS, PLATE_SOURCES
 from fieldbook.reduce.frames.candidates import step_code
 from fieldbook.reduce.frames.choice import (
     check_frames,
@@ -189,14 +189,20 @@ def _moved(start: Position, receiver: FrameInfo, motion: tuple[Motion, float, fl
 
 
 def _motion_step(motion: Motion, have: float, want: float) -> OperationStep:
-    sigma = float(motion.sigma_m_per_year or 0.0) * abs(want - have)
+    """The motion as a recorded step; its accuracy is sigma per year times the years."""
+    per_year = float(motion.sigma_m_per_year or 0.0)
+    span = f"{have:.4f} to {want:.4f}"
+    said = [f"standard uncertainty {1000 * per_year:g} mm a year over {abs(want - have):.2f} years"]
     if motion.velocity_m_per_year is not None:
         code = "velocity " + " ".join(f"{value:+.4f}" for value in motion.velocity_m_per_year)
-        name = f"stated velocity, {have:.4f} to {want:.4f}"
+        name = f"stated velocity, {span}"
     else:
         code = f"{motion.model} {motion.plate}"
-        name = f"plate motion {motion.model} {motion.plate}, {have:.4f} to {want:.4f}"
-    return OperationStep("motion", code, name, sigma, remark=motion.source or "")
+        name = f"plate motion {motion.model} {motion.plate}, {span}"
+        said.append(PLATE_SOURCES[str(motion.model)])
+    if motion.source:
+        said.append(motion.source)
+    return OperationStep("motion", code, name, per_year * abs(want - have), remark="; ".join(said))
 
 
 def _run(route: Route, start: Position, epoch: float) -> Position:
