@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from fieldbook.model.recorder import RecorderState
-from fieldbook.model.reduction import Reduction, Trace
+from fieldbook.model.reduction import Convergence, Reduction, Trace
 from fieldbook.model.state import BookState, Occupation
 
 
@@ -24,3 +24,4 @@ class LiveView:
     trace: Trace | None
     effective_epochs: float | None  # 'worth about k independent ones'
     correlation_lengths: float | None  # duration / correlation time
+    convergence: Convergence | None = None  # the running mean, where the looker asked for it; may be some seconds old

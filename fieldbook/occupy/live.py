@@ -14,10 +14,12 @@ from fieldbook.book.store import Book
 from fieldbook.clock import Clock, SystemClock
 from fieldbook.errors import ReductionError, UsageError
 from fieldbook.model.live import LiveView
+from fieldbook.model.reduction import Convergence
 from fieldbook.model.state import BookState, Occupation
 from fieldbook.occupy.reductions import judge, others_of, reduce_one, search_dirs
 from fieldbook.reduce.occupation import OccupationReducer, Reduced
 
+RUNNING_EVERY_S = 15.0  # the running mean costs a fifth of a second: one in fifteen seconds is little
 MOST_EPOCHS_A_LOOK = 50_000  # a long occupation opened late comes in pieces: every look answers soon
 
 
@@ -39,6 +41,8 @@ class LiveReader:
         self._reducer: OccupationReducer | None = None
         self._last: tuple[Reduced | None, tuple[str, str, str] | None] = (None, None)
         self._siblings: tuple[int, int, list[Reduced]] = (-1, -1, [])
+        self._running: tuple[Reduced | None, float, Convergence | None] = (None, 0.0, None)
+        self.wants_running = False  # set by who shows the running mean
         self._first_instant_ms: int | None = None
         self._last_instant_ms: int | None = None
 
@@ -108,6 +112,19 @@ class LiveReader:
             self._siblings = (*key, found)
         return self._siblings[2]
 
+    def _convergence(self, reduced: Reduced | None) -> Convergence | None:
+        """The running mean, made anew every so often and when the occupation is another one or has ended."""
+        if reduced is None or not self.wants_running:
+            return None
+        made_of, made_s, found = self._running
+        now_s = self._clock.monotonic_ms() / 1000.0
+        if made_of is not reduced:
+            same = made_of is not None and made_of.reduction.occupation == reduced.reduction.occupation
+            if not same or not reduced.reduction.open or now_s - made_s >= RUNNING_EVERY_S:
+                found = reduced.convergence()
+                self._running = (reduced, now_s, found)
+        return found
+
     def _view(self, book: Book, state: BookState, occupation: Occupation | None) -> LiveView:
         heard = book.recorder_state()
         if heard is not None and (occupation is None or heard.occupation != occupation.number):
@@ -132,4 +149,5 @@ class LiveReader:
             trace=None if reduced is None else reduced.trace,
             effective_epochs=None if reduced is None else reduced.mean.independent_epochs,
             correlation_lengths=None if reduced is None else reduced.mean.ratio,
+            convergence=self._convergence(reduced),
         )

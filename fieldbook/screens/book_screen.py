@@ -276,6 +276,10 @@ class BookScreen(Screen[None]):
     def do_end(self) -> None:
         recording.end(self)
 
+    def do_graph(self) -> None:
+        self.query_one(OccupationPage).graph()
+        self.feed.request()
+
     def do_leave(self) -> None:
         self.go("leave")
 

@@ -65,6 +65,7 @@ class Bridge:
     path: Path
     clock: Clock = field(default_factory=SystemClock)
     observer: str = ""  # who signs; empty until a session or a person says so
+    wants_running: bool = False  # a page shows the running mean: make it, in the feed's thread
     _reader: LiveReader | None = None
 
     # --- looking
@@ -75,6 +76,7 @@ class Bridge:
 
         if self._reader is None:
             self._reader = LiveReader(self.path, self.clock)
+        self._reader.wants_running = self.wants_running
         return self._reader.snapshot()
 
     def close(self) -> None:

@@ -17,6 +17,8 @@ CANNOT_KNOW = (
     "What cannot be known here: a wrong fix common to all initialisations, an error of the base, a mark that moves. "
     "Tie to a known mark."
 )
+WIDE = 100
+GATE_KEYS = ("accept_quality", "max_hdop", "max_pdop", "max_correction_age_s", "min_satellites")
 
 
 class LeavePage(Page):
@@ -44,7 +46,7 @@ def leave_rows(view: LiveView | None, width: int) -> list[Row]:
         if view is not None and view.problem is not None:
             rows += paragraph(" ".join(view.problem[1:]), width, mark=("▲", "warn"))
         return rows
-    name_width = 27 if width < 100 else 34
+    name_width = 27 if width < WIDE else 34
     rows.append(
         row((pad("", name_width + 3), "soft"), (pad("wanted", 18), "soft"), (pad("have", 14), "soft"), ("open", "soft"))
     )
@@ -52,10 +54,21 @@ def leave_rows(view: LiveView | None, width: int) -> list[Row]:
         lines = [item for item in leave.lines if item.scope == scope]
         if scope == "mark" and lines:
             rows += [BLANK, row((" Of the mark, not of this set-up", "soft"))]
+        if width < WIDE:
+            lines = _met_gates_as_one(lines)
         for item in lines:
             rows += _line(item, width, name_width)
     rows += [BLANK, *paragraph(CANNOT_KNOW, width, style="soft")]
     return rows
+
+
+def _met_gates_as_one(lines: list[LeaveLine]) -> list[LeaveLine]:
+    """The gates that are met in one line, where the first of them stands: a small screen is for what is open."""
+    met = [item for item in lines if item.met and item.line in GATE_KEYS]
+    if len(met) < 2:
+        return lines
+    one = LeaveLine("gates", "set-up", f"{len(met)} limits", "all kept", "", True, 0.0, "")
+    return [one if item is met[0] else item for item in lines if item is met[0] or item not in met]
 
 
 def figure(value: float | str | None, unit: str) -> str:
@@ -63,7 +76,7 @@ def figure(value: float | str | None, unit: str) -> str:
     if value is None:
         return "–"
     if isinstance(value, str):
-        return "both" if value == "before and after" else value
+        return "both" if value == "before and after" else value.removesuffix(" epochs")
     if unit == "m":
         return length_95(value)
     if unit == "s":

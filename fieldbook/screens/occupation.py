@@ -15,6 +15,13 @@ class OccupationPage(Page):
 
     name_of_page: ClassVar[str] = "occupation"
     facing: ClassVar[bool] = True
+    running: bool = False  # the lower figure is the running mean, not the heights of the epochs
+
+    def graph(self) -> None:
+        """The other lower figure."""
+        self.running = not self.running
+        self.desk.bridge.wants_running = self.running
+        self.redraw()
 
     def left(self, width: int, height: int) -> list[Row]:
         """Figures."""
@@ -22,4 +29,4 @@ class OccupationPage(Page):
 
     def right(self, width: int, height: int) -> list[Row]:
         """Sketch."""
-        return sketch_rows(self.view, width, height, Look(self.desk.ascii_only))
+        return sketch_rows(self.view, width, height, Look(self.desk.ascii_only, self.running))

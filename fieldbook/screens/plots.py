@@ -18,6 +18,7 @@ from fieldbook.model.reduction import Ellipse95, Trace
 from fieldbook.screens.canvas import Canvas, ellipse_points, nice_length
 from fieldbook.screens.plain import fit, pad
 from fieldbook.screens.rows import BLANK, Row, beside, cropped, heading, paragraph, row
+from fieldbook.screens.settling import settling_rows
 
 SHAPES = ("○", "+", "△", "◆")  # second and later initialisations; the first is drawn in dots
 ASIDE = "×"
@@ -30,6 +31,7 @@ class Look:
     """How to draw: ASCII shades for terminals without braille."""
 
     ascii_only: bool = False
+    running: bool = False  # below the plan stands the running mean, not the heights of the epochs
 
 
 def sketch_rows(view: LiveView | None, width: int, height: int, look: Look = Look()) -> list[Row]:
@@ -46,7 +48,10 @@ def sketch_rows(view: LiveView | None, width: int, height: int, look: Look = Loo
         drawn = beside(drawn, legend_rows(view, width - 4 * square - 5), 4 * square + 4)
     rows += drawn
     left = height - len(rows) - 2
-    rows += trace_rows(view.trace, width, left, look)
+    if look.running:
+        rows += settling_rows(view, width, left, ascii_only=look.ascii_only)
+    else:
+        rows += trace_rows(view.trace, width, left, look)
     rows += signal_rows(sky, width, height - len(rows))
     return rows[:height]
 

@@ -64,3 +64,19 @@ def test_what_the_screen_shows_at_the_end_is_what_is_reduced(name: str, sample_b
     last = max(reduced, key=lambda item: item.reduction.occupation).reduction
     assert view.reduction is not None
     assert view.reduction.to_json() == last.to_json()
+
+
+def test_the_running_mean_is_made_only_when_asked_for(sample_books: dict[str, Path]) -> None:
+    reader = LiveReader(sample_books["kestrel-ridge"])
+    try:
+        assert reader.snapshot().convergence is None
+        reader.wants_running = True
+        made = reader.snapshot().convergence
+        assert made is not None
+        assert reader.snapshot().convergence is made, "nothing new: not made again"
+        view = reader.snapshot()
+    finally:
+        reader.close()
+    assert view.reduction is not None
+    assert made.horizontal95_m[-1] == view.reduction.uncertainty.horizontal95_m
+    assert made.vertical95_m[-1] == view.reduction.uncertainty.vertical95_m

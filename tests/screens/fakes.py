@@ -22,6 +22,7 @@ from fieldbook.model.reduction import (
     AntennaHeight,
     BudgetLine,
     ClientPosition,
+    Convergence,
     Ellipse95,
     Finding,
     Geodetic,
@@ -277,6 +278,17 @@ def recorder(**changes: Any) -> RecorderState:
     return dataclasses.replace(state, **changes)
 
 
+CONVERGENCE = Convergence(
+    [60.0 * k for k in range(1, 15)],
+    [0.004 / k for k in range(1, 15)],
+    [0.003 / k for k in range(1, 15)],
+    [None, *[0.010 / k for k in range(2, 15)]],
+    [0.060 / k**0.5 for k in range(1, 15)],
+    [None, *[0.080 / k**0.5 for k in range(2, 15)]],
+    "2027-03-04T08:09:00.000Z",
+)
+
+
 class FakeBridge(Bridge):
     """A bridge without a book: keeps what was written, and builds the picture from it."""
 
@@ -372,6 +384,7 @@ class FakeBridge(Bridge):
             self.trace if shown else None,
             4.0,
             4.4,
+            CONVERGENCE if self.wants_running and shown else None,
         )
 
     def entries(self) -> list[Entry]:

@@ -431,6 +431,25 @@ def test_quit_asks_and_the_recorder_is_left_running(key: str) -> None:
     asyncio.run(go())
 
 
+@pytest.mark.parametrize("size", SIZES, ids=str)
+def test_graph_turns_the_lower_figure(size: tuple[int, int]) -> None:
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge, size=size) as pilot:
+            await see(pilot, "FIGURES")
+            if size[0] < 110:
+                await pilot.press("tab")
+            await see(pilot, "HEIGHT mm from mean")
+            assert not bridge.wants_running, "the running mean costs something: it is made only when looked at"
+            await pilot.press("g")
+            await see(pilot, "RUNNING MEAN", "inside the wanted figures since 08:09 UTC", "height, wanted 40 mm")
+            await pilot.press("g")
+            await see(pilot, "HEIGHT mm from mean")
+            assert not bridge.wants_running
+
+    asyncio.run(go())
+
+
 # --- paper and diary
 
 

@@ -3,19 +3,22 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
 
+from fieldbook.model.reduction import Convergence
 from fieldbook.screens.canvas import Canvas, ellipse_points, nice_length
 from fieldbook.screens.digits import big
 from fieldbook.screens.plain import clean, fit, pad, to_ascii, width_of, wrapped
 from fieldbook.screens.plots import plan_half_width_m, plan_rows, sky_rows, trace_rows
 from fieldbook.screens.rows import STYLES, cropped, row, row_width
+from fieldbook.screens.settling import settling_rows
 from fieldbook.screens.themes import PALETTES, contrast, luminance
 from fieldbook.screens.words import duration, length_95, quality_word, stopwatch
 
-from .fakes import HOSTILE, SKY, FakeBridge, trace
+from .fakes import CONVERGENCE, HOSTILE, SKY, FakeBridge, trace
 
 
 def dots_of(rows: list[tuple[tuple[str, str], ...]]) -> np.ndarray:
@@ -218,3 +221,43 @@ def test_a_combined_document_names_its_occupations() -> None:
 
     assert occupations_of({"occupation": 2}) == "occupation 2"
     assert occupations_of({"occupation": None, "occupations": [1, 2]}) == "occupations 1, 2"
+
+
+def settling(width: int = 80, height: int = 14, **changes: object) -> list[tuple[tuple[str, str], ...]]:
+    bridge = FakeBridge(recording=True)
+    bridge.wants_running = True
+    return settling_rows(replace(bridge.snapshot(), **changes), width, height)
+
+
+def dots_in(rows: list[tuple[tuple[str, str], ...]], style: str, columns: slice) -> list[int]:
+    """First row of dots of that style in each of the columns of cells, -1 where there is none."""
+    cells: list[list[tuple[str, str]]] = [[(letter, name) for text, name in line for letter in text] for line in rows]
+    found = []
+    for column in range(columns.start, columns.stop):
+        hit = [line for line, cell in enumerate(cells) if column < len(cell) and cell[column][1] == style]
+        found.append(hit[0] if hit else -1)
+    return found
+
+
+def test_the_band_narrows_and_the_mean_comes_to_rest_inside_it() -> None:
+    rows = settling()
+    text = ["".join(part for part, _ in line) for line in rows]
+    assert text[0].startswith(" RUNNING MEAN  inside the wanted figures since 08:09 UTC")
+    assert "plan, wanted 20 mm" in text[1]
+    assert "height, wanted 40 mm" in text[1]
+    assert len(rows) == 14
+    drawing = rows[2:-1]
+    circle = [line for line in dots_in(drawing, "accent", slice(8, 38)) if line >= 0]
+    assert circle == sorted(circle), "the circle comes down from the top, never up again"
+    assert circle[0] == 0
+    assert circle[-1] > circle[0]
+    assert text[2].startswith("  60 mm"), "three times the wanted figure is the most that is drawn"
+
+
+def test_without_a_running_mean_the_figure_says_so() -> None:
+    assert "not yet" in "".join(part for part, _ in settling(convergence=None)[1])
+    one = Convergence([60.0], [0.0], [0.0], [None], [0.03], [None])
+    assert "not yet" in "".join(part for part, _ in settling(convergence=one)[1])
+    flat = replace(CONVERGENCE, up_m=[None] * 14, vertical95_m=[None] * 14)
+    assert any("not known" in part for line in settling(convergence=flat) for part, _ in line), "no height, no strip"
+    assert settling(height=5) == [], "no room for a figure"
