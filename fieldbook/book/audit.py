@@ -3,11 +3,12 @@
     header, schema, migrations      against this program's migrations and the entries `book` and `migrated`
     entry                           sequence, canonical text, time, hash, hash of the one before
     raw_chunk, raw_pack             every column against the `raw` entries; content against its SHA-256
-    raw_tail                        empty once its occupation has ended; only known occupations
+    raw_tail                        as the last heartbeat sums it up; empty once its occupation has ended
     end                             number and SHA-256 of the received bytes, number of epochs
     epoch, epoch_form               complete and consistent; their values are compared with a rebuild by the caller
     epoch_pack                      the same, and its stored bytes against their SHA-256
     recorder_state                  not covered: a heartbeat
+    BOOK-wal                        no commits behind a damaged frame (`wal`), as long as nobody is on the book
 
 Nothing here raises, whatever the file is: what cannot be read is a finding. All reading happens in one read
 transaction, so that a running recorder cannot make a sound book look wrong. What an audit cannot see: entries cut
@@ -30,7 +31,7 @@ from fieldbook.errors import FieldbookError, UsageError
 from fieldbook.model.canonical import Tree, canonical_json
 from fieldbook.model.entry import GENESIS, entry_hash
 
-from . import connect, migrations
+from . import connect, migrations, wal
 from .audit_epochs import audit_epochs
 from .audit_raw import audit_raw
 from .kinds import KINDS, MAX_BODY_BYTES, checked_body
@@ -92,12 +93,14 @@ def audit_book(path: Path, *, time_limit_s: float = TIME_LIMIT_S) -> list[AuditF
 
     Epoch values are not judged here: the caller decodes what was received again and compares with `Book.epochs`.
     """
+    wrong = wal.wal_problem(path, connect.connections_here(path))
+    found = [AuditFinding("file", wrong)] if wrong else []
     try:
         connection = connect.open_reader(path)
     except FieldbookError as error:
-        return [AuditFinding("file", error.text)]
+        return [*found, AuditFinding("file", error.text)]
     try:
-        return _audited(connection, time_limit_s)
+        return [*found, *_audited(connection, time_limit_s)]
     finally:
         connection.close()
 

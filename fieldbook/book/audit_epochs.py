@@ -10,7 +10,7 @@ from collections import Counter
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-from . import connect, epoch_packs
+from . import connect, epoch_packs, heartbeat
 
 if TYPE_CHECKING:
     from .audit import Audit
@@ -47,6 +47,24 @@ def audit_epochs(audit: Audit) -> None:
         if stated != 0:
             audit.find("epoch", f"epochs of occupation {occupation}: none, entry {seq} states {stated!r:.40}", seq)
     _forms(audit)
+    _stored(audit, found)
+
+
+def _stored(audit: Audit, found: dict[int, _Numbers]) -> None:
+    """The heartbeat of an open occupation never says more epochs than are stored; an entry may have had them decoded again."""
+    try:
+        said = heartbeat.tree(audit.connection)
+    except ValueError:
+        return  # a finding of the tail
+    occupation, count = said.get("occupation"), said.get("epochs")
+    ended = {number for number, _, _ in audit.by_occupation("end")}
+    changed = {number for kind in ("decision", "setup") for number, _, _ in audit.by_occupation(kind)} | ended
+    if type(occupation) is int and type(count) is int and occupation not in changed:
+        there = found.get(occupation, _Numbers(0, 0, 0)).count
+        if count > there:
+            audit.find(
+                "epoch", f"epochs of occupation {occupation}: there are {there}, the recorder had stored {count}"
+            )
 
 
 def _packs(audit: Audit) -> dict[int, _Numbers]:

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 
 from fieldbook.model.item import ItemKind, parse_items
 
-from . import raw
+from . import heartbeat, raw, tail
 from .inflate import inflate_chunk
 
 if TYPE_CHECKING:
@@ -50,6 +50,7 @@ def audit_raw(audit: Audit) -> None:
     ended = {occupation: (seq, body) for occupation, seq, body in audit.by_occupation("end")}
     received = _stated(audit)
     _check_tail(audit, known, ended.keys())
+    _check_tail_sum(audit, received)
     _check_strangers(audit, received)
     _check_packs(audit)
     for occupation, found in received.items():
@@ -92,6 +93,18 @@ def _check_tail(audit: Audit, known: set[int], ended: Set[int]) -> None:
     ).fetchone()[0]
     if wrong:
         audit.find("raw", f"{wrong} rows in the tail are of a kind that does not exist")
+
+
+def _check_tail_sum(audit: Audit, received: dict[int, _Received]) -> None:
+    """The tail against the recorder's last heartbeat: all of it, but for what came after that."""
+    try:
+        stated = heartbeat.tree(audit.connection).get("tail")
+    except ValueError:
+        audit.find("raw", "what the recorder last said of itself cannot be read")
+        return
+    sealed = [chunk.last_id for found in received.values() for _, chunk in found.chunks]
+    if wrong := tail.problem(audit.connection, stated, max(sealed, default=0)):
+        audit.find("raw", f"the tail: {wrong}")
 
 
 def _check_strangers(audit: Audit, received: dict[int, _Received]) -> None:

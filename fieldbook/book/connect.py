@@ -22,6 +22,7 @@ from urllib.parse import quote_from_bytes
 from fieldbook.errors import BookError
 
 from . import foreign, migrations
+from .wal import wal_problem
 
 BUSY_MS = 5000
 PAGE_BYTES = 1024  # a book's fixed part counts beside a short log; 512 costs 4 % of the CPU of recording a file
@@ -38,6 +39,7 @@ class BookConnection(sqlite3.Connection):
     real_path: str = ""
     notes: list[str]
     without_wal: bool = False  # the file says WAL, and there was no WAL beside it
+    wal_wrong: str = ""  # of a writer: what of the -wal it found cannot be read
     _copy: foreign.Copy | None = None
 
     def count_in(self, path: Path) -> None:
@@ -202,8 +204,10 @@ def open_writer(path: Path, *, create: bool = False) -> BookConnection:
     """
     if not create:
         look(path)
+    wal_wrong = wal_problem(path, connections_here(path))
     with book_errors(path):
         connection = _connect(path, "mode=rwc" if create else "mode=rw")
+        connection.wal_wrong = wal_wrong
         try:
             connection.execute("PRAGMA synchronous=FULL")
             if create:

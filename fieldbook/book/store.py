@@ -29,6 +29,7 @@ from . import chain, connect, epoch_packs, epochs, heartbeat, migrations, raw
 from .begin import new_book
 from .known import Known
 from .press import LARGE_BYTES, Presser
+from .tail import TailSum
 
 
 class Book:
@@ -40,6 +41,7 @@ class Book:
         self._connection = connection
         self._clock = clock
         self._known = Known(connection)
+        self._tail = TailSum(connection)
         self._next_id: int | None = None
         self._forms: dict[int, dict[epochs.Form, int]] = {}
         self._version_seen = -1
@@ -93,6 +95,8 @@ class Book:
                     connect.begin_wal(connection)
                 if found < migrations.version():
                     book._upgrade()
+                if connection.wal_wrong:
+                    book._enter_lost_commits(connection.wal_wrong)
         except BaseException:
             connection.close()
             raise
@@ -111,6 +115,11 @@ class Book:
             return True
         finally:
             connection.close()
+
+    def _enter_lost_commits(self, wrong: str) -> None:
+        """Closing this writer clears the -wal away: whoever asks later must still know that something is missing."""
+        body = {"occupation": None, "code": "wal_damaged", "text": f"Found when the book was opened: {wrong}."}
+        self.append("alarm", {**body, "acknowledged": False}, "fieldbook " + __version__)
 
     def _upgrade(self) -> None:
         if not self.writable:
@@ -203,6 +212,7 @@ class Book:
     def _forget(self) -> None:
         """Drop what was remembered of the tables: after a rollback or a change by another connection."""
         self._known.forget()
+        self._tail.forget()
         self._next_id = None
         self._forms.clear()
 
@@ -211,6 +221,7 @@ class Book:
         version = self.data_version()
         if version != self._version_seen:
             self._version_seen = version
+            self._tail.forget()
             self._next_id = None
             self._forms.clear()
 
@@ -290,13 +301,14 @@ class Book:
                 first = self._free_id(occupation)
                 if not chunks:
                     raw.insert_tail(self._connection, occupation, first, items)
+                    self._tail.add(first, items)
                 for chunk in chunks:
                     self._insert_chunk(chunk)
                 self._next_id = first + len(items)
             if epochs:
                 self._write_epochs(occupation, epochs)
             if state is not None:
-                heartbeat.write(self._connection, state)
+                heartbeat.write(self._connection, state, self._tail.stated())
         self._tail_bytes += 0 if large else size
         self._pressed.update((chunk.sealed.sha256, chunk.data) for chunk in chunks if chunk.large)
 
@@ -363,6 +375,7 @@ class Book:
                 with self.transaction():
                     written.append(self._insert_chunk(chunk))
                     raw.clear_tail(self._connection, chunk.sealed)
+                self._tail.forget()
         self._tail_bytes = 0
         return written
 

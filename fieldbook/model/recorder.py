@@ -43,9 +43,9 @@ class RecorderState:
     pdop: float | None = None
     station: str | None = None
 
-    def to_json(self) -> str:
-        """One line of JSON."""
-        return json.dumps(dataclasses.asdict(self), ensure_ascii=False, allow_nan=False)
+    def to_json(self, **more: Any) -> str:
+        """One line of JSON, with more keys if given: a reader that does not know them ignores them."""
+        return json.dumps({**dataclasses.asdict(self), **more}, ensure_ascii=False, allow_nan=False)
 
     @classmethod
     def from_json(cls, text: str) -> RecorderState:

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 from fieldbook import __version__
 from fieldbook.book.store import Book
+from fieldbook.book.tail import problem_of_book
 from fieldbook.clock import Clock
 from fieldbook.links.address import LinkAddress
 from fieldbook.links.base import Link
@@ -72,6 +73,8 @@ class Run:
 
     def _begin(self, meanwhile: Meanwhile | None = None) -> None:
         if self.resumed:
+            if wrong := problem_of_book(self._book.path):
+                self._writer.note_damage(wrong)
             catch_up(self._writer, self._book, self._occupation.number, meanwhile)
             if meanwhile is None:
                 self._writer.resumed(live=False)

@@ -248,6 +248,11 @@ class Writer:
         if self.heard.epochs and not self.heard.span.fixes:
             self._find("no_fix", "caution", "No epoch of this occupation has a fix.", {"epochs": self.heard.epochs})
 
+    def note_damage(self, wrong: str) -> None:
+        """Enter that items no entry covered yet are not as an earlier recorder wrote them: sealed now, they would pass."""
+        text = f"Before this recorder took the occupation up again, its book was damaged: {wrong}."
+        self._find("tail_damaged", "caution", text, {})
+
     def _find(self, code: str, severity: str, text: str, figures: Tree) -> None:
         self.findings.append({"code": code, "severity": severity, "text": text, "figures": figures})
         self.append("finding", code=code, severity=severity, text=text, figures=figures)

@@ -153,4 +153,6 @@ def _judge(row: Row, path: Path, seen: dict[int, list[Epoch]], known: Glance) ->
             row.acknowledged += count
             row.lost += sum(stored[index : index + 1] != [seen[number][index]] for index in range(count))
             row.expect(stored == seen[number][: len(stored)], "epochs beyond the acknowledged ones differ")
+        alarms = [entry.body["code"] for entry in book.entries() if entry.kind == "alarm"]
+        row.expect("wal_damaged" not in alarms, "a torn -wal was taken for a damaged one")
     row.damaged += damaged(path, row)
