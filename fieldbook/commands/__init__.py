@@ -33,9 +33,10 @@ COMMANDS: dict[str, str] = {
     "entry": "Write an entry: remark, height, setup, mark, end, decision.",
     "strike": "Strike out an entry; it stays legible.",
     "marks": "List, import or export the marks of a book.",
+    "frames": "Find a frame, see what a pair of frames does at a place, and which to record.",
     "export": "Write out the received bytes of an occupation.",
 }
-LATER = ("register", "frames", "geoid")
+LATER = ("register", "geoid")
 
 
 class LazyGroup(click.Group):

@@ -7,6 +7,8 @@ whether there was a connection.
     candidates   PROJ's offers, judged         route       which of them: direct, equalities, by an ITRF
     convert      transform_to_client           projection  project, check_grid        heightgrid  GeoTIFF geoid
     located      typed positions, there and back          geodesic    Karney's, by PROJ
+    catalogue    frames by word and place        pair        what a pair would do at a place
+    questions    what corrects the receiver
 """
 
 from __future__ import annotations
@@ -15,7 +17,13 @@ from pyproj import network
 
 network.set_network_enabled(False)  # type: ignore[attr-defined]
 
-from fieldbook.reduce.frames.choice import (  # noqa: E402  (the network goes off before anything else)
+from fieldbook.reduce.frames.catalogue import (  # noqa: E402  (the network goes off before anything else)
+    ListedGrid,
+    frames_by,
+    grids_of,
+    national_frames,
+)
+from fieldbook.reduce.frames.choice import (  # noqa: E402
     check_frames,
     check_taken_as,
     client_epoch_of,
@@ -32,7 +40,9 @@ from fieldbook.reduce.frames.convert import (  # noqa: E402
 from fieldbook.reduce.frames.geodesic import geodesic  # noqa: E402
 from fieldbook.reduce.frames.heightgrid import undulation_by_proj  # noqa: E402
 from fieldbook.reduce.frames.located import located, printed  # noqa: E402
+from fieldbook.reduce.frames.pair import Considered, Pair, pair_at  # noqa: E402
 from fieldbook.reduce.frames.projection import check_grid, project, unproject  # noqa: E402
+from fieldbook.reduce.frames.questions import ANSWERS, QUESTION, Answer, answer, plausible  # noqa: E402
 from fieldbook.reduce.frames.registry import (  # noqa: E402
     ITRF2020,
     FrameInfo,
@@ -46,10 +56,17 @@ from fieldbook.reduce.frames.registry import (  # noqa: E402
 from fieldbook.reduce.frames.route import OperationChanged  # noqa: E402
 
 __all__ = [
+    "ANSWERS",
     "ITRF2020",
+    "QUESTION",
+    "Answer",
+    "Considered",
     "FrameInfo",
+    "ListedGrid",
     "OperationChanged",
+    "Pair",
     "Versions",
+    "answer",
     "check_frames",
     "check_grid",
     "check_taken_as",
@@ -57,13 +74,18 @@ __all__ = [
     "decimal_year",
     "ellipsoidal_height_difference_to_itrf2020",
     "frame_info",
+    "frames_by",
     "geodesic",
+    "grids_of",
     "inside",
     "is_global_realisation",
     "located",
     "motion_of",
+    "national_frames",
     "operation_codes",
     "operation_epoch_of",
+    "pair_at",
+    "plausible",
     "printed",
     "project",
     "receiver_epoch_of",
