@@ -1,7 +1,7 @@
 """Findings on how the errors of an occupation behave: steps, drift, waves, bursts, smoothing.
 
 In: what the detectors found (`reduce.detectors`), which state sizes and set nothing aside. Out: findings, each with its
-figures and one sentence of what to do. Only a step is a stop: the mean then lies between two places.
+figures and one sentence of what to do. Only a step is a stop: one place out of two is right, and nothing says which.
 """
 
 from __future__ import annotations
@@ -23,7 +23,7 @@ def behaviour_findings(reduced: Reduced) -> list[Finding]:
         *_steps(reduced, found),
         *_drift(found),
         *_periodic(found),
-        *_bursts(found),
+        *_bursts(reduced, found),
         *_smoothed(reduced, found),
         *_settling(found),
     ]
@@ -37,15 +37,22 @@ def _steps(reduced: Reduced, found: Detected) -> Iterator[Finding]:
     others = "" if len(found.steps) == 1 else f", the largest of {len(found.steps)} such steps"
     text = (
         f"The position stepped by {1000 * worst.size_m:+.0f} mm in {worst.axis}{at} without loss of fix{others}: a wrong "
-        "fix, or the antenna moved. The mean lies between two places: check the tripod, end this occupation, occupy again."
+        f"fix, or the antenna moved. {_place_of_mean(reduced)}: check the tripod, end this occupation, occupy again."
     )
     figures = {
         "axis": worst.axis,
         "size_m": worst.size_m,
         "utc": _utc(reduced, worst.at_ms),
         "steps": len(found.steps),
+        "set_aside": reduced.judged.apart,
     }
     yield Finding("step", "stop", text, figures)
+
+
+def _place_of_mean(reduced: Reduced) -> str:
+    if reduced.judged.apart:
+        return f"{reduced.judged.apart} epochs on one side were set aside, and nothing proves the other side right"
+    return "The mean lies between two places"
 
 
 def _drift(found: Detected) -> Iterator[Finding]:
@@ -78,16 +85,27 @@ def _periodic(found: Detected) -> Iterator[Finding]:
     yield Finding("periodic", "caution", text, figures)
 
 
-def _bursts(found: Detected) -> Iterator[Finding]:
+def _bursts(reduced: Reduced, found: Detected) -> Iterator[Finding]:
     bursts = found.bursts
     if bursts is None:
         return
     text = (
         f"{bursts.blocks} of {bursts.of} stretches of 10 s lie apart from the rest and come back, by up to "
-        f"{1000 * bursts.largest_m:.0f} mm in {bursts.axis}; they are in the mean. Keep clear of the antenna, stay longer."
+        f"{1000 * bursts.largest_m:.0f} mm in {bursts.axis}; {_told(reduced.judged.apart)}. Keep clear of the antenna, "
+        "stay longer."
     )
-    figures = {"blocks": bursts.blocks, "of": bursts.of, "axis": bursts.axis, "largest_m": bursts.largest_m}
+    figures = {
+        "blocks": bursts.blocks,
+        "of": bursts.of,
+        "axis": bursts.axis,
+        "largest_m": bursts.largest_m,
+        "set_aside": reduced.judged.apart,
+    }
     yield Finding("bursts", "caution", text, figures)
+
+
+def _told(apart: int) -> str:
+    return f"{apart} epochs were set aside as outliers for it" if apart else "they are in the mean"
 
 
 def _smoothed(reduced: Reduced, found: Detected) -> Iterator[Finding]:

@@ -23,14 +23,17 @@ Floats = NDArray[np.float64]
 
 LONG_SESSION_MS = 320_000
 SHORT_BLOCK_S, LONG_BLOCK_S = 1, 10
-_WHOLE = ("initialisation", "index", "count", "count_up", "sum_east", "sum_north", "sum_up", "sum_instant")
+_WHOLE = (
+    "initialisation", "index", "count", "count_up", "sum_east", "sum_north", "sum_up", "sum_instant",
+    "first_row", "last_row",  # places in the order of hearing, so that a block's epochs can be named later
+)  # fmt: skip
 _W = {name: number for number, name in enumerate(_WHOLE)}
 _SUMS = ("east", "north", "up")
 
 
 @dataclass
 class Blocks:
-    """Blocks in order of time. whole: int64 (n, 8), sums in 1e-8 m and ms; m2: float64 (n, 3), m^2."""
+    """Blocks in order of time. whole: int64 (n, 10), sums in 1e-8 m and ms; m2: float64 (n, 3), m^2."""
 
     block_s: int
     whole: Ints
@@ -57,6 +60,7 @@ class Blocks:
         whole = np.column_stack([
             table[starts, AT["initialisation"]], index[starts], counts[:, 0], counts[:, 2], sums,
             np.add.reduceat(table[:, AT["instant_ms"]], starts),
+            table[starts, AT["row"]], table[_ends(starts, len(table)), AT["row"]],
         ])  # fmt: skip
         means = sums / np.maximum(counts, 1)
         run = np.repeat(np.arange(len(starts)), counts[:, 0])
@@ -76,7 +80,10 @@ class Blocks:
 
     def of_initialisations(self, numbers: list[int]) -> Blocks:
         """Only the blocks of these initialisations."""
-        keep = np.isin(self.column("initialisation"), numbers)
+        return self.where(np.isin(self.column("initialisation"), numbers))
+
+    def where(self, keep: NDArray[np.bool_]) -> Blocks:
+        """Only the blocks of which `keep`, shape (n,), is true."""
         return Blocks(self.block_s, self.whole[keep], self.m2[keep])
 
     def lengthened(self) -> Blocks:
@@ -88,6 +95,8 @@ class Blocks:
         whole = np.add.reduceat(self.whole, starts)
         whole[:, _W["initialisation"]] = self.column("initialisation")[starts]
         whole[:, _W["index"]] = index[starts]
+        whole[:, _W["first_row"]] = self.column("first_row")[starts]
+        whole[:, _W["last_row"]] = self.column("last_row")[_ends(starts, len(self))]
         return Blocks(LONG_BLOCK_S, whole, self._merged_m2(whole, starts))
 
     def _merged_m2(self, whole: Ints, starts: Ints) -> Floats:
@@ -148,6 +157,11 @@ def _sd(blocks: Blocks, axis: int) -> float | None:
     means = blocks.means_m()[has, axis]
     gaps = means - float(np.average(means, weights=counts[has]))
     return float(np.sqrt((blocks.m2[has, axis].sum() + (counts[has] * gaps**2).sum()) / (total - 1)))
+
+
+def _ends(starts: Ints, count: int) -> Ints:
+    """Last row of each run that begins at `starts`."""
+    return np.append(starts[1:], count) - 1
 
 
 def _starts(index: Ints, initialisation: Ints) -> Ints:

@@ -19,7 +19,8 @@ import numpy as np
 from fieldbook.model.reduction import Convergence
 from fieldbook.reduce.blocks import Blocks
 from fieldbook.reduce.correlated_mean import correlated_mean
-from fieldbook.reduce.estimate import Estimate, u_of_steps
+from fieldbook.reduce.estimate import Estimate
+from fieldbook.reduce.resolution import u_of_steps
 
 MOST_INSTANTS = 40
 LEAST_SPAN_S = 30.0

@@ -1,7 +1,7 @@
 """What is unusual about the errors of one occupation, from its 10 s means and its estimate alone: one call.
 
 Strategy: every detector has a false-alarm rate of its own, measured on sound simulated sessions (tests), and states a
-size; none of them sets an epoch aside. Two that would say the same thing twice give way: where a step is found,
+size; none of them sets an epoch aside, and all see the blocks that lie apart, too. Two that would say the same thing twice give way: where a step is found,
 neither drift nor bursts are looked for.
 """
 
@@ -14,7 +14,7 @@ from fieldbook.reduce.estimate import Estimate
 from fieldbook.reduce.multipath import Periodic, periodic
 from fieldbook.reduce.series import Series
 from fieldbook.reduce.smoothing import inside_ratio
-from fieldbook.reduce.steps import Bursts, Step, bursts, steps
+from fieldbook.reduce.steps import Bursts, Step, bursts, steps, without_bursts
 
 
 @dataclass(frozen=True)
@@ -31,8 +31,8 @@ class Detected:
 
 def detect(found: Estimate) -> Detected:
     """Look for all of them."""
-    series = Series.of(found.blocks)
-    jumped = steps(series, found.fix_class)
+    series = Series.of(found.all_blocks)
+    jumped = without_bursts(steps(series, found.fix_class), series, Series.of(found.blocks))
     return Detected(
         steps=jumped,
         drift=None if jumped else drift(found),

@@ -56,7 +56,7 @@ def drift(found: Estimate) -> Drift | None:
     axes = [axis for axis, item in enumerate(found.mean.components) if item is not None]
     grids: list[_Grid] = []
     for axis in axes:
-        bins = found.blocks.bins(axis)
+        bins = found.all_blocks.bins(axis)
         if bins is None:
             continue
         bins = bins.without_thin()

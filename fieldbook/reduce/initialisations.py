@@ -25,12 +25,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fieldbook.model.session import FixClass
+from fieldbook.reduce.apart import apart, rows_of
 from fieldbook.reduce.blocks import Blocks
 from fieldbook.reduce.columns import CODE_NUMBER
 from fieldbook.reduce.correlated_mean import short_uncertainty_m
-from fieldbook.reduce.fix_classes import ClassOfFix, governing_class
-from fieldbook.reduce.kept_sums import InitialisationSums
-from fieldbook.reduce.screening import Screened, counts_of
+from fieldbook.reduce.fix_classes import ClassOfFix, governing_class, with_receiver_estimate
+from fieldbook.reduce.kept_sums import InitialisationSums, median_gst_m
+from fieldbook.reduce.resolution import steps_m
+from fieldbook.reduce.screening import OUTLIER, Screened, counts_of
 
 Floats = NDArray[np.float64]
 
@@ -75,6 +77,7 @@ class Judgement:
     """All initialisations with kept epochs, in order, and the epochs' final codes.
 
     codes: uint8 (n,). disagreement_enu_m: rectangular half-width for the budget, None where the clusters are decided.
+    blocks: of the used ones, without those that lie apart (`apart`); all_blocks: with them.
     """
 
     initialisations: list[Judged]
@@ -84,6 +87,8 @@ class Judgement:
     leading_share: float
     agreeing: int  # independent initialisations in the leading cluster
     disagreement_enu_m: tuple[float, float, float] | None
+    blocks: Blocks
+    all_blocks: Blocks
 
     @property
     def used(self) -> list[int]:
@@ -99,6 +104,11 @@ class Judgement:
     def kept(self) -> int:
         """Number of epochs that are used."""
         return int(np.count_nonzero(self.codes == 0))
+
+    @property
+    def apart(self) -> int:
+        """Number of epochs set aside because their block lies apart from its initialisation."""
+        return int(self.all_blocks.column("count").sum() - self.blocks.column("count").sum())
 
     @property
     def set_aside(self) -> dict[str, int]:
@@ -140,11 +150,26 @@ class InitialisationJudge:
         open_question = clusters > 1 and not (share >= DECIDING_SHARE and agreeing >= DECIDING_INDEPENDENT)
         if any(decided.get(item.number, (False, ""))[0] for item in used):
             open_question = False  # the operator has named the right one, with a reason
-        _offsets(items, screened.blocks, [item.number for item in used])
-        return Judgement(
-            items, _final_codes(screened, items), fix_class, clusters, share, agreeing,
-            _half_width(compared) if open_question else None,
-        )  # fmt: skip
+        half_width = _half_width(compared) if open_question else None
+        every, far = self._apart(screened, [item.number for item in used], fix_class)
+        codes = _final_codes(screened, items)
+        rows = rows_of(every.where(far))
+        codes[rows[codes[rows] == 0]] = OUTLIER
+        blocks = every.where(~far)
+        for item in used:
+            item.kept = int(blocks.of_initialisations([item.number]).column("count").sum())
+        _offsets(items, blocks)
+        return Judgement(items, codes, fix_class, clusters, share, agreeing, half_width, blocks, every)
+
+    def _apart(self, screened: Screened, numbers: list[int], fix_class: ClassOfFix) -> tuple[Blocks, NDArray[np.bool_]]:
+        """Blocks of the used initialisations, and which of them lie apart."""
+        every = screened.blocks.of_initialisations(numbers)
+        if screened.frame is None or not numbers:
+            return every, np.zeros(len(every), dtype=np.bool_)
+        sums = [screened.initialisations[number] for number in numbers]
+        raised, _ = with_receiver_estimate(fix_class, *median_gst_m(sums))
+        frame = screened.frame
+        return every, apart(every, raised.sigma_enu_m, lambda: steps_m(sums, frame))
 
     def _judged(self, screened: Screened, sums: list[InitialisationSums], fix_class: ClassOfFix) -> list[Judged]:
         numbers = screened.blocks.column("initialisation")
@@ -282,10 +307,10 @@ def _decide(item: Judged, decided: Decisions) -> None:
     item.code, item.reason = "initialisation", "lies elsewhere than the leading initialisations"
 
 
-def _offsets(items: list[Judged], blocks: Blocks, used: list[int]) -> None:
-    if not used:
+def _offsets(items: list[Judged], blocks: Blocks) -> None:
+    if not len(blocks):
         return
-    mean = mean_of(blocks.of_initialisations(used))
+    mean = mean_of(blocks)
     for item in items:
         gaps = [place - centre for place, centre in zip(item.place.enu_m, mean, strict=True)]
         item.offset_enu_m = (gaps[0], gaps[1], gaps[2] if np.isfinite(gaps[2]) else None)

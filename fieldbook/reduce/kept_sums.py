@@ -7,6 +7,7 @@ are bounded: GST sigmas are counted by value to three significant digits, so tha
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -89,6 +90,18 @@ def median_of(counter: Counter[int]) -> int | None:
         if seen >= half:
             return value
     return None
+
+
+def median_gst_m(items: Iterable[InitialisationSums]) -> tuple[float | None, float | None]:
+    """Median of the receiver's own estimates over all epochs of these, horizontal and vertical, metres; None = none."""
+    horizontal: Counter[int] = Counter()
+    up: Counter[int] = Counter()
+    for item in items:
+        horizontal.update(item.gst_horizontal)
+        up.update(item.gst_up)
+    medians = [median_of(total) for total in (horizontal, up)]
+    found = [None if median is None else median * 1e-5 for median in medians]
+    return found[0], found[1]
 
 
 @dataclass

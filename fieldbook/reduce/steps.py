@@ -7,9 +7,12 @@ less than a minute has its edges, but does not last. Looked for within one initi
 between initialisations the comparison of their places speaks. It runs on cleaned blocks: on raw ones it fires at the
 edges of bursts.
 
-Burst: 10 s means beyond 6 MAD of their initialisation's median that come back. The MAD is never below half a received
-step (rounded output has a MAD of zero), nor below half the class sigma: a bulge within what the kind of fix does by
-itself is none.
+A step beside a stretch of at most 120 s that was set aside (`apart`) and from which the position came back is none: the
+mean does not lie between two places then, and the stretch is reported as a burst.
+
+Burst: 10 s means beyond 6 MAD of their initialisation's median that come back, the MAD never below half a received step
+(rounded output has a MAD of zero) nor half a class sigma. `apart` has set most of them aside. Both look at all blocks, those set aside included: a step that holds for a small part of the
+time would vanish otherwise.
 
 MAD = 1.4826 x median |x - median|. Limits: from a simulation study for this program.
 """
@@ -21,6 +24,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from fieldbook.reduce.apart import LEAST_BLOCKS, medians, runs_of, scale_of
 from fieldbook.reduce.estimate import Estimate
 from fieldbook.reduce.fix_classes import ClassOfFix
 from fieldbook.reduce.initialisations import tolerances_m
@@ -28,11 +32,10 @@ from fieldbook.reduce.series import AXES, Series
 from fieldbook.reduce.windows import MAD_TO_SIGMA
 
 Floats = NDArray[np.float64]
-Flags = NDArray[np.bool_]
 
 LIMIT_MADS = 6.0
+LONGEST_BURST_BLOCKS = 12
 MINUTE_BLOCKS = 6
-LEAST_BLOCKS = 12
 _LONGEST_REACH = 9  # places of 10 s that six blocks may cover when some are missing
 
 
@@ -82,6 +85,34 @@ def steps(series: Series, fix_class: ClassOfFix) -> list[Step]:
     return _one_per_place(found)
 
 
+def without_bursts(found: list[Step], series: Series, kept: Series) -> list[Step]:
+    """Those steps that are not the edge of a stretch of up to 120 s that was set aside and came back.
+
+    Args:
+        found: steps of `series`.
+        series: 10 s means of all blocks. kept: of those the mean is made of.
+    """
+    if not found or len(kept) == len(series):
+        return found
+    stays = np.isin(_keys(series), _keys(kept))
+    edges = np.flatnonzero(np.diff(np.concatenate([[True], stays, [True]]).astype(np.int8)))
+    excused: list[tuple[int, int]] = []
+    for start, stop in zip(edges[::2].tolist(), edges[1::2].tolist(), strict=True):
+        inside = start > 0 and stop < len(series) and stop - start <= LONGEST_BURST_BLOCKS
+        if inside and series.initialisation[start - 1] == series.initialisation[stop]:
+            excused.append((int(series.index[start]) - 2, int(series.index[stop - 1]) + 2))
+    places = [step.at_ms // (series.length_s * 1000) for step in found]
+    return [
+        step
+        for step, place in zip(found, places, strict=True)
+        if not any(first <= place <= last for first, last in excused)
+    ]
+
+
+def _keys(series: Series) -> NDArray[np.int64]:
+    return series.initialisation * (1 << 40) + series.index
+
+
 def _one_per_place(found: list[tuple[float, Step]]) -> list[Step]:
     """Of neighbouring places, within a minute, the one that exceeds its limit most."""
     result: list[tuple[float, Step]] = []
@@ -117,13 +148,14 @@ def bursts(series: Series, found: Estimate) -> Bursts | None:
     """Blocks beyond 6 MAD of their initialisation's median; None if there are none."""
     apart, of = np.zeros((len(series), 3), dtype=np.bool_), 0
     distance = np.zeros((len(series), 3))
-    for rows in _runs(series):
+    for rows in runs_of(series.initialisation):
         if len(rows) < LEAST_BLOCKS:
             continue
         of += len(rows)
-        off = series.means_m[rows] - _medians(series.means_m[rows])
+        off = series.means_m[rows] - medians(series.means_m[rows])
         distance[rows] = np.nan_to_num(off)
-        apart[rows] = np.abs(distance[rows]) > LIMIT_MADS * _scale(_mads(off), found)
+        scale = scale_of(_mads(off), found.fix_class.sigma_enu_m, found.resolution.step_enu_m)
+        apart[rows] = np.abs(distance[rows]) > LIMIT_MADS * scale
     count = int(apart.any(axis=1).sum())
     if count == 0:
         return None
@@ -132,32 +164,6 @@ def bursts(series: Series, found: Estimate) -> Bursts | None:
     return Bursts(count, of, AXES[axis], float(size[:, axis].max()))
 
 
-def _scale(mads: Floats, found: Estimate) -> Floats:
-    floors = [
-        max((step or 0.0) / 2, sigma / 2)
-        for step, sigma in zip(found.resolution.step_enu_m, found.fix_class.sigma_enu_m, strict=True)
-    ]
-    scale: Floats = np.maximum(mads, np.array(floors))
-    return scale
-
-
-def _runs(series: Series) -> list[NDArray[np.int64]]:
-    """Rows of each initialisation."""
-    order = np.argsort(series.initialisation, kind="stable")
-    edges = np.flatnonzero(np.diff(series.initialisation[order])) + 1
-    return list(np.split(order, edges)) if len(order) else []
-
-
-def _medians(values: Floats) -> Floats:
-    """Median per column, NaN ignored, 0 for an empty column; values (n, 3)."""
-    result = np.zeros(values.shape[1])
-    for column in range(values.shape[1]):
-        known = values[np.isfinite(values[:, column]), column]
-        if known.size:
-            result[column] = np.median(known)
-    return result
-
-
 def _mads(values: Floats) -> Floats:
     """1.4826 x median |x - median| per column, NaN ignored, 0 for an empty column."""
-    return MAD_TO_SIGMA * _medians(np.abs(values - _medians(values)))
+    return MAD_TO_SIGMA * medians(np.abs(values - medians(values)))

@@ -6,7 +6,7 @@ never below half the received step, since rounded output has a MAD of zero in ma
 its window's median in any component is set aside, final when the window closes. Nothing is ever judged against the
 whole session's s/sqrt(n). A window of fewer than 5 epochs has no MAD worth keeping: it is judged, but adds none.
 
-What this pass lets through: a burst that fills more than half a window.
+What this pass lets through: a burst that fills more than half a window. `apart` looks for those at every evaluation.
 """
 
 from __future__ import annotations

@@ -2,13 +2,13 @@
 
     python tests/benchmarks/coverage.py                   short form: dozens of seeds, some minutes
     python tests/benchmarks/coverage.py --long            400 seeds
-    ... --regime rtk --regime dgps --seeds 100 --jobs 2   --only coverage|wrong|time|class|floor
+    ... --regime rtk --regime dgps --seeds 100 --jobs 2   --only coverage|bursts|wrong|time|class|floor
 
 Strategy: `coverage_simulator` makes received epochs with errors of exactly known covariance (nothing of the
 estimator's code or shape), `coverage_product` reduces them by `OccupationReducer` and reads what is stated,
 `coverage_references` forms the known-covariance mean, the naive s/sqrt(n) and the usual means, `coverage_studies` does
-wrong initialisations, time to go and class values wrong by 2, `coverage_combined` several occupations of one mark
-with the floor's error drawn. A goal missed is marked with '!', not hidden.
+wrong initialisations, time to go and class values wrong by 2, `coverage_bursts` long bursts and steps,
+`coverage_combined` several occupations of one mark with the floor's error drawn. A goal missed is marked with '!', not hidden.
 
 Coverage of short sessions is conditional on the class values: the simulator's sizes are those of the classes, spread
 by 20 % (size) and 40 % (correlation time) between sessions.
@@ -29,6 +29,7 @@ os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # two workers, not two worke
 if not any((Path(folder) / "fieldbook").is_dir() for folder in sys.path if folder):
     sys.path.insert(0, str(Path(__file__).parents[2]))
 
+import coverage_bursts as bursts
 import coverage_combined as combined
 import coverage_studies as studies
 import coverage_tables as tables
@@ -38,6 +39,7 @@ from coverage_rows import Row, row_of
 SHORT_SEEDS, LONG_SEEDS = 24, 400
 HEAVY_TAIL = ("rtk_outliers", 120)  # its location needs 400 seeds whatever the form
 CHUNK = 20
+PARTS = ("coverage", "bursts", "wrong", "time", "class", "floor")
 
 
 def rows_of(task: tuple[str, int, int, int]) -> list[Row]:
@@ -74,11 +76,11 @@ def main() -> int:
     parser.add_argument("--regime", action="append", choices=sorted(REGIMES), metavar="NAME")
     parser.add_argument("--seeds", type=int)
     parser.add_argument("--jobs", type=int, default=2)
-    parser.add_argument("--only", action="append", choices=("coverage", "wrong", "time", "class", "floor"))
+    parser.add_argument("--only", action="append", choices=PARTS)
     chosen = parser.parse_args()
     seeds = chosen.seeds or (LONG_SEEDS if chosen.long else SHORT_SEEDS)
     names = chosen.regime or list(REGIMES)
-    parts = chosen.only or ["coverage", "wrong", "time", "class", "floor"]
+    parts = chosen.only or PARTS
     began = time.perf_counter()
     with get_context("spawn").Pool(chosen.jobs) as pool:
         run = partial(pool.imap, chunksize=1)
@@ -89,6 +91,8 @@ def main() -> int:
             show("Location: RMS error, product / known covariance and / best usual mean", tables.location(rows))
             show("Summary: circle / ellipse / height coverage in percent", tables.compact(rows))
             show("Sums", tables.sums(rows))
+        if "bursts" in parts:
+            show("Long bursts and steps", bursts.bursts_and_steps(run, seeds))
         if "wrong" in parts:
             show("A wrong initialisation beside right ones", studies.wrong_initialisations(run, seeds))
         if "time" in parts:

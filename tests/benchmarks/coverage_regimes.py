@@ -57,8 +57,8 @@ REGIMES: dict[str, Regime] = {
         replace(RTK, name="rtk_wrong", group="disturbed", initialisations=3, wrong_m=(0.1, 0.6)),
         replace(RTK, name="rtk_gaps", group="disturbed", gaps=True),
         replace(RTK, name="rtk_outliers", group="disturbed", outliers=True),
-        # known limit of windows of 60 s: a burst that fills more than half of one passes; kept out of the pools
-        replace(RTK, name="rtk_long_bursts", group="reference", outliers=True, burst_s=(30, 60)),
+        # a burst that fills more than half a window of 60 s passes the windows
+        replace(RTK, name="rtk_long_bursts", group="disturbed", outliers=True, burst_s=(30, 60)),
         replace(RTK, name="rtk_frozen", group="disturbed", frozen=True),
         replace(RTK, name="rtk_dec4", group="quantised", decimals=4, altitude_decimals=2),
         replace(RTK, name="rtk_dec5", group="quantised", decimals=5),

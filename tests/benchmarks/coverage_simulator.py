@@ -100,7 +100,7 @@ class Regime:
     quality: int
     horizontal: tuple[Part, ...]
     vertical: tuple[Part, ...]
-    group: str = "clean"  # "clean", "disturbed", "quantised", "reference"
+    group: str = "clean"  # "clean", "disturbed", "quantised"
     decimals: int = 7
     altitude_decimals: int = 3
     separation_decimals: int = 3

@@ -70,7 +70,16 @@ def blocks_of(enu: np.ndarray, *, start_s: int = 28_800, initialisation: int = 1
     if not heights:
         sums[:, 2], m2[:, 2] = 0, 0.0
     whole = np.column_stack(
-        [np.full(len(sums), initialisation), index, ten, ten if heights else 0 * ten, sums, instants]
+        [
+            np.full(len(sums), initialisation),
+            index,
+            ten,
+            ten if heights else 0 * ten,
+            sums,
+            instants,
+            10 * np.arange(len(sums)),
+            10 * np.arange(len(sums)) + 9,
+        ]
     )
     return Blocks(10, whole.astype(np.int64), m2)
 
@@ -92,7 +101,7 @@ def estimate_of(
     return Estimate(
         frame, mean, lat, lon, h, fix_class, GstVerdict(None, None, "none", "none"),
         (floor[0], floor[1], None if mean.up is None else floor[2]), resolution, blocks.sd_m(), kept, 0, float(kept),
-        int(index[0]) * 10_000, int(index[-1]) * 10_000 + 9_000, instant, blocks,
+        int(index[0]) * 10_000, int(index[-1]) * 10_000 + 9_000, instant, blocks, blocks,
     )  # fmt: skip
 
 
