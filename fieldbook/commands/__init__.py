@@ -34,6 +34,7 @@ COMMANDS: dict[str, str] = {
     "strike": "Strike out an entry; it stays legible.",
     "marks": "List, import or export the marks of a book.",
     "frames": "Find a frame, see what a pair of frames does at a place, and which to record.",
+    "profiles": "Requirements by published documents, for a session file.",
     "export": "Write out the received bytes of an occupation.",
 }
 LATER = ("register", "geoid")

@@ -47,6 +47,8 @@ LISTS = ("marks", "diary", "reduction", "certificate", "links", "leave", "cover"
 ACTIONS: tuple[Action, ...] = (
     Action("load_session", "f", "F", "session file", "Load frames, requirement and antenna from a session file.",
            "fieldbook new BOOK --from FILE", ("cover",), 1),
+    Action("profile", "c", "C", "criteria", "Take the requirement of a published document for the next occupation.",
+           "fieldbook profiles show NAME", ("cover",), 3),
     Action("observer", "o", "O", "observer", "Say who signs the entries from now on.", "--by NAME", ("cover",), 2),
     Action("new_mark", "n", "N", "new mark", "Describe a mark and choose it.", "fieldbook entry BOOK mark",
            ("marks",), 2),

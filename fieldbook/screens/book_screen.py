@@ -246,6 +246,9 @@ class BookScreen(Screen[None]):
     def do_load_session(self) -> None:
         entry_forms.load_session(self)
 
+    def do_profile(self) -> None:
+        entry_forms.profile(self)
+
     def do_observer(self) -> None:
         entry_forms.observer(self)
 

@@ -18,6 +18,7 @@ from fieldbook.model.entry import Entry
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import AntennaHeight, Finding, Reduction
 from fieldbook.model.session import Session
+from fieldbook.settings.profiles import Profile, profiles
 
 if TYPE_CHECKING:
     from fieldbook.occupy.live import LiveReader
@@ -143,6 +144,10 @@ class Bridge:
         except FieldbookError as problem:
             return f"{problem.text} {problem.remedy}"
         return ""
+
+    def profiles(self) -> dict[str, Profile]:
+        """Requirements by published documents, the office's own included."""
+        return profiles()
 
     def ports(self) -> list[Port]:
         """Ports of this computer; none is opened."""

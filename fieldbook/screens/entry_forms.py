@@ -6,9 +6,14 @@ from typing import Any
 
 from fieldbook.errors import FieldbookError
 from fieldbook.model.canonical import Tree
+from fieldbook.screens.cover import requirement_rows
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.page import Desk, next_tree, open_occupation
+from fieldbook.screens.rows import BLANK, Row, paragraph
+from fieldbook.screens.words import leave_word
+from fieldbook.settings.profiles import requirement_by
+from fieldbook.settings.schema import words
 
 
 def load_session(desk: Desk) -> None:
@@ -35,6 +40,48 @@ def load_session(desk: Desk) -> None:
 
     note = "A text file with [job], [requirement], [frame], [corrections], [mark], [antenna], [setup], [receiver]."
     desk.ask(Form("SESSION FILE", [Field("path", "Path", required=True)], note=note, check=check), written)
+
+
+def profile(desk: Desk) -> None:
+    """Choose a document; its demands become the requirement of the next occupation."""
+    tree = next_tree(desk.view) if desk.view else None
+    if tree is None:
+        desk.tell("There is no session yet: press F and load one first.", "bad")
+        return
+    try:
+        known = desk.bridge.profiles()
+    except FieldbookError as problem:
+        desk.tell(f"{problem.text} {problem.remedy}", "bad")
+        return
+
+    def said(values: Values, width: int) -> list[Row]:
+        chosen = known[values["name"]]
+        rows = paragraph(chosen.title, width, style="strong")
+        rows += paragraph(chosen.source, width, style="soft" if chosen.standing == "read" else "warn")
+        rows += [BLANK, *requirement_rows(bridge.session(changed(values)).requirement, width)]
+        kept = [leave_word(key) for key in chosen.open_keys]
+        if kept:
+            text = f"The document leaves open, and the session's own stay: {', '.join(kept)}."
+            rows += paragraph(text, width, style="warn")
+        for text in chosen.also:
+            rows += paragraph(f"also, for you to see to: {text}", width, style="soft")
+        return rows
+
+    def changed(values: Values) -> Tree:
+        return {**tree, "requirement": requirement_by(known[values["name"]], tree["requirement"])}
+
+    def written(values: Values | None) -> None:
+        if values is None:
+            return
+        desk.write(
+            lambda: bridge.save_session(changed(values)),
+            lambda entry: desk.tell(f"requirement by {values['name']} written (entry {entry.seq})"),
+        )
+
+    bridge = desk.bridge
+    field = Field("name", "Document", words(*known), next(iter(known)), required=True)
+    note = "← → turns to the next document. It is the requirement of the next occupation, not of one that has begun."
+    desk.ask(Form("WHAT MUST THE MARK REACH?", [field], note=note, said=said), written)
 
 
 def observer(desk: Desk) -> None:

@@ -450,6 +450,29 @@ def test_graph_turns_the_lower_figure(size: tuple[int, int]) -> None:
     asyncio.run(go())
 
 
+@pytest.mark.parametrize("size", SIZES, ids=str)
+def test_criteria_of_a_document_become_the_requirement(size: tuple[int, int]) -> None:
+    async def go() -> None:
+        bridge = FakeBridge()
+        async with opened(bridge, size=size) as pilot:
+            await pilot.press("c")
+            await see(
+                pilot, "WHAT MUST THE MARK REACH?", "linz-order-5", "read in a summary", "fix quality, occupations"
+            )
+            for _ in range(3):
+                await pilot.press("right")
+            await see(pilot, "ngs-rt1", "at least 3 min", "for you to see to", "base line of at most 10 km")
+            await pilot.press("enter")
+            await on_desk(pilot)
+            await wait_until(pilot, lambda: "session" in kinds(bridge), "the session")
+            wanted = dict(bridge.calls)["session"]["tree"]["requirement"]
+            assert wanted["max_pdop"] == "2.0"
+            assert "from memory: check before use" in wanted["source"]
+            assert "max_hdop" not in wanted
+
+    asyncio.run(go())
+
+
 # --- paper and diary
 
 
