@@ -456,9 +456,7 @@ def test_criteria_of_a_document_become_the_requirement(size: tuple[int, int]) ->
         bridge = FakeBridge()
         async with opened(bridge, size=size) as pilot:
             await pilot.press("c")
-            await see(
-                pilot, "WHAT MUST THE MARK REACH?", "linz-order-5", "read in a summary", "fix quality, occupations"
-            )
+            await see(pilot, "WHAT MUST THE MARK REACH?", "linz-order-5", "Network accuracy of order 5", "fix quality")
             for _ in range(3):
                 await pilot.press("right")
             await see(pilot, "ngs-rt1", "at least 3 min", "for you to see to", "base line of at most 10 km")
