@@ -66,7 +66,7 @@ def build_combined_facts(
 
 
 def _member(state: BookState, occupation: Occupation, reduction: Reduction) -> Tree:
-    antenna, receiver = evidence.instruments(occupation)
+    antenna, receiver = evidence.instruments(occupation, reduction)
     observers = [occupation.session.job.observer, occupation.observer, *(item.reader for item in occupation.heights)]
     return {
         "observers": list(dict.fromkeys(name for name in observers if name)),

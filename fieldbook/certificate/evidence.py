@@ -131,12 +131,19 @@ def _reading(item: ReadingReduced) -> Tree:
     }
 
 
-def instruments(occupation: Occupation) -> tuple[Tree, Tree]:
+def instruments(occupation: Occupation, reduction: Reduction) -> tuple[Tree, Tree]:
     """Antenna and receiver: type, serial, firmware, and the offsets that were applied."""
     antenna, receiver = occupation.session.antenna, occupation.session.receiver
     fix_class = receiver.fix_class
+    stated = {
+        "source": antenna.source,
+        "receiver_applies": antenna.receiver_applies,
+        "arp_above_mount_m": metres(antenna.arp_above_mount_m),
+        "calibration": _calibration(reduction.antenna.phase_centre),
+    }
     return (
         {
+            **{key: value for key, value in stated.items() if value is not None},
             "model": antenna.model,
             "serial": antenna.serial,
             "orientation_deg": fixed(antenna.orientation_deg, 1),
@@ -157,6 +164,29 @@ def instruments(occupation: Occupation) -> tuple[Tree, Tree]:
             "class_source": None if fix_class is None else fix_class.source,
         },
     )
+
+
+def _calibration(figures: dict[str, Any] | None) -> Tree | None:
+    """The calibration that was used, and what its pattern moved; lengths as decimal texts."""
+    if figures is None:
+        return None
+    kept = {
+        key: figures[key]
+        for key in ("file", "file_sha256", "type", "serial", "individual", "method", "date", "frequency")
+    }
+    north, east, up = figures["offset_neu_m"]
+    pattern = figures["pattern"]
+    return {
+        **kept,
+        "offset_enu_m": [metres(east), metres(north), metres(up)],
+        "pattern": None
+        if pattern is None
+        else {
+            "sky": pattern["sky"],
+            "shift_enu_m": [metres(value) for value in pattern["shift_enu_m"]],
+            "printed_mm": [rounded(1000 * value, 1) for value in pattern["shift_enu_m"]],
+        },
+    }
 
 
 def corrections_facts(occupation: Occupation) -> Tree:

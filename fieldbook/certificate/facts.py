@@ -57,7 +57,7 @@ def build_facts(
         UsageError: `sign_off` is not of the form "name; licence".
     """
     session = occupation.session
-    antenna, receiver = evidence.instruments(occupation)
+    antenna, receiver = evidence.instruments(occupation, reduction)
     findings = evidence.findings_facts(occupation, reduction)
     facts: Tree = {
         "schema": SCHEMA,

@@ -206,11 +206,14 @@ def setup(facts: Tree) -> Section:
 def instruments(facts: Tree) -> Section:
     """Antenna, receiver, what corrected it."""
     antenna, receiver, corrections = facts["antenna"], facts["receiver"], facts["corrections"]
-    east, north, up = (trimmed(value, "m", 4) for value in antenna["arp_to_phase_centre_enu_m"])
+    calibration = antenna.get("calibration")
+    offset = calibration["offset_enu_m"] if calibration else antenna["arp_to_phase_centre_enu_m"]
+    east, north, up = (trimmed(value, "m", 4) for value in offset)
     orientation = trimmed(antenna["orientation_deg"], "°").replace(" °", "°")
     rows = [
         ["Antenna", f"{antenna['model']}, serial {said(antenna['serial'])}, orientation {orientation}"],
         ["ARP to phase centre", f"east {east}, north {north}, up {up} ({said(antenna['offset_frequency'])})"],
+        *_calibration_rows(antenna),
         ["Receiver", _receiver_text(receiver)],
         ["Corrections", _corrections_text(corrections)],
         ["Coordinates of the base", said(corrections["coordinates"])],
@@ -221,6 +224,26 @@ def instruments(facts: Tree) -> Section:
     if receiver["class_source"]:
         rows.append(["Figures of the kind of fix", receiver["class_source"]])
     return Section("Instruments and corrections", [Pairs(rows)])
+
+
+def _calibration_rows(antenna: Tree) -> list[list[str]]:
+    """What is stated beyond the offset: where it is from, what the receiver applies, what the pattern moved."""
+    rows = []
+    if antenna.get("source"):
+        rows.append(["Source of dimensions", antenna["source"]])
+    if antenna.get("receiver_applies"):
+        rows.append(["Applied by the receiver itself", antenna["receiver_applies"]])
+    calibration = antenna.get("calibration")
+    if calibration:
+        whose = f"of serial {calibration['serial']}" if calibration["individual"] else "mean of the type"
+        made = ", ".join(item for item in (calibration["method"], calibration["date"]) if item) or "method not stated"
+        rows.append(["Calibration", f"{calibration['type']}, {whose}; {made}"])
+        rows.append(["Calibration file", f"{calibration['file']}, SHA-256 {calibration['file_sha256']}"])
+        pattern = calibration["pattern"]
+        if pattern:
+            east, north, up = pattern["printed_mm"]
+            rows.append(["Pattern taken off", f"east {east}, north {north}, up {up} mm, over the {pattern['sky']} sky"])
+    return rows
 
 
 def requirement(facts: Tree) -> Section:

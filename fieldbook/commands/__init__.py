@@ -35,6 +35,7 @@ COMMANDS: dict[str, str] = {
     "marks": "List, import or export the marks of a book.",
     "frames": "Find a frame, see what a pair of frames does at a place, and which to record.",
     "profiles": "Requirements by published documents, for a session file.",
+    "antenna": "Your own antennas: add from an ANTEX file or typed in, list, show.",
     "export": "Write out the received bytes of an occupation.",
 }
 LATER = ("register", "geoid")

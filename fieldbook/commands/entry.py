@@ -105,11 +105,22 @@ def _setup(state: BookState, number: int | None, settings: tuple[str, ...]) -> T
         assignments.put(here, table, key, text)
     if not changes:
         raise UsageError("The set-up entry changes nothing.", "Add --set table.key=value.")
-    after = session_from_tree(merged(tree, changes)).tree
-    return {
-        "occupation": occupation.number,
-        **{table: {key: after[table][key] for key in keys} for table, keys in changes.items()},
-    }
+    after = session_from_tree(_with_named_antenna(merged(tree, changes), changes)).tree
+    kept: Tree = {table: {key: after[table][key] for key in keys} for table, keys in changes.items()}
+    if "antenna" in kept:  # a named file or list brings keys that were not typed
+        before = tree.get("antenna", {})
+        kept["antenna"] |= {key: value for key, value in after["antenna"].items() if before.get(key) != value}
+    return {"occupation": occupation.number, **kept}
+
+
+def _with_named_antenna(tree: Tree, changes: Tree) -> Tree:
+    """The calibration of an ANTEX file or a listed antenna that this entry names, frozen; files from the current folder."""
+    if not {"antex", "antex_entry", "listed"} & changes.get("antenna", {}).keys():
+        return tree
+    from fieldbook.settings.antenna_source import with_antenna
+
+    bare = {key: value for key, value in tree["antenna"].items() if key != "calibration"}
+    return with_antenna({**tree, "antenna": bare}, Path.cwd())
 
 
 def _table_of(dotted: str) -> tuple[str, str]:

@@ -128,6 +128,7 @@ class AntennaHeight:
     during_m: float | None = None
     after_m: float | None = None
     reading_sigma_assumed: bool = False
+    phase_centre: dict[str, Any] | None = None  # a calibration and what was made of it; None: no calibration
 
 
 @dataclass

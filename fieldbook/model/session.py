@@ -9,6 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from decimal import Decimal
 
+from fieldbook.model.calibration import FrozenCalibration
 from fieldbook.model.canonical import Tree
 
 METRES_PER_UNIT = {
@@ -128,6 +129,10 @@ class Antenna:
     offset_frequency: str | None = None
     slant_radius_m: float | None = None
     slant_mark_above_arp_m: float | None = None
+    arp_above_mount_m: float | None = None  # ARP above the bottom of the mount; 0 where they are the same point
+    receiver_applies: str | None = None  # "nothing", "pattern", "offset", "offset and pattern"
+    source: str | None = None  # of typed dimensions and offsets
+    calibration: FrozenCalibration | None = None
 
 
 @dataclass(frozen=True)

@@ -1,7 +1,8 @@
 """One frozen picture of a book while it is recorded: pulled by whoever shows it, at its own pace.
 
 The reader keeps the state of one reduction and pushes only the epochs that are new; the live figure is therefore the
-figure a later reduction of the same epochs gives, to the last bit. It opens the book for reading, in the thread that
+figure a later reduction of the same epochs gives, to the last bit (the pattern of a calibrated antenna apart: its sky
+is read again only when a tenth more has been heard). It opens the book for reading, in the thread that
 uses it, and neither delays nor is seen by the recorder.
 """
 
@@ -15,8 +16,9 @@ from fieldbook.clock import Clock, SystemClock
 from fieldbook.errors import ReductionError, UsageError
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import Convergence
+from fieldbook.model.sky import Picture
 from fieldbook.model.state import BookState, Occupation
-from fieldbook.occupy.reductions import judge, others_of, reduce_one, search_dirs
+from fieldbook.occupy.reductions import judge, others_of, pictures_of, reduce_one, search_dirs
 from fieldbook.reduce.occupation import OccupationReducer, Reduced
 
 RUNNING_EVERY_S = 15.0  # the running mean costs a fifth of a second: one in fifteen seconds is little
@@ -39,6 +41,7 @@ class LiveReader:
         self._occupation = 0
         self._rows = 0
         self._reducer: OccupationReducer | None = None
+        self._pictures: tuple[int, list[Picture] | None] = (0, None)
         self._last: tuple[Reduced | None, tuple[str, str, str] | None] = (None, None)
         self._siblings: tuple[int, int, list[Reduced]] = (-1, -1, [])
         self._running: tuple[Reduced | None, float, Convergence | None] = (None, 0.0, None)
@@ -81,6 +84,7 @@ class LiveReader:
     ) -> tuple[Reduced | None, tuple[str, str, str] | None]:
         if self._reducer is None or occupation.number != self._occupation or not self._reducer.fits(occupation):
             self._reducer, self._occupation, self._rows = OccupationReducer(occupation), occupation.number, 0
+            self._pictures = (0, None)
             self._first_instant_ms = self._last_instant_ms = None
         rows = book.epochs(occupation.number, after=self._rows, limit=MOST_EPOCHS_A_LOOK)
         if rows:
@@ -91,12 +95,20 @@ class LiveReader:
                 self._first_instant_ms = instants[0] if self._first_instant_ms is None else self._first_instant_ms
                 self._last_instant_ms = instants[-1]
         try:
-            reduced = self._reducer.evaluate(occupation, search_dirs(book))
+            reduced = self._reducer.evaluate(occupation, search_dirs(book), self._sky(book, occupation))
         except (ReductionError, UsageError) as error:
             return None, (error.code, error.text, error.remedy)
         others = self._others(book, state, occupation)
         judge(reduced, occupation, others_of(reduced, [reduced, *others], occupation.session.requirement))
         return reduced, None
+
+    def _sky(self, book: Book, occupation: Occupation) -> list[Picture] | None:
+        """Pictures of the sky for a calibrated antenna: read again when a tenth more has been heard, and at the end."""
+        heard, pictures = self._pictures
+        if self._rows > 1.1 * heard or not occupation.open:
+            pictures = pictures_of(book, occupation)
+            self._pictures = (self._rows, pictures)
+        return pictures
 
     def _others(self, book: Book, state: BookState, occupation: Occupation) -> list[Reduced]:
         """The mark's ended occupations: reduced once, as nothing is added to them while another one is open."""

@@ -16,7 +16,9 @@ from fieldbook.check.mark_leave import reaches_accuracy
 from fieldbook.errors import FieldbookError, ReductionError, UsageError
 from fieldbook.model.reduction import Finding
 from fieldbook.model.session import Requirement
+from fieldbook.model.sky import Picture
 from fieldbook.model.state import BookState, Occupation
+from fieldbook.nmea.sky_history import sky_history
 from fieldbook.reduce import frames
 from fieldbook.reduce.occupation import Reduced, reduce_occupation
 
@@ -68,7 +70,21 @@ def reduce_one(book: Book, occupation: Occupation) -> Reduced:
         ReductionError: it cannot be reduced.
         UsageError: its frames are refused by kind.
     """
-    return reduce_occupation(occupation, book.epochs(occupation.number), search_dirs(book))
+    return reduce_occupation(
+        occupation, book.epochs(occupation.number), search_dirs(book), pictures_of(book, occupation)
+    )
+
+
+def pictures_of(book: Book, occupation: Occupation) -> list[Picture] | None:
+    """The satellites used, minute by minute, where the antenna's pattern has to be taken off; else None.
+
+    Raises:
+        BookError: the received bytes cannot be read.
+    """
+    antenna = occupation.session.antenna
+    if antenna.calibration is None or "pattern" in (antenna.receiver_applies or ""):
+        return None
+    return sky_history(book.received(occupation.number))
 
 
 def reductions_of_mark(book: Book, number: int) -> tuple[Reduced, list[Reduced]]:

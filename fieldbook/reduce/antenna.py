@@ -13,20 +13,20 @@ d/2 for the range d between occasions, u = d/sqrt(12): JCGM 100:2008, 4.3.7.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from decimal import Decimal
 
 from fieldbook.errors import ReductionError
 from fieldbook.model.reduction import AntennaHeight, Finding, ReadingReduced
 from fieldbook.model.session import METRES_PER_UNIT, Antenna, HeightReading, Setup
+from fieldbook.model.sky import Picture
+from fieldbook.reduce.phase_centre import PhaseCentre, phase_centre
 from fieldbook.reduce.reading_slips import likely_slip
 
 WITHIN_OCCASION_LIMIT_M = 0.003
 BETWEEN_OCCASIONS_LIMIT_M = 0.005
 ASSUMED_READING_SIGMA_M = 0.0015
-PATTERN_SIGMA_HORIZONTAL_M = 0.002  # phase centre variations not applied; common practice, no source
-PATTERN_SIGMA_UP_M = 0.005
 OCCASIONS = ("before", "during", "after")
 
 
@@ -36,10 +36,19 @@ class AntennaReduction:
 
     height: AntennaHeight
     offset_enu_m: tuple[float, float, float | None]  # add to the reported point to get the mark
-    phase_centre_u_enu_m: tuple[float, float, float] | None  # Type B of offset and pattern; None: not applied
+    phase_centre: PhaseCentre = field(default_factory=PhaseCentre)
     findings: list[Finding] = field(default_factory=list)
     heights_agree: bool = True
     note: str = ""
+
+    @property
+    def phase_centre_u_enu_m(self) -> tuple[float, float, float] | None:
+        """Standard uncertainty of everything about the phase centre; None: no part of it is known to be missing."""
+        lines = self.phase_centre.lines
+        if not lines:
+            return None
+        east, north, up = (math.hypot(*(line.u_enu_m[axis] for line in lines)) for axis in range(3))
+        return east, north, up
 
 
 def arp_height_m(method: str, value_m: float, antenna: Antenna) -> float:
@@ -72,6 +81,8 @@ def reduce_antenna(
     readings: Iterable[HeightReading],
     *,
     difference_explained: bool = False,
+    pictures: Sequence[Picture] | None = None,
+    carrier_phase: bool = True,
 ) -> AntennaReduction:
     """All readings of a set-up to one ARP height, and the way from the reported point to the mark.
 
@@ -80,13 +91,14 @@ def reduce_antenna(
         antenna: dimensions, phase centre offset, orientation.
         readings: readings that were not struck, any order.
         difference_explained: a recorded decision explains why readings differ; the finding stays, as info.
+        pictures, carrier_phase: what the antenna's pattern is applied to, see `phase_centre`.
 
     Raises:
         ReductionError: a reading that cannot be reduced at all.
     """
     reduced = [_reading(item, setup, antenna) for item in readings]
     height = _mean_height(setup, reduced)
-    result = AntennaReduction(height, (0.0, 0.0, 0.0), None)
+    result = AntennaReduction(height, (0.0, 0.0, 0.0))
     result.findings += _agreement(reduced, antenna, explained=difference_explained)
     result.heights_agree = not any(item.severity == "stop" for item in result.findings)
     if height.reading_sigma_assumed and reduced:
@@ -98,7 +110,11 @@ def reduce_antenna(
                 {"assumed_m": ASSUMED_READING_SIGMA_M},
             )
         )
-    _to_mark(result, setup, antenna)
+    centre = phase_centre(antenna, setup.reported_point, pictures, carrier_phase=carrier_phase)
+    result.phase_centre, result.note = centre, centre.note
+    height.phase_centre = centre.figures
+    _to_mark(result, setup)
+    result.findings += centre.findings
     return result
 
 
@@ -180,7 +196,7 @@ def _differ(
     return Finding(code, "info" if explained else "stop", text, {"difference_m": difference_m, "slip": slip})
 
 
-def _to_mark(result: AntennaReduction, setup: Setup, antenna: Antenna) -> None:
+def _to_mark(result: AntennaReduction, setup: Setup) -> None:
     height = result.height
     if setup.reported_point == "mark":
         result.note = "The receiver reports the mark; height readings are check readings and are not applied."
@@ -195,25 +211,9 @@ def _to_mark(result: AntennaReduction, setup: Setup, antenna: Antenna) -> None:
             )
         )
     down = None if height.height_arp_m is None else -height.height_arp_m
-    if setup.reported_point == "ARP":
-        result.offset_enu_m = (0.0, 0.0, down)
-        return
-    north = antenna.arp_to_phase_centre_north_m or 0.0
-    east = antenna.arp_to_phase_centre_east_m or 0.0
-    up = antenna.arp_to_phase_centre_up_m or 0.0
-    u_east = u_north = PATTERN_SIGMA_HORIZONTAL_M
-    if antenna.orientation_deg is None:
-        # direction unknown, uniform on the circle: each axis has variance r^2/2 about zero
-        spread = math.hypot(north, east) / math.sqrt(2)
-        u_east = u_north = math.hypot(PATTERN_SIGMA_HORIZONTAL_M, spread)
-        shift_east = shift_north = 0.0
-        result.note = "Orientation of the antenna unknown: horizontal phase centre offset carried as uncertainty."
-    else:
-        angle = math.radians(antenna.orientation_deg)
-        shift_east = east * math.cos(angle) + north * math.sin(angle)
-        shift_north = north * math.cos(angle) - east * math.sin(angle)
-    result.offset_enu_m = (-shift_east, -shift_north, None if down is None else down - up)
-    result.phase_centre_u_enu_m = (u_east, u_north, PATTERN_SIGMA_UP_M)
+    east, north, up = result.phase_centre.offset_enu_m
+    # 0.0 - x: an offset of nothing is 0.0, not -0.0
+    result.offset_enu_m = (0.0 - east, 0.0 - north, None if down is None else down - up)
 
 
 def _check_receiver_height(result: AntennaReduction, setup: Setup) -> None:

@@ -63,6 +63,11 @@ class ClassOfFix:
         """Only here do wrong initialisations have a size of their own, whatever the class sigma."""
         return self.name == "RTK fixed"
 
+    @property
+    def uses_carrier_phase(self) -> bool:
+        """Positions of carrier phases: only to these does the pattern of an antenna calibration apply."""
+        return self.name in ("RTK fixed", "RTK float")
+
 
 _WORKING = "working value of this program, drawn up with the simulated occupations it was tried on"
 

@@ -32,6 +32,7 @@ from fieldbook.model.reduction import (
     Uncertainty,
 )
 from fieldbook.model.reduction import Initialisation as InitialisationRecord
+from fieldbook.model.sky import Picture
 from fieldbook.model.state import Occupation
 from fieldbook.reduce import frames, terms
 from fieldbook.reduce.antenna import AntennaReduction, reduce_antenna
@@ -44,6 +45,7 @@ from fieldbook.reduce.geodesy import moved_along_normal, moved_by_enu
 from fieldbook.reduce.geoid import height_above_geoid
 from fieldbook.reduce.initialisations import InitialisationJudge, Judgement
 from fieldbook.reduce.motion import motion_findings
+from fieldbook.reduce.phase_centre import outside_validity
 from fieldbook.reduce.prediction import TimeToGo, TypeA, time_to_go, type_a
 from fieldbook.reduce.region import coverage_factor_95
 from fieldbook.reduce.screening import Screened, Screening
@@ -88,13 +90,19 @@ class Reduced:
         return self.estimate.mean
 
 
-def reduce_occupation(occupation: Occupation, epochs: Iterable[Epoch], search_dirs: Sequence[Path]) -> Reduced:
+def reduce_occupation(
+    occupation: Occupation,
+    epochs: Iterable[Epoch],
+    search_dirs: Sequence[Path],
+    pictures: Sequence[Picture] | None = None,
+) -> Reduced:
     """All epochs at once.
 
     Args:
         occupation: as folded from the book.
         epochs: its rows, in order of hearing.
         search_dirs: folders in which a geoid model is looked for before the package's own.
+        pictures: satellites used, one picture a minute, for the pattern of a calibrated antenna.
 
     Raises:
         ReductionError: nothing usable, or a frame, geoid or grid that cannot be reached.
@@ -102,7 +110,7 @@ def reduce_occupation(occupation: Occupation, epochs: Iterable[Epoch], search_di
     """
     reducer = OccupationReducer(occupation)
     reducer.push(epochs)
-    return reducer.evaluate(occupation, search_dirs)
+    return reducer.evaluate(occupation, search_dirs, pictures)
 
 
 class OccupationReducer:
@@ -127,7 +135,9 @@ class OccupationReducer:
         self._screening.push(rows)
         self._traces.push(rows)
 
-    def evaluate(self, occupation: Occupation, search_dirs: Sequence[Path]) -> Reduced:
+    def evaluate(
+        self, occupation: Occupation, search_dirs: Sequence[Path], pictures: Sequence[Picture] | None = None
+    ) -> Reduced:
         """The reduction as if the occupation ended now. Errors as in `reduce_occupation`."""
         screened = self._screening.evaluate(day0_known=occupation.day0 is not None)
         if screened.kept == 0 or screened.frame is None:
@@ -140,7 +150,7 @@ class OccupationReducer:
                 "Strike the decision that sets one aside, or occupy the mark again.",
                 code="no_usable_fix",
             )
-        return _Steps(occupation, screened, judged, found).reduced(self._traces, search_dirs)
+        return _Steps(occupation, screened, judged, found, pictures).reduced(self._traces, search_dirs)
 
 
 def _nothing_usable(screened: Screened) -> ReductionError:
@@ -161,18 +171,32 @@ def _nothing_usable(screened: Screened) -> ReductionError:
 class _Steps:
     """Steps 4 to 9 for one evaluation."""
 
-    def __init__(self, occupation: Occupation, screened: Screened, judged: Judgement, found: Estimate) -> None:
+    def __init__(
+        self,
+        occupation: Occupation,
+        screened: Screened,
+        judged: Judgement,
+        found: Estimate,
+        pictures: Sequence[Picture] | None,
+    ) -> None:
         self.occupation, self.screened, self.judged, self.found = occupation, screened, judged, found
         self.session = occupation.session
         self.mean = found.mean
         self.notes: list[Finding] = []
-        self.antenna = self._antenna()
-        self.epoch_of_observation = frames.decimal_year(self._epoch_utc())
+        self.antenna = self._antenna(pictures)
+        observed = self._epoch_utc()
+        self.epoch_of_observation = frames.decimal_year(observed)
+        self.notes += outside_validity(self.session.antenna.calibration, observed)
 
-    def _antenna(self) -> AntennaReduction:
+    def _antenna(self, pictures: Sequence[Picture] | None) -> AntennaReduction:
         explained = any("height_difference" in entry.body for entry in self.occupation.decisions)
         result = reduce_antenna(
-            self.session.setup, self.session.antenna, self.occupation.heights, difference_explained=explained
+            self.session.setup,
+            self.session.antenna,
+            self.occupation.heights,
+            difference_explained=explained,
+            pictures=pictures,
+            carrier_phase=self.found.fix_class.uses_carrier_phase,
         )
         self.notes += result.findings
         return result

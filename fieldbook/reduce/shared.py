@@ -110,7 +110,7 @@ def _scope(source: str, equipment: Equipment) -> str:
     if source.startswith(SEPARATION_PREFIX):
         return f"separation of receiver {equipment.receiver}"
     if source.startswith(PHASE_CENTRE_PREFIX):
-        return f"phase centre of {equipment.antenna_type}"
+        return f"phase centre of {equipment.antenna_type}{source.removeprefix(PHASE_CENTRE_PREFIX)}"
     if source.startswith(STATION_PREFIX):
         return f"coordinates of station {equipment.station}"
     return f"mark: {source}"

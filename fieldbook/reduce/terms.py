@@ -82,12 +82,10 @@ def setup_terms(setup: Setup, antenna: AntennaReduction) -> list[Term]:
         # bubble anywhere within its circle: half-width length x angle on each axis, rectangular
         tilt_m = setup.pole_length_m * math.radians(setup.bubble_arcmin / 60) / math.sqrt(3)
         terms.append(Term("levelling of the pole", "B", "rectangular", (tilt_m, tilt_m, 0.0)))
-    if antenna.phase_centre_u_enu_m is not None:
-        note = "phase centre variations not applied; 2 mm and 5 mm: common practice, no source. " + antenna.note
-        u_east, u_north, u_up = antenna.phase_centre_u_enu_m
-        terms.append(
-            Term("phase centre of the antenna", "B", "normal", (u_east, u_north, u_up), common=True, note=note.strip())
-        )
+    terms += [
+        Term(line.source, "B", line.distribution, line.u_enu_m, common=True, note=line.note)
+        for line in antenna.phase_centre.lines
+    ]
     height_m = setup.receiver_height_m if setup.reported_point == "mark" else antenna.height.height_arp_m
     if height_m is not None:
         plumb_m = abs(height_m) * math.radians(PLUMB_LINE_ARCSEC / 3600)

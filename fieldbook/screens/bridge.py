@@ -114,7 +114,10 @@ class Bridge:
 
         try:
             items = [reading_from_tree(item) for item in readings]
-            made = reduce_antenna(session.setup, session.antenna, items, difference_explained=explained)
+            # the heights alone are asked for: no sky is read, no pattern taken off
+            made = reduce_antenna(
+                session.setup, session.antenna, items, difference_explained=explained, carrier_phase=False
+            )
         except FieldbookError as problem:
             return Heights(None, (), f"{problem.text} {problem.remedy}")
         return Heights(made.height, tuple(made.findings))

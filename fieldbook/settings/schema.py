@@ -13,6 +13,7 @@ and the documentation test all look here. Kinds:
 from __future__ import annotations
 
 REPORTED_POINTS = ("phase centre", "ARP", "mark")
+RECEIVER_APPLIES = ("nothing", "pattern", "offset", "offset and pattern")
 METHODS = ("slant", "vertical")
 UNITS = ("m", "ft", "ftUS")
 OCCASIONS = ("before", "during", "after")
@@ -100,7 +101,15 @@ TABLES: dict[str, dict[str, str]] = {
         "offset_frequency": "text",
         "slant_radius_m": "positive",
         "slant_mark_above_arp_m": "number",
+        "arp_above_mount_m": "number",
+        "antex": "text",
+        "antex_entry": "integer",
+        "listed": "text",
+        "receiver_applies": words(*RECEIVER_APPLIES),
+        "source": "text",
+        "calibration": "inline:antenna.calibration",
     },
+    "antenna.calibration": {"file": "text", "sha256": "text", "block": "text"},
     "antenna.arp_to_phase_centre_m": {"north": "number", "east": "number", "up": "number"},
     "setup": {
         "reported_point": words(*REPORTED_POINTS),
@@ -159,6 +168,7 @@ REQUIRED: dict[str, tuple[str, ...]] = {
     "mark.witness_marks": ("text",),
     "mark.approximate": ("lat_deg", "lon_deg"),
     "antenna.arp_to_phase_centre_m": ("north", "east", "up"),
+    "antenna.calibration": ("file", "sha256", "block"),
     "setup.height": ("method", "value", "unit", "when"),
     "receiver.class": ("horizontal_m", "vertical_m", "correlation_s", "source"),
 }

@@ -13,7 +13,11 @@ from typing import Any
 
 from fieldbook.errors import UsageError
 from fieldbook.model import session as model
+from fieldbook.model.calibration import FrozenCalibration
 from fieldbook.model.canonical import Tree, normalised
+from fieldbook.settings.antenna_rules import antenna_conditions
+from fieldbook.settings.antenna_source import with_antenna
+from fieldbook.settings.antex import block_calibration
 from fieldbook.settings.schema import REQUIRED, TABLES, TOP_LEVEL
 from fieldbook.settings.toml_lines import line_of
 from fieldbook.settings.toml_text import BadToml, toml_tree
@@ -36,6 +40,8 @@ class _Where:
 def load_session(path: Path) -> model.Session:
     """Read and check a session file.
 
+    What `antenna.antex` and `antenna.listed` name is read here and frozen into the tree.
+
     Raises:
         UsageError: missing, not TOML, or anything in it that is not as it must be.
     """
@@ -55,7 +61,7 @@ def load_session(path: Path) -> model.Session:
         raise UsageError(f"{path} is no text file.", "Name the session's TOML file.") from None
     except BadToml as problem:
         raise UsageError(f"{path} is no valid TOML: {problem}.", "Correct that line.") from None
-    return _build(tree, _Where(path.name, text), stored=False)
+    return _build(with_antenna(tree, path.resolve().parent), _Where(path.name, text), stored=False)
 
 
 def session_from_tree(tree: Tree) -> model.Session:
@@ -140,11 +146,7 @@ def _conditions(tree: Tree, where: _Where) -> None:
             f'{where("setup", "reported_point")}: reported_point = "mark" needs the height keyed into the receiver.',
             "Write setup.receiver_height_m: a height taken off twice is the classic blunder.",
         )
-    if setup["reported_point"] == "phase centre" and "arp_to_phase_centre_m" not in antenna:
-        raise UsageError(
-            f'{where("setup", "reported_point")}: reported_point = "phase centre" needs the offset of the antenna.',
-            "Write antenna.arp_to_phase_centre_m = { north = ..., east = ..., up = ... } from its calibration.",
-        )
+    antenna_conditions(tree, where)
     if any(item["method"] == "slant" for item in setup.get("height", [])):
         for key in ("slant_radius_m", "slant_mark_above_arp_m"):
             if key not in antenna:
@@ -268,7 +270,17 @@ def _antenna(tree: Tree) -> model.Antenna:
         offset_frequency=tree.get("offset_frequency"),
         slant_radius_m=_float(tree, "slant_radius_m"),
         slant_mark_above_arp_m=_float(tree, "slant_mark_above_arp_m"),
+        arp_above_mount_m=_float(tree, "arp_above_mount_m"),
+        receiver_applies=tree.get("receiver_applies"),
+        source=tree.get("source"),
+        calibration=_calibration(tree.get("calibration")),
     )
+
+
+def _calibration(tree: Tree | None) -> FrozenCalibration | None:
+    if tree is None:
+        return None
+    return FrozenCalibration(block_calibration(tree["block"], tree["file"]), tree["file"], tree["sha256"])
 
 
 def reading_from_tree(tree: Tree, seq: int | None = None) -> model.HeightReading:

@@ -10,6 +10,8 @@ from typing import Any
 from fieldbook.errors import LinkError, UsageError
 from fieldbook.links.address import parse_link
 from fieldbook.model.canonical import canonical_json
+from fieldbook.settings.antenna_source import frozen
+from fieldbook.settings.antex import block_calibration, read_antex
 from fieldbook.settings.schema import TABLES
 from fieldbook.settings.session import load_session, session_from_tree
 from fieldbook.settings.user import user_classes, with_user_class
@@ -120,6 +122,66 @@ def link_address(data: bytes) -> None:
     assert parse_link(address.text, Path("/elsewhere")) == address
 
 
+def _spread(data: bytes) -> bytes:
+    """`~` stands for blanks up to column 60, where the labels of ANTEX begin: else chance would hardly hit them."""
+    rows = []
+    for row in data.split(b"\n"):
+        text, tilde, label = row.partition(b"~")
+        rows.append(text.ljust(60) + label if tilde else row)
+    return b"\n".join(rows)
+
+
+def antex_file(data: bytes) -> None:
+    """Antennas whose values are finite and whose frozen block reads back the same, or an AntexError with a remedy."""
+    path = workshop() / "any.atx"
+    path.write_bytes(_spread(data))
+    try:
+        found = read_antex(path)
+    except UsageError as error:
+        _said(error)
+        return
+    for block in found.blocks[:4]:
+        try:
+            kept = frozen(found, block)
+        except UsageError as error:
+            _said(error)
+            continue
+        assert kept["block"].replace("\n", "").isprintable()
+        made = block_calibration(kept["block"])
+        assert made == block_calibration(kept["block"], "again", 99)
+        for one in made.frequencies:
+            values = [*one.offset_neu_m, *one.noazi_m, *(value for row in one.grid_m for value in row)]
+            assert all(abs(value) <= 1.0 for value in values)
+            assert len(one.noazi_m) == len(made.zenith_deg)
+            assert all(len(row) == len(made.zenith_deg) for row in one.grid_m)
+
+
+_ANTEX_HEAD = b"     1.4            M~ANTEX VERSION / SYST\nA~PCV TYPE / REFANT\n~END OF HEADER\n"
+_ANTEX_BLOCK = (
+    b"~START OF ANTENNA\nDEMO-A1         NONE~TYPE / SERIAL NO\n    90.0~DAZI\n     0.0  90.0  45.0~ZEN1 / ZEN2 / DZEN\n"
+    b"     1~# OF FREQUENCIES\n   G01~START OF FREQUENCY\n      0.50     -0.30     87.30~NORTH / EAST / UP\n"
+    b"   NOAZI    0.00    1.20    3.40\n"
+    + b"".join(b"%8.1f    0.00    1.10    3.30\n" % (90 * index) for index in range(5))
+    + b"   G01~END OF FREQUENCY\n~END OF ANTENNA\n"
+)
+
+
+def _antex_seeds() -> list[bytes]:
+    flat = _ANTEX_BLOCK.replace(b"    90.0~", b"     0.0~")
+    return [
+        _ANTEX_HEAD + _ANTEX_BLOCK,
+        _ANTEX_HEAD + b"\n".join(row for row in flat.split(b"\n") if not row.endswith(b"3.30")),
+        _ANTEX_HEAD.replace(b"\nA~", b"\nR~") + _ANTEX_BLOCK,
+    ]
+
+
+_ANTEX_WORDS = (
+    *(b"~%s\n" % label for label in (b"START OF ANTENNA", b"END OF ANTENNA", b"COMMENT", b"SINEX CODE", b"VALID FROM")),
+    b"  2027     1     1     0     0    0.0000000~VALID UNTIL\n", b"   G01~START OF FREQ RMS\n", b"   G01~END OF FREQ RMS\n",
+    b"  1e400", b"     nan", b"   NOAZI", b" 99999.9", b"    -0.0", b"\x00", b"\xff", b"\t", b"\r", b"   G02", b"  0.0001",
+)  # fmt: skip
+
+
 def _settings_seeds() -> list[bytes]:
     own = '[class."0001"]\nhorizontal_m = 0.006\nvertical_m = 0.012\ncorrelation_s = 180\naccept_quality = [4]\nsource = "own"\n'
     return [own.encode(), own.replace('"0001"', '"Maker Model"').encode() + b"# end\n", b"[class]\n"]
@@ -147,6 +209,7 @@ def _tree_seeds() -> list[bytes]:
 
 
 TARGETS = [
+    Target("antex_file", "ANTEX file", antex_file, lambda: _antex_seeds() + kept("antex_file"), smoke=1500, words=_ANTEX_WORDS),
     Target("session_file", "session file", session_file, lambda: _session_seeds() + kept("session_file"), words=_WORDS, most_bytes=16384),
     Target("session_tree", "stored session", session_tree, lambda: _tree_seeds() + kept("session_tree"), words=(b"1E400", b'"1e99999"', b"null", b"[]", b"{}", b"1.5", b"NaN", b'"\\ud800"', b"9" * 4400), most_bytes=16384),
     Target("user_settings", "user's settings", user_settings, lambda: _settings_seeds() + kept("user_settings"), smoke=600, words=(*_DEEP, b"\n[class]\n", b'\n[class." "]\n', b"accept_quality = [1,", b"nan", b'""')),
