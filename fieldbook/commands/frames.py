@@ -54,7 +54,8 @@ def command() -> None:
 @JSON
 def search(words: tuple[str, ...], at: str | None, book: Path | None, grids: str | None, *, as_json: bool) -> None:
     """List them, smallest area first."""
-    from fieldbook.commands.frames_text import frame_tree, search_lines
+    from fieldbook.commands.frames_json import frame_tree
+    from fieldbook.occupy.frame_words import search_lines
     from fieldbook.reduce.frames import frames_by, grids_of
 
     place = _place(at, book)
@@ -111,8 +112,9 @@ def show(
     as_json: bool,
 ) -> None:
     """Ask the gateway as a reduction would, and tell all of it."""
-    from fieldbook.commands.frames_text import pair_lines, pair_tree
+    from fieldbook.commands.frames_json import pair_tree
     from fieldbook.model.session import FrameChoice
+    from fieldbook.occupy.frame_words import pair_lines
     from fieldbook.reduce.frames import frame_info, pair_at
 
     place = _place(at, book)
@@ -148,7 +150,8 @@ def show(
 @JSON
 def ask(kind: str | None, at: str | None, book: Path | None, *, as_json: bool) -> None:
     """Ask, or take the answer given; never assume one."""
-    from fieldbook.commands.frames_text import answer_lines, answer_tree
+    from fieldbook.commands.frames_json import answer_tree
+    from fieldbook.occupy.frame_words import answer_lines
     from fieldbook.reduce.frames import ANSWERS, QUESTION, answer, plausible
 
     place = _place(at, book)
@@ -200,7 +203,9 @@ def _place(at: str | None, book: Path | None) -> _Place | None:
         where = whereabouts(opened)
     epoch = now if where.day is None else decimal_year(where.day)
     said = f"{where.lat_deg:.5f}, {where.lon_deg:.5f} ({where.said}), h 0 m, epoch {epoch:.2f} unless stated"
-    return _Place(where.lat_deg, where.lon_deg, 0.0, epoch, said, where.frame)
+    return _Place(
+        where.lat_deg, where.lon_deg, 0.0, epoch, said, None if where.session is None else where.session.frame
+    )
 
 
 def _now() -> Any:

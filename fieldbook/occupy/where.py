@@ -8,18 +8,18 @@ from datetime import UTC, datetime, timedelta
 from fieldbook.book.store import Book
 from fieldbook.errors import UsageError
 from fieldbook.model.epoch import E8MIN_PER_DEG
-from fieldbook.model.session import FrameChoice
+from fieldbook.model.session import Session
 
 
 @dataclass(frozen=True)
 class Whereabouts:
-    """A place in degrees, said from what; the day if one was received; the frames of its session."""
+    """A place in degrees, said from what; the day if one was received; its session."""
 
     lat_deg: float
     lon_deg: float
     said: str
     day: datetime | None
-    frame: FrameChoice | None
+    session: Session | None
 
 
 def whereabouts(book: Book) -> Whereabouts:
@@ -29,7 +29,6 @@ def whereabouts(book: Book) -> Whereabouts:
         UsageError: the book knows no place yet.
     """
     state = book.state()
-    offered = None if state.session is None else state.session.frame
     for occupation in reversed(state.occupations.values()):
         if occupation.origin_e8min is not None:
             lat, lon = (value / E8MIN_PER_DEG for value in occupation.origin_e8min)
@@ -38,12 +37,12 @@ def whereabouts(book: Book) -> Whereabouts:
                 first = datetime(occupation.day0.year, occupation.day0.month, occupation.day0.day, tzinfo=UTC)
                 day = first + timedelta(weeks=occupation.rollover_weeks)
             said = f"the receiver's position in occupation {occupation.number}"
-            return Whereabouts(lat, lon, said, day, occupation.session.frame)
+            return Whereabouts(lat, lon, said, day, occupation.session)
     for name, tree in state.marks.items():
         place = tree.get("approximate") or {}
         if "lat_deg" in place and "lon_deg" in place:
             said = f"the approximate position of {name}"
-            return Whereabouts(float(place["lat_deg"]), float(place["lon_deg"]), said, None, offered)
+            return Whereabouts(float(place["lat_deg"]), float(place["lon_deg"]), said, None, state.session)
     raise UsageError(
         f"{book.path} knows no place yet: nothing was received, and no mark has an approximate position.",
         'Say where: --at "-34.27 146.05".',

@@ -63,6 +63,8 @@ ACTIONS: tuple[Action, ...] = (
     Action("remark", "r", "R", "remark", "Write a remark.", "fieldbook entry BOOK remark", PAGES, 4),
     Action("graph", "g", "G", "graph", "Turn the lower figure: height of the epochs, or the running mean with its 95 %.",
            "fieldbook reduce BOOK --json", ("occupation",), 9),
+    Action("frames", "m", "M", "frames", "Show which operation leads to the client's frame here, and what it does.",
+           "fieldbook frames show --book BOOK", ("cover", "setup", "reduction"), 9),
     Action("leave", "l", "L", "leave check", "Show every line of the leave check.", "fieldbook status BOOK", PAGES, 5),
     Action("big", "b", "B", "big", "One word and one number, to be read from three metres.",
            "fieldbook watch BOOK", PAGES, 6),

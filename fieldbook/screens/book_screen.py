@@ -27,6 +27,7 @@ from fieldbook.screens.certificate import CertificatePage, paper
 from fieldbook.screens.cover import CoverPage
 from fieldbook.screens.diary import DiaryPage
 from fieldbook.screens.feed import Feed
+from fieldbook.screens.frames_view import FramesView
 from fieldbook.screens.hand import Hand, Outcome
 from fieldbook.screens.head import alarm_kinds, head_row, keys_row, leave_row, rule_row, tabs_row
 from fieldbook.screens.keys_page import KeysView
@@ -282,6 +283,9 @@ class BookScreen(Screen[None]):
     def do_graph(self) -> None:
         self.query_one(OccupationPage).graph()
         self.feed.request()
+
+    def do_frames(self) -> None:
+        self.work(self.bridge.frames, lambda told: self.ask(FramesView(told), lambda _: None))
 
     def do_leave(self) -> None:
         self.go("leave")

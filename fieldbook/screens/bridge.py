@@ -59,6 +59,15 @@ class Heights:
     problem: str = ""
 
 
+@dataclass(frozen=True)
+class FramesTold:
+    """The book's pair of frames in lines, label in the first ten columns; and what the corrections ask for."""
+
+    place: str
+    pair: tuple[str, ...]
+    question: tuple[str, ...]
+
+
 @dataclass
 class Bridge:
     """A book on disk, as the screens see it."""
@@ -157,6 +166,34 @@ class Bridge:
         from fieldbook.links.ports import list_ports
 
         return [Port(item.device, item.description, item.address) for item in list_ports()]
+
+    def frames(self) -> FramesTold:
+        """What leads from the receiver's frame to the client's where this book's receiver stands.
+
+        Raises:
+            UsageError: no session yet, or no place.
+        """
+        from datetime import UTC, datetime
+
+        from fieldbook.book.store import Book
+        from fieldbook.occupy.frame_words import answer_lines, pair_lines
+        from fieldbook.occupy.where import whereabouts
+        from fieldbook.reduce.frames import answer, decimal_year, pair_at, plausible
+
+        with Book.open(self.path, clock=self.clock) as book:
+            where = whereabouts(book)
+        session = where.session
+        if session is None:
+            raise UsageError("This book has no session yet, so no frames.", "Press 1, then F.")
+        epoch = decimal_year(where.day or datetime.fromtimestamp(self.clock.utc_ms() / 1000, UTC))
+        pair = pair_at(session.frame, where.lat_deg, where.lon_deg, 0.0, epoch)
+        asked = answer(session.corrections.kind)
+        place = (where.lat_deg, where.lon_deg)
+        return FramesTold(
+            f"{where.lat_deg:.5f}, {where.lon_deg:.5f}, {where.said}, epoch {epoch:.2f}",
+            tuple(pair_lines(pair)),
+            tuple(answer_lines(asked, plausible(asked, place)[:8], place_known=True)),
+        )
 
     # --- writing
 

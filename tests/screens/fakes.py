@@ -39,7 +39,7 @@ from fieldbook.model.reduction import (
     Uncertainty,
 )
 from fieldbook.model.state import BookState, Occupation
-from fieldbook.screens.bridge import Bridge, Issued, Port, Reduced
+from fieldbook.screens.bridge import Bridge, FramesTold, Issued, Port, Reduced
 from fieldbook.settings.session import reading_from_tree, session_from_tree
 
 NOW_MS = utc_ms_of("2027-03-04T09:41:22.000Z")
@@ -305,6 +305,11 @@ class FakeBridge(Bridge):
         self.trace: Trace | None = trace() if recording or ended else None
         self.calls: list[tuple[str, Any]] = []
         self.missing_texts: list[str] = []
+        self.told: FramesTold | None = FramesTold(
+            "-34.27430, 146.05185, the receiver's position in occupation 1, epoch 2027.17",
+            ("receiver  EPSG:7912 ITRF2014, moving", "client    EPSG:7843 GDA2020, static", "effect    E -152.6 mm"),
+            ("What corrects this receiver? Our own base.", "Ask: the certificate of the base mark."),
+        )
         self._entry("book", {"id": self.state.id, "format": 1, "program": "fieldbook 0.1"}, "R. Kell")
         if with_session:
             self._entry("session", {"tree": SESSION_TREE}, "R. Kell")
@@ -323,6 +328,11 @@ class FakeBridge(Bridge):
             )
             self._entry("raw", {"occupation": 1, "chunk": 1, "bytes": 12345}, "")
             self.state.occupations[1] = occupation(1, ended="operator" if ended else None)
+
+    def frames(self) -> FramesTold:
+        if self.told is None:
+            raise UsageError("kestrel.book knows no place yet.", "Say where.")
+        return self.told
 
     def _entry(self, kind: str, body: Tree, observer: str) -> Entry:
         seq = len(self.written) + 1

@@ -10,6 +10,7 @@ from fieldbook.screens.actions import ACTIONS, BY_NAME, PAGES, foot_text, for_pa
 from fieldbook.screens.ask import Question
 from fieldbook.screens.big import BigView
 from fieldbook.screens.book_screen import BookScreen
+from fieldbook.screens.frames_view import FramesView
 from fieldbook.screens.keys_page import KeysView, keys_rows
 
 from .fakes import SESSION_TREE, FakeBridge
@@ -600,6 +601,25 @@ def test_big_keys_palette_and_themes() -> None:
             for panel in pilot.app.screen.query("Panel"):
                 for y in range(panel.size.height if panel.display else 0):
                     assert panel.render_line(y).text.isascii()
+
+    asyncio.run(go())
+
+
+@pytest.mark.parametrize("size", SIZES, ids=str)
+def test_frames_of_the_book(size: tuple[int, int]) -> None:
+    """From the pages where frames are thought of; where the book knows no place, that is said."""
+
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge, size) as pilot:
+            await pilot.press("3", "m")
+            await wait_until(pilot, lambda: isinstance(pilot.app.screen, FramesView), "the frames")
+            await see(pilot, "FRAMES", "GDA2020, static", "What corrects this receiver")
+            await pilot.press("down", "pagedown", "m")
+            await on_desk(pilot)
+            bridge.told = None
+            await pilot.press("m")
+            await see(pilot, "knows no place yet")
 
     asyncio.run(go())
 

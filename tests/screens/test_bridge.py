@@ -146,3 +146,13 @@ def test_snapshot_is_the_picture_of_the_real_book(bridge: Bridge) -> None:
         assert not bridge.snapshot().recorder_alive
     finally:
         bridge.close()
+
+
+def test_frames_are_told_for_the_place_of_the_book(bridge: Bridge) -> None:
+    with pytest.raises(UsageError, match="no place yet"):
+        bridge.frames()
+    bridge.add_mark({"name": "KR-07", "approximate": {"lat_deg": "-34.27", "lon_deg": "146.05"}})
+    told = bridge.frames()
+    assert "approximate position of KR-07" in told.place
+    assert any("EPSG:8049" in line for line in told.pair)
+    assert told.question[0] == "What corrects this receiver? Our own base, on a mark with known coordinates."

@@ -1,9 +1,8 @@
-"""Frames, pairs and answers as plain lines and as JSON trees."""
+"""Frames, pairs and answers in words, for commands and screens alike."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from typing import Any
 
 from fieldbook.model.rounding import rounded
 from fieldbook.reduce.frames import QUESTION, Answer, FrameInfo, Pair, operation_codes
@@ -19,61 +18,12 @@ def kind_of(info: FrameInfo) -> str:
     return "moving" if info.dynamic else "static"
 
 
-def frame_tree(info: FrameInfo) -> dict[str, Any]:
-    """A frame for JSON."""
-    west, south, east, north = info.bounds or (None, None, None, None)
-    return {
-        "code": info.code,
-        "name": info.name,
-        "kind": kind_of(info),
-        "area": info.area_name,
-        "bounds_deg": {"west": west, "south": south, "east": east, "north": north},
-    }
-
-
 def search_lines(found: Sequence[FrameInfo]) -> Iterator[str]:
     """One line per frame: code, name, kind, area."""
     for info in found:
         area = info.area_name.rstrip(".")
         area = area if len(area) <= 60 else area[:57] + "..."
         yield f"{info.code:11} {info.name:{NAME_LENGTH}} {kind_of(info):9} {area}"
-
-
-def pair_tree(pair: Pair) -> dict[str, Any]:
-    """A pair for JSON."""
-    operation, refused = pair.operation, pair.refused
-    return {
-        "receiver": frame_tree(pair.receiver),
-        "client": frame_tree(pair.client),
-        "epoch": pair.epoch,
-        "operation": None
-        if operation is None
-        else {
-            "name": operation.name,
-            "steps": [
-                {"code": code, "name": step.name, "accuracy_m": step.accuracy_m}
-                for code, step in zip(operation_codes(operation), operation.steps, strict=True)
-            ],
-            "accuracy_m": operation.accuracy_m,
-            "coordinate_epoch": operation.coordinate_epoch,
-            "grids": [{"name": grid.name, "sha256": grid.sha256} for grid in operation.grids],
-        },
-        "refused": None if refused is None else {"code": refused.code, "text": refused.text, "remedy": refused.remedy},
-        "effect_enu_mm": None if pair.effect_mm is None else list(pair.effect_mm),
-        "change_enu_mm_per_year": None if pair.change_mm is None else list(pair.change_mm),
-        "missing_grids": list(pair.missing_grids),
-        "considered": [
-            {
-                "steps": list(item.codes),
-                "accuracy_m": item.accuracy_m,
-                "used": item.used,
-                "refused": item.reason or None,
-                "missing_grids": list(item.missing),
-            }
-            for item in pair.considered
-        ],
-        "warnings": list(pair.warnings),
-    }
 
 
 def pair_lines(pair: Pair) -> Iterator[str]:
@@ -107,19 +57,6 @@ def pair_lines(pair: Pair) -> Iterator[str]:
         yield f"          and {len(others) - MOST_CONSIDERED} more"
     for text in pair.warnings:
         yield f"mind      {text}"
-
-
-def answer_tree(item: Answer, listed: Sequence[FrameInfo]) -> dict[str, Any]:
-    """An answer for JSON."""
-    return {
-        "kind": item.kind,
-        "words": item.words,
-        "means": item.means,
-        "ask": list(item.ask),
-        "write": list(item.write),
-        "plausible": [frame_tree(info) for info in listed],
-        "beware": item.beware,
-    }
 
 
 def answer_lines(item: Answer, listed: Sequence[FrameInfo], *, place_known: bool) -> Iterator[str]:
