@@ -74,6 +74,8 @@ KINDS: dict[str, dict[str, tuple[type, ...]]] = {
     "certificate": {"number": _TEXT, "facts": _TREE, "digest": _TEXT},
     "draft": {"facts": _TREE, "digest": _TEXT},
     "rendered": {"digest": _TEXT, "format": _TEXT, "name": _TEXT, "sha256": _TEXT},
+    "key": {"name": _TEXT, "algorithm": _TEXT, "public_key": _TEXT, "fingerprint": _TEXT},
+    "signature": {"seq": _INT, "hash": _TEXT, "fingerprint": _TEXT, "signature": _TEXT},
 }
 
 DECISIONS = (

@@ -1,6 +1,7 @@
 """What makes two certificates the same: digest, comparison, number.
 
-The digest is the SHA-256 of the canonical facts without the digest (contract, sections 1 and 4). Facts are compared
+The digest is the SHA-256 of the canonical facts without the digest (contract, sections 1 and 4) and without the signature
+that is made over it. Facts are compared
 without program versions, book head and issue: a newer program that finds the same figures issues nothing new.
 """
 
@@ -14,18 +15,25 @@ from fieldbook.model.canonical import Tree, normalised
 
 SCHEMA = "fieldbook.certificate/1"
 # Parts of the facts that say when and by which program, not what was found.
-ISSUE_PARTS = ("digest", "document", "versions")
+ISSUE_PARTS = ("digest", "signature", "document", "versions")
+# Beside the facts, not among them: made from them.
+ENVELOPE = ("digest", "signature")
 BOOK_HEAD = ("head_seq", "head_hash")
 
 
 def facts_digest(facts: Tree) -> str:
     """SHA-256 of the canonical facts without their digest, 64 lower-case hex digits."""
-    return canonical.digest({key: value for key, value in facts.items() if key != "digest"})
+    return canonical.digest(bare(facts))
+
+
+def bare(facts: Tree) -> Tree:
+    """The facts themselves, without digest and signature."""
+    return {key: value for key, value in facts.items() if key not in ENVELOPE}
 
 
 def sealed(facts: Tree) -> Tree:
-    """A copy of the facts carrying their digest."""
-    body = {key: value for key, value in normalised(facts).items() if key != "digest"}
+    """A copy of the facts carrying their digest, unsigned."""
+    body = bare(normalised(facts))
     return {**body, "digest": facts_digest(body)}
 
 

@@ -31,6 +31,7 @@ from fieldbook.certificate import as_html, as_json, as_pdf, as_text
 from fieldbook.certificate.combined import WholeMarkEvidence, build_combined_facts
 from fieldbook.certificate.facts import build_facts, parse_sign_off
 from fieldbook.certificate.identity import (
+    bare,
     certificate_number,
     changed_parts,
     comparable,
@@ -46,6 +47,8 @@ from fieldbook.model.canonical import Tree
 from fieldbook.model.entry import Entry
 from fieldbook.model.reduction import Reduction, Trace
 from fieldbook.model.state import BookState, Occupation
+from fieldbook.signing.in_book import signed_by
+from fieldbook.signing.signer import Signer
 
 Prepared = tuple[Reduction, Trace, list[dict[str, Any]]]
 RENDERERS: dict[str, Callable[[Tree], bytes]] = {
@@ -87,6 +90,7 @@ class Issued:
     missing: list[str] = field(default_factory=list)  # what keeps a draft a draft
     again: bool = False  # an entry that stood already was rendered again
     supersedes: str | None = None
+    signature: Tree | None = None  # block `signature` of the file
 
 
 @dataclass(frozen=True)
@@ -96,6 +100,11 @@ class _Document:
     facts: Tree
     body: Tree | None  # None: the entry stands already
     supersedes: str | None = None
+    signature: Tree | None = None
+
+    def rendered(self) -> Tree:
+        """Facts, digest and signature, as a file holds them."""
+        return self.facts if self.signature is None else {**self.facts, "signature": self.signature}
 
 
 @dataclass(frozen=True)
@@ -120,6 +129,7 @@ def certify(
     combined: Callable[[], WholeMarkEvidence] | None = None,
     versions: dict[str, str],
     clock: Clock,
+    signer: Signer | None = None,
 ) -> Issued:
     """Write the certificate, or the draft, of one occupation of a mark, or of all of them together.
 
@@ -132,6 +142,7 @@ def certify(
         reductions: the reduction, trace and repeats of the occupation, or a function of its number that makes them.
         combined: makes the combined mark where it has several occupations and none is named; without it one must be.
         versions: proj, epsg and pyproj as the reduction used them; program and typesetter are added here.
+        signer: key that signs a new certificate and its entry; one that stands already stays as it was issued.
 
     Raises:
         UsageError: unknown mark or occupation, open occupation, wrong ending, `out` exists, sign-off while items are
@@ -163,8 +174,8 @@ def certify(
     if sign_off is None:
         document = _draft(state, facts, subject, issued_utc)
     else:
-        document = _certificate(book, state, facts, subject, supersede, issued_utc)
-    _write(book, document, out, extension, RENDERERS[extension], facts, replace=replace)
+        document = _certificate(book, state, facts, subject, supersede, issued_utc, signer)
+    _write(book, document, out, extension, RENDERERS[extension], facts, signer, replace=replace)
     number = document.facts["document"]["number"]
     return Issued(
         number,
@@ -174,6 +185,7 @@ def certify(
         missing,
         document.body is None,
         document.supersedes,
+        document.signature,
     )
 
 
@@ -250,12 +262,13 @@ def _certificate(
     subject: _Subject,
     supersede: str | None,
     issued_utc: str,
+    signer: Signer | None,
 ) -> _Document:
     standing = standing_entry(state, "certificate", subject.mark, subject.occupation)
     if standing is not None:
         before = standing.body["facts"]
         if facts_equal(before, facts):
-            return _Document(sealed(before), None)
+            return _Document(sealed(before), None, signature=standing.body.get("signature"))
         if not (supersede or "").strip():
             changed = ", ".join(changed_parts(comparable(before), comparable(facts), limit=6))
             raise UsageError(
@@ -277,7 +290,11 @@ def _certificate(
             "changed": [] if standing is None else changes(standing.body["facts"], facts),
         },
     }
-    return _Document(sealed(facts), _body(facts, subject), replaced)
+    whole, body = sealed(facts), _body(facts, subject)
+    signature = None if signer is None else signer.certificate_signature(whole["digest"])
+    if signature is not None:
+        body["signature"] = signature
+    return _Document(whole, body, replaced, signature)
 
 
 def _running(book: CertificateBook) -> int:
@@ -296,7 +313,7 @@ def _body(facts: Tree, subject: _Subject) -> Tree:
     body: Tree = {
         "mark": subject.mark,
         "occupation": subject.occupation,
-        "facts": {key: value for key, value in facts.items() if key != "digest"},
+        "facts": bare(facts),
         "digest": facts_digest(facts),
         "supersedes": document.get("supersedes"),
         "reason": document.get("reason"),
@@ -337,11 +354,12 @@ def _write(
     extension: str,
     render: Callable[[Tree], bytes],
     facts: Tree,
+    signer: Signer | None,
     *,
     replace: bool,
 ) -> None:
     """Bytes first, then entries, then the name."""
-    data = render(document.facts)
+    data = render(document.rendered())
     sha256 = hashlib.sha256(data).hexdigest()
     signed = document.facts["sign_off"]
     observer = signed["name"] if signed else (facts["job"]["observers"] or ["not stated"])[0]
@@ -350,7 +368,8 @@ def _write(
         _save(waiting, data)
         if out.exists() and not replace:
             raise UsageError(f"{out} has appeared meanwhile.", "Name another file and run the command again.")
-        _enter(book, document, extension, out.name, sha256, observer)
+        with signed_by(book, signer):
+            _enter(book, document, extension, out.name, sha256, observer)
         waiting.replace(out)
     except OSError as error:
         raise UsageError(

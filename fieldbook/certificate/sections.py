@@ -13,6 +13,7 @@ from typing import Any
 from fieldbook.certificate import sections_combined as several
 from fieldbook.certificate import sections_evidence as evidence
 from fieldbook.certificate import sections_position as position
+from fieldbook.certificate import signed
 from fieldbook.certificate.blocks import Block, Bullets, Pairs, Section, Sentences, said, utc
 from fieldbook.certificate.printable import shown
 from fieldbook.model.canonical import Tree
@@ -107,7 +108,7 @@ def sections(facts: Tree) -> list[Section]:
         position.frames(facts),
         *_evidence(facts),
         _limits(facts),
-        Section("Cautions", [Bullets(facts["cautions"])]),
+        Section("Cautions", [Bullets(signed.cautions(facts))]),
         _record(facts),
     ]
 
@@ -154,6 +155,7 @@ def _record(facts: Tree) -> Section:
         ("Hash of that entry", book["head_hash"]),
         *(several.received_rows(facts) if facts.get("combined") else _received(facts["occupation"])),
         ("Digest of these facts", facts["digest"]),
+        signed.signature_row(facts),
         *_revision(facts["document"]),
         ("Not stated by the party", ", ".join(facts["not_stated"]) or "nothing"),
     ]

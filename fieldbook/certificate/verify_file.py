@@ -11,20 +11,25 @@ import difflib
 import hashlib
 from pathlib import Path
 
-from fieldbook.certificate.identity import changed_parts, facts_digest
+from fieldbook.certificate.identity import bare, changed_parts, facts_digest
 from fieldbook.certificate.issue import RENDERERS, CertificateBook, program_versions
 from fieldbook.certificate.printable import printable
 from fieldbook.certificate.read_file import LIMIT_BYTES, PARSER_ERRORS, Unreadable, facts_of, text_lines
+from fieldbook.certificate.signed import signature_lines
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.entry import Entry
+from fieldbook.signing.keyring import Trust
 
 Line = tuple[bool, str]
 COMPARED_LINES = 300
 
 
-def verify_certificate(path: Path, book: CertificateBook | None = None) -> list[Line]:
+def verify_certificate(path: Path, book: CertificateBook | None = None, trust: Trust | None = None) -> list[Line]:
     """Check one certificate file, against its book where that is at hand.
+
+    Args:
+        trust: what the user has said of keys; None: of none anything.
 
     Returns:
         Lines of (holds, sentence); the file holds when all do.
@@ -40,10 +45,10 @@ def verify_certificate(path: Path, book: CertificateBook | None = None) -> list[
             f"{path.name} is no certificate that can be verified.",
             "Verify the PDF, HTML or JSON file; plain text holds no facts.",
         )
-    return [(holds, printable(text)) for holds, text in _lines(path, extension, book)]
+    return [(holds, printable(text)) for holds, text in _lines(path, extension, book, trust or Trust())]
 
 
-def _lines(path: Path, extension: str, book: CertificateBook | None) -> list[Line]:
+def _lines(path: Path, extension: str, book: CertificateBook | None, trust: Trust) -> list[Line]:
     try:
         if path.stat().st_size > LIMIT_BYTES:
             return [(False, f"{path.name} is larger than {LIMIT_BYTES // 1_000_000} MB and no certificate.")]
@@ -52,7 +57,8 @@ def _lines(path: Path, extension: str, book: CertificateBook | None) -> list[Lin
         raise UsageError(f"{path} cannot be read: {error.strerror or error}.", "Check its permissions.") from None
     try:
         facts = facts_of(data, extension)
-        lines = [_digest_line(facts), *_page_lines(data, facts, extension)]
+        signatures = signature_lines(facts, trust)
+        lines = [_digest_line(facts), *_page_lines(data, facts, extension), *signatures]
         if book is not None:
             return _with_book(book, facts, data, lines)
     except Unreadable as error:
@@ -60,7 +66,15 @@ def _lines(path: Path, extension: str, book: CertificateBook | None) -> list[Lin
     except PARSER_ERRORS as error:
         return [(False, f"{path.name}: its facts are damaged ({type(error).__name__}).")]
     if all(holds for holds, _ in lines):
-        lines.append((True, "Consistent in itself. That it is unchanged since issue needs the book it came from."))
+        if signatures:
+            lines.append((True, "Consistent in itself. That it still stands, its book says."))
+        else:
+            lines.append(
+                (
+                    True,
+                    "Consistent in itself, and unsigned. That it is unchanged since issue needs the book it came from.",
+                )
+            )
     return lines
 
 
@@ -181,7 +195,7 @@ def _standing_lines(book: CertificateBook, entries: list[Entry], entry: Entry) -
 
 
 def _entry_lines(entry: Entry, facts: Tree) -> list[Line]:
-    kept, body = entry.body["facts"], {key: value for key, value in facts.items() if key != "digest"}
+    kept, body = entry.body["facts"], bare(facts)
     lines: list[Line] = []
     if facts_digest(kept) != entry.body["digest"]:
         lines.append((False, f"Entry {entry.seq} of the book: its facts do not fit its digest."))
@@ -190,6 +204,9 @@ def _entry_lines(entry: Entry, facts: Tree) -> list[Line]:
         lines.append(
             (False, f"Not what entry {entry.seq} of the book holds; changed: {', '.join(changed) or 'digest'}.")
         )
+    elif facts.get("signature") != entry.body.get("signature"):
+        what = "is not the one" if "signature" in facts and "signature" in entry.body else "was added or taken off"
+        lines.append((False, f"Its facts are those of entry {entry.seq} of the book, but its signature {what}."))
     else:
         lines.append((True, f"Unchanged since issue: number, digest and facts are those of entry {entry.seq}."))
     return lines

@@ -32,6 +32,7 @@ COMMANDS: dict[str, str] = {
     "verify": "Check that a book or a certificate is unchanged and consistent.",
     "entry": "Write an entry: remark, height, setup, mark, end, decision.",
     "strike": "Strike out an entry; it stays legible.",
+    "key": "Keys that sign entries and certificates: make, list, show, export, trust; sign a book.",
     "marks": "List, import or export the marks of a book.",
     "frames": "Find a frame, see what a pair of frames does at a place, and which to record.",
     "profiles": "Requirements by published documents, for a session file.",

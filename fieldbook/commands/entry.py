@@ -12,12 +12,15 @@ import click
 from fieldbook.commands import assignments
 from fieldbook.commands.open_book import chosen_occupation, reading, writing
 from fieldbook.commands.output import line, write_json
+from fieldbook.commands.signing import chosen, key_option, say_unsigned, signed_tree
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.entry import Entry
 from fieldbook.model.state import BookState
 from fieldbook.settings.schema import TABLES
 from fieldbook.settings.values import nearest
+from fieldbook.signing.in_book import sign_head, signed_by
+from fieldbook.signing.signer import Signer
 
 SETUP_TABLES = ("setup", "antenna", "receiver", "corrections", "job", "frame", "requirement")
 DECISIONS: dict[str, str] = {
@@ -46,24 +49,36 @@ DECODER_KEYS = frozenset({"receiver.accept_without_checksum", "receiver.talker"}
 @click.option("--occupation", type=int, help="Number; without it the open one, else the only one.")
 @click.option("--set", "settings", multiple=True, metavar="KEY=VALUE", help="One key of the entry; repeatable.")
 @click.option("--by", "observer", required=True, help="Name of who writes.")
+@key_option
 @click.option("--json", "as_json", is_flag=True, help="The result as JSON on stdout.")
 def command(
-    book: Path, kind: str, occupation: int | None, settings: tuple[str, ...], observer: str, *, as_json: bool
+    book: Path,
+    kind: str,
+    occupation: int | None,
+    settings: tuple[str, ...],
+    observer: str,
+    key_path: Path | None,
+    *,
+    as_json: bool,
 ) -> None:
     """Check the body, append it, tell its seq and hash."""
     if not observer.strip():
         raise UsageError("An entry needs a name.", "Give --by NAME.")
+    choice = chosen(observer, key_path)
     if kind == "end":
-        entry = _end(book, occupation, settings, observer)
+        entry = _end(book, occupation, settings, observer, choice.signer)
+        choice.say()
     else:
         with writing(book) as opened:
             body = _BODIES[kind](opened.state(), occupation, settings)
-            entry = opened.append(kind, body, observer)
+            with signed_by(opened, choice.signer):
+                entry = opened.append(kind, body, observer)
+            say_unsigned(opened, observer, choice)
     if _changes_decoding(entry):
         _decode_again(book, entry.body["occupation"])
     if as_json:
         tree = {"seq": entry.seq, "hash": entry.hash, "utc": entry.utc, "kind": entry.kind, "body": entry.body}
-        write_json({"schema": "fieldbook.entry/1", **tree})
+        write_json({"schema": "fieldbook.entry/1", **tree, "signed": signed_tree(choice.signer)})
     else:
         line(f"{entry.seq} {entry.hash}")
 
@@ -209,7 +224,7 @@ _BODIES: dict[str, Callable[[BookState, int | None, tuple[str, ...]], Tree]] = {
 }
 
 
-def _end(book_path: Path, number: int | None, settings: tuple[str, ...], observer: str) -> Entry:
+def _end(book_path: Path, number: int | None, settings: tuple[str, ...], observer: str, signer: Signer | None) -> Entry:
     from fieldbook.occupy.ending import request_end
 
     if settings:
@@ -220,6 +235,9 @@ def _end(book_path: Path, number: int | None, settings: tuple[str, ...], observe
             raise UsageError(f"No occupation of {book_path} is open.", "Nothing is left to end.", code="none_open")
         chosen = chosen_occupation(state, number).number
     request_end(book_path, chosen, observer)
+    if signer is not None:
+        with writing(book_path) as book:
+            sign_head(book, signer)
     with reading(book_path) as book:
         ends = [entry for entry in book.entries() if entry.kind == "end" and entry.body["occupation"] == chosen]
     return ends[-1]

@@ -17,9 +17,11 @@ import click
 from fieldbook.commands import assignments, marks_coordinates, marks_inverse
 from fieldbook.commands.open_book import reading, writing
 from fieldbook.commands.output import line, write_json
+from fieldbook.commands.signing import chosen, key_option, say_unsigned, signed_tree
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree, normalised
 from fieldbook.settings.values import nearest
+from fieldbook.signing.in_book import signed_by
 
 TEXTS = ("name", "id", "description", "inscription", "access", "condition")
 COLUMNS = (*TEXTS, "lat_deg", "lon_deg")
@@ -62,11 +64,13 @@ def list_marks(book: Path, *, as_json: bool) -> None:
 @click.argument("book", type=click.Path(path_type=Path))
 @click.argument("file", type=click.Path(path_type=Path))
 @click.option("--by", "observer", required=True, help="Name of who writes.")
+@key_option
 @click.option("--update", is_flag=True, help="Also change marks that are described differently in the book.")
 @click.option("--json", "as_json", is_flag=True, help="The result as JSON on stdout.")
-def import_marks(book: Path, file: Path, observer: str, *, update: bool, as_json: bool) -> None:
+def import_marks(book: Path, file: Path, observer: str, key_path: Path | None, *, update: bool, as_json: bool) -> None:
     """Check every row, then write."""
     rows = _read(file)
+    choice = chosen(observer, key_path)
     with writing(book) as opened:
         state = opened.state()
         known, frame = state.marks, state.session.frame.client if state.session is not None else None
@@ -79,11 +83,13 @@ def import_marks(book: Path, file: Path, observer: str, *, update: bool, as_json
                 "Nothing was written. Add --update to change them.",
                 code="marks_differ",
             )
-        with opened.transaction():
+        with signed_by(opened, choice.signer), opened.transaction():
             written = [opened.append("mark", tree, observer) for tree in changed]
+        say_unsigned(opened, observer, choice)
     tree = {
         "written": [{"seq": entry.seq, "hash": entry.hash, "name": entry.body["name"]} for entry in written],
         "unchanged": len(wanted) - len(changed),
+        "signed": signed_tree(choice.signer),
     }
     if as_json:
         write_json({"schema": "fieldbook.marks/1", "book": str(book), **tree})

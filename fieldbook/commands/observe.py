@@ -10,10 +10,12 @@ import click
 
 from fieldbook.clock import SystemClock
 from fieldbook.commands.output import Progress, line, note, write_json
+from fieldbook.commands.signing import chosen, key_option, signed_tree
 from fieldbook.commands.words import quality_words
-from fieldbook.errors import ExitCode, UsageError
+from fieldbook.errors import ExitCode, FieldbookError, UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.recorder import RecorderState
+from fieldbook.signing.signer import Signer
 
 SECONDS = {"s": 1, "m": 60, "h": 3600}
 
@@ -29,12 +31,14 @@ SECONDS = {"s": 1, "m": 60, "h": 3600}
 @click.option("--for", "duration", help="End the occupation after this time: 90s, 15m, 2h.")
 @click.option("--new", is_flag=True, help="End the open occupation, if any, and begin another one.")
 @click.option("--end", "end", is_flag=True, help="End the open occupation and record nothing.")
+@key_option
 @click.option("--json", "as_json", is_flag=True, help="The result as JSON on stdout.")
 def command(
     book: Path,
     session_path: Path | None,
     link_text: str | None,
     duration: str | None,
+    key_path: Path | None,
     *,
     new: bool,
     end: bool,
@@ -45,10 +49,10 @@ def command(
     if end:
         if new or duration:
             raise UsageError("--end goes with neither --new nor --for.", "End first, then record.")
-        return _end(book, session_path, as_json=as_json)
+        return _end(book, session_path, key_path, as_json=as_json)
     if session_path is None:
         raise UsageError("A session file is needed.", "Name it with --session SESSION.toml.")
-    tree, interrupted = _observe(book, session_path, link_text, limit_s, new=new)
+    tree, interrupted = _observe(book, session_path, link_text, limit_s, key_path, new=new)
     if as_json:
         write_json(tree)
     else:
@@ -60,7 +64,7 @@ def command(
 
 
 def _observe(
-    book: Path, session_path: Path, link_text: str | None, limit_s: float | None, *, new: bool
+    book: Path, session_path: Path, link_text: str | None, limit_s: float | None, key_path: Path | None, *, new: bool
 ) -> tuple[Tree, bool]:
     from fieldbook.links.address import parse_link
     from fieldbook.occupy.foreground import Wish, observe
@@ -74,18 +78,21 @@ def _observe(
         address = parse_link(link_text, Path.cwd())
     else:
         address = parse_link(session.receiver.link, session_path.absolute().parent)
+    choice = chosen(session.job.observer, key_path)
     stop, progress = threading.Event(), Progress()
     try:
         with StopSignals(stop):
             result = observe(
                 book,
-                Wish(session, address, limit_s, new),
+                Wish(session, address, limit_s, new, choice.signer),
                 SystemClock(),
                 stop,
+                on_start=choice.say,
                 on_state=lambda state: progress.show(_words(state)),
             )
     finally:
         progress.close()
+    signer = _signed(book, choice.signer)
     findings = list(result.findings)
     tree: Tree = {
         "schema": "fieldbook.observe/1",
@@ -102,11 +109,28 @@ def _observe(
         "counters": result.counters,
         "sentences": result.sentences,
         "findings": findings,
+        "signed": signed_tree(signer),
     }
     return tree, result.ended_by is None and stop.is_set()
 
 
-def _end(book_path: Path, session_path: Path | None, *, as_json: bool) -> int:
+def _signed(book_path: Path, signer: Signer | None) -> Signer | None:
+    """Sign what was recorded, now that the recorder is done; None where that did not come about."""
+    from fieldbook.commands.open_book import writing
+    from fieldbook.signing.in_book import sign_head
+
+    if signer is None:
+        return None
+    try:
+        with writing(book_path) as book:
+            sign_head(book, signer)
+    except FieldbookError as error:  # all is recorded, and can be signed later
+        note(f"unsigned: {error.text} Sign it with `fieldbook key sign`.")
+        return None
+    return signer
+
+
+def _end(book_path: Path, session_path: Path | None, key_path: Path | None, *, as_json: bool) -> int:
     from fieldbook.commands.open_book import reading
     from fieldbook.occupy.ending import request_end
     from fieldbook.settings.session import load_session
@@ -121,7 +145,11 @@ def _end(book_path: Path, session_path: Path | None, *, as_json: bool) -> int:
             f"The open occupation {opened.number} is of {opened.mark}, the session of {session.mark.name}.",
             "Leave --session out to end whatever is open.",
         )
-    request_end(book_path, opened.number, session.job.observer if session else opened.observer)
+    observer = session.job.observer if session else opened.observer
+    choice = chosen(observer, key_path)
+    request_end(book_path, opened.number, observer)
+    choice.say()
+    signer = _signed(book_path, choice.signer)
     with reading(book_path) as book:
         ended = book.state().occupations[opened.number]
         heard = next(
@@ -141,6 +169,7 @@ def _end(book_path: Path, session_path: Path | None, *, as_json: bool) -> int:
         "epochs": {"heard": heard},
         "received_bytes": ended.received_bytes,
         "findings": [entry.body for entry in ended.findings],
+        "signed": signed_tree(signer),
     }
     if as_json:
         write_json(tree)

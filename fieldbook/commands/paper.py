@@ -13,6 +13,8 @@ from fieldbook.occupy.reductions import record_operation, reductions_of_mark
 from fieldbook.occupy.whole_mark import whole_mark
 from fieldbook.reduce.frames import versions
 from fieldbook.reduce.occupation import Reduced
+from fieldbook.signing.in_book import signed_by
+from fieldbook.signing.signer import Signer
 
 
 def issue(
@@ -24,6 +26,7 @@ def issue(
     sign_off: str | None,
     supersede: str | None = None,
     replace: bool = False,
+    signer: Signer | None = None,
 ) -> Issued:
     """Reduce, keep the frame operation as an entry, and write the file.
 
@@ -57,7 +60,9 @@ def issue(
         combined=together,
         versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
         clock=SystemClock(),
+        signer=signer,
     )
-    for reduced in certified:
-        record_operation(book, reduced)  # only now: a refusal writes nothing
+    with signed_by(book, signer):
+        for reduced in certified:
+            record_operation(book, reduced)  # only now: a refusal writes nothing
     return issued

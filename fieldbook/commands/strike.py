@@ -9,7 +9,9 @@ import click
 from fieldbook.book.kinds import STRIKABLE
 from fieldbook.commands.open_book import writing
 from fieldbook.commands.output import line, write_json
+from fieldbook.commands.signing import chosen, key_option, say_unsigned, signed_tree
 from fieldbook.errors import UsageError
+from fieldbook.signing.in_book import signed_by
 
 
 @click.command(
@@ -21,11 +23,13 @@ from fieldbook.errors import UsageError
 @click.argument("seq", type=int)
 @click.option("--reason", required=True, help="Why; it is printed wherever the entry was used.")
 @click.option("--by", "observer", required=True, help="Name of who strikes.")
+@key_option
 @click.option("--json", "as_json", is_flag=True, help="The result as JSON on stdout.")
-def command(book: Path, seq: int, reason: str, observer: str, *, as_json: bool) -> None:
+def command(book: Path, seq: int, reason: str, observer: str, key_path: Path | None, *, as_json: bool) -> None:
     """Check that the entry may be struck, then append the strike."""
     if not reason.strip() or not observer.strip():
         raise UsageError("A strike needs a reason and a name.", "Give both --reason and --by.")
+    choice = chosen(observer, key_path)
     with writing(book) as opened:
         target = next((entry for entry in opened.entries(after_seq=seq - 1) if entry.seq == seq), None)
         if target is None:
@@ -54,8 +58,11 @@ def command(book: Path, seq: int, reason: str, observer: str, *, as_json: bool) 
                 "Strike that strike if it was wrong.",
                 code="struck_already",
             )
-        written = opened.append("strike", {"seq": seq, "reason": reason}, observer)
+        with signed_by(opened, choice.signer):
+            written = opened.append("strike", {"seq": seq, "reason": reason}, observer)
+        say_unsigned(opened, observer, choice)
     if as_json:
-        write_json({"schema": "fieldbook.entry/1", "seq": written.seq, "hash": written.hash, "kind": "strike"})
+        tree = {"seq": written.seq, "hash": written.hash, "kind": "strike", "signed": signed_tree(choice.signer)}
+        write_json({"schema": "fieldbook.entry/1", **tree})
     else:
         line(f"{written.seq} {written.hash}  strikes entry {seq} ({target.kind})")

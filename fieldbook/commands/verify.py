@@ -12,6 +12,7 @@ import click
 from fieldbook.clock import SystemClock
 from fieldbook.commands.output import line, write_json
 from fieldbook.errors import BookError, ExitCode, FieldbookError, UsageError
+from fieldbook.signing.keyring import Trust
 
 CERTIFICATE_ENDINGS = (".pdf", ".html", ".json", ".txt")
 
@@ -28,7 +29,10 @@ def command(files: tuple[Path, ...], as_json: bool) -> int:
             raise UsageError(f"{path} is a plain text copy.", "Verify the .pdf, .html or .json of the certificate.")
     books = [path for path in files if path.suffix.lower() not in CERTIFICATE_ENDINGS]
     papers = [path for path in files if path.suffix.lower() in CERTIFICATE_ENDINGS]
-    results = [_book(path) for path in books] + [_certificate(path, books) for path in papers]
+    from fieldbook.signing.keyring import trust
+
+    known = trust()
+    results = [_book(path, known) for path in books] + [_certificate(path, books, known) for path in papers]
     holds = all(result["holds"] for result in results)
     if as_json:
         write_json({"schema": "fieldbook.verify/1", "holds": holds, "files": results})
@@ -37,30 +41,41 @@ def command(files: tuple[Path, ...], as_json: bool) -> int:
     return int(ExitCode.OK if holds else ExitCode.DOES_NOT_HOLD)
 
 
-def _book(path: Path) -> dict[str, object]:
+def _book(path: Path, trust: Trust) -> dict[str, object]:
+    from fieldbook.book.causes import causes
     from fieldbook.commands.verify_certified import verify_certified
+    from fieldbook.commands.verify_signatures import not_proven, verify_signatures
     from fieldbook.occupy.verifying import verify_stored
 
     findings = verify_stored(path)
     if all(item.holds for item in findings):
         findings += verify_certified(path)
+    findings += verify_signatures(path, trust)
     lines = [
         {"holds": item.holds, "where": item.where, "text": item.text, "since": item.since_seq} for item in findings
     ]
-    return {"file": str(path), "kind": "book", "holds": all(item.holds for item in findings), "lines": lines}
+    holds = all(item.holds for item in findings)
+    return {
+        "file": str(path),
+        "kind": "book",
+        "holds": holds,
+        "lines": lines,
+        "looks_like": [] if holds else causes(path),
+        "not_proven": not_proven(findings),
+    }
 
 
-def _certificate(path: Path, books: list[Path]) -> dict[str, object]:
+def _certificate(path: Path, books: list[Path], trust: Trust) -> dict[str, object]:
     from fieldbook.book.store import Book
     from fieldbook.certificate.verify_file import verify_certificate
 
-    lines = verify_certificate(path, None) if not books else []
+    lines = verify_certificate(path, None, trust) if not books else []
     for book_path in books:
         try:
             with Book.open(book_path, clock=SystemClock()) as book:
-                lines = verify_certificate(path, book)
+                lines = verify_certificate(path, book, trust)
         except BookError as error:
-            lines = [*verify_certificate(path, None), (False, f"{book_path}: {error.text}")]
+            lines = [*verify_certificate(path, None, trust), (False, f"{book_path}: {error.text}")]
         except FieldbookError as error:
             lines = [(False, error.text)]
         if all(ok for ok, _ in lines):
@@ -75,3 +90,7 @@ def _print(results: list[dict[str, object]]) -> None:
         for item in result["lines"]:  # type: ignore[attr-defined]
             since = f" (since entry {item['since']})" if item["since"] is not None else ""
             line(f"  {'ok ' if item['holds'] else 'NOT'}  {item['where']}: {item['text']}{since}")
+        for text in result.get("looks_like", []):  # type: ignore[attr-defined]
+            line(f"  --   looks like {text}")
+        for text in result.get("not_proven", []):  # type: ignore[attr-defined]
+            line(f"  --   cannot prove {text}")

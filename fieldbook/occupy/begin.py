@@ -31,6 +31,8 @@ from fieldbook.occupy.rebuild import session_decoder_options
 from fieldbook.occupy.spans import Claimed, claimed_times
 from fieldbook.settings.session import session_from_tree
 from fieldbook.settings.user import with_user_class
+from fieldbook.signing.in_book import signed_by
+from fieldbook.signing.signer import Signer
 
 # What may differ between the session of an open occupation and the one it is taken up with: a port changes its
 # name when it is plugged in again, and a moved file is still recognised by its bytes.
@@ -73,16 +75,15 @@ def plan_occupation(book: Book | None, session: Session, address: LinkAddress, *
     )
 
 
-def enter(book: Book, plan: Plan, clock: Clock) -> int:
-    """Write what was planned; returns the number of the occupation."""
+def enter(book: Book, plan: Plan, clock: Clock, signer: Signer | None = None) -> int:
+    """Write what was planned, signed if there is a key; returns the number of the occupation."""
     if plan.resume is not None:
         return plan.resume
     if plan.end_first is not None:
         end_directly(book, plan.end_first, clock, by="new occupation")
     session = plan.session
     observer, mark = session.job.observer, session.tree["mark"]
-    if book.state().marks.get(session.mark.name) != mark:
-        book.append("mark", mark, observer)
+    new_mark = book.state().marks.get(session.mark.name) != mark
     number = _next_number(book)
     body: Tree = {
         "occupation": number,
@@ -91,12 +92,21 @@ def enter(book: Book, plan: Plan, clock: Clock) -> int:
         "link": plan.address.text,
         "simulated": plan.address.kind == "sim",
     }
-    book.append("occupation", body, observer)
+    with signed_by(book, signer):
+        if new_mark:
+            book.append("mark", mark, observer)
+        book.append("occupation", body, observer)
     return number
 
 
 def begin_occupation(
-    book: Book, session: Session, link_text: str, *, new: bool = False, base_dir: Path | None = None
+    book: Book,
+    session: Session,
+    link_text: str,
+    *,
+    new: bool = False,
+    base_dir: Path | None = None,
+    signer: Signer | None = None,
 ) -> tuple[int, bool]:
     """The occupation to record into, and whether it is one that is taken up again.
 
@@ -105,6 +115,7 @@ def begin_occupation(
         session: what is known before the first byte.
         link_text: address of the link, relative to `base_dir` (the current folder if None).
         new: end the open occupation first, if there is one.
+        signer: key of the observer.
 
     Raises:
         UsageError, LinkError: as `plan_occupation`; nothing is written then.
@@ -116,7 +127,7 @@ def begin_occupation(
         raise BookError(
             f"A recorder is recording occupation {plan.end_first}.", "End that occupation first.", code="locked"
         )
-    return enter(book, plan, SystemClock()), plan.resume is not None
+    return enter(book, plan, SystemClock(), signer), plan.resume is not None
 
 
 def _next_number(book: Book) -> int:

@@ -23,6 +23,7 @@ from fieldbook.model.recorder import RecorderState
 from fieldbook.model.session import Session
 from fieldbook.occupy.begin import Plan, enter, plan_occupation
 from fieldbook.occupy.recorder import Recorder, RecorderResult
+from fieldbook.signing.signer import Signer
 
 
 @dataclass(frozen=True)
@@ -33,6 +34,7 @@ class Wish:
     address: LinkAddress
     limit_s: float | None = None
     new: bool = False
+    signer: Signer | None = None  # key of the observer: signs the beginning; the recorder itself holds no key
 
 
 def observe(
@@ -62,7 +64,7 @@ def observe(
             lock.acquire()
             if not was_there and book_path.exists():
                 plan = _planned(book_path, wish, clock)  # another recorder made it while this one was looking
-            number = _entered(book_path, plan, clock)
+            number = _entered(book_path, plan, clock, wish.signer)
         except BaseException:
             if link is not None:
                 link.close()
@@ -113,13 +115,13 @@ def _planned(book_path: Path, wish: Wish, clock: Clock) -> Plan:
         return plan_occupation(book, wish.session, wish.address, new=wish.new)
 
 
-def _entered(book_path: Path, plan: Plan, clock: Clock) -> int:
+def _entered(book_path: Path, plan: Plan, clock: Clock, signer: Signer | None) -> int:
     if book_path.exists():
         book = Book.open(book_path, clock=clock, write=True)
     else:
         session = plan.session
         book = Book.create(book_path, clock=clock, observer=session.job.observer, session_tree=session.tree)
     try:
-        return enter(book, plan, clock)
+        return enter(book, plan, clock, signer)
     finally:
         book.close()

@@ -22,6 +22,7 @@ from fieldbook.settings.profiles import Profile, profiles
 
 if TYPE_CHECKING:
     from fieldbook.occupy.live import LiveReader
+    from fieldbook.signing.signer import Signer
 
 
 @dataclass(frozen=True)
@@ -76,6 +77,8 @@ class Bridge:
     clock: Clock = field(default_factory=SystemClock)
     observer: str = ""  # who signs; empty until a session or a person says so
     wants_running: bool = False  # a page shows the running mean: make it, in the feed's thread
+    signature: str = ""  # what is known of the observer's key, in words; kept up by the feed
+    _looked_for: str | None = None
     _reader: LiveReader | None = None
 
     # --- looking
@@ -87,7 +90,18 @@ class Bridge:
         if self._reader is None:
             self._reader = LiveReader(self.path, self.clock)
         self._reader.wants_running = self.wants_running
+        if self._looked_for != self.observer:
+            self._look_for_key()
         return self._reader.snapshot()
+
+    def _look_for_key(self) -> None:
+        from fieldbook.signing.message import spoken
+        from fieldbook.signing.signer import signer_without_asking
+
+        name = self.observer
+        signer, why = signer_without_asking(name) if name.strip() else (None, "")
+        self.signature = f"key {spoken(signer.fingerprint)}" if signer is not None else why and f"unsigned: {why}"
+        self._looked_for = name
 
     def close(self) -> None:
         """Let go of the reader, in the thread that used it."""
@@ -202,12 +216,20 @@ class Bridge:
             raise UsageError("Nobody signs yet.", "Press 1, then O, and say who observes.")
         return self.observer
 
+    def _signer(self, name: str) -> Signer | None:
+        """The key of a person, if it can be used without asking."""
+        from fieldbook.signing.signer import signer_without_asking
+
+        return signer_without_asking(name)[0]
+
     def write(self, kind: str, body: Tree) -> Entry:
-        """One entry, signed by the observer."""
+        """One entry in the observer's name, signed with the observer's key if there is one."""
         from fieldbook.book.store import Book
+        from fieldbook.signing.in_book import signed_by
 
         observer = self._signed()
-        with Book.open(self.path, clock=self.clock, write=True) as book:
+        signer = self._signer(observer)
+        with Book.open(self.path, clock=self.clock, write=True) as book, signed_by(book, signer):
             return book.append(kind, body, observer)
 
     def save_session(self, tree: Tree) -> Entry:
@@ -259,7 +281,8 @@ class Bridge:
         self._signed()
         session = self.session(tree)
         with Book.open(self.path, clock=self.clock, write=True) as book:
-            number, resumed = begin_occupation(book, session, session.receiver.link)
+            signer = self._signer(session.job.observer)
+            number, resumed = begin_occupation(book, session, session.receiver.link, signer=signer)
         start_recorder(self.path, number)
         return number, resumed
 
@@ -271,20 +294,31 @@ class Bridge:
 
     def end(self, occupation: int) -> None:
         """End the open occupation: by request where a recorder runs, else directly."""
+        from fieldbook.book.store import Book
         from fieldbook.occupy.ending import request_end
+        from fieldbook.signing.in_book import sign_head
 
-        request_end(self.path, occupation, self._signed())
+        observer = self._signed()
+        request_end(self.path, occupation, observer)
+        signer = self._signer(observer)
+        if signer is not None:
+            with Book.open(self.path, clock=self.clock, write=True) as book:
+                sign_head(book, signer)
 
     # --- paper
 
     def certify(self, mark: str, occupation: int, out: str, sign_off: str, supersede: str) -> Issued:
         """Issue a certificate (with a sign-off) or write a draft (without). An existing file is refused."""
         from fieldbook.book.store import Book
+        from fieldbook.certificate.facts import parse_sign_off
         from fieldbook.certificate.issue import Prepared, certify
         from fieldbook.certificate.repeats import repeats_of
         from fieldbook.occupy.reductions import record_operation, reductions_of_mark
         from fieldbook.reduce.frames import versions
+        from fieldbook.signing.in_book import signed_by
 
+        signed_off = parse_sign_off(sign_off or None)
+        signer = self._signer(signed_off["name"]) if signed_off else None
         used, certified = versions(), []
         with Book.open(self.path, clock=self.clock, write=True) as book:
 
@@ -303,9 +337,11 @@ class Bridge:
                 reductions=prepared,
                 versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
                 clock=self.clock,
+                signer=signer,
             )
-            for own in certified:
-                record_operation(book, own)  # only now: a refusal writes nothing
+            with signed_by(book, signer):
+                for own in certified:
+                    record_operation(book, own)  # only now: a refusal writes nothing
         return Issued(str(made.path), made.number, tuple(made.missing))
 
     def missing(self, reduction: Reduction) -> list[str]:

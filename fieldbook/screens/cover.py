@@ -59,7 +59,8 @@ def _job(session: Session, bridge: Bridge, width: int) -> list[Row]:
     if job.client or job.firm:
         rows.append(labelled("For, by", " · ".join(text for text in (job.client, job.firm) if text), width))
     signer = bridge.observer or "nobody yet: press O"
-    return [*rows, labelled("Observer", signer, width, style="text" if bridge.observer else "warn")]
+    rows.append(labelled("Observer", signer, width, style="text" if bridge.observer else "warn"))
+    return [*rows, labelled("Signature", bridge.signature, width)] if bridge.signature else rows
 
 
 def frame_rows(frame: FrameChoice, width: int) -> list[Row]:

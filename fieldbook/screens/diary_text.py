@@ -8,9 +8,10 @@ from collections.abc import Callable
 from fieldbook.model.canonical import Tree
 from fieldbook.model.entry import Entry
 from fieldbook.screens.plain import clean
+from fieldbook.signing.message import spoken
 
 OWN = frozenset(
-    {"raw", "recorder", "origin", "date", "migrated", "operation", "rendered", "request", "packed"}
+    {"raw", "recorder", "origin", "date", "migrated", "operation", "rendered", "request", "packed", "signature"}
 )  # written by the program
 
 
@@ -98,5 +99,7 @@ _TEXTS: dict[str, Callable[[Tree], str]] = {
     "alarm": lambda body: f"{body.get('text')}" + (" (acknowledged)" if body.get("acknowledged") else ""),
     "certificate": _document,
     "draft": _document,
+    "key": lambda body: f"{body['name']} signs from here on, fingerprint {spoken(str(body['fingerprint']))}",
+    "signature": lambda body: f"signature over the entries up to {body['seq']}",
     "rendered": lambda body: f"{body.get('format')} file {body.get('name')}",
 }

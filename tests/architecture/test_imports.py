@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 ROOT = Path(__file__).parents[2]
-HEAVY = ("numpy", "scipy", "pyproj", "textual", "sqlite_utils", "pynmea2", "typst", "serial", "rich")
+HEAVY = ("cryptography", "numpy", "scipy", "pyproj", "textual", "sqlite_utils", "pynmea2", "typst", "serial", "rich")
 
 
 def test_import_contracts_hold() -> None:
@@ -43,12 +43,23 @@ def test_help_loads_nothing_heavy() -> None:
 
 
 def test_recorder_loads_neither_numbers_nor_screens() -> None:
-    assert loaded_by("import fieldbook.occupy.recorder") & {"numpy", "scipy", "pyproj", "textual", "rich"} == set()
+    assert (
+        loaded_by("import fieldbook.occupy.recorder") & {"cryptography", "numpy", "scipy", "pyproj", "textual", "rich"}
+        == set()
+    )
+
+
+def test_signing_is_loaded_only_where_there_is_a_key() -> None:
+    code = "import fieldbook.occupy.foreground, fieldbook.commands.observe, fieldbook.commands.entry\n"
+    code += (
+        "from fieldbook.signing.signer import signer_without_asking\nassert signer_without_asking('R. Kell')[0] is None"
+    )
+    assert "cryptography" not in loaded_by(code)
 
 
 @pytest.mark.parametrize("module", ["fieldbook.nmea.decoder", "fieldbook.book", "fieldbook.links"])
 def test_the_way_of_a_byte_is_light(module: str) -> None:
-    assert loaded_by(f"import {module}") & {"numpy", "scipy", "pyproj", "textual", "rich"} == set()
+    assert loaded_by(f"import {module}") & {"cryptography", "numpy", "scipy", "pyproj", "textual", "rich"} == set()
 
 
 def test_nothing_reads_outside_the_repository() -> None:

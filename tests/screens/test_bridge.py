@@ -49,6 +49,34 @@ def test_entries_are_written_signed_and_read_back(bridge: Bridge) -> None:
     assert remark.seq in state.strikes
 
 
+def test_with_a_key_of_the_observer_entries_are_signed(
+    bridge: Bridge, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    from fieldbook.screens.diary_text import entry_text
+    from fieldbook.signing import keyring
+    from fieldbook.signing.judge import judge
+
+    monkeypatch.setenv("XDG_CONFIG_HOME", str(tmp_path / "config"))
+    bridge.snapshot()
+    assert bridge.signature == "unsigned: no key of R. Kell on this computer"
+    made = keyring.new_key("R. Kell", None, None)
+    bridge.add_remark(None, "wet")
+    bridge.observer = "M. Orr"
+    bridge.snapshot()
+    assert bridge.signature.startswith("unsigned: no key of M. Orr")
+    bridge.add_remark(None, "dry again")
+    bridge.observer = "R. Kell"
+    bridge.snapshot()
+    assert bridge.signature.replace(" ", "") == f"key{made.key.fingerprint}"
+    bridge.close()
+    entries = bridge.entries()
+    assert [entry.kind for entry in entries][-4:] == ["remark", "key", "signature", "remark"]
+    assert "signs from here on, fingerprint" in entry_text(entries[-3])
+    lines = judge(entries, keyring.trust())
+    assert all(line.holds for line in lines)
+    assert "it is your own" in lines[0].text
+
+
 def test_session_is_checked_before_it_is_saved(bridge: Bridge) -> None:
     before = len(bridge.entries())
     wrong = {**SESSION_TREE, "setup": {**SESSION_TREE["setup"], "reported_point": "lens"}}
