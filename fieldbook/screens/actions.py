@@ -91,6 +91,7 @@ ACTIONS: tuple[Action, ...] = (
     Action("previous", "left", "←", "previous", "The occupation before.", "", ("reduction", "certificate")),
     Action("next", "right", "→", "next", "The next occupation.", "", ("reduction", "certificate")),
     Action("theme", "t", "T", "light", "Next theme: noon, dusk, lamp, console.", ""),
+    Action("seen", "space", "Space", "seen", "Say that the alarms have been seen; they stand in the diary.", "", PAGES, 1),
     Action("keys", "question_mark", "?", "keys", "Show every key.", "fieldbook --help", PAGES, 8, "f1"),
     Action("palette", "colon", ":", "find", "Find an action by its name.", ""),
     Action("quit", "q", "Q", "quit", "Leave the screen. Asks what becomes of the recorder.", "", PAGES, 9),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import ClassVar, cast
 
 from textual.app import ComposeResult
@@ -10,6 +11,7 @@ from textual.screen import ModalScreen
 
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import Reduction
+from fieldbook.screens.alarm_log import Alarm
 from fieldbook.screens.digits import big
 from fieldbook.screens.head import alarms
 from fieldbook.screens.page import Desk
@@ -44,7 +46,7 @@ def _judged_m(reduction: Reduction) -> float | None:
     return float(line.have) if line and isinstance(line.have, int | float) else None
 
 
-def big_rows(view: LiveView | None, width: int, height: int) -> list[Row]:
+def big_rows(view: LiveView | None, width: int, height: int, unseen: Sequence[Alarm] = ()) -> list[Row]:
     """Three blocks of letters, the word largest."""
     word, number, elapsed = big_words(view)
     third = max(5, (height - 3) // 3)
@@ -55,6 +57,10 @@ def big_rows(view: LiveView | None, width: int, height: int) -> list[Row]:
         rows.append(BLANK)
     mark = view.occupation.mark if view and view.occupation else ""
     rows = [*rows[: height - 1], *[BLANK] * max(0, height - 1 - len(rows))]
+    over = [alarm for alarm in unseen if not alarm.holds and not alarm.good]
+    if over:
+        more = f" and {len(over) - 1} more" if len(over) > 1 else ""
+        return [*rows, row(("  ", "text"), (f" was {over[0].text}{more} ", "alarm"), (" Space: seen", "strong"))]
     note = " 95 % horizontal of this set-up; elapsed time.  B or Esc: back"
     return [*rows, row((f"  {mark}" if mark else "", "text"), (note, "soft"))]
 
@@ -62,7 +68,10 @@ def big_rows(view: LiveView | None, width: int, height: int) -> list[Row]:
 class BigView(ModalScreen[None]):
     """Fills the terminal."""
 
-    BINDINGS: ClassVar[list[BindingType]] = [Binding("b,B,escape,enter", "back", "back")]
+    BINDINGS: ClassVar[list[BindingType]] = [
+        Binding("b,B,escape,enter", "back", "back"),
+        Binding("space", "seen", "seen"),
+    ]
 
     def __init__(self, desk: Desk) -> None:
         super().__init__()
@@ -70,11 +79,17 @@ class BigView(ModalScreen[None]):
 
     def compose(self) -> ComposeResult:
         """One panel."""
-        yield Panel(lambda width, height: big_rows(self._desk.view, width, height), id="big")
+        yield Panel(
+            lambda width, height: big_rows(self._desk.view, width, height, self._desk.alarms.unseen()), id="big"
+        )
 
     def on_mount(self) -> None:
         """Follow the recording."""
         self.set_interval(0.5, lambda: cast(Panel, self.query_one("#big")).redraw())
+
+    def action_seen(self) -> None:
+        """The alarms have been seen."""
+        self._desk.do_seen()
 
     def action_back(self) -> None:
         """Back to the book."""

@@ -8,7 +8,7 @@ Only lines that changed are painted. What is written goes through a hand, never 
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Any, ClassVar, cast
 
 from textual.app import ComposeResult
@@ -21,6 +21,7 @@ from fieldbook.clock import Clock
 from fieldbook.model.live import LiveView
 from fieldbook.screens import entry_forms, height_form, recording, setup_forms
 from fieldbook.screens.actions import ACTIONS, BY_NAME, PAGES
+from fieldbook.screens.alarm_log import Alarm, AlarmLog
 from fieldbook.screens.big import BigView
 from fieldbook.screens.bridge import Bridge, Reduced
 from fieldbook.screens.certificate import CertificatePage, paper
@@ -29,7 +30,7 @@ from fieldbook.screens.diary import DiaryPage
 from fieldbook.screens.feed import Feed
 from fieldbook.screens.frames_view import FramesView
 from fieldbook.screens.hand import Hand, Outcome
-from fieldbook.screens.head import alarm_kinds, head_row, keys_row, leave_row, rule_row, tabs_row
+from fieldbook.screens.head import head_row, keys_row, leave_row, rule_row, tabs_row
 from fieldbook.screens.keys_page import KeysView
 from fieldbook.screens.leave import LeavePage
 from fieldbook.screens.links_page import LinksPage
@@ -85,7 +86,7 @@ class BookScreen(Screen[None]):
         self.page = "cover"
         self.notice: tuple[str, str] | None = None
         self._ticks = 0
-        self._alarms: frozenset[str] = frozenset()
+        self.alarms = AlarmLog()
         self._first = True
         self._writing = Hand("writing", lambda outcome: self.post_message(self.Came(outcome)))
         self._working = Hand("working", lambda outcome: self.post_message(self.Came(outcome)))
@@ -97,7 +98,7 @@ class BookScreen(Screen[None]):
 
     def compose(self) -> ComposeResult:
         """Lines that never change place, and the pages between them."""
-        yield Panel(lambda width, height: [head_row(self.view, self.clock, width)], id="head")
+        yield Panel(lambda width, height: [head_row(self.view, self.clock, width, self.alarms.unseen())], id="head")
         yield Panel(lambda width, height: [tabs_row(self.page, width)], id="tabs")
         with ContentSwitcher(initial="page-cover", id="pages"):
             for name, made in zip(PAGES, PAGE_CLASSES, strict=True):
@@ -145,10 +146,18 @@ class BookScreen(Screen[None]):
             if open_occupation(self.view) is not None and self.page == "cover":
                 self.go("occupation")
             self.redraw()
-        kinds = alarm_kinds(self.view)
-        if kinds - self._alarms:
+        began = self.alarms.look(self.view, self.clock.utc_ms())
+        if began:
             self.app.bell()
-        self._alarms = kinds
+            self._enter([alarm for alarm in began if not alarm.recorded], acknowledged=False)
+
+    def _enter(self, alarms: Sequence[Alarm], *, acknowledged: bool) -> None:
+        """Alarms are entries: when one began, and when somebody had seen it."""
+        if self.view is None or self.view.occupation is None or not alarms:
+            return
+        bridge, number = self.bridge, self.view.occupation.number
+        bodies = [(alarm.code, alarm.text) for alarm in alarms if not alarm.good]
+        self.write(lambda: [bridge.add_alarm(number, code, text, acknowledged=acknowledged) for code, text in bodies])
 
     def _lines(self) -> None:
         for name in ("head", "tabs", "rule", "leave-line", "keys-line"):
@@ -166,6 +175,8 @@ class BookScreen(Screen[None]):
             hidden |= {"height"}
         if self.page == "leave":
             hidden |= {"leave"}
+        if not self.alarms.standing:
+            hidden |= {"seen"}
         if self.has_class("-wide"):
             hidden |= {"turn"}
         return frozenset(hidden)
@@ -338,6 +349,13 @@ class BookScreen(Screen[None]):
 
     def do_next(self) -> None:
         self.current.side(1)
+
+    def do_seen(self) -> None:
+        seen = self.alarms.acknowledge()
+        if seen:
+            self._enter(seen, acknowledged=True)
+            self.tell("seen: " + ", ".join(alarm.text for alarm in seen))
+            self._lines()
 
     def do_theme(self) -> None:
         cast(Any, self.app).next_theme()

@@ -25,6 +25,9 @@ if TYPE_CHECKING:
     from fieldbook.signing.signer import Signer
 
 
+ALARMS_LOOK_BACK = 100  # entries; two screens tell of an alarm within seconds of each other
+
+
 @dataclass(frozen=True)
 class Port:
     """A port of this computer, listed without opening it."""
@@ -243,6 +246,25 @@ class Bridge:
     def add_remark(self, occupation: int | None, text: str) -> Entry:
         """A remark, at any moment."""
         return self.write("remark", {"occupation": occupation, "text": text})
+
+    def add_alarm(self, occupation: int | None, code: str, text: str, *, acknowledged: bool) -> Entry | None:
+        """An alarm that the screen raised, or that somebody has seen; an unsigned one is the program's own.
+
+        Returns:
+            None where another screen on this book has raised it already.
+        """
+        from fieldbook.book.store import Book
+
+        body = {"occupation": occupation, "code": code, "text": text, "acknowledged": acknowledged}
+        with Book.open(self.path, clock=self.clock, write=True) as book:
+            latest = [entry.body for entry in book.entries(book.state().head_seq - ALARMS_LOOK_BACK)]
+            told = next(
+                (old for old in reversed(latest) if (old.get("code"), old.get("occupation")) == (code, occupation)),
+                None,
+            )
+            if not acknowledged and told is not None and not told.get("acknowledged", True):
+                return None
+            return book.append("alarm", body, self.observer.strip() if acknowledged and self.observer else "screen")
 
     def add_height(self, occupation: int, tree: Tree) -> Entry:
         """A height reading of an occupation that has begun."""

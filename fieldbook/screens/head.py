@@ -2,41 +2,22 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from fieldbook.clock import Clock
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import LeaveLine
 from fieldbook.screens.actions import PAGE_TABS, PAGE_TITLES, PAGES, foot_text
+from fieldbook.screens.alarm_log import Alarm
+from fieldbook.screens.head_words import wrong_now
 from fieldbook.screens.plain import fit, pad, width_of
 from fieldbook.screens.rows import Row, Span, row
 from fieldbook.screens.words import VERDICT, clock_text, duration, leave_word, quality_word
 
-SILENT_AFTER_S = 5.0  # seconds without a byte after which the head line says NO DATA
-
 
 def alarms(view: LiveView | None) -> list[str]:
     """What is wrong with the recording right now, the worst first."""
-    if view is None or view.occupation is None or not view.occupation.open:
-        return []
-    if not view.recorder_alive:
-        return ["RECORDER GONE"]
-    found = []
-    recorder = view.recorder
-    silence = view.silence_s
-    if recorder is not None and recorder.link_state == "lost":
-        found.append("LINK LOST" + (f" {duration(silence)}" if silence is not None else ""))
-    elif silence is not None and silence > SILENT_AFTER_S:
-        found.append(f"NO DATA {duration(silence)}")
-    if recorder is not None:
-        found += [alarm.replace("_", " ").upper() for alarm in recorder.alarms]
-        accepted = view.occupation.session.requirement.accept_quality
-        if not found and recorder.quality is not None and recorder.quality not in accepted:
-            found.append(f"NOT ACCEPTED: {quality_word(recorder.quality)}")
-    return found
-
-
-def alarm_kinds(view: LiveView | None) -> frozenset[str]:
-    """The alarms without their figures: the bell rings when this changes."""
-    return frozenset("".join(c for c in text if not c.isdigit()) for text in alarms(view))
+    return [item.text for item in wrong_now(view)]
 
 
 def state_word(view: LiveView | None) -> str:
@@ -48,20 +29,28 @@ def state_word(view: LiveView | None) -> str:
     return "recording" if view.recorder_alive else "open"
 
 
-def head_row(view: LiveView | None, clock: Clock, width: int) -> Row:
-    """The head line."""
+def head_row(view: LiveView | None, clock: Clock, width: int, unseen: Sequence[Alarm] = ()) -> Row:
+    """The head line: an alarm stands in it while it holds, and after that until somebody has seen it."""
     time_text = f"{clock_text(clock.utc_ms())} UTC "
     wrong = alarms(view)
+    over = [alarm for alarm in unseen if not alarm.holds and not alarm.good]
+    news = [alarm for alarm in unseen if alarm.good]
     right: list[Span] = []
     if wrong:
-        right = [(f" {fit(wrong[0], 30)} ", "alarm"), ("  ", "text")]
-        if len(wrong) > 1:
-            right.insert(1, (f" +{len(wrong) - 1}", "alarm"))
+        right = [(f" {fit(wrong[0], 30)} ", "alarm")]
+        if len(wrong) + len(over) > 1:
+            right.append((f" +{len(wrong) + len(over) - 1}", "alarm"))
+        right.append(("  ", "text"))
     elif view is not None and view.recorder is not None and view.recorder_alive:
         last = view.recorder
         right = [(quality_word(last.quality), "strong"), (f"  {_count(last.satellites)} sat  ", "text")]
-        if last.age_s is not None:
+        if last.age_s is not None and not (over or news):
             right.append((f"age {last.age_s:.1f} s  ", "text"))
+    if over and not wrong:
+        more = f" +{len(over) - 1}" if len(over) > 1 else ""
+        right = [(f" was {fit(over[0].text, 22)}{more} ", "alarm"), ("  ", "text"), *right]
+    elif news and not wrong:
+        right = [(f" {news[0].text} ", "good"), ("  ", "text"), *right]
     used = sum(width_of(text) for text, _ in right) + width_of(time_text)
     left = _left(view, max(0, width - used))
     return (*left, *right, (time_text, "text"))

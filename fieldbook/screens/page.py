@@ -16,6 +16,7 @@ from fieldbook.clock import Clock
 from fieldbook.model.canonical import Tree
 from fieldbook.model.live import LiveView
 from fieldbook.model.state import Occupation
+from fieldbook.screens.alarm_log import AlarmLog
 from fieldbook.screens.bridge import Bridge, Reduced
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.rows import Row
@@ -32,6 +33,7 @@ class Desk(Protocol):
     view: LiveView | None
     reduced: Reduced | None
     reducing: bool
+    alarms: AlarmLog
 
     @property
     def ascii_only(self) -> bool:
@@ -64,6 +66,10 @@ class Desk(Protocol):
 
     def redraw(self) -> None:
         """Draw the open page again."""
+        ...
+
+    def do_seen(self) -> None:
+        """The alarms have been seen."""
         ...
 
 

@@ -397,6 +397,10 @@ class FakeBridge(Bridge):
             CONVERGENCE if self.wants_running and shown else None,
         )
 
+    def add_alarm(self, occupation: int | None, code: str, text: str, *, acknowledged: bool) -> Entry | None:
+        self.calls.append(("alarm", (occupation, code, acknowledged)))
+        return None
+
     def entries(self) -> list[Entry]:
         return list(self.written)
 
