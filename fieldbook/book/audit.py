@@ -7,6 +7,7 @@
     end                             number and SHA-256 of the received bytes, number of epochs
     epoch, epoch_form               complete and consistent; their values are compared with a rebuild by the caller
     epoch_pack                      the same, and its stored bytes against their SHA-256
+    rescued                         the old chain, recomputed from what a rescued book carries of it
     recorder_state                  not covered: a heartbeat
     BOOK-wal                        no commits behind a damaged frame (`wal`), as long as nobody is on the book
 
@@ -34,6 +35,7 @@ from fieldbook.model.entry import GENESIS, entry_hash
 from . import connect, migrations, wal
 from .audit_epochs import audit_epochs
 from .audit_raw import audit_raw
+from .audit_rescued import audit_rescued
 from .kinds import KINDS, MAX_BODY_BYTES, checked_body
 
 MAX_FINDINGS = 100
@@ -118,6 +120,7 @@ def _audited(connection: connect.BookConnection, time_limit_s: float) -> list[Au
         ("migrations", _check_migrations),
         ("raw", audit_raw),
         ("epoch", audit_epochs),
+        ("rescued", audit_rescued),
         ("file", lambda found: _check_wal(found, connection)),
     ]
     try:

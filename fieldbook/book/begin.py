@@ -32,7 +32,7 @@ def new_book(path: Path, clock: Clock, observer: str, session_tree: Tree | None,
     with connect.book_errors(path):
         try:
             _write(part, clock, observer, session_tree, book_id)
-            _give_name(part, path)
+            give_name(part, path)
         finally:
             part.unlink(missing_ok=True)
 
@@ -58,8 +58,13 @@ def _write(part: Path, clock: Clock, observer: str, session_tree: Tree | None, b
         connection.close()
 
 
-def _give_name(part: Path, path: Path) -> None:
-    """Move the finished book to its name without overwriting, and make the folder remember it."""
+def give_name(part: Path, path: Path) -> None:
+    """Move the finished book to its name without overwriting, and make the folder remember it.
+
+    Raises:
+        UsageError: the name is taken.
+        BookError: the file cannot be moved.
+    """
     taken = UsageError(f"{path} exists already.", "Choose another name; a book is never overwritten.")
     try:
         path.hardlink_to(part)

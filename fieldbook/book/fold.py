@@ -286,6 +286,22 @@ def _rendered(folder: _Folder, entry: Entry) -> None:
     folder.state.rendered.append(entry)
 
 
+def _rescued(folder: _Folder, entry: Entry) -> None:
+    body = entry.body
+    spans = [*body["lost"], *body["damaged"], *([run["first"], run["last"]] for run in body["carried"])]
+    numbers = [item[key] for item in body["occupations"] for key in ("occupation", "received_bytes", "unproven_bytes")]
+    stated = [item["stated_bytes"] for item in body["occupations"] if item["stated_bytes"] is not None]
+    if any(type(number) is not int for span in [*spans, numbers, stated] for number in span):
+        raise ValueError("a number is none")
+    if any(len(span) != 2 for span in spans) or not all(isinstance(item, dict) for item in body["certificates"]):
+        raise ValueError("a list is not what it should be")
+    if not all(key in body["from"] for key in ("id", "sha256", "head_hash", "end_known")):
+        raise ValueError("it does not say what was rescued")
+    if not all("whole" in item for item in body["occupations"]):
+        raise ValueError("it does not say what is whole")
+    folder.state.rescued = entry
+
+
 _ACTIONS: dict[str, Callable[[_Folder, Entry], None]] = {
     "session": _offered,
     "mark": _mark,
@@ -304,4 +320,5 @@ _ACTIONS: dict[str, Callable[[_Folder, Entry], None]] = {
     "certificate": _document,
     "draft": _document,
     "rendered": _rendered,
+    "rescued": _rescued,
 }

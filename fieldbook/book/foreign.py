@@ -1,8 +1,10 @@
-"""Books of other people on read-only media: the one place that touches a book without SQLite.
+"""Books of other people on read-only media, and damaged ones: the one place that touches a book without SQLite.
 
 A book that was copied to a stick together with its -wal cannot be read in place on a read-only medium, because
 SQLite must make its -shm there. Only then, and only while this process has no connection to that book (closing a
-file handle would drop the POSIX locks of the connection), the files are copied to a temporary folder.
+file handle would drop the POSIX locks of the connection), the files are copied to a temporary folder. The same for a
+rescue: what SQLite refuses to open is copied once and read from the copy, byte by byte; the book itself is never opened
+for it again.
 """
 
 from __future__ import annotations
@@ -26,6 +28,13 @@ class Copy:
 
     path: Path
     folder: tempfile.TemporaryDirectory[str]
+
+    def content(self, ending: str = "") -> bytes:
+        """The bytes of the copy, or of what lies beside it; empty if that is not there."""
+        try:
+            return Path(str(self.path) + ending).read_bytes()
+        except OSError:
+            return b""
 
     def remove(self) -> None:
         """Delete the temporary folder."""
@@ -52,6 +61,25 @@ def copy_for_reading(book: Path, connections_here: int) -> Copy:
             "Ask whoever records it for a copy, or for the right to write there.",
             code="read_only",
         )
+    return _copied(book)
+
+
+def copy_for_rescue(book: Path, connections_here: int) -> Copy:
+    """Copy BOOK with its -wal and -journal to a temporary folder, whatever they hold.
+
+    Raises:
+        BookError: this process has a connection to the book, a recorder is on it, or it cannot be copied.
+    """
+    if connections_here or held(book):
+        raise BookError(
+            f"A recorder is recording into {book}.",
+            "End that recording first; a running book needs no rescue.",
+            code="locked",
+        )
+    return _copied(book)
+
+
+def _copied(book: Path) -> Copy:
     folder = tempfile.TemporaryDirectory(prefix="fieldbook-")
     target = Path(folder.name) / "copy.book"
     real = os.path.realpath(book)

@@ -73,6 +73,8 @@ KINDS: dict[str, dict[str, tuple[type, ...]]] = {
     "operation": {"occupation": _INT, "steps": _LIST},
     "certificate": {"number": _TEXT, "facts": _TREE, "digest": _TEXT},
     "draft": {"facts": _TREE, "digest": _TEXT},
+    "rescued": {"from": _TREE, "carried": _LIST, "occupations": _LIST, "certificates": _LIST},
+    "withdrawn": {"reason": _TEXT, "original": (dict, type(None))},
     "rendered": {"digest": _TEXT, "format": _TEXT, "name": _TEXT, "sha256": _TEXT},
     "key": {"name": _TEXT, "algorithm": _TEXT, "public_key": _TEXT, "fingerprint": _TEXT},
     "signature": {"seq": _INT, "hash": _TEXT, "fingerprint": _TEXT, "signature": _TEXT},

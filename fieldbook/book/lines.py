@@ -17,6 +17,7 @@ no more is inflated or built than that allows.
 from __future__ import annotations
 
 import lzma
+import re
 import struct
 import zlib
 from collections.abc import Iterator, Sequence
@@ -31,6 +32,7 @@ _END = b"\r\n"
 _SIZES = struct.Struct(">BII")  # of a piece: method, stored bytes, bytes it makes
 SMALL, QUICK = 0, 1  # methods: LZMA2, zlib
 _LEVEL = 5  # of zlib: 4 % larger than 6 in two thirds of its time
+_HEAD = re.compile(rb"[\x00\x01]\x00[\x00-\x13][\x00-\xff]{2}\x00[\x00-\x12][\x00-\xff]{2}[\x78\x01\xe0-\xff]", re.S)
 _COUNTS = struct.Struct(">IB")  # inside: lines, kinds with columns
 _WIDTH = struct.Struct(">H")  # of each kind
 _FILTERS = [
@@ -113,6 +115,118 @@ def unpressed(data: bytes, expected: int) -> bytes:
     if left:
         raise ValueError(f"its pieces do not hold exactly {expected} bytes")
     return b"".join(parts)
+
+
+def surviving(
+    data: bytes, holes: Sequence[tuple[int, int]], total: int | None
+) -> Iterator[tuple[int, int, bytes | None]]:
+    """What is left of damaged pieces: (place in the plain bytes, their number, they themselves or None) of each piece.
+
+    Args:
+        data: the stored bytes, missing places filled with anything.
+        holes: those places (from, to).
+        total: plain bytes that all pieces make, where known: pieces behind a lost head are placed from the end.
+    """
+    heads, broken_at = _heads(data, 0, holes)
+    place = 0
+    for position, stored, makes in heads:
+        yield place, makes, _tried(data, position, stored, makes)
+        place += makes
+    if broken_at is None or total is None:
+        return  # what is behind cannot be placed
+    for start in range(broken_at + 1, len(data) - _SIZES.size):
+        if data[start] in (SMALL, QUICK):
+            heads, broken = _heads(data, start, holes)
+            if heads and broken is None and sum(makes for _, _, makes in heads) <= total - place:
+                place = total - sum(makes for _, _, makes in heads)
+                for position, stored, makes in heads:
+                    yield place, makes, _tried(data, position, stored, makes)
+                    place += makes
+                return
+
+
+def anywhere(data: bytes) -> Iterator[bytes]:
+    """Plain bytes of whole pieces that stand anywhere in these bytes: what a head states must come out exactly."""
+    place = 0
+    while found := _HEAD.search(data, place):
+        start, place = found.start(), found.start() + 1
+        _, stored, makes = _SIZES.unpack_from(data, start)
+        if 0 < makes <= PIECE_BYTES and 0 < stored <= len(data) - start - _SIZES.size:
+            plain = _tried(data, start, stored, makes)
+            if plain is not None:
+                place = start + _SIZES.size + stored
+                yield plain
+
+
+def heads(data: bytes, holes: Sequence[tuple[int, int]]) -> Iterator[tuple[int, int]]:
+    """(place in the stored bytes, plain bytes it makes) of each piece, as far as their heads can be followed."""
+    return ((start, makes) for start, _, makes in _heads(data, 0, holes)[0])
+
+
+def _heads(data: bytes, start: int, holes: Sequence[tuple[int, int]]) -> tuple[list[tuple[int, int, int]], int | None]:
+    """(place, stored bytes, bytes made) of the pieces from a place on, and where that ends too early, if it does."""
+    found: list[tuple[int, int, int]] = []
+    while start < len(data):
+        end = start + _SIZES.size
+        if end > len(data) or any(begin < end and start < stop for begin, stop in holes):
+            return found, start
+        method, stored, makes = _SIZES.unpack_from(data, start)
+        if method not in (SMALL, QUICK) or not 0 < makes <= PIECE_BYTES or not 0 < stored <= len(data) - end:
+            return found, start
+        found.append((start, stored, makes))
+        start = end + stored
+    return found, None
+
+
+def _tried(data: bytes, position: int, stored: int, makes: int) -> bytes | None:
+    begin = position + _SIZES.size
+    try:
+        return _unfolded(_inflated(data[position], data[begin : begin + stored], makes), makes)
+    except (ValueError, struct.error, MemoryError):
+        return None
+
+
+def complete_kinds(data: bytes) -> Iterator[bytes | None]:
+    """The lines of a piece that is cut off (its stored bytes up to the damage), in order; None for a lost line.
+
+    Lines stand kind by kind: what lies before the damage gives all lines of the first kinds.
+    """
+    folded = _beginning(data)
+    if len(folded) < _COUNTS.size:
+        return
+    count, kinds = _COUNTS.unpack_from(folded)
+    begin = _COUNTS.size + _WIDTH.size * kinds
+    if count > PIECE_BYTES or len(folded) < begin + count:
+        return
+    order = folded[begin : begin + count]
+    widths = [item[0] for item in _WIDTH.iter_unpack(folded[_COUNTS.size : begin])]
+    sources: dict[int, Iterator[bytes]] = {}
+    position = begin + count
+    for kind, width in enumerate(widths):
+        if width > _LONGEST or position + 2 * width > len(folded):
+            break
+        try:
+            sources[kind], position = _lines(folded, position, width, order.count(kind))
+        except ValueError:
+            break
+    for number in order:
+        yield next(sources[number], None) if number in sources else None
+
+
+def _beginning(data: bytes) -> bytes:
+    """What the compressed bytes give before they can go no further."""
+    if len(data) <= _SIZES.size or data[0] not in (SMALL, QUICK):
+        return b""
+    worker = zlib.decompressobj() if data[0] == QUICK else lzma.LZMADecompressor(lzma.FORMAT_RAW, filters=_FILTERS)
+    plain = bytearray()
+    for start in range(_SIZES.size, len(data), 64):
+        try:
+            plain += worker.decompress(data[start : start + 64])
+        except (lzma.LZMAError, zlib.error, EOFError):
+            break
+        if len(plain) > 2 * PIECE_BYTES + 2 * _REST * (_LONGEST + 2) + 64:
+            return b""
+    return bytes(plain)
 
 
 def _inflated(method: int, data: bytes, makes: int) -> bytes:

@@ -162,6 +162,11 @@ def _with_book(book: CertificateBook, facts: Tree, data: bytes, lines: list[Line
         None,
     )
     if entry is None:
+        rescued = book.state().rescued
+        if rescued is not None and any(old.get("digest") == digest for old in rescued.body["certificates"]):
+            old_id = rescued.body["from"]["id"]
+            text = f"{_name(facts)} was issued from the damaged book {old_id}, from which this one was rescued."
+            return [*lines, (False, f"{text} It does not stand here: issue it anew.")]
         return [*lines, (False, f"{_name(facts)} was not issued from this book ({book.state().id}).")]
     first = _standing_lines(book, entries, entry)
     return [*first, *lines, *_entry_lines(entry, facts), _file_line(entries, digest, data, lines)]

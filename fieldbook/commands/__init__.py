@@ -38,6 +38,7 @@ COMMANDS: dict[str, str] = {
     "profiles": "Requirements by published documents, for a session file.",
     "antenna": "Your own antennas: add from an ANTEX file or typed in, list, show.",
     "export": "Write out the received bytes of an occupation.",
+    "rescue": "Salvage what a damaged book still holds into a new one.",
 }
 LATER = ("register", "geoid")
 

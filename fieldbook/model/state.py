@@ -68,6 +68,7 @@ class BookState:
     documents: list[Entry] = field(default_factory=list)  # `certificate` and `draft` entries, in order
     rendered: list[Entry] = field(default_factory=list)  # `rendered` entries: hash of every file written
     strikes: dict[int, Entry] = field(default_factory=dict)  # struck seq -> the strike
+    rescued: Entry | None = None  # what this book was salvaged from, and what is missing
 
     @property
     def open_occupation(self) -> Occupation | None:

@@ -19,6 +19,7 @@ from fieldbook.book.audit import audit_book
 from fieldbook.book.store import Book
 from fieldbook.clock import SystemClock
 from fieldbook.errors import FieldbookError
+from fieldbook.model.canonical import Tree
 from fieldbook.model.epoch import EpochFlag
 from fieldbook.model.state import Occupation
 from fieldbook.nmea.second_reader import second_readings
@@ -48,11 +49,34 @@ def verify_stored(path: Path) -> list[Verified]:
                 found.append(
                     Verified(False, path.name, "was copied without its -wal: what was recorded last is missing")
                 )
-            for occupation in book.state().occupations.values():
+            state = book.state()
+            if state.rescued is not None:
+                found.append(Verified(True, "rescued", rescued_words(state.rescued.body), state.rescued.seq))
+            for occupation in state.occupations.values():
                 found += _occupation(book, occupation)
     except FieldbookError as error:
         found.append(Verified(False, path.name, error.text))
     return found
+
+
+def rescued_words(body: Tree) -> str:
+    """What a rescued book says of itself, and what nobody can say of it."""
+    old, carried = body["from"], sum(run["last"] - run["first"] + 1 for run in body["carried"])
+    said = [f"salvaged from the damaged book {old['id'] or 'of unknown id'}, file SHA-256 {old['sha256']}"]
+    missing = body["lost"] + body["damaged"]
+    if missing:
+        numbers = ", ".join(str(first) if first == last else f"{first} to {last}" for first, last in missing)
+        said.append(f"lost: entries {numbers}")
+    for item in body["occupations"]:
+        short = (item["stated_bytes"] or 0) - item["received_bytes"]
+        if not item["whole"]:
+            lost = f"{short} bytes lost" if short > 0 else "made anew"
+            said.append(f"occupation {item['occupation']}: {lost}, {item['unproven_bytes']} bytes unproven")
+    said.append(f"{carried} old entries give the hashes stated, the last {old['head_hash']}")
+    if not old["end_known"]:
+        said.append("entries after that may be missing")
+    said.append("that the old book was true is proven by nothing in this one")
+    return "; ".join(said)
 
 
 def _occupation(book: Book, occupation: Occupation) -> Iterator[Verified]:

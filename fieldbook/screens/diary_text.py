@@ -101,5 +101,7 @@ _TEXTS: dict[str, Callable[[Tree], str]] = {
     "draft": _document,
     "key": lambda body: f"{body['name']} signs from here on, fingerprint {spoken(str(body['fingerprint']))}",
     "signature": lambda body: f"signature over the entries up to {body['seq']}",
+    "rescued": lambda body: f"salvaged from book {(body.get('from') or {}).get('id') or 'of unknown id'}",
+    "withdrawn": lambda body: f"in place of an old entry: {body.get('reason')}",
     "rendered": lambda body: f"{body.get('format')} file {body.get('name')}",
 }

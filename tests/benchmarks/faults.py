@@ -6,6 +6,7 @@ what had been acknowledged to another process before the fault, and what of it i
     faults_rig.py     wire, recorders, witness           faults_kills.py    kill -9, a file in pieces
     faults_power.py   power cut: writes replayed         faults_media.py    disk full, read-only, copies, versions
     faults_links.py   ports, noise, silence, suspension  faults_clock.py    the host's clock, two recorders
+    faults_rescue.py  damaged books, rescued
 
 The short form takes less than three minutes; `--long` kills 200 recorders and cuts the power 500 times. POSIX only;
 what a machine cannot do (root, a C compiler) is a row 'not run'. Exit 1 if anything was lost, damaged or not as promised.
@@ -23,6 +24,7 @@ from faults_kills import file_in_pieces, recorder_kills, screen_kills
 from faults_links import noise, replaced, silence, suspended, tcp_dropped, unplugged
 from faults_media import copied_without_wal, disk_full, newer_version, older_version, read_only
 from faults_power import power_cuts
+from faults_rescue import rescued
 from faults_rig import Row
 
 HEAD = ["fault", "times", "epochs acknowledged", "lost", "books damaged", "time to recover", "remark"]
@@ -53,6 +55,7 @@ def faults(*, long: bool) -> dict[str, Callable[[], Row]]:
         "race": lambda: race(often(1, 10)),
         "copied_without_wal": lambda: copied_without_wal(often(3, 30)),
         "older_version": lambda: older_version(often(1, 10)),
+        "rescued": lambda: rescued(often(18, 300)),
         "newer_version": lambda: newer_version(1),
     }
 
