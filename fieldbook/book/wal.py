@@ -42,7 +42,7 @@ def wal_problem(book: Path, connections_here: int) -> str:
 def _problem(data: bytes) -> str:
     magic, _, page_bytes, _, salt_1, salt_2, *sums = _HEAD.unpack_from(data)
     swap = (magic == _MAGIC[1]) is (sys.byteorder == "little")
-    if magic not in _MAGIC or _sum(data[:24], (0, 0), swap=swap) != tuple(sums):
+    if magic not in _MAGIC or checksum(data[:24], (0, 0), swap=swap) != tuple(sums):
         return "its -wal has a damaged head: nothing that stood in it can be read"
     step = _FRAME.size + page_bytes
     if page_bytes < 512 or page_bytes & (page_bytes - 1):
@@ -51,7 +51,7 @@ def _problem(data: bytes) -> str:
     for number, start in enumerate(range(_HEAD.size, len(data) - step + 1, step), 1):
         _, after_commit, own_1, own_2, *stated = _FRAME.unpack_from(data, start)
         covered = data[start : start + 8] + data[start + _FRAME.size : start + step]
-        good = (own_1, own_2) == (salt_1, salt_2) and _sum(covered, before, swap=swap) == tuple(stated)
+        good = (own_1, own_2) == (salt_1, salt_2) and checksum(covered, before, swap=swap) == tuple(stated)
         if not good and not broken:
             broken = number
         commits += bool(after_commit) and (number == broken or (broken > 0 and good))
@@ -63,7 +63,7 @@ def _problem(data: bytes) -> str:
     )
 
 
-def _sum(data: bytes, start: tuple[int, ...], *, swap: bool) -> tuple[int, int]:
+def checksum(data: bytes, start: tuple[int, ...], *, swap: bool) -> tuple[int, int]:
     """SQLite's checksum of pairs of 32-bit words, continued from `start`."""
     words = array("I", data)
     if swap:

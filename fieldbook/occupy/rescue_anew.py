@@ -251,7 +251,10 @@ def _judge(done: RescuedOccupation, stream: Stream, found: Found, report: Rescue
         said.append(
             f"the entries that state the hash of {done.own_hash_bytes} bytes are lost; another hash in the book holds"
         )
-    if done.unsealed_bytes and not stream.whole:
+    if done.unsealed_bytes and stream.tail_broken:
+        severity = "stop"
+        said.append(f"the last {done.unsealed_bytes} bytes are not those that the recorder wrote")
+    elif done.unsealed_bytes and not stream.whole and not stream.tail_holds:
         severity = "caution"
         said.append(
             f"{done.unsealed_bytes} bytes had no hash yet: only the checksums of their sentences speak for them"

@@ -82,13 +82,13 @@ class Filler:
         return sorted([*self._proven, *runs], key=lambda piece: piece.first_id)
 
 
-def without_bad_lines(pieces: list[Piece], holes: Sequence[Hole]) -> tuple[list[Piece], int]:
+def without_bad_lines(pieces: list[Piece], holes: Sequence[Hole], *, tail_holds: bool) -> tuple[list[Piece], int]:
     """Unproven pieces without lines whose checksum fails; ids stay those of the items that are left."""
     begins, ends = {hole.last_id + 1 for hole in holes}, {hole.first_id - 1 for hole in holes}
     kept: list[Piece] = []
     lost = 0
     for piece in pieces:
-        if piece.proof in ("chain", "row"):
+        if piece.proof in ("chain", "row") or (piece.proof == "tail" and tail_holds):
             kept.append(piece)
             continue
         items, gone = cut(piece.items, torn_before=piece.first_id in begins, torn_behind=piece.last_id in ends)

@@ -97,6 +97,7 @@ class Found:
     packs: list[PackRow] = field(default_factory=list)
     tail: dict[int, tuple[int, Item]] = field(default_factory=dict)  # id -> (occupation, item)
     orphans: list[bytes] = field(default_factory=list)  # contents of overflow chains whose rows are lost
+    sums: dict[int, tuple[int, int, str]] = field(default_factory=dict)  # occupation -> ids and SHA-256 of the tail
     heard: dict[int, tuple[int, int | None]] = field(default_factory=dict)  # occupation -> (bytes, last commit)
 
     @property
@@ -245,9 +246,22 @@ def _take_state(row: Row, found: Found) -> None:
         return
     if not isinstance(tree, dict):
         return
+    _take_tail_sum(tree, found)
     occupation, received, commit = (tree.get(key) for key in ("occupation", "received_bytes", "last_commit_utc_ms"))
     if type(occupation) is int and type(received) is int and received >= found.heard.get(occupation, (-1, None))[0]:
         found.heard[occupation] = received, commit if type(commit) is int else None
+
+
+def _take_tail_sum(tree: dict[str, Any], found: Found) -> None:
+    """What a heartbeat states about the tail (`book.tail`): the one that reaches furthest counts."""
+    occupation, stated = tree.get("occupation"), tree.get("tail")
+    if not isinstance(stated, dict) or type(occupation) is not int:
+        return
+    first, last, sha256 = stated.get("first_id"), stated.get("last_id"), stated.get("sha256")
+    if not (type(first) is int and type(last) is int and isinstance(sha256, str)):
+        return
+    if 0 < first <= last < first + 10_000 and last > found.sums.get(occupation, (0, 0, ""))[1]:
+        found.sums[occupation] = first, last, sha256
 
 
 def _take_tail(rows: list[Row], found: Found) -> None:

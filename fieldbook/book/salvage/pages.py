@@ -8,15 +8,19 @@ byte still holds rows, and rows have hashes of their own.
 from __future__ import annotations
 
 import struct
+import sys
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+
+from fieldbook.book.wal import checksum
 
 PAGE_SIZES = tuple(1 << power for power in range(9, 17))
 OUR_PAGE_SIZE = 1024
 _WAL_HEAD, _FRAME_HEAD = 32, 24
 _FRAME = struct.Struct(">IIII")  # page, size of the file after a commit (else 0), two salts
 MAGIC = b"SQLite format 3\0"
+_SUMS = struct.Struct(">2I")
 
 
 @dataclass(frozen=True)
@@ -113,28 +117,20 @@ def _last_round(wal: bytes, frames: list[tuple[int, int, bytes, bytes]]) -> byte
 
 def _whole_frames(wal: bytes, size: int) -> int:
     """How many frames from the first on have the checksum that SQLite asks for (section 4.2)."""
-    words = struct.Struct(">6I" if wal[3:4] == b"\x83" else "<6I")
     if wal[:3] != b"\x37\x7f\x06" or int.from_bytes(wal[8:12], "big") != size:
         return 0
-    sums = _summed(0, 0, words.unpack_from(wal))
-    if wal[24:32] != struct.pack(">2I", *sums):
+    swap = (wal[3] == 0x83) is (sys.byteorder == "little")
+    sums = checksum(wal[:24], (0, 0), swap=swap)
+    if wal[24:32] != _SUMS.pack(*sums):
         return 0
-    head, page = struct.Struct(words.format[:1] + "2I"), struct.Struct(f"{words.format[:1]}{size // 4}I")
     count = 0
     for start in range(_WAL_HEAD, len(wal) - size - _FRAME_HEAD + 1, size + _FRAME_HEAD):
-        sums = _summed(*sums, head.unpack_from(wal, start))
-        sums = _summed(*sums, page.unpack_from(wal, start + _FRAME_HEAD))
-        if wal[start + 8 : start + 16] != wal[16:24] or wal[start + 16 : start + 24] != struct.pack(">2I", *sums):
+        covered = wal[start : start + 8] + wal[start + _FRAME_HEAD : start + _FRAME_HEAD + size]
+        sums = checksum(covered, sums, swap=swap)
+        if wal[start + 8 : start + 16] != wal[16:24] or wal[start + 16 : start + 24] != _SUMS.pack(*sums):
             break
         count += 1
     return count
-
-
-def _summed(first: int, second: int, words: tuple[int, ...]) -> tuple[int, int]:
-    for place in range(0, len(words), 2):
-        first = (first + words[place] + second) & 0xFFFFFFFF
-        second = (second + words[place + 1] + first) & 0xFFFFFFFF
-    return first, second
 
 
 def _frames(wal: bytes, size: int) -> Iterator[tuple[int, int, bytes, bytes]]:

@@ -35,7 +35,9 @@ class Stream:
     holes: list[Hole] = field(default_factory=list)
     cut_bytes: int = 0  # of unproven lines that do not hold
     whole: bool = False
-    mended: list[int] = field(default_factory=list)  # chunks in which one bit was put right
+    mended: list[int] = field(default_factory=list)  # chunks in which one bit was put right; 0: the tail
+    tail_holds: bool = False  # as the last heartbeat states it
+    tail_broken: bool = False
     chunks: list[ChunkRow] = field(default_factory=list)  # to be carried as stored
     packs: list[PackRow] = field(default_factory=list)
     carried_bytes: int = 0  # received bytes in those
@@ -98,6 +100,8 @@ class _Work:
         self.loose: list[Piece] = []  # unproven
         self.partial: list[tuple[int, int, Stored, int]] = []  # ids, and the damaged piece of a pack they stand in
         self.uncounted: list[tuple[int, int]] = []  # ids whose items are not the old ones
+        self.tail_span: tuple[int, int] | None = None  # ids that the last heartbeat states
+        self.tail_holds = self.tail_broken = False  # they are all there as it states them, or they are not
         self.mended: set[int] = set()
         self.stored_as_stated: dict[int, ChunkRow] = {}
         self.packs_as_stated: dict[int, PackRow] = {}
@@ -292,7 +296,28 @@ class _Work:
                 plain = canonical_items(items)
                 if sha256_of(plain) == sealed.sha256:
                     self._prove(sealed, plain, "chain")
+        self._check_tail(own)
         self.loose += [Piece(number, (item,), "tail") for number, item in sorted(own.items())]
+
+    def _check_tail(self, own: dict[int, Item]) -> None:
+        """The rows against what the last heartbeat says of them; one flipped bit is put right."""
+        first, last, sha256 = self.found.sums.get(self.number, (0, 0, ""))
+        sealed_to = max((sealed.last_id for sealed in self.stated.values()), default=0)
+        if not first or sealed_to >= first:
+            return
+        self.tail_span = first, last
+        numbers = range(first, last + 1)
+        items = [own[number] for number in numbers if number in own]
+        plain = canonical_items(items)
+        if len(items) == len(numbers):
+            mended = self._mended(Stored(plain), sha256)
+            again = list(first_items(mended)) if mended is not None else []
+            if len(again) == len(numbers):
+                own.update(zip(numbers, again, strict=True))
+                self.tail_holds = True
+                self.mended |= set() if mended == plain else {0}
+                return
+        self.tail_broken = True
 
     def store_again(self) -> None:
         """Chunks whose items were found elsewhere, compressed again: mostly that gives the stored bytes of old."""
@@ -321,13 +346,14 @@ class _Work:
                 self.uncounted += [(first, last)] if items else []
         pieces = filled.pieces(max((sealed.last_id for sealed in self.stated.values()), default=0))
         stream.holes = list(self._holes(pieces))
-        stream.pieces, stream.cut_bytes = without_bad_lines(pieces, stream.holes)
+        stream.pieces, stream.cut_bytes = without_bad_lines(pieces, stream.holes, tail_holds=self.tail_holds)
 
     def _holes(self, pieces: Sequence[Piece]) -> Iterator[Hole]:
         """Ids between the first and the last known one that nothing gives."""
         spans = [(sealed.first_id, sealed.last_id) for sealed in self.stated.values()]
         spans += [(row.first_id, row.last_id) for row in self.rows if row.chunk not in self.stated]
         spans = [span for span in spans if span[0] <= span[1]] + [(item.first_id, item.last_id) for item in pieces]
+        spans += [self.tail_span] if self.tail_span else []
         if not spans:
             return
         expected, last = min(first for first, _ in spans), max(last for _, last in spans)
@@ -358,7 +384,8 @@ class _Work:
 def _judge(stream: Stream, work: _Work) -> None:
     """Whether everything is there, proven, and stored as the entries state it."""
     numbers = sorted(work.stated)
-    if stream.holes or stream.cut_bytes or numbers != list(range(1, len(numbers) + 1)):
+    stream.tail_holds, stream.tail_broken = work.tail_holds, work.tail_broken
+    if stream.holes or stream.cut_bytes or work.tail_broken or numbers != list(range(1, len(numbers) + 1)):
         return
     work.store_again()
     in_packs: set[int] = set()
