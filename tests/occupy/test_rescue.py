@@ -220,6 +220,26 @@ def test_certificates_of_the_old_book_do_not_stand(
     assert "It does not stand here" in out
 
 
+def test_signatures_over_the_old_chain_are_withdrawn_with_it(
+    book: Path,
+    tmp_path: Path,
+    run_fieldbook: Callable[..., tuple[int, str, str]],
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setenv("XDG_CONFIG_HOME", str(tmp_path / "config"))
+    assert run_fieldbook("key", "new", "--name", "R. Kell", "--no-passphrase")[0] == 0
+    assert run_fieldbook("entry", book, "remark", "--set", "text=dry", "--by", "R. Kell")[0] == 0
+    with Book.open(book, clock=CLOCK) as old:
+        signed = [entry.seq for entry in old.entries() if entry.kind in ("key", "signature")]
+    assert signed
+    destroy_head(book)
+    assert run_fieldbook("rescue", book, "--out", tmp_path / "new.book")[0] == 0
+    with Book.open(tmp_path / "new.book", clock=CLOCK) as new:
+        kinds = {entry.seq: entry for entry in new.entries()}
+    assert all(kinds[seq].kind == "withdrawn" and kinds[seq].body["original"] for seq in signed)
+    assert run_fieldbook("verify", tmp_path / "new.book")[0] == 0
+
+
 def test_a_damaged_wal_is_not_called_sound(benchmark: Any, made: Any, tmp_path: Path) -> None:
     """SQLite reads such a book without a word, and leaves out every commit behind the damage."""
     sound = made(benchmark)[2]

@@ -26,6 +26,7 @@ OLD_FILE = "belongs to the tables of the old file"
 ISSUED = "issued from the old book: it does not stand in this one"
 NO_FORM = "not in the form of its kind"
 MOST_EMBEDDED = 2_000_000  # characters of a text kept in a placeholder
+SIGNED_CHAIN = "signs the old chain, whose hashes are not those of this book"
 DOCUMENTS = ("certificate", "draft", "rendered")
 
 
@@ -57,6 +58,8 @@ def _reason(entry: OldEntry, streams: dict[int, Stream], begun: set[object]) -> 
         return OLD_FILE
     if entry.kind in DOCUMENTS:
         return ISSUED
+    if entry.kind in ("key", "signature"):
+        return SIGNED_CHAIN
     if entry.kind in ("raw", "packed", "end"):
         number = entry.tree().get("occupation")
         stream = streams.get(number) if type(number) is int else None
