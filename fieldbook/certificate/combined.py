@@ -60,7 +60,7 @@ def build_combined_facts(
     facts.update(decisions=[], remarks=[], struck=[], members=members, combined=_combined(whole))
     unknown = [name for member in members for name in not_stated({**facts, **member})]
     facts["not_stated"] = list(dict.fromkeys(unknown))
-    facts["missing"] = _missing(whole, signed=facts["sign_off"] is not None)
+    facts["missing"] = missing_of_mark(whole, signed=facts["sign_off"] is not None)
     tree: Tree = normalised(facts)
     return tree
 
@@ -152,7 +152,7 @@ def _mm(value_m: float | None) -> str:
     return "–" if value_m is None else rounded(1000 * value_m, 0)
 
 
-def _missing(whole: WholeMarkEvidence, *, signed: bool) -> list[Tree]:
+def missing_of_mark(whole: WholeMarkEvidence, *, signed: bool) -> list[Tree]:
     """What the mark and each of its occupations lack; the sign-off is asked for once."""
     found = missing_items(whole.principal, whole.reduction, signed=signed)
     found = [item for item in found if item["code"] != "readings" and "finding occupation_has_stop" not in item["text"]]

@@ -35,7 +35,7 @@ def command(
     """Issue the certificate of MARK from BOOK."""
     from fieldbook.book.store import Book
     from fieldbook.certificate.facts import parse_sign_off
-    from fieldbook.commands.paper import issue
+    from fieldbook.issuing import issue
 
     signed_off = parse_sign_off(sign_off)
     choice = Choice(None, "a draft is nobody's statement")

@@ -122,7 +122,7 @@ def _record(path: Path, folder: Path) -> None:
 def _certify(path: Path, mark: str, number: int | None) -> list[Path]:
     from fieldbook.book.store import Book
     from fieldbook.certificate.verify_file import verify_certificate
-    from fieldbook.commands.paper import issue
+    from fieldbook.issuing import issue
 
     written: list[Path] = []
     with Book.open(path, clock=SystemClock(), write=True) as book:

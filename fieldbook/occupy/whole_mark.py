@@ -14,7 +14,7 @@ from dataclasses import dataclass, replace
 from fieldbook.book.store import Book
 from fieldbook.errors import UsageError
 from fieldbook.model.reduction import MarkResult, Reduction, Trace
-from fieldbook.model.state import Occupation
+from fieldbook.model.state import BookState, Occupation
 from fieldbook.occupy.marks_combined import combine_marks
 from fieldbook.occupy.reductions import reduce_book, search_dirs
 from fieldbook.reduce import frames
@@ -58,6 +58,18 @@ def whole_mark(book: Book, mark: str, only: Sequence[int] | None = None) -> Whol
     result = next((item for item in results if item.mark == mark), None)
     if result is None:
         raise failed[0].error if failed else UsageError(f"Mark {mark} has none of those occupations any more.")
+    return whole_of(state, result, reduced)
+
+
+def whole_of(state: BookState, result: MarkResult, reduced: Sequence[Reduced]) -> WholeMark:
+    """A mark whose occupations are reduced and combined already.
+
+    Args:
+        reduced: every reduction of the mark, in any order; others are left alone.
+
+    Raises:
+        UsageError: as `whole_mark`.
+    """
     _check(result)
     by_number = {item.reduction.occupation: item for item in reduced}
     members = [(state.occupations[item.occupation], by_number[item.occupation]) for item in result.used]

@@ -16,12 +16,14 @@ from fieldbook.errors import FieldbookError, UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.entry import Entry
 from fieldbook.model.live import LiveView
-from fieldbook.model.reduction import AntennaHeight, Finding, Reduction
+from fieldbook.model.reduction import AntennaHeight, Finding, MarkResult, Reduction
 from fieldbook.model.session import Session
 from fieldbook.settings.profiles import Profile, profiles
 
 if TYPE_CHECKING:
+    from fieldbook.model.state import BookState
     from fieldbook.occupy.live import LiveReader
+    from fieldbook.reduce.occupation import Reduced as OwnReduced
     from fieldbook.signing.signer import Signer
 
 
@@ -47,11 +49,51 @@ class Issued:
 
 
 @dataclass(frozen=True)
-class Reduced:
-    """Reductions of the whole book, and what could not be reduced: (mark, occupation, text, remedy)."""
+class Sheet:
+    """What one page of reduction and one certificate are of: an occupation, or several of a mark together.
 
-    reductions: tuple[Reduction, ...] = ()
+    reduction: of the occupation, or the combined mark in the shape of one. result: of the mark, where it is combined.
+    missing: what keeps the paper of a combined mark a draft, besides the sign-off.
+    """
+
+    reduction: Reduction
+    numbers: tuple[int, ...]
+    result: MarkResult | None = None
+    missing: tuple[str, ...] = ()
+
+    @property
+    def title(self) -> str:
+        """`KR-07, occupation 2` or `KR-07, occupations 1, 2 together`."""
+        words = ", ".join(map(str, self.numbers))
+        return (
+            f"{self.reduction.mark}, occupation{'s' if self.result else ''} {words}{' together' if self.result else ''}"
+        )
+
+    @property
+    def state(self) -> str:
+        """`open`, `ended by operator`; nothing of a combined mark, whose occupations have ended each by itself."""
+        if self.result is not None:
+            return ""
+        return "open" if self.reduction.open else f"ended by {self.reduction.ended_by}"
+
+    @property
+    def key(self) -> tuple[str, tuple[int, ...]]:
+        """Tells it from every other sheet of the book."""
+        return self.reduction.mark, self.numbers
+
+
+@dataclass(frozen=True)
+class Reduced:
+    """The whole book reduced.
+
+    sheets: every occupation, and after the last one of a mark all of them together where they combine.
+    failures: what could not be reduced, (mark, occupation, text, remedy). apart: marks with several occupations that do
+    not go together, (mark, why).
+    """
+
+    sheets: tuple[Sheet, ...] = ()
     failures: tuple[tuple[str, int, str, str], ...] = ()
+    apart: tuple[tuple[str, str], ...] = ()
 
 
 @dataclass(frozen=True)
@@ -122,12 +164,25 @@ class Bridge:
     def reduce(self) -> Reduced:
         """Every occupation of the book, reduced."""
         from fieldbook.book.store import Book
-        from fieldbook.occupy.reductions import reduce_book
+        from fieldbook.occupy.marks_combined import combine_marks
+        from fieldbook.occupy.reductions import reduce_book, search_dirs
 
         with Book.open(self.path, clock=self.clock) as book:
             reduced, failed = reduce_book(book)
+            state = book.state()
+            marks = combine_marks(state, reduced, search_dirs(book), failed)
         failures = tuple((item.mark, item.occupation, item.error.text, item.error.remedy) for item in failed)
-        return Reduced(tuple(item.reduction for item in reduced), failures)
+        sheets: list[Sheet] = []
+        apart: list[tuple[str, str]] = []
+        for mark in marks:
+            own = [item for item in reduced if item.reduction.mark == mark.mark]
+            sheets += [Sheet(item.reduction, (item.reduction.occupation,)) for item in own]
+            if len(mark.occupations) > 1:
+                try:
+                    sheets.append(_together(state, mark, reduced))
+                except FieldbookError as problem:
+                    apart.append((mark.mark, problem.text))
+        return Reduced(tuple(sheets), failures, tuple(apart))
 
     def heights(self, session: Session, readings: Sequence[Tree], *, explained: bool = False) -> Heights:
         """Readings (keys of [[setup.height]]) reduced to the ARP and judged; pure, no disk.
@@ -329,48 +384,48 @@ class Bridge:
 
     # --- paper
 
-    def certify(self, mark: str, occupation: int, out: str, sign_off: str, supersede: str) -> Issued:
-        """Issue a certificate (with a sign-off) or write a draft (without). An existing file is refused."""
+    def certify(self, mark: str, occupation: int | None, out: str, sign_off: str, supersede: str) -> Issued:
+        """Issue a certificate (with a sign-off) or write a draft (without). An existing file is refused.
+
+        Args:
+            occupation: None = all of the mark together.
+        """
         from fieldbook.book.store import Book
         from fieldbook.certificate.facts import parse_sign_off
-        from fieldbook.certificate.issue import Prepared, certify
-        from fieldbook.certificate.repeats import repeats_of
-        from fieldbook.occupy.reductions import record_operation, reductions_of_mark
-        from fieldbook.reduce.frames import versions
-        from fieldbook.signing.in_book import signed_by
+        from fieldbook.issuing import issue
 
         signed_off = parse_sign_off(sign_off or None)
-        signer = self._signer(signed_off["name"]) if signed_off else None
-        used, certified = versions(), []
         with Book.open(self.path, clock=self.clock, write=True) as book:
-
-            def prepared(number: int) -> Prepared:
-                own, others = reductions_of_mark(book, number)
-                certified.append(own)
-                return own.reduction, own.trace, repeats_of(own.reduction, [item.reduction for item in others])
-
-            made = certify(
+            made = issue(
                 book,
                 mark,
                 Path(out).expanduser(),
                 occupation=occupation,
                 sign_off=sign_off or None,
                 supersede=supersede or None,
-                reductions=prepared,
-                versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
+                signer=self._signer(signed_off["name"]) if signed_off else None,
                 clock=self.clock,
-                signer=signer,
             )
-            with signed_by(book, signer):
-                for own in certified:
-                    record_operation(book, own)  # only now: a refusal writes nothing
         return Issued(str(made.path), made.number, tuple(made.missing))
 
-    def missing(self, reduction: Reduction) -> list[str]:
-        """What keeps the paper of an occupation a draft, besides the sign-off."""
+    def missing(self, sheet: Sheet) -> list[str]:
+        """What keeps the paper a draft, besides the sign-off."""
         from fieldbook.book.store import Book
         from fieldbook.certificate.facts import missing_items
 
+        if sheet.result is not None:
+            return list(sheet.missing)
         with Book.open(self.path, clock=self.clock) as book:
-            occupation = book.state().occupations[reduction.occupation]
-        return [str(item["text"]) for item in missing_items(occupation, reduction, signed=True)]
+            occupation = book.state().occupations[sheet.numbers[0]]
+        return [str(item["text"]) for item in missing_items(occupation, sheet.reduction, signed=True)]
+
+
+def _together(state: BookState, mark: MarkResult, reduced: Sequence[OwnReduced]) -> Sheet:
+    """The combined mark as a sheet; a UsageError says why its occupations do not go together."""
+    from fieldbook.certificate.combined import missing_of_mark
+    from fieldbook.issuing import evidence_of
+    from fieldbook.occupy.whole_mark import whole_of
+
+    whole = whole_of(state, mark, reduced)
+    missing = tuple(str(item["text"]) for item in missing_of_mark(evidence_of(whole), signed=True))
+    return Sheet(whole.reduction, tuple(item.occupation for item in mark.used), mark, missing)

@@ -7,7 +7,7 @@ from __future__ import annotations
 from typing import Any, ClassVar
 
 from fieldbook.model.reduction import Reduction
-from fieldbook.screens.bridge import Issued
+from fieldbook.screens.bridge import Issued, Sheet
 from fieldbook.screens.diary_text import occupations_of
 from fieldbook.screens.fields import Field
 from fieldbook.screens.figures import wanted_rows_uncertainty
@@ -23,23 +23,23 @@ FORMATS = ("pdf", "html", "txt", "json")
 
 
 class CertificatePage(OccupationByOccupation):
-    """One occupation at a time."""
+    """One occupation at a time, or all of a mark together."""
 
     name_of_page: ClassVar[str] = "certificate"
-    _missing: tuple[tuple[str, int, int], tuple[str, ...]] | None = None
+    _missing: tuple[tuple[str, tuple[int, ...], int], tuple[str, ...]] | None = None
 
     def left(self, width: int, height: int) -> list[Row]:
         """Which occupation, what is missing, what was issued."""
-        item = self.chosen()
-        rows = [heading("CERTIFICATE", width, "← → occupation")]
-        if item is None:
+        sheet = self.chosen()
+        rows = [heading("CERTIFICATE", width, "← → occupation, or all together")]
+        if sheet is None:
             text = "reducing …" if self.desk.reduced is None or self.desk.reducing else "No occupation is reduced yet."
             return [*rows, BLANK, row(f" {text}")]
-        state = "open" if item.open else f"ended by {item.ended_by}"
+        item = sheet.reduction
         stated, place = wanted_rows_uncertainty(item), item.client or item.receiver
         epoch = "" if place.epoch is None else f" at {place.epoch:.2f}"
         rows += [
-            labelled("Mark", f"{item.mark}, occupation {item.occupation}, {state}", width, style="strong"),
+            labelled("Mark", ", ".join(text for text in (sheet.title, sheet.state) if text), width, style="strong"),
             labelled(
                 "States",
                 f"95 % {length_95(stated.horizontal95_m)} horizontal, {length_95(stated.vertical95_m)} height",
@@ -48,12 +48,12 @@ class CertificatePage(OccupationByOccupation):
             labelled("In", f"{place.frame_name} ({place.frame}){epoch}", width),
             BLANK,
         ]
-        rows += self._missing_rows(item, width)
+        rows += self._missing_rows(sheet, width)
         rows += [BLANK, row((" Issued for this mark", "soft"))]
         return rows + self._documents(item, width)
 
-    def _missing_rows(self, item: Reduction, width: int) -> list[Row]:
-        missing = self.missing(item)
+    def _missing_rows(self, sheet: Sheet, width: int) -> list[Row]:
+        missing = self.missing(sheet)
         if missing is None:
             return [row((" looking what is missing …", "soft"))]
         if not missing:
@@ -64,12 +64,12 @@ class CertificatePage(OccupationByOccupation):
             rows += paragraph(text, width, indent=3, mark=("○", "warn"), most=3)
         return rows
 
-    def missing(self, item: Reduction) -> tuple[str, ...] | None:
+    def missing(self, sheet: Sheet) -> tuple[str, ...] | None:
         """What keeps it a draft, found once per state of the book; None while it is being found."""
-        key = (item.mark, item.occupation, self.view.state.head_seq if self.view else 0)
+        key = (*sheet.key, self.view.state.head_seq if self.view else 0)
         if self._missing is not None and self._missing[0] == key:
             return self._missing[1]
-        if item.open:
+        if sheet.reduction.open:
             return ("The occupation is open: end it first (4, then E).",)
         bridge = self.desk.bridge
 
@@ -79,7 +79,7 @@ class CertificatePage(OccupationByOccupation):
 
         if self._missing is None or self._missing[0] != (*key[:2], -1):
             self._missing = ((*key[:2], -1), ())
-            self.desk.work(lambda: bridge.missing(item), found)
+            self.desk.work(lambda: bridge.missing(sheet), found)
         return None
 
     def _documents(self, item: Reduction, width: int) -> list[Row]:
@@ -108,34 +108,36 @@ class CertificatePage(OccupationByOccupation):
         return rows
 
 
-def standing_number(desk: Desk, item: Reduction) -> str | None:
-    """The number of the standing certificate of this mark and occupation, if one was issued."""
+def standing_number(desk: Desk, sheet: Sheet) -> str | None:
+    """The number of the standing certificate of this sheet, if one was issued."""
     if desk.view is None:
         return None
+    mark, occupation = sheet.reduction.mark, None if sheet.result else sheet.numbers[0]
     numbers = [
         str(entry.body["number"])
         for entry in desk.view.state.documents
         if entry.kind == "certificate"
-        and (entry.body.get("mark"), entry.body.get("occupation")) == (item.mark, item.occupation)
+        and (entry.body.get("mark"), entry.body.get("occupation")) == (mark, occupation)
         and entry.seq not in desk.view.state.strikes
     ]
     return numbers[-1] if numbers else None
 
 
-def paper(desk: Desk, item: Reduction | None, *, issue: bool) -> None:
+def paper(desk: Desk, sheet: Sheet | None, *, issue: bool) -> None:
     """Ask where and by whom, then write a certificate or a draft."""
-    if item is None:
+    if sheet is None:
         desk.tell("No occupation is reduced yet.", "bad")
         return
+    item = sheet.reduction
     if item.open:
         desk.tell(f"Occupation {item.occupation} of {item.mark} is open: end it first (4, then E).", "bad")
         return
-    standing = standing_number(desk, item)
+    standing = standing_number(desk, sheet)
     name = (
         "".join(letter if letter.isalnum() or letter in "-_." else "_" for letter in item.mark)[:60].strip(".")
         or "mark"
     )
-    stem = desk.bridge.path.absolute().parent / f"{name}-{item.occupation}{'' if issue else '-draft'}"
+    stem = desk.bridge.path.absolute().parent / f"{name}-{'+'.join(map(str, sheet.numbers))}{'' if issue else '-draft'}"
     fields = [
         Field("format", "Format", words(*FORMATS), "pdf", required=True),
         Field("path", "File", "text", str(stem), required=True),
@@ -146,7 +148,7 @@ def paper(desk: Desk, item: Reduction | None, *, issue: bool) -> None:
         fields.append(
             Field("supersede", "Supersedes", "text", hint=f"why {standing} is replaced, if its facts changed")
         )
-    title = f"{'CERTIFICATE' if issue else 'DRAFT'} of {item.mark}, occupation {item.occupation}"
+    title = f"{'CERTIFICATE' if issue else 'DRAFT'} of {sheet.title}"
     note = "The ending is added by the format. An existing file is never overwritten."
 
     def write(values: Values | None) -> None:
@@ -154,7 +156,7 @@ def paper(desk: Desk, item: Reduction | None, *, issue: bool) -> None:
             return
         ending = f".{values['format']}"
         out = values["path"] if values["path"].endswith(ending) else values["path"] + ending
-        bridge, mark, number = desk.bridge, item.mark, item.occupation
+        bridge, mark, number = desk.bridge, item.mark, None if sheet.result else sheet.numbers[0]
         desk.tell("writing the paper …", "soft")
         desk.work(
             lambda: bridge.certify(mark, number, out, values.get("sign_off", ""), values.get("supersede", "")),

@@ -1,8 +1,11 @@
-"""Pages that show the reductions of a book one occupation at a time; left and right arrows turn to the others."""
+"""Pages that show the reductions of a book one sheet at a time; left and right arrows turn to the others.
+
+A sheet is an occupation, or the occupations of a mark together.
+"""
 
 from __future__ import annotations
 
-from fieldbook.model.reduction import Reduction
+from fieldbook.screens.bridge import Sheet
 from fieldbook.screens.page import Page
 
 
@@ -15,18 +18,18 @@ class OccupationByOccupation(Page):
         """Reduce when the page comes into sight."""
         self.desk.reduce()
 
-    def chosen(self) -> Reduction | None:
-        """The reduction in sight."""
+    def chosen(self) -> Sheet | None:
+        """The sheet in sight."""
         reduced = self.desk.reduced
-        if reduced is None or not reduced.reductions:
+        if reduced is None or not reduced.sheets:
             return None
-        if not 0 <= self.index < len(reduced.reductions):
-            self.index = len(reduced.reductions) - 1
-        return reduced.reductions[self.index]
+        if not 0 <= self.index < len(reduced.sheets):
+            self.index = len(reduced.sheets) - 1
+        return reduced.sheets[self.index]
 
     def side(self, step: int) -> None:
-        """The occupation before or after."""
+        """The sheet before or after."""
         reduced = self.desk.reduced
-        if reduced is not None and reduced.reductions:
-            self.index = (self.index + step) % len(reduced.reductions)
+        if reduced is not None and reduced.sheets:
+            self.index = (self.index + step) % len(reduced.sheets)
             self.redraw()

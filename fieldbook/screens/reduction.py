@@ -7,13 +7,14 @@ from __future__ import annotations
 from typing import ClassVar
 
 from fieldbook.model.angles import latitude_text, longitude_text, signed_dms_text
-from fieldbook.model.reduction import Reduction, Uncertainty
+from fieldbook.model.reduction import MarkResult, Reduction, Uncertainty
 from fieldbook.model.rounding import decimals_for
+from fieldbook.screens.bridge import Sheet
 from fieldbook.screens.figures import initialisation_rows, wanted_rows_uncertainty
 from fieldbook.screens.one_by_one import OccupationByOccupation
 from fieldbook.screens.plain import fit, pad, wrapped
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
-from fieldbook.screens.words import SEVERITY, hour_minute, length_95, set_aside_word
+from fieldbook.screens.words import SEVERITY, duration, hour_minute, leave_word, length_95, set_aside_word, signed_mm
 
 
 class ReductionPage(OccupationByOccupation):
@@ -27,7 +28,7 @@ class ReductionPage(OccupationByOccupation):
         chosen = self.chosen()
         if chosen is None:
             return self._nothing(width)
-        count = len(self.desk.reduced.reductions) if self.desk.reduced else 1
+        count = len(self.desk.reduced.sheets) if self.desk.reduced else 1
         note = "reducing again …" if self.desk.reducing else f"{self.index + 1} of {count}  ← →"
         return [heading("REDUCTION", width, note), *coordinate_rows(chosen, width), *self._failed(width)]
 
@@ -47,25 +48,23 @@ class ReductionPage(OccupationByOccupation):
         for mark, occupation, text, remedy in self.desk.reduced.failures if self.desk.reduced else ():
             rows += [BLANK, *paragraph(f"{mark}, occupation {occupation}: {text}", width, mark=("■", "bad"))]
             rows += paragraph(remedy, width, style="soft", indent=3)
+        for mark, why in self.desk.reduced.apart if self.desk.reduced else ():
+            rows += [BLANK, *paragraph(f"{mark}: not taken together. {why}", width, mark=("▲", "warn"))]
         return rows
 
 
-def coordinate_rows(item: Reduction, width: int) -> list[Row]:
+def coordinate_rows(sheet: Sheet, width: int) -> list[Row]:
     """The mark's coordinates in the client's frame, then grid, height by model, and as observed."""
+    item = sheet.reduction
     place = item.client or item.receiver
     stated = wanted_rows_uncertainty(item)
     decimals = min(6, max(0, decimals_for(stated.horizontal95_m) + 1))
     up = decimals_for(stated.vertical95_m, most=4)
     epoch = "" if place.epoch is None else f" at epoch {place.epoch:.2f}"
-    state = "open" if item.open else f"ended by {item.ended_by}"
     h_text = "not known" if place.h_m is None else f"{place.h_m:.{up}f} m"
     rows = [
-        labelled("Mark", f"{item.mark}, occupation {item.occupation}, {state}", width, style="strong"),
-        labelled(
-            "Kept",
-            f"{hour_minute(item.started)} to {hour_minute(item.ended)} UTC, {item.kept} of {item.heard} epochs",
-            width,
-        ),
+        labelled("Mark", ", ".join(text for text in (sheet.title, sheet.state) if text), width, style="strong"),
+        labelled("Kept", _kept(sheet), width),
         BLANK,
         row((f"  ┌─ {fit(place.frame_name, width - 20)} {place.frame}{epoch}", "accent")),
         _large("Latitude", latitude_text(place.lat_deg, decimals)),
@@ -77,6 +76,13 @@ def coordinate_rows(item: Reduction, width: int) -> list[Row]:
     if item.client is not None:
         rows += _observed(item, width)
     return rows
+
+
+def _kept(sheet: Sheet) -> str:
+    item = sheet.reduction
+    if sheet.result is not None:
+        return f"{duration(item.kept_s)}, {(item.started or '')[:10]} to {(item.ended or '')[:10]}"
+    return f"{hour_minute(item.started)} to {hour_minute(item.ended)} UTC, {item.kept} of {item.heard} epochs"
 
 
 def _large(label: str, text: str) -> Row:
@@ -144,8 +150,9 @@ def _observed(item: Reduction, width: int) -> list[Row]:
     ]
 
 
-def evidence_rows(item: Reduction, width: int) -> list[Row]:
-    """Findings first, then the budget, initialisations and what was set aside."""
+def evidence_rows(sheet: Sheet, width: int) -> list[Row]:
+    """Findings first, then the budget; last how the occupations agree, or initialisations and what was set aside."""
+    item = sheet.reduction
     rows = [heading("BUDGET AND FINDINGS", width)]
     order = {"stop": 0, "caution": 1, "info": 2}
     for finding in sorted(item.findings, key=lambda found: order.get(found.severity, 3)):
@@ -153,12 +160,41 @@ def evidence_rows(item: Reduction, width: int) -> list[Row]:
     if not item.findings:
         rows.append(row(" No findings."))
     rows += [BLANK, *budget_rows(item.uncertainty_client or item.uncertainty, width), BLANK]
+    if sheet.result is not None:
+        return rows + agreement_rows(sheet.result, width)
     rows.append(row((" Initialisations, offset from the mean of those used", "soft")))
     for run in item.initialisations:
         rows += initialisation_rows(run, width)
     if item.set_aside:
         text = ", ".join(f"{set_aside_word(code)} {count}" for code, count in sorted(item.set_aside.items()))
         rows += [BLANK, *paragraph(f"Set aside: {text}", width)]
+    return rows
+
+
+def agreement_rows(mark: MarkResult, width: int) -> list[Row]:
+    """How the occupations of a mark agree: weight and residual of each, every pair, what the mark still owes."""
+    rows = [row((" Occupations: weight, and how far each lies from the mark", "soft"))]
+    for used in mark.used:
+        parts = " ".join(f"{axis} {signed_mm(value)}" for axis, value in zip("enu", used.residual_enu_m, strict=True))
+        weight = 50.0 * (used.weight_enu[0] + used.weight_enu[1])
+        rows.append(row(f" {used.occupation:>3}  {pad(used.fix_class, 11)} {weight:3.0f} %  {parts} mm"))
+    for left in mark.not_combined:
+        rows += paragraph(f"{left.occupation} is left out: {left.text}", width, mark=("▲", "warn"))
+    rows += [BLANK, row((" Pairs: difference and tolerance", "soft"))]
+    for pair in mark.repeats:
+        shape = ("✓", "good") if pair.agrees else ("■", "bad")
+        up = pair.difference_enu_m[2]
+        text = f"{pair.first} and {pair.second}: plan {1000 * pair.plan_m:.0f} of {1000 * pair.plan_tolerance_m:.0f} mm"
+        text += "" if up is None else f", height {1000 * abs(up):.0f} of {1000 * pair.height_tolerance_m:.0f} mm"
+        rows += paragraph(f"{text}; {pair.text}", width, mark=shape)
+        rows += paragraph(pair.independence.text, width, style="soft", indent=3)
+    owed = [line for line in mark.leave.lines if not line.met] if mark.leave else []
+    rows += [
+        BLANK,
+        row((" The mark ", "soft"), ("is done" if not owed else "still owes", "good" if not owed else "warn")),
+    ]
+    for line in owed:
+        rows += paragraph(f"{leave_word(line.line)}: {line.text}", width, mark=("○", "warn"))
     return rows
 
 

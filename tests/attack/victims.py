@@ -28,7 +28,7 @@ from fieldbook.certificate.facts import build_facts  # noqa: E402
 from fieldbook.certificate.issue import program_versions  # noqa: E402
 from fieldbook.certificate.repeats import repeats_of  # noqa: E402
 from fieldbook.clock import FakeClock, SystemClock  # noqa: E402
-from fieldbook.commands.paper import issue  # noqa: E402
+from fieldbook.issuing import issue  # noqa: E402
 from fieldbook.model.item import Item, ItemKind  # noqa: E402
 from fieldbook.occupy.marks_combined import combine_marks  # noqa: E402
 from fieldbook.occupy.rebuild import occupation_of  # noqa: E402

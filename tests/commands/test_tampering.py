@@ -23,7 +23,7 @@ def certified(short_session: Path, tmp_path_factory: pytest.TempPathFactory) -> 
     """An ended book of two minutes with the certificate of its mark in three formats."""
     from fieldbook.book.store import Book
     from fieldbook.clock import SystemClock
-    from fieldbook.commands.paper import issue
+    from fieldbook.issuing import issue
 
     folder = tmp_path_factory.mktemp("certified")
     path = folder / "short.book"

@@ -39,7 +39,7 @@ from fieldbook.model.reduction import (
     Uncertainty,
 )
 from fieldbook.model.state import BookState, Occupation
-from fieldbook.screens.bridge import Bridge, FramesTold, Issued, Port, Reduced
+from fieldbook.screens.bridge import Bridge, FramesTold, Issued, Port, Reduced, Sheet
 from fieldbook.settings.session import reading_from_tree, session_from_tree
 
 NOW_MS = utc_ms_of("2027-03-04T09:41:22.000Z")
@@ -406,7 +406,7 @@ class FakeBridge(Bridge):
 
     def reduce(self) -> Reduced:
         made = [
-            dataclasses.replace(reduction(item.mark, item.number, opened=item.open))
+            Sheet(reduction(item.mark, item.number, opened=item.open), (item.number,))
             for item in self.state.occupations.values()
         ]
         return Reduced(tuple(made))
@@ -453,10 +453,10 @@ class FakeBridge(Bridge):
 
     # paper
 
-    def missing(self, reduction: Reduction) -> list[str]:
+    def missing(self, sheet: Sheet) -> list[str]:
         return list(self.missing_texts)
 
-    def certify(self, mark: str, occupation: int, out: str, sign_off: str, supersede: str) -> Issued:
+    def certify(self, mark: str, occupation: int | None, out: str, sign_off: str, supersede: str) -> Issued:
         self.calls.append(("certify", (mark, occupation, out, sign_off, supersede)))
         number = "00000000-1" if sign_off else None
         self._entry(

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import json
+import shutil
 import time
 from collections.abc import Callable, Iterator
 from pathlib import Path
@@ -13,6 +15,7 @@ from fieldbook.book.store import Book
 from fieldbook.clock import FakeClock, SystemClock
 from fieldbook.errors import UsageError
 from fieldbook.screens.bridge import Bridge
+from fieldbook.screens.reduction import coordinate_rows, evidence_rows
 
 from .fakes import NOW_MS, SESSION_TREE
 
@@ -110,11 +113,12 @@ def test_a_recorded_file_is_begun_reduced_and_named_ready(tmp_path: Path) -> Non
     wait_for(lambda: ended(bridge), "the end of the file")
     reduced = bridge.reduce()
     assert not reduced.failures
-    (made,) = reduced.reductions
+    (sheet,) = reduced.sheets
+    made = sheet.reduction
     assert made.mark == tree["mark"]["name"]
     assert made.client is not None
     assert made.leave is not None
-    assert bridge.missing(made) == []
+    assert bridge.missing(sheet) == []
     kinds = [entry.kind for entry in bridge.entries()]
     assert kinds.count("occupation") == kinds.count("end") == 1
     paper = bridge.certify(made.mark, 1, str(tmp_path / "paper.txt"), "A. Firth; 1234", "")
@@ -125,6 +129,39 @@ def test_a_recorded_file_is_begun_reduced_and_named_ready(tmp_path: Path) -> Non
     with pytest.raises(UsageError, match="exists already"):
         bridge.certify(made.mark, 1, str(tmp_path / "paper.txt"), "A. Firth; 1234", "")
     assert not bridge.strikeable(next(entry for entry in bridge.entries() if entry.kind == "raw"))
+
+
+def test_occupations_of_a_mark_are_reduced_and_certified_together(
+    tmp_path: Path, sample_books: dict[str, Path]
+) -> None:
+    """KR-07 was occupied twice: each by itself, and both together, with the figures of `reduce --json`'s marks."""
+    path = Path(shutil.copy(sample_books["kestrel-ridge"], tmp_path))  # nobody has it open
+    bridge = Bridge(path, SystemClock(), "R. Kell")
+    first, second, together = bridge.reduce().sheets
+    assert [sheet.numbers for sheet in (first, second, together)] == [(1,), (2,), (1, 2)]
+    assert (first.title, together.title) == ("KR-07, occupation 1", "KR-07, occupations 1, 2 together")
+    assert together.result is not None
+    assert together.reduction.uncertainty == together.result.uncertainty
+    assert together.reduction.uncertainty.horizontal95_m < first.reduction.uncertainty.horizontal95_m
+    assert bridge.missing(together) == []
+    made = bridge.certify("KR-07", None, str(tmp_path / "both.json"), "A. Firth; 1234", "")
+    facts = json.loads(Path(made.path).read_text(encoding="utf-8"))
+    assert made.number is not None
+    assert [member["occupation"]["number"] for member in facts["members"]] == [1, 2]
+    text = "\n".join("".join(part for part, _ in line) for line in evidence_rows(together, 60))
+    assert "1 and 2: plan 12 of 20 mm, height 7 of 30 mm" in text
+    assert "The mark is done" in text
+    title = "".join(part for line in coordinate_rows(together, 60) for part, _ in line)
+    assert "KR-07, occupations 1, 2 together" in title
+
+
+def test_occupations_that_do_not_go_together_are_named(tmp_path: Path, sample_books: dict[str, Path]) -> None:
+    path = Path(shutil.copy(sample_books["saltpan"], tmp_path))
+    reduced = Bridge(path, SystemClock(), "R. Kell").reduce()
+    assert [sheet.numbers for sheet in reduced.sheets] == [(1,), (2,)]
+    ((mark, why),) = reduced.apart
+    assert mark == "SP-12"
+    assert "cannot be combined" in why
 
 
 def test_simulated_receiver_is_recorded_and_ended_from_the_bridge(bridge: Bridge) -> None:
@@ -139,7 +176,7 @@ def test_simulated_receiver_is_recorded_and_ended_from_the_bridge(bridge: Bridge
     with Book.open(bridge.path, clock=bridge.clock) as book:
         assert [item.seq for item in book.state().occupations[1].heights][-1] == height.seq
     assert bridge.explain_heights(1, "the tripod sank").kind == "decision"
-    assert "simulated" in " ".join(bridge.missing(bridge.reduce().reductions[0]))
+    assert "simulated" in " ".join(bridge.missing(bridge.reduce().sheets[0]))
 
 
 def ended(bridge: Bridge) -> bool:

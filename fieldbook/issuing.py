@@ -1,4 +1,4 @@
-"""One way from a book to a certificate file, for `certify` and `demo`."""
+"""One way from a book to a certificate file, for the commands and for the screens: reduce, issue, keep the operation."""
 
 from __future__ import annotations
 
@@ -8,9 +8,9 @@ from fieldbook.book.store import Book
 from fieldbook.certificate.combined import WholeMarkEvidence
 from fieldbook.certificate.issue import Issued, Prepared, certify
 from fieldbook.certificate.repeats import repeats_of
-from fieldbook.clock import SystemClock
+from fieldbook.clock import Clock, SystemClock
 from fieldbook.occupy.reductions import record_operation, reductions_of_mark
-from fieldbook.occupy.whole_mark import whole_mark
+from fieldbook.occupy.whole_mark import WholeMark, whole_mark
 from fieldbook.reduce.frames import versions
 from fieldbook.reduce.occupation import Reduced
 from fieldbook.signing.in_book import signed_by
@@ -27,8 +27,14 @@ def issue(
     supersede: str | None = None,
     replace: bool = False,
     signer: Signer | None = None,
+    clock: Clock | None = None,
 ) -> Issued:
     """Reduce, keep the frame operation as an entry, and write the file.
+
+    Args:
+        occupation: which one; None = all of the mark that can be combined.
+        out, sign_off, supersede, replace, signer: as `certificate.issue.certify`.
+        clock: the system's if None.
 
     Raises:
         UsageError: as `certificate.issue.certify`.
@@ -45,8 +51,7 @@ def issue(
     def together() -> WholeMarkEvidence:
         whole = whole_mark(book, mark)
         certified.extend(reduced for _, reduced in whole.members)
-        members = [(one, reduced.reduction) for one, reduced in whole.members]
-        return WholeMarkEvidence(whole.result, whole.principal, whole.reduction, whole.trace, members)
+        return evidence_of(whole)
 
     issued = certify(
         book,
@@ -59,10 +64,16 @@ def issue(
         reductions=prepared,
         combined=together,
         versions={"proj": used.proj, "epsg": used.epsg, "pyproj": used.pyproj},
-        clock=SystemClock(),
+        clock=clock or SystemClock(),
         signer=signer,
     )
     with signed_by(book, signer):
         for reduced in certified:
             record_operation(book, reduced)  # only now: a refusal writes nothing
     return issued
+
+
+def evidence_of(whole: WholeMark) -> WholeMarkEvidence:
+    """A combined mark in the shape its certificate is built from."""
+    members = [(one, reduced.reduction) for one, reduced in whole.members]
+    return WholeMarkEvidence(whole.result, whole.principal, whole.reduction, whole.trace, members)
