@@ -8,7 +8,7 @@ whether there was a connection.
     convert      transform_to_client           projection  project, check_grid        heightgrid  GeoTIFF geoid
     located      typed positions, there and back          geodesic    Karney's, by PROJ
     catalogue    frames by word and place        pair        what a pair would do at a place
-    questions    what corrects the receiver
+    questions    what corrects the receiver          local_plane  a plane of our own, for local grids
 """
 
 from __future__ import annotations
@@ -39,6 +39,7 @@ from fieldbook.reduce.frames.convert import (  # noqa: E402
 )
 from fieldbook.reduce.frames.geodesic import geodesic  # noqa: E402
 from fieldbook.reduce.frames.heightgrid import undulation_by_proj  # noqa: E402
+from fieldbook.reduce.frames.local_plane import on_local_plane  # noqa: E402
 from fieldbook.reduce.frames.located import located, printed  # noqa: E402
 from fieldbook.reduce.frames.pair import Considered, Pair, pair_at  # noqa: E402
 from fieldbook.reduce.frames.projection import check_grid, project, unproject  # noqa: E402
@@ -82,6 +83,7 @@ __all__ = [
     "located",
     "motion_of",
     "national_frames",
+    "on_local_plane",
     "operation_codes",
     "operation_epoch_of",
     "pair_at",
