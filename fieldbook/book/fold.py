@@ -230,6 +230,8 @@ def _decision(folder: _Folder, entry: Entry) -> None:
         occupation.accuracy_over_limit = bool(body["accuracy_over_limit"])
     if "outside_area" in body:
         occupation.outside_area_accepted = bool(body["outside_area"])
+    if "outside_hull" in body:
+        occupation.outside_hull_accepted = bool(body["outside_hull"])
 
 
 def _steps(value: Any) -> list[str]:
@@ -270,6 +272,10 @@ def _mark(folder: _Folder, entry: Entry) -> None:
     folder.state.marks[str(entry.body["name"])] = entry.body
 
 
+def _local_grid(folder: _Folder, entry: Entry) -> None:
+    folder.state.local_grids[str(entry.body["name"])] = entry
+
+
 def _offered(folder: _Folder, entry: Entry) -> None:
     tree = entry.body["tree"]
     folder.state.session = _session(entry, tree)
@@ -305,6 +311,7 @@ def _rescued(folder: _Folder, entry: Entry) -> None:
 _ACTIONS: dict[str, Callable[[_Folder, Entry], None]] = {
     "session": _offered,
     "mark": _mark,
+    "local_grid": _local_grid,
     "occupation": _begin,
     "origin": _origin,
     "date": _date,

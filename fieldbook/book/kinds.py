@@ -71,6 +71,7 @@ KINDS: dict[str, dict[str, tuple[type, ...]]] = {
     "request": {"occupation": _INT, "action": _TEXT},  # asks the running recorder
     "strike": {"seq": _INT, "reason": _TEXT},
     "operation": {"occupation": _INT, "steps": _LIST},
+    "local_grid": {"name": _TEXT, "frame": _TEXT, "tilt": _BOOL, "source": _TEXT, "marks": _LIST},
     "certificate": {"number": _TEXT, "facts": _TREE, "digest": _TEXT},
     "draft": {"facts": _TREE, "digest": _TEXT},
     "rescued": {"from": _TREE, "carried": _LIST, "occupations": _LIST, "certificates": _LIST},
@@ -89,12 +90,15 @@ DECISIONS = (
     "operation",
     "accuracy_over_limit",
     "outside_area",
+    "outside_hull",
     "height_difference",
 )
 
 # What an observer wrote and may take back. What a machine wrote (bytes, gaps, findings, ends) stands, and a
 # certificate is superseded, not struck.
-STRIKABLE = frozenset({"session", "mark", "occupation", "height", "setup", "remark", "decision", "strike"})
+STRIKABLE = frozenset(
+    {"session", "mark", "occupation", "height", "setup", "remark", "decision", "local_grid", "strike"}
+)
 
 
 def checked_body(kind: str, body: Tree) -> Tree:

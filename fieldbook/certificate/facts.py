@@ -25,6 +25,7 @@ from typing import Any
 
 from fieldbook.certificate import evidence, position, words
 from fieldbook.certificate.identity import SCHEMA
+from fieldbook.certificate.position_local import local_facts
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree, fixed, normalised
 from fieldbook.model.reduction import LeaveLine, Reduction, Trace
@@ -97,6 +98,9 @@ def build_facts(
         "cautions": _cautions(session, reduction),
         "trace": evidence.trace_facts(trace),
     }
+    local = local_facts(state, reduction)
+    if local:  # a book without local grids has the facts it always had
+        facts["position"]["local"] = local
     facts["not_stated"] = not_stated(facts)
     facts["missing"] = missing_items(occupation, reduction, signed=facts["sign_off"] is not None)
     tree: Tree = normalised(facts)

@@ -10,10 +10,10 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import Any
 
+from fieldbook.certificate import position_local, signed
 from fieldbook.certificate import sections_combined as several
 from fieldbook.certificate import sections_evidence as evidence
 from fieldbook.certificate import sections_position as position
-from fieldbook.certificate import signed
 from fieldbook.certificate.blocks import Block, Bullets, Pairs, Section, Sentences, said, utc
 from fieldbook.certificate.printable import shown
 from fieldbook.model.canonical import Tree
@@ -76,7 +76,7 @@ def first_page(facts: Tree) -> FirstPage:
         circle=position.circle_text(facts),
         grid=position.grid_rows(facts),
         geocentric=position.geocentric_rows(facts),
-        frame_lines=position.frame_lines(facts),
+        frame_lines=[*position.frame_lines(facts), *position_local.local_line(facts)],
         evidence=several.summary_rows(facts) if facts.get("combined") else evidence.summary_rows(facts),
         watermark=watermark(facts),
         running_head=position.running_head(facts),
@@ -106,6 +106,7 @@ def sections(facts: Tree) -> list[Section]:
         position.as_observed(facts),
         position.uncertainty(facts),
         position.frames(facts),
+        *position_local.local_sections(facts),
         *_evidence(facts),
         _limits(facts),
         Section("Cautions", [Bullets(signed.cautions(facts))]),

@@ -103,6 +103,7 @@ ANSWER_KEYS = {
     "operation": ("operation",),
     "accuracy_over_limit": ("accuracy",),
     "outside_area": ("area",),
+    "outside_hull": ("hull",),
 }
 
 DECISION_WORDS = {
@@ -114,6 +115,7 @@ DECISION_WORDS = {
     "operation": "frame operation {} chosen",
     "accuracy_over_limit": "frame operation over the accuracy limit accepted",
     "outside_area": "use outside the stated area accepted",
+    "outside_hull": "local coordinates outside the marks of the local grid accepted",
 }
 
 COVERS = (

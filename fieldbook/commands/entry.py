@@ -32,6 +32,7 @@ DECISIONS: dict[str, str] = {
     "operation": "steps",
     "accuracy_over_limit": "flag",
     "outside_area": "flag",
+    "outside_hull": "flag",
 }
 # keys of a set-up that change what the decoder makes of the bytes
 DECODER_KEYS = frozenset({"receiver.accept_without_checksum", "receiver.talker"})
@@ -41,7 +42,7 @@ DECODER_KEYS = frozenset({"receiver.accept_without_checksum", "receiver.talker"}
     "entry",
     help="Write an entry into BOOK and print its number and hash. Keys are those of the session file: "
     "[[setup.height]] for height, any table.key for setup, [mark] for mark; text for remark; for decision one of "
-    "date, rollover_weeks, datum, talker, initialisation + used, operation, accuracy_over_limit, outside_area, "
+    "date, rollover_weeks, datum, talker, initialisation + used, operation, accuracy_over_limit, outside_area, outside_hull, "
     "with reason.",
 )
 @click.argument("book", type=click.Path(path_type=Path))

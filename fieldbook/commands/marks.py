@@ -14,7 +14,7 @@ from typing import Any
 
 import click
 
-from fieldbook.commands import assignments, marks_coordinates, marks_inverse
+from fieldbook.commands import assignments, marks_coordinates, marks_inverse, marks_localgrid
 from fieldbook.commands.open_book import reading, writing
 from fieldbook.commands.output import line, write_json
 from fieldbook.commands.signing import chosen, key_option, say_unsigned, signed_tree
@@ -207,3 +207,4 @@ def _within(tree: Tree, place: str) -> None:
 
 command.add_command(marks_coordinates.command)
 command.add_command(marks_inverse.command)
+command.add_command(marks_localgrid.command)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+from fieldbook.commands.reduction_text import local_lines
 from fieldbook.model.angles import latitude_text, longitude_text
 from fieldbook.model.reduction import MarkOccupation, MarkResult, Repeat, Uncertainty
 from fieldbook.model.rounding import decimals_for, rounded, rounded_up
@@ -50,6 +51,7 @@ def _position(mark: MarkResult) -> Iterator[str]:
         metres = decimals_for(stated.horizontal95_m, most=4)
         east, north = rounded(mark.grid.easting_m, metres), rounded(mark.grid.northing_m, metres)
         yield f"  {mark.grid.crs_name} ({mark.grid.crs})  E {east}  N {north} m"
+    yield from (f"  {text}" for text in local_lines(mark.local))
     if mark.height is not None:
         decimals = decimals_for(mark.height.vertical95_m, least=1, most=4)
         name = mark.height.heading or mark.height.model_name

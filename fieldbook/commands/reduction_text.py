@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from fieldbook.model.angles import latitude_text, longitude_text, signed_dms_text
+from fieldbook.model.local_grid import LocalPosition
 from fieldbook.model.reduction import Convergence, Reduction, Uncertainty
 from fieldbook.model.rounding import decimals_for, rounded, rounded_up
 
@@ -66,11 +67,26 @@ def _client(reduction: Reduction) -> Iterator[str]:
         factor = "" if grid.combined_factor is None else f", combined factor {grid.combined_factor:.8f}"
         turn = signed_dms_text(grid.convergence_deg)
         yield f"      convergence {turn} (azimuth = grid bearing + convergence){factor}"
+    yield from (f"    {text}" for text in local_lines(reduction.local))
     height = reduction.height
     if height is not None:
         decimals = decimals_for(height.vertical95_m, least=1, most=4)
         known = "not known" if height.vertical95_m is None else f"{rounded_up(height.vertical95_m, decimals)} m"
         yield f"    {height.heading or height.model_name}: {rounded(height.orthometric_m, decimals)} m, 95 % {known}"
+
+
+def local_lines(found: list[LocalPosition]) -> Iterator[str]:
+    """One line per local grid that holds the mark."""
+    for item in found:
+        plan = decimals_for(item.horizontal95_m, most=4)
+        height = ""
+        if item.height_m is not None:
+            height = f"  H {rounded(item.height_m, decimals_for(item.vertical95_m, most=4))} m"
+        where = "" if item.inside else "  OUTSIDE its marks"
+        yield (
+            f"local grid {item.name}  E {rounded(item.easting_m, plan)}  N {rounded(item.northing_m, plan)} m{height}, "
+            f"95 % {rounded_up(item.horizontal95_m, plan)} m, combined factor {item.combined_factor:.8f}{where}"
+        )
 
 
 def _figures(u: Uncertainty) -> str:

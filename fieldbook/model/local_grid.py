@@ -112,3 +112,4 @@ class LocalPosition:
     largest_predicted_m: float = 0.0
     scale_ppm: float = 0.0
     widened: bool = False
+    entry: int | None = None  # seq of the entry that keeps the grid

@@ -12,6 +12,8 @@ import math
 from dataclasses import dataclass, field
 from typing import Any
 
+from fieldbook.model.local_grid import LocalPosition
+
 Vector = list[float]
 
 
@@ -239,6 +241,7 @@ class Reduction:
     findings: list[Finding] = field(default_factory=list)
     leave: Leave | None = None
     epoch_of_observation: float | None = None  # decimal year of the mean UTC of the kept epochs
+    local: list[LocalPosition] = field(default_factory=list)  # in the book's local grids of the client's frame
 
     def to_json(self) -> dict[str, Any]:
         """The tree R of `fieldbook reduce --json` (contract, section 3): finite numbers or null."""
@@ -388,6 +391,7 @@ class MarkResult:
     repeats                  every pair of used ones, see Repeat
     findings                 of the mark as a whole; those of the occupations stay with them
     leave                    the mark's own verdict: lines of scope "mark" on the combined figures
+    local                    the combined mark in the book's local grids of the client's frame
     """
 
     mark: str
@@ -407,6 +411,7 @@ class MarkResult:
     repeats: list[Repeat] = field(default_factory=list)
     findings: list[Finding] = field(default_factory=list)
     leave: Leave | None = None
+    local: list[LocalPosition] = field(default_factory=list)
 
     def to_json(self) -> dict[str, Any]:
         """The tree of one element of `marks`: finite numbers or null."""

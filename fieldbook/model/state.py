@@ -39,6 +39,7 @@ class Occupation:
     operation: list[str] | None = None  # recorded codes of the frame operation, e.g. ["EPSG:9991 inverse", "EPSG:8049"]
     accuracy_over_limit: bool = False
     outside_area_accepted: bool = False
+    outside_hull_accepted: bool = False  # of the marks that made a local grid
     decisions: list[Entry] = field(default_factory=list)
     remarks: list[Entry] = field(default_factory=list)
     gaps: list[Entry] = field(default_factory=list)  # `gap` and `resumed` entries
@@ -67,6 +68,7 @@ class BookState:
     remarks: list[Entry] = field(default_factory=list)  # remarks that belong to no occupation
     documents: list[Entry] = field(default_factory=list)  # `certificate` and `draft` entries, in order
     rendered: list[Entry] = field(default_factory=list)  # `rendered` entries: hash of every file written
+    local_grids: dict[str, Entry] = field(default_factory=dict)  # name -> latest `local_grid` entry
     strikes: dict[int, Entry] = field(default_factory=dict)  # struck seq -> the strike
     rescued: Entry | None = None  # what this book was salvaged from, and what is missing
 

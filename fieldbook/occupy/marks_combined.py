@@ -32,6 +32,7 @@ from fieldbook.model.reduction import (
 )
 from fieldbook.model.session import Requirement, Session
 from fieldbook.model.state import BookState, Occupation
+from fieldbook.occupy.local_positions import attach_to_marks
 from fieldbook.occupy.reductions import Failure
 from fieldbook.reduce import frames
 from fieldbook.reduce.budget import welch_satterthwaite
@@ -95,10 +96,12 @@ def combine_marks(
     for item in sorted(reduced, key=lambda one: one.reduction.occupation):
         member = _Member(item, state.occupations[item.reduction.occupation])
         marks.setdefault(member.occupation.mark, []).append(member)
-    return [
+    results = [
         _mark(name, members, [item for item in failed if item.mark == name], search_dirs)
         for name, members in marks.items()
     ]
+    attach_to_marks(state, results, reduced)
+    return results
 
 
 def _mark(name: str, members: list[_Member], failed: list[Failure], search_dirs: Sequence[Path]) -> MarkResult:

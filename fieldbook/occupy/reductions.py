@@ -19,6 +19,7 @@ from fieldbook.model.session import Requirement
 from fieldbook.model.sky import Picture
 from fieldbook.model.state import BookState, Occupation
 from fieldbook.nmea.sky_history import sky_history
+from fieldbook.occupy.local_positions import attach_to_reductions
 from fieldbook.reduce import frames
 from fieldbook.reduce.occupation import Reduced, reduce_occupation
 
@@ -60,6 +61,7 @@ def reduce_book(book: Book, mark: str | None = None) -> tuple[list[Reduced], lis
     for item in reduced:
         occupation = state.occupations[item.reduction.occupation]
         judge(item, occupation, others_of(item, reduced, occupation.session.requirement))
+    attach_to_reductions(state, reduced)
     return reduced, failed
 
 

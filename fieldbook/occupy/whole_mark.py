@@ -130,6 +130,7 @@ def _as_reduction(result: MarkResult, own: Reduction, offset_m: tuple[float, flo
         uncertainty_client=result.uncertainty_client,
         findings=result.findings,
         leave=result.leave,
+        local=result.local,
     )
 
 
