@@ -258,7 +258,7 @@ def test_reduce_prints_the_mark_in_text_and_json(recorded: Recorded, capsys: pyt
     (mark,) = tree["marks"]
     assert set(mark) == {
         "mark", "occupations", "used", "not_combined", "odd_one", "started", "ended", "kept_s", "receiver_frame", "client",
-        "grid", "height", "uncertainty", "uncertainty_client", "repeats", "findings", "leave",
+        "grid", "height", "uncertainty", "uncertainty_client", "repeats", "findings", "leave", "local",
     }  # fmt: skip
     assert mark["repeats"][0]["independence"]["grade"] == "independent"
     assert mark["uncertainty_client"]["common"]
