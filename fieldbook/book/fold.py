@@ -191,6 +191,7 @@ def _height(folder: _Folder, entry: Entry) -> None:
             time=body.get("time"),
             sigma_m=None if sigma is None else float(sigma),
             seq=entry.seq,
+            tape_offset_m=None if body.get("tape_offset_m") is None else float(body["tape_offset_m"]),
         )
     )
 

@@ -123,6 +123,7 @@ def _reading(item: ReadingReduced) -> Tree:
         "value_m": metres(item.value_m),
         "arp_m": metres(item.arp_m),
         "sigma_m": metres(item.sigma_m),
+        **({} if item.tape_offset_m is None else {"tape_offset_m": metres(item.tape_offset_m)}),
         "printed": {
             "value_m": rounded(item.value_m, 4),
             "arp_m": rounded(item.arp_m, 4),

@@ -187,8 +187,8 @@ def setup(facts: Tree) -> Section:
         lines = [
             [
                 one["when"],
-                one["method"],
-                f"{one['value']} {one['unit']}",
+                _METHODS.get(one["method"], one["method"]),
+                _typed(one),
                 one["printed"]["value_m"],
                 one["printed"]["arp_m"],
                 one["printed"]["sigma_mm"],
@@ -201,6 +201,16 @@ def setup(facts: Tree) -> Section:
         heads = ["When", "Method", "As typed", "Reading, m", "ARP above mark, m", "u, mm", "At", "Reader", "Time"]
         blocks.append(Table(heads, "llrrrrlll", lines, "Antenna height, every reading"))
     return Section("Set-up and antenna height", blocks)
+
+
+_METHODS = {"mount": "to bottom of mount", "rod": "rod, fixed"}
+
+
+def _typed(reading: Tree) -> str:
+    """The reading as typed, with the tape's offset where one was stated."""
+    offset = reading.get("tape_offset_m")
+    text = f"{reading['value']} {reading['unit']}"
+    return text if offset is None else f"{text}, tape {'' if offset.startswith('-') else '+'}{trimmed(offset, 'm', 4)}"
 
 
 def instruments(facts: Tree) -> Section:
@@ -231,6 +241,8 @@ def _calibration_rows(antenna: Tree) -> list[list[str]]:
     rows = []
     if antenna.get("source"):
         rows.append(["Source of dimensions", antenna["source"]])
+    if antenna.get("arp_above_mount_m"):
+        rows.append(["ARP above the bottom of the mount", trimmed(antenna["arp_above_mount_m"], "m", 4)])
     if antenna.get("receiver_applies"):
         rows.append(["Applied by the receiver itself", antenna["receiver_applies"]])
     calibration = antenna.get("calibration")

@@ -118,6 +118,7 @@ class ReadingReduced:
     reader: str | None = None
     time: str | None = None
     seq: int | None = None
+    tape_offset_m: float | None = None  # added to value_m; None: none stated
 
 
 @dataclass

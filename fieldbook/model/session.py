@@ -139,7 +139,7 @@ class Antenna:
 class HeightReading:
     """One reading as typed. `seq` is its entry in the book, None while it only stands in a session file."""
 
-    method: str  # "slant" or "vertical"
+    method: str  # "slant", "vertical", "mount", "rod"
     value: Decimal
     unit: str  # "m", "ft", "ftUS"
     when: str  # "before", "during", "after"
@@ -148,10 +148,11 @@ class HeightReading:
     time: str | None = None
     sigma_m: float | None = None
     seq: int | None = None
+    tape_offset_m: float | None = None  # to be added: hook, broken end, zero of the tape
 
     @property
     def value_m(self) -> float:
-        """The reading in metres, by the exact factor of its unit."""
+        """The reading in metres as typed, by the exact factor of its unit; the tape's offset is not in it."""
         return float(self.value * METRES_PER_UNIT[self.unit])
 
 

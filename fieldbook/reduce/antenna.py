@@ -22,6 +22,7 @@ from fieldbook.model.reduction import AntennaHeight, Finding, ReadingReduced
 from fieldbook.model.session import METRES_PER_UNIT, Antenna, HeightReading, Setup
 from fieldbook.model.sky import Picture
 from fieldbook.reduce.phase_centre import PhaseCentre, phase_centre
+from fieldbook.reduce.reading_checks import reading_cautions
 from fieldbook.reduce.reading_slips import likely_slip
 
 WITHIN_OCCASION_LIMIT_M = 0.003
@@ -52,13 +53,27 @@ class AntennaReduction:
 
 
 def arp_height_m(method: str, value_m: float, antenna: Antenna) -> float:
-    """Height of the ARP above the mark from one reading in metres.
+    """Height of the ARP above the mark from one reading in metres, the tape's offset in it.
+
+    slant     to the notch or rim: sqrt(s^2 - slant_radius^2) - slant_mark_above_arp
+    vertical  to the ARP
+    mount     vertical to the bottom of the mount, and
+    rod       fixed length of a rod whose top carries the mount: plus arp_above_mount
 
     Raises:
-        ReductionError: a slant reading without the antenna's dimensions, or not longer than the radius.
+        ReductionError: a reading without the antenna's dimension it needs, or a slant not longer than the radius.
     """
     if method == "vertical":
         return value_m
+    if method in ("mount", "rod"):
+        if antenna.arp_above_mount_m is None:
+            raise ReductionError(
+                f"A reading to the {'bottom of the mount' if method == 'mount' else 'top of a rod'} cannot be reduced: "
+                "arp_above_mount_m is not stated.",
+                "State it in [antenna], 0 where the ARP is the bottom of the mount.",
+                code="antenna_dimensions_missing",
+            )
+        return value_m + antenna.arp_above_mount_m
     radius_m, above_m = antenna.slant_radius_m, antenna.slant_mark_above_arp_m
     if radius_m is None or above_m is None:
         raise ReductionError(
@@ -101,6 +116,7 @@ def reduce_antenna(
     result = AntennaReduction(height, (0.0, 0.0, 0.0))
     result.findings += _agreement(reduced, antenna, explained=difference_explained)
     result.heights_agree = not any(item.severity == "stop" for item in result.findings)
+    result.findings += reading_cautions(setup, antenna, reduced, arp_height_m)
     if height.reading_sigma_assumed and reduced:
         result.findings.append(
             Finding(
@@ -113,17 +129,18 @@ def reduce_antenna(
     centre = phase_centre(antenna, setup.reported_point, pictures, carrier_phase=carrier_phase)
     result.phase_centre, result.note = centre, centre.note
     height.phase_centre = centre.figures
-    _to_mark(result, setup)
+    _to_mark(result, setup, antenna)
     result.findings += centre.findings
     return result
 
 
 def _reading(item: HeightReading, setup: Setup, antenna: Antenna) -> ReadingReduced:
-    arp_m = arp_height_m(item.method, item.value_m, antenna)
+    tape_m = item.value_m + (item.tape_offset_m or 0.0)
+    arp_m = arp_height_m(item.method, tape_m, antenna)
     sigma_m = item.sigma_m or setup.reading_sigma_m or ASSUMED_READING_SIGMA_M
     if item.method == "slant":
-        vertical_m = math.sqrt(item.value_m**2 - (antenna.slant_radius_m or 0.0) ** 2)
-        sigma_m *= item.value_m / vertical_m  # dv/ds = s/v
+        vertical_m = math.sqrt(tape_m**2 - (antenna.slant_radius_m or 0.0) ** 2)
+        sigma_m *= tape_m / vertical_m  # dv/ds = s/v
     return ReadingReduced(
         method=item.method,
         value=format(item.value, "f"),
@@ -136,6 +153,7 @@ def _reading(item: HeightReading, setup: Setup, antenna: Antenna) -> ReadingRedu
         reader=item.reader,
         time=item.time,
         seq=item.seq,
+        tape_offset_m=item.tape_offset_m,
     )
 
 
@@ -196,11 +214,11 @@ def _differ(
     return Finding(code, "info" if explained else "stop", text, {"difference_m": difference_m, "slip": slip})
 
 
-def _to_mark(result: AntennaReduction, setup: Setup) -> None:
+def _to_mark(result: AntennaReduction, setup: Setup, antenna: Antenna) -> None:
     height = result.height
     if setup.reported_point == "mark":
         result.note = "The receiver reports the mark; height readings are check readings and are not applied."
-        _check_receiver_height(result, setup)
+        _check_receiver_height(result, setup, antenna)
         return
     if height.height_arp_m is None:
         result.findings.append(
@@ -216,20 +234,25 @@ def _to_mark(result: AntennaReduction, setup: Setup) -> None:
     result.offset_enu_m = (0.0 - east, 0.0 - north, None if down is None else down - up)
 
 
-def _check_receiver_height(result: AntennaReduction, setup: Setup) -> None:
+def _check_receiver_height(result: AntennaReduction, setup: Setup, antenna: Antenna) -> None:
     read_m, keyed_m = result.height.height_arp_m, setup.receiver_height_m
     if read_m is None or keyed_m is None:
         return
     if abs(read_m - keyed_m) > WITHIN_OCCASION_LIMIT_M:
         result.heights_agree = False
+        # what was keyed in is a reading too: a slant keyed as vertical is the classic one
+        keyed = ReadingReduced(
+            "vertical", f"{keyed_m:.4f}", "m", "keyed into the receiver", keyed_m, keyed_m, ASSUMED_READING_SIGMA_M
+        )
+        slip = likely_slip(result.height.readings[0], keyed, arp_height_m, antenna)
         result.findings.append(
             Finding(
                 "receiver_height_differs",
                 "stop",
                 f"The receiver was told {keyed_m:.4f} m, the readings give {read_m:.4f} m "
-                f"({1000 * (read_m - keyed_m):+.1f} mm). Nothing was applied. "
+                f"({1000 * (read_m - keyed_m):+.1f} mm). {f'Likely slip: {slip}. ' if slip else ''}Nothing was applied. "
                 "Read again, or correct receiver_height_m.",
-                {"receiver_height_m": keyed_m, "read_m": read_m},
+                {"receiver_height_m": keyed_m, "read_m": read_m, **({"slip": slip} if slip else {})},
             )
         )
 

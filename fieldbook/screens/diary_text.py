@@ -30,14 +30,18 @@ def entry_text(entry: Entry) -> str:
 def _height(body: Tree) -> str:
     at = f" at {body['at']}" if body.get("at") else ""
     reader = f", read by {body['reader']}" if body.get("reader") else ""
-    return f"{body['method']} {body['value']} {body['unit']} {body['when']}{at}{reader}"
+    tape = f" tape {body['tape_offset_m']} m" if body.get("tape_offset_m") else ""
+    return f"{body['method']} {body['value']} {body['unit']}{tape} {body['when']}{at}{reader}"
 
 
 def _setup(body: Tree) -> str:
     parts = []
     for table, keys in body.items():
         if isinstance(keys, dict):
-            parts += [f"{table}.{key} = {value}" for key, value in keys.items()]
+            # a calibration is a page of figures: its file says enough here
+            parts += [
+                f"{table}.{key} = {value['file'] if key == 'calibration' else value}" for key, value in keys.items()
+            ]
     return "; ".join(parts)
 
 

@@ -24,6 +24,7 @@ from fieldbook.screens.rows import Row, row
 from fieldbook.screens.setup import current_readings, current_session, reading_tree
 from fieldbook.settings.schema import METHODS, OCCASIONS, UNITS, words
 
+KEYS = ("method", "value", "unit", "tape_offset_m", "when", "at", "reader")
 VALUE = Field("value", "Reading", "positive", required=True, hint="as read from the tape")
 
 
@@ -46,7 +47,7 @@ def height(desk: Desk) -> None:
 
 def reading_of(values: Values) -> Tree:
     """The form's texts as keys of [[setup.height]]."""
-    return {key: values[key] for key in ("method", "value", "unit", "when", "at", "reader") if values.get(key)}
+    return {key: values[key] for key in KEYS if values.get(key)}
 
 
 def _form(desk: Desk, session: Session) -> Form:
@@ -62,6 +63,13 @@ def _form(desk: Desk, session: Session) -> Form:
         Field("when", "When", words(*OCCASIONS), when, required=True),
         Field("at", "At", hint="notch 1, ..."),
         Field("reader", "Read by", value=desk.bridge.observer),
+        Field(
+            "tape_offset_m",
+            "Tape offset, m",
+            "number",
+            str(last.get("tape_offset_m", "")) if last else "",
+            hint="none; added to the reading",
+        ),
     ]
     return Form(
         "HEIGHT OF ANTENNA: which distance are you reading?",
@@ -116,6 +124,10 @@ def _said(desk: Desk, session: Session, values: Values, width: int) -> list[Row]
 def _check(desk: Desk, session: Session, values: Values) -> dict[str, str]:
     judged_in, _, _ = _context(desk, session, values)
     antenna = judged_in.antenna
+    if values["method"] in ("mount", "rod") and antenna.arp_above_mount_m is None:
+        return {"method": "how far the ARP is above the bottom of the mount is not stated: press Esc, then A"}
+    if values["method"] == "rod" and values["tape_offset_m"]:
+        return {"tape_offset_m": "a rod's fixed height has no tape: leave it empty"}
     if values["method"] == "slant" and (antenna.slant_radius_m is None or antenna.slant_mark_above_arp_m is None):
         return {"method": "the antenna's rim radius and notch height are not stated: press Esc, then A"}
     if open_occupation(desk.view) is None and values["when"] != "before":

@@ -20,7 +20,11 @@ def metres(value_m: float | None, decimals: int = 4) -> str:
 
 def drawing(method: str, typed: str, arp_m: float | None, antenna: Antenna | None) -> list[Row]:
     """The antenna over its mark, 37 cells wide, 13 rows high; the distance being read is named on its line."""
-    return _slant(typed, arp_m, antenna) if method == "slant" else _vertical(typed, arp_m)
+    if method == "slant":
+        return _slant(typed, arp_m, antenna)
+    if method in ("mount", "rod"):
+        return _to_mount(method, typed, arp_m, antenna)
+    return _vertical(typed, arp_m)
 
 
 def _slant(typed: str, arp_m: float | None, antenna: Antenna | None) -> list[Row]:
@@ -69,10 +73,32 @@ def _vertical(typed: str, arp_m: float | None) -> list[Row]:
     ]
 
 
+def _to_mount(method: str, typed: str, arp_m: float | None, antenna: Antenna | None) -> list[Row]:
+    above = antenna.arp_above_mount_m if antenna else None
+    stem = "│" if method == "mount" else "║"
+    name, what = ("mount", "bottom of mount") if method == "mount" else ("rod, fixed", "top of the rod")
+    return [
+        row("       ┌─────────────┐"),
+        row("       │   antenna   │"),
+        row("       └──────┬──────┘ ", ("ARP", "strong")),
+        row("            ┌─┴─┐  ┬"),
+        row("            │   │  ┴ ", (metres(above), "text")),
+        row("            └─", ("▲", "accent"), "─┘ ", (what, "accent")),
+        row("              ", (stem, "accent"), " ", (name, "accent")),
+        row("              ", (stem, "accent"), " ", (fit(typed, 16) or "…", "accent")),
+        row("              ", (stem, "accent")),
+        row("              ", (stem, "accent"), " ", ("ARP height", "strong")),
+        row("              ", (stem, "accent"), " ", (metres(arp_m) if arp_m is not None else "", "strong")),
+        row("              ", (stem, "accent")),
+        row("     ─────────", ("▼", "accent"), "───────── mark"),
+    ]
+
+
 def reading_row(item: ReadingReduced, width: int) -> Row:
     """`before slant 1.5320 m  ARP 1.4946 m`."""
     at = f"  {item.at}" if item.at else ""
-    text = f" {item.when} {item.method} {item.value} {item.unit} "
+    tape = f"{1000 * item.tape_offset_m:+.1f} mm " if item.tape_offset_m else ""
+    text = f" {item.when} {item.method} {item.value} {item.unit} {tape}"
     arp = f" ARP {item.arp_m:.4f} m"
     return row(text, (arp, "strong"), (fit(at, max(0, width - len(text) - len(arp) - 1)), "soft"))
 
@@ -109,7 +135,7 @@ def judgement(readings: Sequence[ReadingReduced], findings: Sequence[Finding], w
     if wrong:
         rows: list[Row] = []
         for item in wrong:
-            rows += paragraph(item.text, width, style="bad", mark=("■ READ AGAIN", "bad"), most=4)
+            rows += paragraph(item.text, width, style="bad", mark=("■ READ AGAIN", "bad"), most=8)
         return rows
     if len(readings) < 2:
         return []

@@ -46,8 +46,9 @@ def reading_tree(item: HeightReading) -> Tree:
     for key in ("at", "reader", "time"):
         if getattr(item, key) is not None:
             tree[key] = getattr(item, key)
-    if item.sigma_m is not None:
-        tree["sigma_m"] = format(Decimal(repr(item.sigma_m)), "f")
+    for key in ("sigma_m", "tape_offset_m"):
+        if getattr(item, key) is not None:
+            tree[key] = format(Decimal(repr(getattr(item, key))), "f")
     return tree
 
 
@@ -145,8 +146,11 @@ def setup_rows(session: Session, width: int) -> list[Row]:
     antenna, setup, receiver = session.antenna, session.setup, session.receiver
     serial = f", serial {antenna.serial}" if antenna.serial else ", serial not stated"
     up = antenna.arp_to_phase_centre_up_m
+    calibrated = antenna.calibration
     offset = (
-        "not stated"
+        f"by {calibrated.file}, {antenna.offset_frequency}; receiver applies {antenna.receiver_applies}"
+        if calibrated is not None
+        else "not stated"
         if up is None
         else (
             f"{up:+.4f} m up, N {antenna.arp_to_phase_centre_north_m or 0:+.4f}, "

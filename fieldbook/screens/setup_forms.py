@@ -17,6 +17,15 @@ from fieldbook.screens.rows import Row, paragraph
 from fieldbook.screens.setup import CONSEQUENCE, current_session
 from fieldbook.settings.schema import REPORTED_POINTS, TABLES, words
 
+ANTENNA_KEYS = (
+    "model",
+    "serial",
+    "orientation_deg",
+    "slant_radius_m",
+    "slant_mark_above_arp_m",
+    "arp_above_mount_m",
+)
+
 
 def _change(desk: Desk, changes: Tree) -> None:
     """Write changed keys where they belong: the open occupation, or the next session."""
@@ -109,17 +118,20 @@ def antenna(desk: Desk) -> None:
             _text_of(tree, "slant_mark_above_arp_m"),
             hint="not stated",
         ),
+        Field(
+            "arp_above_mount_m",
+            "ARP over mount, m",
+            "number",
+            _text_of(tree, "arp_above_mount_m"),
+            hint="not stated",
+        ),
         Field("north", "Ph. centre N, m", "number", _text_of(offset, "north"), hint="not stated"),
         Field("east", "Ph. centre E, m", "number", _text_of(offset, "east"), hint="not stated"),
         Field("up", "Ph. centre up, m", "number", _text_of(offset, "up"), hint="not stated"),
     ]
 
     def changes(values: Values) -> Tree:
-        keys: Tree = {
-            key: values[key]
-            for key in ("model", "serial", "orientation_deg", "slant_radius_m", "slant_mark_above_arp_m")
-            if values[key]
-        }
+        keys: Tree = {key: values[key] for key in ANTENNA_KEYS if values[key]}
         parts = {key: values[key] for key in ("north", "east", "up") if values[key]}
         if parts:
             keys["arp_to_phase_centre_m"] = parts

@@ -10,6 +10,7 @@ from fieldbook.model.canonical import Tree
 from fieldbook.model.frequencies import Combination, combination
 from fieldbook.settings.antex import block_calibration
 
+LARGEST_TAPE_OFFSET_M = 0.5
 AGREES_M = 0.001  # a typed offset beside a calibration is a check value
 Where = Callable[..., str]
 
@@ -49,6 +50,40 @@ def antenna_conditions(tree: Tree, where: Where) -> None:
             f'{where("setup", "reported_point")}: reported_point = "phase centre" needs the offset of the antenna.',
             "Write antenna.arp_to_phase_centre_m = { north = ..., east = ..., up = ... } from its calibration, or "
             "antenna.antex, or antenna.listed.",
+        )
+
+
+def reading_conditions(reading: Tree, antenna: Tree, where: Where) -> None:
+    """What one height reading needs of the antenna, and what cannot be.
+
+    Raises:
+        UsageError: naming the key and the remedy.
+    """
+    method = reading["method"]
+    if method == "slant":
+        for key in ("slant_radius_m", "slant_mark_above_arp_m"):
+            if key not in antenna:
+                raise UsageError(
+                    f"{where('setup.height')}: a slant reading needs antenna.{key}.",
+                    "Write it in [antenna], from the drawing of the antenna; or read the vertical height.",
+                )
+    if method in ("mount", "rod") and "arp_above_mount_m" not in antenna:
+        what = "a reading to the bottom of the mount" if method == "mount" else "a rod's fixed height"
+        raise UsageError(
+            f"{where('setup.height')}: {what} needs antenna.arp_above_mount_m.",
+            "Write it in [antenna], from its drawing; 0 where the ARP is the bottom of the mount.",
+        )
+    offset = reading.get("tape_offset_m")
+    if offset is None:
+        return
+    if method == "rod":
+        raise UsageError(
+            f"{where('setup.height', 'tape_offset_m')}: a rod's fixed height has no tape.", "Leave tape_offset_m out."
+        )
+    if abs(float(offset)) > LARGEST_TAPE_OFFSET_M:
+        raise UsageError(
+            f"{where('setup.height', 'tape_offset_m')}: {offset} m is no offset of a tape.",
+            "It is the length of the hook or the missing end, in metres; added to the reading.",
         )
 
 

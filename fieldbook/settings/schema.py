@@ -14,7 +14,7 @@ from __future__ import annotations
 
 REPORTED_POINTS = ("phase centre", "ARP", "mark")
 RECEIVER_APPLIES = ("nothing", "pattern", "offset", "offset and pattern")
-METHODS = ("slant", "vertical")
+METHODS = ("slant", "vertical", "mount", "rod")
 UNITS = ("m", "ft", "ftUS")
 OCCASIONS = ("before", "during", "after")
 CORRECTION_KINDS = ("own base on known mark", "own base on unknown mark", "network", "satellite", "none")
@@ -133,6 +133,7 @@ TABLES: dict[str, dict[str, str]] = {
         "reader": "text",
         "time": "text",
         "sigma_m": "positive",
+        "tape_offset_m": "number",
     },
     "receiver": {
         "link": "text",

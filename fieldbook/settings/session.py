@@ -15,7 +15,7 @@ from fieldbook.errors import UsageError
 from fieldbook.model import session as model
 from fieldbook.model.calibration import FrozenCalibration
 from fieldbook.model.canonical import Tree, normalised
-from fieldbook.settings.antenna_rules import antenna_conditions
+from fieldbook.settings.antenna_rules import antenna_conditions, reading_conditions
 from fieldbook.settings.antenna_source import with_antenna
 from fieldbook.settings.antex import block_calibration
 from fieldbook.settings.schema import REQUIRED, TABLES, TOP_LEVEL
@@ -147,13 +147,8 @@ def _conditions(tree: Tree, where: _Where) -> None:
             "Write setup.receiver_height_m: a height taken off twice is the classic blunder.",
         )
     antenna_conditions(tree, where)
-    if any(item["method"] == "slant" for item in setup.get("height", [])):
-        for key in ("slant_radius_m", "slant_mark_above_arp_m"):
-            if key not in antenna:
-                raise UsageError(
-                    f"{where('setup.height')}: a slant reading needs antenna.{key}.",
-                    "Write it in [antenna], from the drawing of the antenna; or read the vertical height.",
-                )
+    for item in setup.get("height", []):
+        reading_conditions(item, antenna, where)
     if setup.get("support") == "pole" and "pole_length_m" not in setup:
         raise UsageError(f"{where('setup', 'support')}: a pole needs setup.pole_length_m.", "Write its length.")
     for index, item in enumerate(tree["frame"].get("motion", []), start=1):
@@ -295,6 +290,7 @@ def reading_from_tree(tree: Tree, seq: int | None = None) -> model.HeightReading
         time=tree.get("time"),
         sigma_m=_float(tree, "sigma_m"),
         seq=seq,
+        tape_offset_m=_float(tree, "tape_offset_m"),
     )
 
 

@@ -42,6 +42,20 @@ def test_a_height_reading_is_kept_as_typed(occupied, fieldbook) -> None:
     )
 
 
+def test_a_rod_and_a_tape_with_an_offset(occupied, fieldbook) -> None:
+    by = ("--by", "M. Orr")
+    assert fieldbook("entry", occupied, "setup", "--set", "antenna.arp_above_mount_m=0.0", *by).code == 0
+    for settings in (
+        ("method=rod", "value=2.000", "unit=m", "when=before"),
+        ("method=mount", "value=6.530", "unit=ftUS", "tape_offset_m=0.0100", "when=after"),
+    ):
+        said = fieldbook("entry", occupied, "height", *by, *(part for item in settings for part in ("--set", item)))
+        assert said.code == 0, said.err
+    rod, mount = folded(occupied).occupations[1].heights[-2:]
+    assert (rod.method, rod.tape_offset_m) == ("rod", None)
+    assert (mount.method, mount.unit, mount.tape_offset_m) == ("mount", "ftUS", 0.01)
+
+
 def test_text_output_is_seq_and_hash(occupied, fieldbook) -> None:
     said = fieldbook("entry", occupied, "remark", "--set", "text=wind from the west", "--by", "M. Orr")
     seq, digest = said.out.split()
@@ -57,6 +71,8 @@ def test_text_output_is_seq_and_hash(occupied, fieldbook) -> None:
         ("height", ["method=slant"], ["value is missing"]),
         ("height", ["method=slant", "value=1.5", "unit=feet", "when=after"], ["'ft'"]),
         ("height", ["method=slant", "value=x", "unit=m", "when=after"], ["needs a number"]),
+        ("height", ["method=mount", "value=1.5", "unit=m", "when=after"], ["arp_above_mount_m", "0 where"]),
+        ("height", ["method=slant", "value=1.5", "unit=m", "when=after", "tape_offset_m=9"], ["no offset of a tape"]),
         ("height", ["value"], ["key=value"]),
         ("height", ["value=1", "value=2"], ["twice"]),
         ("setup", ["antenna.seral=1"], ['"serial"']),

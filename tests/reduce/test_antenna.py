@@ -19,6 +19,7 @@ ANTENNA = Antenna(
     arp_to_phase_centre_up_m=0.0873,
     slant_radius_m=0.1500,
     slant_mark_above_arp_m=0.0300,
+    arp_above_mount_m=0.0100,
 )
 
 
@@ -26,8 +27,10 @@ def setup(point: str = "phase centre", **more: object) -> Setup:
     return Setup(reported_point=point, centring="optical plummet", centring_sigma_m=0.001, **more)  # type: ignore[arg-type]
 
 
-def reading(value: str, when: str = "before", method: str = "slant", unit: str = "m") -> HeightReading:
-    return HeightReading(method, Decimal(value), unit, when)
+def reading(
+    value: str, when: str = "before", method: str = "slant", unit: str = "m", tape_offset_m: float | None = None
+) -> HeightReading:
+    return HeightReading(method, Decimal(value), unit, when, tape_offset_m=tape_offset_m)
 
 
 def test_contract_sample_is_1_49464_m() -> None:
@@ -72,14 +75,30 @@ def test_assumed_sigma_is_a_finding() -> None:
         (reading("1.5320"), reading("1.5320", method="vertical"), "(slant, before) is a vertical reading"),
         (reading("1.4946", method="vertical"), reading("4.904", method="vertical"), "is in ft"),
         (reading("1.4946", method="vertical"), reading("1.4946", method="vertical", unit="ft"), "is in m, not in ft"),
+        (reading("1.4946", method="vertical"), reading("1.5246", method="vertical"), "to the plane of the notch"),
+        (reading("4.92", method="vertical", unit="ft"), reading("4.11", method="vertical", unit="ft"), "is 4 ft 11 in"),
+        (
+            reading("4.90", method="vertical", unit="ft"),
+            reading("5.00", method="vertical", unit="ft"),
+            "by 0.1 ft, for 5.00, or the other reading is; then the ARP is 1.5240 m above the mark, else 1.4935 m",
+        ),
+        (reading("1.5320", tape_offset_m=-0.012), reading("1.5440"), "the tape offset of -12.0 mm has the wrong sign"),
+        (reading("1.5200", tape_offset_m=0.012), reading("1.5200"), "the tape offset of +12.0 mm was forgotten"),
+        (reading("1.4900", method="rod"), reading("1.4977", method="rod"), None),
+        (
+            reading("1.4900", method="mount"),
+            reading("1.4900", method="vertical"),
+            "to the bottom of the mount; then the ARP is 1.5000 m",
+        ),
     ],
 )
-def test_the_likely_slip_is_named(first: HeightReading, second: HeightReading, words: str) -> None:
+def test_the_likely_slip_is_named(first: HeightReading, second: HeightReading, words: str | None) -> None:
     result = reduce_antenna(setup(reading_sigma_m=0.001), ANTENNA, [first, second])
     assert not result.heights_agree
     finding = next(item for item in result.findings if item.code == "heights_differ_within")
     assert finding.severity == "stop"
-    assert words in finding.text
+    assert (words or "differ by 7.7 mm. Read again") in finding.text
+    assert ("the ARP is" in finding.text) == (words is not None), "a slip is named with the figure it gives"
 
 
 def test_between_occasions_limit_is_5_mm() -> None:
@@ -150,3 +169,76 @@ def test_no_reading_means_no_height() -> None:
 def test_slant_shorter_than_radius_is_refused() -> None:
     with pytest.raises(ReductionError, match="radius"):
         reduce_antenna(setup(), ANTENNA, [reading("0.1400")])
+
+
+@pytest.mark.parametrize(
+    ("item", "arp_m"),
+    [
+        (reading("1.4900", method="mount"), 1.5000),
+        (reading("2.0000", method="rod"), 2.0100),
+        (reading("1.4900", method="vertical", tape_offset_m=0.0100), 1.5000),
+        (reading("1.4900", method="mount", tape_offset_m=-0.0050), 1.4950),
+        (reading("1.5200", tape_offset_m=0.0120), math.sqrt(1.532**2 - 0.15**2) - 0.03),
+        (reading("4.90", method="vertical", unit="ft", tape_offset_m=0.0100), 4.90 * 0.3048 + 0.0100),
+        (reading("4.90", method="rod", unit="ftUS"), 4.90 * 1200 / 3937 + 0.0100),
+    ],
+)
+def test_every_method_reaches_the_arp(item: HeightReading, arp_m: float) -> None:
+    found = reduce_antenna(setup(reading_sigma_m=0.001), ANTENNA, [item]).height
+    assert found.height_arp_m == pytest.approx(arp_m, abs=1e-9)
+    assert found.readings[0].value_m == pytest.approx(item.value_m), "the reading stays as typed"
+
+
+@pytest.mark.parametrize("method", ["mount", "rod"])
+def test_the_mount_has_no_default(method: str) -> None:
+    from dataclasses import replace
+
+    with pytest.raises(ReductionError, match="arp_above_mount_m"):
+        reduce_antenna(setup(), replace(ANTENNA, arp_above_mount_m=None), [reading("1.5", method=method)])
+
+
+def cautions(*items: HeightReading, **more: object) -> list[tuple[str, str]]:
+    from dataclasses import replace
+
+    antenna = replace(ANTENNA, slant_radius_m=more.pop("radius", 0.15))  # type: ignore[arg-type]
+    found = reduce_antenna(setup(reading_sigma_m=0.001, **more), antenna, items).findings
+    return [(item.code, item.text) for item in found if item.severity == "caution"]
+
+
+def test_one_reading_alone_can_look_wrong() -> None:
+    """Limits are common practice, no source."""
+    ((code, text),) = cautions(reading("4.904", method="vertical"))
+    assert code == "height_implausible"
+    assert "Read in ft it would be 1.4947 m" in text
+    ((code, text),) = cautions(reading("1.495", method="vertical", unit="ft", when="before"), support="tripod")
+    assert "Read in m it would be 1.4950 m" in text
+    assert cautions(reading("0.150", method="vertical"), support="pillar") == []
+    assert cautions(reading("1.495", method="vertical"), support="tripod") == []
+
+
+def test_a_radius_that_looks_like_a_diameter() -> None:
+    """0.381 m is the diameter of the note of 2019 (0.3810 m, ARP 35 mm below): 29.8 mm, see tests/published."""
+    ((code, text),) = cautions(reading("1.8527"), radius=0.3810)
+    assert code == "radius_implausible"
+    assert "the ARP is 29.8 mm higher" in text
+    assert cautions(reading("1.8527"), radius=0.1905) == []
+
+
+def test_a_rod_set_to_another_section() -> None:
+    ((code, text),) = cautions(reading("1.8000", method="rod"), support="pole", pole_length_m=2.0)
+    assert code == "rod_differs"
+    assert "-200.0 mm" in text
+    assert cautions(reading("2.0000", method="rod"), support="pole", pole_length_m=2.0) == []
+
+
+def test_a_slant_keyed_as_vertical_is_named() -> None:
+    differs = reduce_antenna(
+        setup("mark", receiver_height_m=1.5320, reading_sigma_m=0.001), ANTENNA, [reading("1.5320")]
+    )
+    text = next(item.text for item in differs.findings if item.code == "receiver_height_differs")
+    assert "1.5320 m (vertical, keyed into the receiver) is a slant reading" in text or "is a vertical reading" in text
+    in_feet = reduce_antenna(
+        setup("mark", receiver_height_m=4.9035, reading_sigma_m=0.001), ANTENNA, [reading("1.4946", method="vertical")]
+    )
+    text = next(item.text for item in in_feet.findings if item.code == "receiver_height_differs")
+    assert "4.9035 m (vertical, keyed into the receiver) is in ft, not in m" in text

@@ -9,14 +9,17 @@ import numpy as np
 import pytest
 
 from fieldbook.model.reduction import Convergence
+from fieldbook.model.session import Antenna
 from fieldbook.screens.canvas import Canvas, ellipse_points, nice_length
 from fieldbook.screens.digits import big
+from fieldbook.screens.heights import drawing
 from fieldbook.screens.plain import clean, fit, pad, to_ascii, width_of, wrapped
 from fieldbook.screens.plots import plan_half_width_m, plan_rows, sky_rows, trace_rows
 from fieldbook.screens.rows import STYLES, cropped, row, row_width
 from fieldbook.screens.settling import settling_rows
 from fieldbook.screens.themes import PALETTES, contrast, luminance
 from fieldbook.screens.words import duration, length_95, quality_word, stopwatch
+from fieldbook.settings.schema import METHODS
 
 from .fakes import CONVERGENCE, HOSTILE, SKY, FakeBridge, trace
 
@@ -155,6 +158,20 @@ def test_text_is_cleaned_and_counted_in_cells(text: str, width: int) -> None:
     assert width_of(pad(text, width)) == width
     assert all(width_of(line) <= max(4, width) for line in wrapped(text, width))
     assert row_width(cropped(row(clean(text), (clean(text), "bad")), width)) == width
+
+
+@pytest.mark.parametrize("method", METHODS)
+def test_every_method_has_its_drawing_with_the_figures(method: str) -> None:
+    antenna = Antenna("DEMO-A1 NONE", slant_radius_m=0.15, slant_mark_above_arp_m=0.03, arp_above_mount_m=0.0123)
+    rows = drawing(method, "1.4900 m", 1.5023, antenna)
+    text = "\n".join("".join(part for part, _ in line) for line in rows)
+    assert len(rows) == 13
+    assert all(row_width(line) <= 38 for line in rows)
+    assert "1.4900 m" in text
+    assert "1.5023 m" in text
+    assert ("0.0123 m" in text) == (method in ("mount", "rod"))
+    bare = drawing(method, "", None, None)
+    assert len(bare) == 13
 
 
 def test_wrapped_says_when_there_is_more() -> None:

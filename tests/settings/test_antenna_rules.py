@@ -198,3 +198,27 @@ def test_a_broken_file_of_the_list(text: str) -> None:
 def test_signals_that_are_none(text: str) -> None:
     with pytest.raises(ValueError):
         combination(text)
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "words"),
+    [
+        ('method = "slant"', 'method = "mount"', "arp_above_mount_m"),
+        ('method = "slant"', 'method = "rod"', "arp_above_mount_m"),
+        ('unit = "m"', 'unit = "m"\ntape_offset_m = 2.0', "no offset of a tape"),
+        ('unit = "m"', 'unit = "m"\ntape_offset_m = "0.01"', "without quotes"),
+        ("[antenna]", "[antenna]\narp_above_mount_m = 0.0\n", None),
+    ],
+)
+def test_height_readings_of_every_kind(tmp_path: Path, old: str, new: str, words: str | None) -> None:
+    path = tmp_path / "session.toml"
+    path.write_text(SAMPLE.replace(old, new, 1), encoding="utf-8")
+    if words is None:
+        text = path.read_text(encoding="utf-8").replace('method = "slant"', 'method = "rod"', 1)
+        path.write_text(text, encoding="utf-8")
+        assert load_session(path).setup.heights[0].method == "rod"
+        path.write_text(text.replace('unit = "m"', 'unit = "m"\ntape_offset_m = 0.01', 1), encoding="utf-8")
+        words = "a rod's fixed height has no tape"
+    with pytest.raises(UsageError) as caught:
+        load_session(path)
+    assert words in caught.value.text + caught.value.remedy
