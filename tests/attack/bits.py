@@ -74,13 +74,14 @@ class Victim:
         return [name for name, value in self.sound.items() if now[name] != value]
 
 
-def flips(victim: Victim, *, anywhere: int, each_table: int, seed: int) -> Flips:
+def flips(victim: Victim, *, anywhere: int, each_table: int | dict[str, int], seed: int) -> Flips:
     """Bits at random places of the file, and at random places of each table's content."""
     luck, result = random.Random(seed), Flips()
     places = [luck.randrange(len(victim.data)) for _ in range(anywhere)]
     for region, own in sorted(victim.places.items(), key=repr):
         if region.kind == CONTENT:
-            places += [luck.choice(own) for _ in range(each_table)]
+            count = each_table if isinstance(each_table, int) else each_table[region.owner]
+            places += [luck.choice(own) for _ in range(count)]
     for place in places:
         bit = luck.randrange(8)
         outcome = victim.flip(place, bit)
