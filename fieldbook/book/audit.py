@@ -114,8 +114,8 @@ def _audited(connection: connect.BookConnection, time_limit_s: float) -> list[Au
     connection.text_factory = lambda data: data.decode("utf-8", "surrogateescape")
     audit = Audit(connection)
     checks: list[tuple[str, Callable[[Audit], None]]] = [
+        ("schema", _check_schema),  # first: SQLite's own check evaluates what a foreign schema tells it to
         ("file", _check_pages),
-        ("schema", _check_schema),
         ("entry", _check_entries),
         ("migrations", _check_migrations),
         ("raw", audit_raw),
@@ -175,6 +175,9 @@ def _check_migrations(audit: Audit) -> None:
     version = audit.connection.execute("PRAGMA user_version").fetchone()[0]
     if [row[0] for row in rows] != list(range(1, version + 1)):
         audit.find("migrations", "the rows of the migrations table are not numbered 1, 2, ... up to the version")
+    known = [(migrations.MIGRATION_SET, name) for name, _ in migrations.MIGRATIONS[:version]]
+    if [(row[1], row[2]) for row in rows] != known:
+        audit.find("migrations", "the migrations table does not name the migrations of this version")
     if [list(row[1:]) for row in rows] != stated:
         audit.find("migrations", "the migrations table is not what the entries 'book' and 'migrated' state", 1)
 

@@ -32,12 +32,12 @@ def causes(path: Path) -> list[str]:
     except BookError as error:
         return ["damage: SQLite cannot read the file at all"] if error.code == "damaged" else []
     try:
-        connection.text_factory = bytes
-        found = _pages(connection)
         connection.text_factory = lambda data: data.decode("utf-8", "replace")
         schema = _schema(connection)
+        if schema:
+            return schema  # SQLite's check of the pages would evaluate what a foreign schema tells it to
         connection.text_factory = bytes
-        return found + schema + ([] if schema else _entries(connection))
+        return _pages(connection) + _entries(connection)
     except (sqlite3.Error, UnicodeDecodeError, MemoryError, OverflowError):
         return [
             "damage: SQLite cannot read all of the file, as after a failing disk, a stick pulled out or a broken copy"

@@ -80,15 +80,15 @@ def _ended(connection: sqlite3.Connection, occupation: int) -> bool:
     return any(json.loads(row[0]).get("occupation") == occupation for row in rows)
 
 
-def read_entries(connection: sqlite3.Connection, after_seq: int = 0) -> Iterator[Entry]:
-    """Entries after a seq, in order.
+def read_entries(connection: sqlite3.Connection, after_seq: int = 0, until_seq: int | None = None) -> Iterator[Entry]:
+    """Entries after a seq, in order, up to another one if given.
 
     Raises:
         BookError: a body is no JSON tree.
     """
     rows = connection.execute(
-        "SELECT seq, utc, kind, body, observer, previous_hash, hash FROM entry WHERE seq > ? ORDER BY seq",
-        (after_seq,),
+        "SELECT seq, utc, kind, body, observer, previous_hash, hash FROM entry WHERE seq > ? AND seq <= ? ORDER BY seq",
+        (after_seq, 2**62 if until_seq is None else until_seq),
     )
     for seq, utc, kind, text, observer, previous, own in rows:
         if not all(isinstance(value, str) for value in (utc, kind, text, observer, previous, own)):

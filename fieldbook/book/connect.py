@@ -21,7 +21,7 @@ from urllib.parse import quote_from_bytes
 
 from fieldbook.errors import BookError
 
-from . import foreign, migrations
+from . import beside, foreign, migrations
 from .wal import wal_problem
 
 BUSY_MS = 5000
@@ -103,7 +103,7 @@ def look(path: Path) -> None:
     """Refuse what can be refused without opening anything.
 
     Raises:
-        BookError: nothing there, a folder, an empty file.
+        BookError: nothing there, a folder, an empty file, neighbours that lead elsewhere.
     """
     try:
         found = path.stat()
@@ -123,6 +123,7 @@ def look(path: Path) -> None:
             "Delete it and begin one with `fieldbook new`.",
             code="not_a_book",
         )
+    beside.refuse_hostile(path)
 
 
 def folder_is_writable(path: Path) -> bool:

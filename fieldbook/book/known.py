@@ -19,10 +19,10 @@ from .fold import fold
 
 
 class Known:
-    """All entries up to the last look. Every question looks again first."""
+    """All entries up to the last look, or up to one entry for ever. Every question looks again first."""
 
-    def __init__(self, connection: sqlite3.Connection) -> None:
-        self._connection = connection
+    def __init__(self, connection: sqlite3.Connection, until_seq: int | None = None) -> None:
+        self._connection, self._until = connection, until_seq
         self._entries: list[Entry] = []
         self._state: BookState | None = None
         self._origins: dict[int, Origin] = {}
@@ -36,7 +36,8 @@ class Known:
     def entries(self) -> list[Entry]:
         """All entries; not to be changed by the caller."""
         after = self._entries[-1].seq if self._entries else 0
-        self._entries.extend(chain.read_entries(self._connection, after))
+        if self._until is None or after < self._until:
+            self._entries.extend(chain.read_entries(self._connection, after, self._until))
         return self._entries
 
     def state(self) -> BookState:

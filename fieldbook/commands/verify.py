@@ -44,6 +44,7 @@ def command(files: tuple[Path, ...], as_json: bool) -> int:
 def _book(path: Path, trust: Trust) -> dict[str, object]:
     from fieldbook.book.causes import causes
     from fieldbook.commands.verify_certified import verify_certified
+    from fieldbook.commands.verify_limits import to_compare
     from fieldbook.commands.verify_signatures import not_proven, verify_signatures
     from fieldbook.occupy.verifying import verify_stored
 
@@ -61,7 +62,7 @@ def _book(path: Path, trust: Trust) -> dict[str, object]:
         "holds": holds,
         "lines": lines,
         "looks_like": [] if holds else causes(path),
-        "not_proven": not_proven(findings),
+        "not_proven": [*not_proven(findings), *to_compare(path)],
     }
 
 

@@ -9,7 +9,9 @@ killed      one occupation left open by a recorder that was killed: the file and
 
 from __future__ import annotations
 
+import contextlib
 import gzip
+import io
 import json
 import shutil
 import sys
@@ -28,6 +30,7 @@ from fieldbook.certificate.facts import build_facts  # noqa: E402
 from fieldbook.certificate.issue import program_versions  # noqa: E402
 from fieldbook.certificate.repeats import repeats_of  # noqa: E402
 from fieldbook.clock import FakeClock, SystemClock  # noqa: E402
+from fieldbook.commands import run  # noqa: E402
 from fieldbook.issuing import issue  # noqa: E402
 from fieldbook.model.item import Item, ItemKind  # noqa: E402
 from fieldbook.occupy.marks_combined import combine_marks  # noqa: E402
@@ -169,8 +172,10 @@ def everything(path: Path) -> dict[str, Any]:
 
 def holds(path: Path) -> tuple[bool, list[str]]:
     """What `fieldbook verify` says of a book: whether it holds, and the lines that do not."""
-    from fieldbook.commands.verify import _book
-
-    result = _book(path)
-    lines: Any = result["lines"]
-    return bool(result["holds"]), [f"{line['where']}: {line['text']}" for line in lines if not line["holds"]]
+    said = io.StringIO()
+    with contextlib.redirect_stdout(said):
+        code = run(["verify", str(path), "--json"])
+    tree = json.loads(said.getvalue())
+    lines = [line for item in tree.get("files", []) for line in item["lines"] if not line["holds"]]
+    assert code == (0 if tree["holds"] else 1)
+    return bool(tree["holds"]), [f"{line['where']}: {line['text']}" for line in lines]
