@@ -53,11 +53,14 @@ def live_reader(book_path: Path) -> LiveReader:
 
 
 def whole_view(reader: LiveReader) -> LiveView:
-    """The picture with all epochs in it: looked at until nothing is left out."""
-    view = reader.snapshot()
+    """The picture with all epochs in it: looked at until nothing is left out, or nothing more comes."""
+    view, before = reader.snapshot(), -1
     for _ in range(LOOKS):
         if view.reduction is None or view.recorder is None or view.reduction.heard >= view.recorder.epochs:
             break
+        if view.reduction.heard == before:
+            break  # the recorder states more than there is
+        before = view.reduction.heard
         view = reader.snapshot()
     return view
 

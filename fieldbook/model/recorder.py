@@ -49,9 +49,56 @@ class RecorderState:
 
     @classmethod
     def from_json(cls, text: str) -> RecorderState:
-        """From `to_json`, ignoring keys of a later version."""
-        tree: dict[str, Any] = json.loads(text)
-        known = {item.name for item in dataclasses.fields(cls)}
-        state = cls(**{key: value for key, value in tree.items() if key in known})
-        state.sky = [item if isinstance(item, Satellite) else Satellite(**item) for item in state.sky]
-        return state
+        """From `to_json`, ignoring keys of a later version. Nothing chains this row: each value is looked at.
+
+        Raises:
+            ValueError: no JSON object, or a value that no recorder writes.
+        """
+        tree: Any = json.loads(text, parse_constant=_no_number)
+        if not isinstance(tree, dict) or type(tree.get("occupation")) is not int:
+            raise ValueError("it names no occupation")
+        known = {item.name: str(item.type) for item in dataclasses.fields(cls)}
+        told = {key: value for key, value in tree.items() if key in known}
+        for key, value in told.items():
+            if not _fits(value, known[key]):
+                raise ValueError(f"'{key}' is no {known[key]}")
+        told["sky"] = [Satellite(**item) for item in told.get("sky", ())]
+        return cls(**told)
+
+
+def _no_number(text: str) -> float:
+    raise ValueError(f"{text} is no number")
+
+
+_SATELLITE = {item.name: str(item.type) for item in dataclasses.fields(Satellite)}
+_INTEGERS = range(-(2**63), 2**63)
+
+
+def _fits(value: object, wanted: str) -> bool:
+    """Whether a value is of the type a field of this module is declared with."""
+    if wanted.endswith(" | None"):
+        return value is None or _fits(value, wanted.removesuffix(" | None"))
+    match wanted:
+        case "int":
+            return type(value) is int and value in _INTEGERS
+        case "float":
+            return type(value) in (int, float) and abs(value) < 1e15  # type: ignore[arg-type]
+        case "str":
+            return isinstance(value, str)
+        case "bool":
+            return isinstance(value, bool)
+        case "list[str]":
+            return isinstance(value, list) and all(isinstance(item, str) for item in value)
+        case "dict[str, int]":
+            return isinstance(value, dict) and all(_fits(item, "int") for item in value.values())
+        case "list[Satellite]":
+            return isinstance(value, list) and all(map(_is_satellite, value))
+    return False
+
+
+def _is_satellite(value: object) -> bool:
+    return (
+        isinstance(value, dict)
+        and value.keys() == _SATELLITE.keys()
+        and all(_fits(item, _SATELLITE[key]) for key, item in value.items())
+    )
