@@ -9,12 +9,15 @@ as the chain of hashes holds. Missed are
 
 Not to be seen: entries cut off at the end together with their signatures, a book cut off before its first `key` entry or
 made anew without one, and a signature at the end that covers only what the recorder wrote.
+
+A rescued book carries signatures made over the chain of the damaged one: they are judged against those hashes, as far as
+they can be computed again, and cover nothing of the new chain; what is missing there was lost, not taken off.
 """
 
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 from fieldbook.model.entry import Entry
@@ -22,6 +25,7 @@ from fieldbook.model.entry import Entry
 from . import ed25519
 from .keyring import Trust
 from .message import ALGORITHM, entry_message, fingerprint, spoken
+from .rescued import old_chain
 
 # What a person states under a name. `draft`, `rendered` and `request` bear the observer's name too, whoever asked for them;
 # everything else is written by a recorder.
@@ -48,6 +52,7 @@ class _Key:
     public: bytes
     good: int = 0  # signatures that fit
     covers: int = 0  # last entry that is covered
+    old: int = 0  # last entry of the damaged book, from which this one was rescued, that is covered
 
     @property
     def fingerprint(self) -> str:
@@ -66,16 +71,17 @@ def judge(entries: Sequence[Entry], trust: Trust, total: int | None = None) -> l
         total: number of entries in the book, if it is more than the chain bears.
     """
     total = len(entries) if total is None else total
+    rescued_at, old = old_chain(entries)
     keys: list[_Key] = []
     wrong: list[Line] = []
     for entry in entries:
         if entry.kind == "key":
             wrong += _announce(entry, keys)
         elif entry.kind == "signature":
-            wrong += _weigh(entry, entries, keys)
+            wrong += _weigh_old(entry, old, keys) if entry.seq < rescued_at else _weigh(entry, entries, keys)
     if not any(entry.kind in ("key", "signature") for entry in entries):
         return [Line(True, f"unsigned: no signature stands over any of {_counted(total)}"), *_broken(entries, total)]
-    lines = [*wrong, *_missed(entries, keys)]
+    lines = [*wrong, *_missed(entries[rescued_at:], keys)]
     for key in keys:
         lines.append(_key_line(key, keys, trust, total))
     covered = max((key.covers for key in keys), default=0)
@@ -120,22 +126,10 @@ def _announce(entry: Entry, keys: list[_Key]) -> Iterator[Line]:
 
 def _weigh(entry: Entry, entries: Sequence[Entry], keys: list[_Key]) -> Iterator[Line]:
     """One signature: it fits, and then covers; or it does not."""
-    body = entry.body
-    key = next(
-        (item for item in keys if item.fingerprint == body.get("fingerprint") and item.name == entry.observer), None
-    )
-    if key is None:
-        yield Line(
-            False, f"the signature of entry {entry.seq} is of a key that no entry before it announces", entry.seq
-        )
-        return
-    seq, signed_hash = body.get("seq"), body.get("hash")
-    signature = _bytes(body.get("signature"), ed25519.SIGNATURE_BYTES)
-    since = max(item.covers for item in keys) + 1
-    if not isinstance(seq, int) or not 0 < seq < entry.seq or not isinstance(signed_hash, str) or signature is None:
-        yield Line(False, f"the signature of entry {entry.seq} is damaged", since)
-    elif not ed25519.fits(key.public, signature, entry_message(key.name, seq, signed_hash)):
-        yield Line(False, f"the signature of entry {entry.seq} was not made by {key.words()}", since)
+    since = max((item.covers for item in keys), default=0) + 1
+    key, seq, signed_hash, problem = _read(entry, keys)
+    if key is None or problem:
+        yield Line(False, problem, since)
     elif entries[seq - 1].hash != signed_hash:
         text = (
             f"{key.words()} signed another entry {seq}: entries {since} to {seq} are not all those that were signed, and "
@@ -145,6 +139,39 @@ def _weigh(entry: Entry, entries: Sequence[Entry], keys: list[_Key]) -> Iterator
     else:
         key.good += 1
         key.covers = max(key.covers, seq)
+
+
+def _weigh_old(entry: Entry, old: Mapping[int, str], keys: list[_Key]) -> Iterator[Line]:
+    """A signature carried over from a damaged book."""
+    key, seq, signed_hash, problem = _read(entry, keys)
+    if key is None or problem:
+        # the announcement of its key can have been lost with the damaged pages
+        yield Line(key is None, f"{problem} (carried from a damaged book)", entry.seq)
+    elif seq not in old:
+        yield Line(
+            True, f"what the signature of entry {entry.seq} was made over was lost with the damaged book", entry.seq
+        )
+    elif old[seq] != signed_hash:
+        yield Line(False, f"{key.words()} signed another entry {seq} of the damaged book than is carried", seq)
+    else:
+        key.old = max(key.old, seq)
+
+
+def _read(entry: Entry, keys: list[_Key]) -> tuple[_Key | None, int, str, str]:
+    """(key, seq and hash that it signed, what is wrong: empty if the signature is the key's)."""
+    body = entry.body
+    key = next(
+        (item for item in keys if item.fingerprint == body.get("fingerprint") and item.name == entry.observer), None
+    )
+    if key is None:
+        return None, 0, "", f"the signature of entry {entry.seq} is of a key that no entry before it announces"
+    seq, signed_hash = body.get("seq"), body.get("hash")
+    signature = _bytes(body.get("signature"), ed25519.SIGNATURE_BYTES)
+    if not isinstance(seq, int) or not 0 < seq < entry.seq or not isinstance(signed_hash, str) or signature is None:
+        return key, 0, "", f"the signature of entry {entry.seq} is damaged"
+    if not ed25519.fits(key.public, signature, entry_message(key.name, seq, signed_hash)):
+        return key, 0, "", f"the signature of entry {entry.seq} was not made by {key.words()}"
+    return key, seq, signed_hash, ""
 
 
 def _bytes(value: object, size: int) -> bytes | None:
@@ -178,7 +205,9 @@ def _missed(entries: Sequence[Entry], keys: list[_Key]) -> list[Line]:
 
 def _key_line(key: _Key, keys: list[_Key], trust: Trust, total: int) -> Line:
     standing = trust.standing(key.name, key.public)
-    if key.good:
+    if key.old and not key.good:
+        text = f"entries of the damaged book up to {key.old}, where they are carried, are those signed by {key.words()}; {standing.value}"
+    elif key.good:
         number = f"{key.good} signature{'s' if key.good > 1 else ''}"
         text = f"entries 1 to {key.covers} of {total} are covered by {number} of {key.words()}; {standing.value}"
     else:

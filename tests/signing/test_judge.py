@@ -8,6 +8,7 @@ from typing import Any
 import pytest
 from list_book import ListBook, rehashed, signer
 
+from fieldbook.model.canonical import canonical_json
 from fieldbook.model.entry import Entry
 from fieldbook.signing import ed25519
 from fieldbook.signing.in_book import sign_head, signed_by
@@ -234,3 +235,75 @@ def test_hostile_bodies_are_lines_not_errors(body: dict[str, Any]) -> None:
     book.append("key", {**body, "name": 1, "algorithm": ["Ed25519"]}, "R. Kell")
     book.append("key", {**body, "name": None, "algorithm": "Ed25519", "public_key": 5}, "R. Kell")
     assert wrong(book.log)
+
+
+def rescued_from(damaged: list[Entry], lost: set[int]) -> list[Entry]:
+    """A rescued book made by hand in the form of its kind: old entries under their numbers, `withdrawn` for what is lost."""
+    made = [replace(damaged[0], body={"id": "another", "format": 1})]
+    runs: list[dict[str, Any]] = []
+    for entry in damaged:
+        if entry.seq in lost:
+            if entry.seq == 1:
+                continue
+            made.append(
+                replace(entry, kind="withdrawn", observer="fieldbook", body={"reason": "lost", "original": None})
+            )
+            continue
+        if runs and runs[-1]["last"] == entry.seq - 1:
+            runs[-1].update(last=entry.seq, hash=entry.hash)
+        else:
+            runs.append(
+                {"first": entry.seq, "last": entry.seq, "previous_hash": entry.previous_hash, "hash": entry.hash}
+            )
+        if entry.seq > 1:
+            made.append(entry)
+    first = damaged[0]
+    book = {"utc": first.utc, "kind": first.kind, "body": canonical_json(first.body), "observer": first.observer}
+    body = {"from": {"book": None if 1 in lost else book}, "carried": runs}
+    return rehashed([*made, replace(first, kind="rescued", observer="fieldbook", body=body)])
+
+
+@pytest.mark.parametrize(
+    ("lost", "said"),
+    [
+        (set(), "entries of the damaged book up to 6, where they are carried, are those signed by the key"),
+        ({1}, "entries of the damaged book up to 6, where they are carried"),
+        ({4}, "entries of the damaged book up to 6, where they are carried"),
+        ({6}, "what the signature of entry 7 was made over was lost with the damaged book"),
+        ({7}, "entries of the damaged book up to 3, where they are carried"),
+    ],
+)
+def test_a_rescued_book_keeps_what_its_signatures_showed(lost: set[int], said: str) -> None:
+    book = rescued_from(written().log, lost)
+    assert wrong(book) == []  # what is lost was not taken off
+    assert any(said in line.text for line in judge(book, NOBODY)), [line.text for line in judge(book, NOBODY)]
+
+
+def test_a_rescued_book_whose_key_entry_is_lost_judges_nothing() -> None:
+    lines = judge(rescued_from(written().log, {3}), NOBODY)
+    assert all(line.holds for line in lines)
+    assert "is of a key that no entry before it announces (carried from a damaged book)" in lines[0].text
+
+
+def test_a_rescued_book_with_another_remark_than_was_signed_is_found() -> None:
+    damaged = list(written().log)
+    damaged[5] = replace(damaged[5], body={"occupation": None, "text": "forged"})
+    found = wrong(rescued_from(rehashed(damaged), set()))
+    assert "signed another entry 6 of the damaged book than is carried" in found[0].text
+    for run in ({"first": "1"}, {}, 5):
+        book = ListBook()
+        book.append("rescued", {"from": {}, "carried": [run]}, "fieldbook")
+        sign_head(book, KELL)
+        assert wrong(book.log) == []
+
+
+def test_a_rescued_book_is_signed_anew() -> None:
+    book = ListBook()
+    book.log = rescued_from(written().log, {4})
+    last = book.log[-1].seq
+    with signed_by(book, KELL):
+        book.append("remark", {"occupation": None, "text": "after the rescue"}, "R. Kell")
+    assert [entry.kind for entry in book.log][last:] == ["remark", "signature"]  # the key is announced already
+    assert f"entries 1 to {last + 1} of {last + 2} are covered by 1 signature" in judge(book.log, NOBODY)[0].text
+    book.append("remark", {"occupation": None, "text": "without the key"}, "R. Kell")
+    assert [line.since_seq for line in wrong(book.log)] == [last + 3]
