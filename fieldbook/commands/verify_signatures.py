@@ -38,5 +38,6 @@ def verify_signatures(path: Path, trust: Trust) -> list[Verified]:
 
 def not_proven(lines: list[Verified]) -> list[str]:
     """What a verified book does not prove."""
-    signed = any(item.where == "signatures" and not item.text.startswith("unsigned") for item in lines)
+    said = [item.text for item in lines if item.where == "signatures"]
+    signed = bool(said) and not any(text.startswith("unsigned") for text in said)
     return [*_ALWAYS, *(_SIGNED if signed else _UNSIGNED)]

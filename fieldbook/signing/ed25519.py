@@ -33,14 +33,14 @@ def sign(secret: bytes, message: bytes) -> bytes:
 
 def fits(public: bytes, signature: bytes, message: bytes) -> bool:
     """Whether a signature was made over this message by the holder of the key; False for anything that is no signature."""
-    from cryptography.exceptions import InvalidSignature
+    from cryptography.exceptions import InternalError, InvalidSignature
     from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
 
     if len(public) != PUBLIC_BYTES or len(signature) != SIGNATURE_BYTES:
         return False
     try:
         Ed25519PublicKey.from_public_bytes(public).verify(signature, message)
-    except (InvalidSignature, ValueError):
+    except (InvalidSignature, ValueError, InternalError):
         return False
     return True
 

@@ -10,8 +10,8 @@ as the chain of hashes holds. Missed are
 Not to be seen: entries cut off at the end together with their signatures, a book cut off before its first `key` entry or
 made anew without one, and a signature at the end that covers only what the recorder wrote.
 
-A rescued book carries signatures made over the chain of the damaged one: they are judged against those hashes, as far as
-they can be computed again, and cover nothing of the new chain; what is missing there was lost, not taken off.
+A rescued book holds the signatures of the damaged one as `withdrawn`: they are judged against the old hashes, as far as
+those can be computed again, and cover nothing of the new chain; what is missing there was lost, not taken off.
 """
 
 from __future__ import annotations
@@ -25,7 +25,7 @@ from fieldbook.model.entry import Entry
 from . import ed25519
 from .keyring import Trust
 from .message import ALGORITHM, entry_message, fingerprint, spoken
-from .rescued import old_chain
+from .rescued import old_chain, old_entry
 
 # What a person states under a name. `draft`, `rendered` and `request` bear the observer's name too, whoever asked for them;
 # everything else is written by a recorder.
@@ -73,14 +73,23 @@ def judge(entries: Sequence[Entry], trust: Trust, total: int | None = None) -> l
     total = len(entries) if total is None else total
     rescued_at, old = old_chain(entries)
     keys: list[_Key] = []
+    old_keys: list[_Key] = []
     wrong: list[Line] = []
     for entry in entries:
-        if entry.kind == "key":
+        if entry.seq < rescued_at:
+            item = old_entry(entry)
+            if item.kind == "key":
+                wrong += _announce(item, old_keys)
+            elif item.kind == "signature":
+                wrong += _weigh_old(item, old, old_keys)
+        elif entry.kind == "key":
             wrong += _announce(entry, keys)
         elif entry.kind == "signature":
-            wrong += _weigh_old(entry, old, keys) if entry.seq < rescued_at else _weigh(entry, entries, keys)
-    if not any(entry.kind in ("key", "signature") for entry in entries):
-        return [Line(True, f"unsigned: no signature stands over any of {_counted(total)}"), *_broken(entries, total)]
+            wrong += _weigh(entry, entries, keys)
+    wrong += [_old_line(key, trust) for key in old_keys if key.old]
+    if not any(entry.kind in ("key", "signature") for entry in entries[rescued_at:]):
+        unsigned = Line(True, f"unsigned: no signature stands over any of {_counted(total)}")
+        return [*wrong, unsigned, *_broken(entries, total)]
     lines = [*wrong, *_missed(entries[rescued_at:], keys)]
     for key in keys:
         lines.append(_key_line(key, keys, trust, total))
@@ -203,11 +212,15 @@ def _missed(entries: Sequence[Entry], keys: list[_Key]) -> list[Line]:
     return lines
 
 
+def _old_line(key: _Key, trust: Trust) -> Line:
+    standing = trust.standing(key.name, key.public)
+    text = f"entries of the damaged book up to {key.old}, where they are carried, are those signed by {key.words()}"
+    return Line(not standing.suspicious, f"{text}; {standing.value}")
+
+
 def _key_line(key: _Key, keys: list[_Key], trust: Trust, total: int) -> Line:
     standing = trust.standing(key.name, key.public)
-    if key.old and not key.good:
-        text = f"entries of the damaged book up to {key.old}, where they are carried, are those signed by {key.words()}; {standing.value}"
-    elif key.good:
+    if key.good:
         number = f"{key.good} signature{'s' if key.good > 1 else ''}"
         text = f"entries 1 to {key.covers} of {total} are covered by {number} of {key.words()}; {standing.value}"
     else:

@@ -64,7 +64,7 @@ def read(block: str, passphrase: str | None, where: object) -> bytes:
         WrongPassphrase: it is encrypted, and the passphrase is missing or wrong.
         UsageError: another kind of key, damaged, or a cost no key of ours has.
     """
-    from cryptography.exceptions import UnsupportedAlgorithm
+    from cryptography.exceptions import InternalError, UnsupportedAlgorithm
     from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
     from cryptography.hazmat.primitives.serialization import load_pem_private_key
 
@@ -75,7 +75,7 @@ def read(block: str, passphrase: str | None, where: object) -> bytes:
         _check_rounds(block, where)
     try:
         key = load_pem_private_key(block.encode("ascii"), _bytes(passphrase) if encrypted and passphrase else None)
-    except (ValueError, TypeError, UnsupportedAlgorithm) as error:
+    except (ValueError, TypeError, UnsupportedAlgorithm, InternalError) as error:
         if encrypted:
             raise WrongPassphrase(
                 f"The passphrase does not open {where}, or the file is damaged.", "Try again."

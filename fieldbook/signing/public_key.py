@@ -150,13 +150,13 @@ def _pem(public: bytes) -> str:
 
 
 def _public_of_pem(text: str, where: object, remedy: str) -> bytes:
-    from cryptography.exceptions import UnsupportedAlgorithm
+    from cryptography.exceptions import InternalError, UnsupportedAlgorithm
     from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
     from cryptography.hazmat.primitives.serialization import load_pem_public_key
 
     try:
         key = load_pem_public_key(text.encode("utf-8"))
-    except (ValueError, TypeError, UnsupportedAlgorithm) as error:
+    except (ValueError, TypeError, UnsupportedAlgorithm, InternalError) as error:
         raise UsageError(f"{where} holds no readable public key.", remedy, code="key") from error
     if not isinstance(key, Ed25519PublicKey):
         raise UsageError(f"{where} holds another kind of key, not {ALGORITHM}.", remedy, code="key")

@@ -1,4 +1,4 @@
-"""A rescued book carries signatures of another chain: the hashes they were made over, computed again from what is carried.
+"""A rescued book holds signatures of another chain: the hashes they were made over, computed again from what is carried.
 
 `rescued` states the unbroken runs of the old chain; a carried entry has the old time, kind, text and observer, and
 `withdrawn` holds the old entry whose place it takes. What does not recompute is left out: `verify` says so elsewhere.
@@ -6,7 +6,9 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Sequence
+from dataclasses import replace
 
 from fieldbook.model.canonical import Tree, canonical_json
 from fieldbook.model.entry import Entry, entry_hash
@@ -48,3 +50,17 @@ def _run(texts: dict[int, Texts], first: int, last: int, previous: str, stated: 
         utc, kind, body, observer = texts[seq]
         previous = hashes[seq] = entry_hash(seq, utc, kind, body, observer, previous)
     return hashes if hashes.get(last) == stated else {}
+
+
+def old_entry(entry: Entry) -> Entry:
+    """The old entry whose place `withdrawn` takes, under the number it had; any other entry as it is."""
+    original = entry.body.get("original") if entry.kind == "withdrawn" else None
+    if not isinstance(original, dict):
+        return entry
+    try:
+        body = json.loads(original["body"])
+    except (KeyError, TypeError, ValueError, RecursionError):
+        return entry
+    if not isinstance(body, dict):
+        return entry
+    return replace(entry, kind=str(original.get("kind")), body=body, observer=str(original.get("observer")))

@@ -255,7 +255,16 @@ def rescued_from(damaged: list[Entry], lost: set[int]) -> list[Entry]:
             runs.append(
                 {"first": entry.seq, "last": entry.seq, "previous_hash": entry.previous_hash, "hash": entry.hash}
             )
-        if entry.seq > 1:
+        if entry.kind in ("key", "signature"):
+            original = {
+                "utc": entry.utc,
+                "kind": entry.kind,
+                "body": canonical_json(entry.body),
+                "observer": entry.observer,
+            }
+            body = {"reason": "signs the old chain", "original": original}
+            made.append(replace(entry, kind="withdrawn", observer="fieldbook", body=body))
+        elif entry.seq > 1:
             made.append(entry)
     first = damaged[0]
     book = {"utc": first.utc, "kind": first.kind, "body": canonical_json(first.body), "observer": first.observer}
@@ -303,7 +312,9 @@ def test_a_rescued_book_is_signed_anew() -> None:
     last = book.log[-1].seq
     with signed_by(book, KELL):
         book.append("remark", {"occupation": None, "text": "after the rescue"}, "R. Kell")
-    assert [entry.kind for entry in book.log][last:] == ["remark", "signature"]  # the key is announced already
-    assert f"entries 1 to {last + 1} of {last + 2} are covered by 1 signature" in judge(book.log, NOBODY)[0].text
+    assert [entry.kind for entry in book.log][last:] == ["remark", "key", "signature"]  # announced anew
+    assert any(
+        f"entries 1 to {last + 2} of {last + 3} are covered by 1 sig" in line.text for line in judge(book.log, NOBODY)
+    )
     book.append("remark", {"occupation": None, "text": "without the key"}, "R. Kell")
-    assert [line.since_seq for line in wrong(book.log)] == [last + 3]
+    assert [line.since_seq for line in wrong(book.log)] == [last + 4]
