@@ -92,6 +92,7 @@ DECISIONS = (
     "outside_area",
     "outside_hull",
     "height_difference",
+    "not_met",
 )
 
 # What an observer wrote and may take back. What a machine wrote (bytes, gaps, findings, ends) stands, and a

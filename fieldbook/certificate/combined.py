@@ -75,7 +75,7 @@ def _member(state: BookState, occupation: Occupation, reduction: Reduction) -> T
         "antenna": antenna,
         "receiver": receiver,
         "corrections": evidence.corrections_facts(occupation),
-        "requirement": requirement_facts(occupation.session, reduction),
+        "requirement": requirement_facts(occupation.session, reduction, occupation.decisions),
         "findings": evidence.findings_facts(occupation, reduction),
         "decisions": evidence.decisions_facts(occupation),
         "remarks": evidence.entries_facts(occupation.remarks),

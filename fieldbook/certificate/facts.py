@@ -21,6 +21,7 @@ and the identity and condition of the mark (ISO/IEC 17025:2017, 7.8.2.1) are the
 from __future__ import annotations
 
 import dataclasses
+from collections.abc import Sequence
 from typing import Any
 
 from fieldbook.certificate import evidence, position, words
@@ -28,6 +29,7 @@ from fieldbook.certificate.identity import SCHEMA
 from fieldbook.certificate.position_local import local_facts
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree, fixed, normalised
+from fieldbook.model.entry import Entry
 from fieldbook.model.reduction import LeaveLine, Reduction, Trace
 from fieldbook.model.rounding import decimals_for, rounded_up
 from fieldbook.model.session import Session
@@ -86,7 +88,7 @@ def build_facts(
         "antenna": antenna,
         "receiver": receiver,
         "corrections": evidence.corrections_facts(occupation),
-        "requirement": requirement_facts(session, reduction),
+        "requirement": requirement_facts(session, reduction, occupation.decisions),
         "findings": findings,
         "decisions": evidence.decisions_facts(occupation),
         "remarks": evidence.entries_facts(occupation.remarks),
@@ -175,10 +177,18 @@ def _uncertainty(reduction: Reduction) -> Tree:
     return facts
 
 
-def requirement_facts(session: Session, reduction: Reduction) -> Tree:
-    """The requirement with every line of the leave check, and the decision rule where a line says 'meets'."""
+def requirement_facts(session: Session, reduction: Reduction, decisions: Sequence[Entry]) -> Tree:
+    """The requirement with every line of the leave check, and the decision rule where a line says 'meets'.
+
+    A line that was not met has `reason` where the observer wrote one before leaving.
+    """
+    reasons = {
+        str(entry.body["not_met"]): f"{entry.body.get('reason')} ({entry.observer}, entry {entry.seq})"
+        for entry in decisions
+        if "not_met" in entry.body
+    }
     requirement = session.requirement
-    lines = [_requirement_line(line) for line in (reduction.leave.lines if reduction.leave else [])]
+    lines = [_requirement_line(line, reasons) for line in (reduction.leave.lines if reduction.leave else [])]
     meets = any(line["verdict"] == "meets" for line in lines)
     return {
         "source": requirement.source,
@@ -193,12 +203,15 @@ def requirement_facts(session: Session, reduction: Reduction) -> Tree:
     }
 
 
-def _requirement_line(line: LeaveLine) -> Tree:
+def _requirement_line(line: LeaveLine, reasons: dict[str, str]) -> Tree:
     if line.line in words.ACCURACY_LINES:
         verdict = "meets" if line.met else "does not meet"
+    elif line.line in words.GATE_LINES:
+        verdict = "kept" if line.met else "not shown"
     else:
         verdict = "done" if line.met else "not done"
-    return {
+    why = {} if line.met or line.line not in reasons else {"reason": reasons[line.line]}
+    return why | {
         "line": line.line,
         "words": words.REQUIREMENT_WORDS.get(line.line, line.line),
         "scope": line.scope,

@@ -15,6 +15,7 @@ from fieldbook.certificate.blocks import (
     trimmed,
     utc,
 )
+from fieldbook.certificate.words import NOT_MET
 from fieldbook.model.canonical import Tree
 
 
@@ -288,6 +289,10 @@ def requirement(facts: Tree) -> Section:
             for one in item["lines"]
         ]
         blocks.append(Table(["Requirement", "Scope", "Wanted", "Reached", "Verdict"], "llrrl", lines))
+    owed = [one for one in item["lines"] if one["scope"] == "set-up" and one["verdict"] in NOT_MET]
+    if owed:
+        why = [[one["words"], one.get("reason") or "no reason was written"] for one in owed]
+        blocks.append(Table(["Left although not met", "Reason"], "ll", why))
     if item["decision_rule"]:
         blocks.append(Sentences([item["decision_rule"]]))
     return Section("Requirement", blocks)

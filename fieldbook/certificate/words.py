@@ -33,6 +33,8 @@ NOT_USED_WORDS: dict[str, str] = {
 }
 
 # Requirement keys of the session file -> the line's name on paper, in the order of the session file.
+GATE_LINES = ("accept_quality", "max_hdop", "max_pdop", "max_correction_age_s", "min_satellites")
+NOT_MET = ("does not meet", "not shown", "not done")
 REQUIREMENT_WORDS = {
     "horizontal_95_m": "95 % horizontal, radius of the circle",
     "vertical_95_m": "95 % vertical, half-width",
@@ -116,6 +118,8 @@ DECISION_WORDS = {
     "accuracy_over_limit": "frame operation over the accuracy limit accepted",
     "outside_area": "use outside the stated area accepted",
     "outside_hull": "local coordinates outside the marks of the local grid accepted",
+    "height_difference": "height readings that differ stand: {}",
+    "not_met": "left with the requirement {} not met",
 }
 
 COVERS = (

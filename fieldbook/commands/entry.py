@@ -33,6 +33,8 @@ DECISIONS: dict[str, str] = {
     "accuracy_over_limit": "flag",
     "outside_area": "flag",
     "outside_hull": "flag",
+    "height_difference": "text",
+    "not_met": "line",
 }
 # keys of a set-up that change what the decoder makes of the bytes
 DECODER_KEYS = frozenset({"receiver.accept_without_checksum", "receiver.talker"})
@@ -198,6 +200,15 @@ def _decided(key: str, text: str) -> Any:
         if not steps:
             raise UsageError("operation needs at least one step.", "Write for example EPSG:9991 inverse,EPSG:8049.")
         return steps
+    if kind == "line":
+        from fieldbook.settings.schema import LEAVE_KEYS
+
+        if text not in LEAVE_KEYS:
+            raise UsageError(
+                f'not_met names a line of the leave check, and "{text}" is none.{nearest(text, LEAVE_KEYS)}',
+                f"It is one of {', '.join(LEAVE_KEYS)}.",
+            )
+        return text
     if key == "rollover_weeks":
         digits = text.removeprefix("-")
         if not (digits.isascii() and digits.isdigit()) or int(digits) == 0:

@@ -11,8 +11,8 @@ from textual.app import ComposeResult
 from textual.binding import Binding, BindingType
 from textual.containers import Vertical
 from textual.events import Key
-from textual.screen import ModalScreen
 
+from fieldbook.screens.once import Once
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.plain import width_of
 from fieldbook.screens.rows import BLANK, Row, paragraph, row
@@ -20,7 +20,7 @@ from fieldbook.screens.rows import BLANK, Row, paragraph, row
 Answer = tuple[str, str, str]  # key, word returned, what it does
 
 
-class Question(ModalScreen[str]):
+class Question(Once[str]):
     """A question with a few one-letter answers; dismissed with the word of the answer, "" for the safe one."""
 
     BINDINGS: ClassVar[list[BindingType]] = [Binding("enter,escape", "safe", "stay")]

@@ -7,13 +7,13 @@ from typing import ClassVar, cast
 
 from textual.app import ComposeResult
 from textual.binding import Binding, BindingType
-from textual.screen import ModalScreen
 
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import Reduction
 from fieldbook.screens.alarm_log import Alarm
 from fieldbook.screens.digits import big
 from fieldbook.screens.head import alarms
+from fieldbook.screens.once import Once
 from fieldbook.screens.page import Desk
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.rows import BLANK, Row, row
@@ -65,7 +65,7 @@ def big_rows(view: LiveView | None, width: int, height: int, unseen: Sequence[Al
     return [*rows, row((f"  {mark}" if mark else "", "text"), (note, "soft"))]
 
 
-class BigView(ModalScreen[None]):
+class BigView(Once[None]):
     """Fills the terminal."""
 
     BINDINGS: ClassVar[list[BindingType]] = [

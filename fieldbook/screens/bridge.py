@@ -369,13 +369,19 @@ class Bridge:
 
         start_recorder(self.path, occupation)
 
-    def end(self, occupation: int) -> None:
-        """End the open occupation: by request where a recorder runs, else directly."""
+    def end(self, occupation: int, left_open: Sequence[tuple[str, str]] = ()) -> None:
+        """End the open occupation: by request where a recorder runs, else directly.
+
+        Args:
+            left_open: lines of the leave check that are not met, and why it is left all the same: decisions.
+        """
         from fieldbook.book.store import Book
         from fieldbook.occupy.ending import request_end
         from fieldbook.signing.in_book import sign_head
 
         observer = self._signed()
+        for line, reason in left_open:
+            self.write("decision", {"occupation": occupation, "not_met": line, "reason": reason})
         request_end(self.path, occupation, observer)
         signer = self._signer(observer)
         if signer is not None:

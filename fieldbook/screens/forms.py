@@ -18,9 +18,9 @@ from textual.app import ComposeResult
 from textual.binding import Binding, BindingType
 from textual.containers import Horizontal, Vertical
 from textual.events import Key, Paste
-from textual.screen import ModalScreen
 
 from fieldbook.screens.fields import Field, FieldLine
+from fieldbook.screens.once import Once
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.plain import clean
 from fieldbook.screens.rows import BLANK, Row, paragraph, row
@@ -31,7 +31,7 @@ Sketch = Callable[[Values], Sequence[Row]]
 Said = Callable[[Values, int], Sequence[Row]]
 
 
-class Form(ModalScreen[Values | None]):
+class Form(Once[Values | None]):
     """Asks for some fields; dismissed with their texts, or None after Esc."""
 
     HORIZONTAL_BREAKPOINTS = [(0, "-tight"), (76, "-roomy")]  # noqa: RUF012 - Textual declares it without ClassVar

@@ -8,9 +8,9 @@ from typing import ClassVar
 
 from textual.app import ComposeResult
 from textual.binding import Binding, BindingType
-from textual.screen import ModalScreen
 
 from fieldbook.screens.bridge import FramesTold
+from fieldbook.screens.once import Once
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.rows import BLANK, Row, heading, labelled_lines, paragraph, row
 
@@ -31,7 +31,7 @@ def frames_rows(told: FramesTold, width: int) -> list[Row]:
     return rows
 
 
-class FramesView(ModalScreen[None]):
+class FramesView(Once[None]):
     """Scrolled with the arrows."""
 
     BINDINGS: ClassVar[list[BindingType]] = [

@@ -8,9 +8,9 @@ from typing import ClassVar
 
 from textual.app import ComposeResult
 from textual.binding import Binding, BindingType
-from textual.screen import ModalScreen
 
 from fieldbook.screens.actions import ACTIONS, PAGE_TITLES, PAGES
+from fieldbook.screens.once import Once
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.plain import pad
 from fieldbook.screens.rows import BLANK, Row, heading, row
@@ -43,7 +43,7 @@ def keys_rows(page: str, width: int) -> list[Row]:
     return rows
 
 
-class KeysView(ModalScreen[None]):
+class KeysView(Once[None]):
     """The list of keys, scrolled with the arrows."""
 
     BINDINGS: ClassVar[list[BindingType]] = [

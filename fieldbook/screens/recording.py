@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Any
 
+from fieldbook.model.reduction import LeaveLine
 from fieldbook.screens.ask import Question
+from fieldbook.screens.fields import Field
+from fieldbook.screens.forms import Form, Values
 from fieldbook.screens.heights import disagree
 from fieldbook.screens.page import Desk, next_tree, open_occupation
 from fieldbook.screens.setup import current_readings, current_session
@@ -84,17 +87,39 @@ def end(desk: Desk, then: Callable[[], None] | None = None) -> None:
         text += [f"○ {leave_word(item.line)}: {item.text}" for item in missing if item.text][:4]
     bridge, number = desk.bridge, opened.number
 
+    def go(reasons: Sequence[tuple[str, str]] = ()) -> None:
+        desk.tell("ending the occupation …", "soft")
+        desk.write(lambda: bridge.end(number, reasons), ended)
+
     def ended(_: Any) -> None:
         desk.tell(f"occupation {number} is ended")
         if then:
             then()
 
     def answered(word: str) -> None:
-        if word == "end":
-            desk.tell("ending the occupation …", "soft")
-            desk.write(lambda: bridge.end(number), ended)
+        if word == "end" and missing:
+            _reasons(desk, missing, go)
+        elif word == "end":
+            go()
 
     desk.ask(Question("END THE OCCUPATION?", text, "keep recording", [("y", "end", "yes, end it")]), answered)
+
+
+def _reasons(desk: Desk, missing: Sequence[LeaveLine], then: Callable[[Sequence[tuple[str, str]]], None]) -> None:
+    """Ask why each open line is left open; Esc keeps recording."""
+    fields = [Field(item.line, leave_word(item.line), required=number == 0) for number, item in enumerate(missing)]
+
+    def written(values: Values | None) -> None:
+        if values is None:
+            return
+        reasons: list[tuple[str, str]] = []
+        for item in missing:
+            above = reasons[-1][1] if reasons else ""
+            reasons.append((item.line, values[item.line] or above))
+        then(reasons)
+
+    note = "What is left open prints on the certificate with its reason. An empty line takes the reason above it."
+    desk.ask(Form("WHY IS IT LEFT OPEN?", fields, note=f"{note} Esc: the recording goes on."), written)
 
 
 def leave_screen(desk: Desk, exit_now: Callable[[], None]) -> None:

@@ -154,6 +154,9 @@ TABLES: dict[str, dict[str, str]] = {
     },
 }
 
+# lines of the leave check: requirement keys, and the findings that stop
+LEAVE_KEYS = (*(key for key in TABLES["requirement"] if key not in ("in", "source")), "findings")
+
 TOP_LEVEL = ("job", "requirement", "frame", "corrections", "mark", "antenna", "setup", "receiver")
 
 REQUIRED: dict[str, tuple[str, ...]] = {

@@ -17,8 +17,9 @@ from fieldbook.certificate.identity import changed_parts, facts_digest, facts_eq
 from fieldbook.certificate.repeats import repeats_of
 from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree, canonical_json
+from fieldbook.model.entry import Entry
 from fieldbook.model.epoch import SetAside
-from fieldbook.model.reduction import Finding, Reduction
+from fieldbook.model.reduction import Finding, LeaveLine, Reduction
 from fieldbook.model.state import Occupation
 
 GOLDEN = Path(__file__).parent.parent / "golden"
@@ -280,3 +281,25 @@ def test_cautions_follow_the_corrections() -> None:
     cautions = " ".join(facts_of(occupation)["cautions"])
     assert "autonomous" in cautions
     assert "moves every mark" not in cautions
+
+
+def test_what_was_left_open_prints_with_its_reason() -> None:
+    line = LeaveLine("minimum_time_s", "set-up", 900.0, 610.0, "s", False, 290.0, "290 s more")
+    gate = LeaveLine("max_pdop", "set-up", 4.0, None, "", False, None, "not reported")
+    made = job.reduction()
+    assert made.leave is not None
+    made = dataclasses.replace(made, leave=dataclasses.replace(made.leave, lines=[*made.leave.lines, line, gate]))
+    occ = job.occupation()
+    body = {"occupation": occ.number, "not_met": "minimum_time_s", "reason": "thunderstorm"}
+    entry = Entry(77, "2027-03-04T01:30:00.000Z", "decision", body, "R. Kell", "0" * 64, "7" * 64)
+    occ = dataclasses.replace(occ, decisions=[*occ.decisions, entry])
+    facts = facts_of(occ, made)
+    document = {"kind": "draft", "number": None, "issued_utc": "2027-03-09T14:12:05.000Z"}
+    by_line = {one["line"]: one for one in facts["requirement"]["lines"]}
+    assert by_line["minimum_time_s"]["reason"] == "thunderstorm (R. Kell, entry 77)"
+    assert by_line["max_pdop"]["verdict"] == "not shown"
+    assert not any("reason" in one for one in facts_of()["requirement"]["lines"]), "facts of old certificates stay"
+    text = as_text.render(sealed({**facts, "document": document})).decode("utf-8")
+    assert "Left although not met" in text
+    assert "thunderstorm (R. Kell, entry 77)" in text
+    assert "no reason was written" in text

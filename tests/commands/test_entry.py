@@ -91,6 +91,7 @@ def test_text_output_is_seq_and_hash(occupied, fieldbook) -> None:
         ("decision", ["reason=x", "initialistion=2", "used=false"], ['"initialisation"']),
         ("decision", ["reason=x", "rollover_weeks=0"], ["other than 0"]),
         ("decision", ["reason=x", "accuracy_over_limit=perhaps"], ["true or false"]),
+        ("decision", ["reason=x", "not_met=minimum_time"], ['"minimum_time" is none', '"minimum_time_s"']),
         ("remark", ["txt=a"], ['"text"']),
         ("remark", [], ["needs a text"]),
         ("end", ["by=me"], ["takes no keys"]),

@@ -8,6 +8,7 @@ from __future__ import annotations
 import dataclasses
 import math
 import random
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -445,7 +446,8 @@ class FakeBridge(Bridge):
         self.calls.append(("start_recorder", occupation))
         self.alive = True
 
-    def end(self, occupation: int) -> None:
+    def end(self, occupation: int, left_open: Sequence[tuple[str, str]] = ()) -> None:
+        self.left_open = list(left_open)
         self.calls.append(("end", occupation))
         self.state.occupations[occupation].ended_by = "operator"
         self._entry("end", {"occupation": occupation, "by": "operator", "epochs": 861}, self._signed())

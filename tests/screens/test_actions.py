@@ -5,6 +5,7 @@ from __future__ import annotations
 import asyncio
 
 import pytest
+from textual.events import Key
 
 from fieldbook.screens.actions import ACTIONS, BY_NAME, PAGES, foot_text, for_page
 from fieldbook.screens.ask import Question
@@ -401,8 +402,29 @@ def test_two_slips_never_end_an_occupation() -> None:
             await question(pilot)
             await see(pilot, "END THE OCCUPATION?", "NOT YET", "Read the height of the antenna again")
             await pilot.press("y")
+            await see(pilot, "WHY IS IT LEFT OPEN?", "time on mark", "height readings", "prints on the certificate")
+            await pilot.press("escape")
+            await on_desk(pilot)
+            assert ("end", 1) not in bridge.calls, "without reasons it goes on"
+
+    asyncio.run(go())
+
+
+def test_what_is_left_open_gets_its_reason_before_the_end() -> None:
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge) as pilot:
+            await pilot.press("4", "e")
+            await question(pilot)
+            await pilot.press("y")
+            await form(pilot)
+            await pilot.press("down", "enter")
+            await see(pilot, "WHY IS IT LEFT OPEN?", "is needed")
+            await typed(pilot, "thunderstorm")
+            await pilot.press("enter", "enter")  # the second line takes the reason above it
             await wait_until(pilot, lambda: ("end", 1) in bridge.calls, "the end")
             await see(pilot, "occupation 1 is ended")
+            assert bridge.left_open == [("minimum_time_s", "thunderstorm"), ("height_readings", "thunderstorm")]
 
     asyncio.run(go())
 
@@ -641,5 +663,41 @@ def test_errors_of_writing_are_said_with_their_remedy() -> None:
             await on_desk(pilot)
             await see(pilot, "M Rook")
             assert "RECORDER GONE" not in screen_text(pilot)
+
+    asyncio.run(go())
+
+
+@pytest.mark.parametrize(("key", "answer"), [("q", ""), ("b", None), ("r", None), ("question_mark", None)])
+def test_a_key_that_bounces_takes_nothing_but_the_top_away(key: str, answer: str | None) -> None:
+    """Two answers in one turn of the loop: the second comes from a screen that is going already."""
+
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge) as pilot:
+            await pilot.press(key)
+            await wait_until(pilot, lambda: pilot.app.screen is not desk(pilot), "something on top")
+            top = pilot.app.screen
+            for _ in range(3):
+                top.dismiss(answer)
+            await on_desk(pilot)
+            await pilot.pause()
+            assert pilot.app.is_running
+
+    asyncio.run(go())
+
+
+def test_enter_pressed_too_often_in_a_form_writes_once() -> None:
+    async def go() -> None:
+        bridge = FakeBridge(recording=True)
+        async with opened(bridge) as pilot:
+            await pilot.press("r")
+            top = await form(pilot)
+            await typed(pilot, "lorry")
+            for _ in range(4):
+                top.post_message(Key("enter", None))
+            await on_desk(pilot)
+            await wait_until(pilot, lambda: "remark" in kinds(bridge), "the remark")
+            assert kinds(bridge).count("remark") == 1
+            assert pilot.app.is_running
 
     asyncio.run(go())

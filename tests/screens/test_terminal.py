@@ -79,6 +79,8 @@ def test_whole_job_by_keys_on_an_invented_book(terminal: Terminal) -> None:
     terminal.press("e")
     terminal.see("END THE OCCUPATION?", "keep recording")
     terminal.press("y")
+    terminal.see("WHY IS IT LEFT OPEN?")
+    terminal.press(*"dark", "enter", "enter")
     terminal.see("occupation 1 is ended")
     terminal.press("6")
     terminal.see("REDUCTION", "as observed", "E 692244.123")
@@ -167,6 +169,8 @@ def test_whole_job_on_a_real_book_and_a_simulated_receiver(book: Path) -> None:
         terminal.press("e")
         terminal.see("END THE OCCUPATION?")
         terminal.press("y")
+        terminal.see("WHY IS IT LEFT OPEN?")
+        terminal.press(*"practice", *["enter"] * 6)  # each open line takes the reason above it
         terminal.see("occupation 1 is ended")
         terminal.press("6")
         terminal.see("REDUCTION", "GDA2020", "as observed")
