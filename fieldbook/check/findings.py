@@ -127,11 +127,15 @@ def _resolution(reduced: Reduced, occupation: Occupation) -> Iterator[Finding]:
     u_m = resolution.separation_u_m
     wanted_m = occupation.session.requirement.vertical_95_m
     if u_m is not None and 1.96 * u_m > SEPARATION_SHARE * wanted_m:
+        decimals, printed = resolution.separation_decimals, resolution.digits["separation"].fewest_decimals
+        padded = printed is not None and decimals is not None and printed > decimals
+        # one value ends in zeros by chance at one place of a hundred: then nothing can be set in the receiver
+        severity, zeros = ("caution", ", the rest zeros,") if padded else ("stop", "")
         text = (
-            f"The geoid separation comes with {resolution.separation_decimals} decimals: every height can be wrong by "
+            f"The geoid separation comes with {decimals} decimals{zeros}: every height can be wrong by "
             f"{1000 * u_m * 3**0.5:.0f} mm alike, more than a third of the requirement. Set the receiver to more decimals."
         )
-        yield Finding("separation_coarse", "stop", text, {"u_m": u_m, "decimals": resolution.separation_decimals})
+        yield Finding("separation_coarse", severity, text, {"u_m": u_m, "decimals": decimals})
 
 
 def _altitude_resolution(reduced: Reduced) -> Iterator[Finding]:

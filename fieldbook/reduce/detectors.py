@@ -32,7 +32,8 @@ class Detected:
 def detect(found: Estimate) -> Detected:
     """Look for all of them."""
     series = Series.of(found.all_blocks)
-    jumped = without_bursts(steps(series, found.fix_class), series, Series.of(found.blocks))
+    jumps = steps(series, found.fix_class, found.resolution.step_enu_m)
+    jumped = without_bursts(jumps, series, Series.of(found.blocks))
     return Detected(
         steps=jumped,
         drift=None if jumped else drift(found),

@@ -12,7 +12,9 @@ it holds 60 % of the epochs and two independent initialisations agree in it. If 
 right ones a little too far apart in a noisy session must not let a wrong one take the lead. It counts only if another
 cluster stays apart and the question is then decided, so it never hides a disagreement. Otherwise the longest is reduced,
 the distance to the others is a rectangular half-width of the budget, and the finding `initialisations_disagree` stops the
-certificate. Under 5 kept epochs an initialisation is not used. The operator's decisions come first.
+certificate. The members of the leading cluster are looked at once more, each against what the others say of its own time
+(`second_look`): those they speak against become clusters of their own before anything is decided. Under 5 kept epochs an
+initialisation is not used. The operator's decisions come first.
 """
 
 from __future__ import annotations
@@ -33,6 +35,7 @@ from fieldbook.reduce.fix_classes import ClassOfFix, governing_class, with_recei
 from fieldbook.reduce.kept_sums import InitialisationSums, median_gst_m
 from fieldbook.reduce.resolution import steps_m
 from fieldbook.reduce.screening import OUTLIER, Screened, counts_of
+from fieldbook.reduce.second_look import LEAST_TO_LOOK_AGAIN, wrong_ones
 
 Floats = NDArray[np.float64]
 
@@ -140,6 +143,8 @@ class InitialisationJudge:
             item.cluster = label
         leading = _leading(compared, decided)
         _rank(compared, leading)
+        looked_at = self._look_again(screened, [item for item in compared if item.cluster == 1], decided, fix_class)
+        _rank(compared, 1)
         for item in compared:
             _decide(item, decided)
         used = [item for item in items if item.used]
@@ -151,15 +156,37 @@ class InitialisationJudge:
         if any(decided.get(item.number, (False, ""))[0] for item in used):
             open_question = False  # the operator has named the right one, with a reason
         half_width = _half_width(compared) if open_question else None
-        every, far = self._apart(screened, [item.number for item in used], fix_class)
+        numbers = [item.number for item in used]
+        every, far = looked_at.get(tuple(numbers)) or self._apart(screened, numbers, fix_class)
         codes = _final_codes(screened, items)
         rows = rows_of(every.where(far))
         codes[rows[codes[rows] == 0]] = OUTLIER
         blocks = every.where(~far)
+        kept = np.bincount(
+            blocks.column("initialisation"), weights=blocks.column("count"), minlength=1 + max(numbers, default=0)
+        )
         for item in used:
-            item.kept = int(blocks.of_initialisations([item.number]).column("count").sum())
+            item.kept = int(kept[item.number])
         _offsets(items, blocks)
         return Judgement(items, codes, fix_class, clusters, share, agreeing, half_width, blocks, every)
+
+    def _look_again(
+        self, screened: Screened, leading: list[Judged], decided: Decisions, fix_class: ClassOfFix
+    ) -> dict[tuple[int, ...], tuple[Blocks, NDArray[np.bool_]]]:
+        """Give those of the leading cluster that the others of it speak against clusters of their own.
+
+        Returns what was asked of `apart` for it, by numbers: as a rule nothing is found and it serves again.
+        """
+        if len(leading) < LEAST_TO_LOOK_AGAIN:
+            return {}
+        numbers = [item.number for item in leading]
+        every, far = self._apart(screened, numbers, fix_class)
+        for cluster, number in enumerate(
+            wrong_ones(every.where(~far), fix_class), start=len(screened.initialisations) + 1
+        ):
+            if not decided.get(number, (False, ""))[0]:
+                next(item for item in leading if item.number == number).cluster = cluster
+        return {tuple(numbers): (every, far)}
 
     def _apart(self, screened: Screened, numbers: list[int], fix_class: ClassOfFix) -> tuple[Blocks, NDArray[np.bool_]]:
         """Blocks of the used initialisations, and which of them lie apart."""

@@ -10,14 +10,17 @@ alone covers 10 %, with u_q 97 %. The scatter of few values is not noise: a mark
 toggle with an sd of up to q/2 however still the receiver is. D distinct values span at least D - 2 steps, and a sample
 spans hardly less than six of its own standard deviations, so s is never taken larger than (D - 2) q/6: at most two
 values average nothing away, six and more leave the formula as it is. The separation is a constant of the place: its rounding is never averaged.
-Digits can also lie (a receiver that pads zeros), so the greatest common divisor of the received values is kept as a
-cross-check, and the larger of the two steps counts.
+Digits can also lie (a receiver that pads zeros), so the step is the largest of: the printed one; the power of ten that
+divides every value, where fewer than six occur and chance would do that in no more than one case of a hundred; the
+smallest gap between three to five values; the greatest common divisor of the gaps from six values on. Too coarse a step
+found by chance makes a figure wider, never smaller.
 """
 
 from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,6 +28,8 @@ from numpy.typing import NDArray
 METRES_PER_MINUTE = 1852.2
 FEW_DISTINCT = 6  # fewer distinct values than this: the resolution governs (finding)
 SPAN_SIGMAS = 6.0  # own choice: range of a sample in its standard deviations, for the noise that few values allow
+LEAST_FOR_GAP = 3  # of two values nothing says that they are neighbours
+LEAST_EVIDENCE = 2  # zeros x values: 1 in 100 by chance
 _MOST_DISTINCT = 64
 
 
@@ -55,13 +60,15 @@ def constant_resolution_u_m(decimals: int) -> float:
 class Digits:
     """What has been seen of one received field; exact and independent of how the epochs were split.
 
-    `divisor`: greatest common divisor of all differences, in the field's integer unit (0 = one value so far).
+    `divisor`: greatest common divisor of all differences, `common`: of the values themselves, in the field's integer unit
+    (0 = one value so far; nothing but zeros so far).
     """
 
     fewest_decimals: int | None = None
     divisor: int = 0
     first: int | None = None
     distinct: set[int] = field(default_factory=set)  # the first 64 distinct values
+    common: int = 0
 
     def add(self, values: NDArray[np.int64], decimals: NDArray[np.int64]) -> None:
         """Take in received integers and their decimals, shape (n,) each, none missing."""
@@ -72,6 +79,7 @@ class Digits:
         if self.first is None:
             self.first = int(values[0])
         self.divisor = math.gcd(self.divisor, int(np.gcd.reduce(np.abs(values - self.first))))
+        self.common = math.gcd(self.common, int(np.gcd.reduce(np.abs(values))))
         if len(self.distinct) < _MOST_DISTINCT:
             found, position = np.unique(values, return_index=True)
             for value in found[np.argsort(position)]:
@@ -81,7 +89,7 @@ class Digits:
 
     def copy(self) -> Digits:
         """An independent copy, for a look ahead."""
-        return Digits(self.fewest_decimals, self.divisor, self.first, set(self.distinct))
+        return Digits(self.fewest_decimals, self.divisor, self.first, set(self.distinct), self.common)
 
     def merged(self, other: Digits) -> Digits:
         """Both together (distinct values: up to the bound)."""
@@ -89,20 +97,43 @@ class Digits:
             return (self if other.first is None else other).copy()
         known = [item for item in (self.fewest_decimals, other.fewest_decimals) if item is not None]
         divisor = math.gcd(self.divisor, other.divisor, abs(self.first - other.first))
-        return Digits(min(known), divisor, self.first, set(sorted(self.distinct | other.distinct)[:_MOST_DISTINCT]))
+        distinct = set(sorted(self.distinct | other.distinct)[:_MOST_DISTINCT])
+        return Digits(min(known), divisor, self.first, distinct, math.gcd(self.common, other.common))
 
     @property
     def count_distinct(self) -> int:
         """Number of distinct values, counted up to 64."""
         return len(self.distinct)
 
-    def step_units(self, unit_decimals: int) -> float | None:
-        """Step in the field's integer unit: from the digits, or the divisor if the receiver pads zeros.
+    def step_units(self, unit_decimals: int, beside: Digits | None = None) -> float | None:
+        """Step in the field's integer unit: from the digits, or coarser if the values say that zeros are padded.
 
-        The divisor counts from six distinct values on: fewer can all lie an even number of steps apart by chance.
-        `unit_decimals` is the number of decimals of the integer unit (8 for coordinates, 5 for heights).
+        Args:
+            unit_decimals: number of decimals of the integer unit (8 for coordinates, 5 for heights).
+            beside: a field of the same format (latitude and longitude), whose values count as evidence, too.
         """
         if self.fewest_decimals is None:
             return None
-        from_digits = 10.0 ** max(unit_decimals - self.fewest_decimals, 0)
-        return max(from_digits, float(self.divisor)) if self.count_distinct >= FEW_DISTINCT else from_digits
+        printed = 10.0 ** max(unit_decimals - self.fewest_decimals, 0)
+        if self.count_distinct >= FEW_DISTINCT:
+            return max(printed, float(self.divisor))
+        values = sorted(self.distinct)
+        gap = min((b - a for a, b in pairwise(values)), default=0) if len(values) >= LEAST_FOR_GAP else 0
+        return max(printed, self.padded_units(unit_decimals, beside), float(gap))
+
+    def padded_units(self, unit_decimals: int, beside: Digits | None = None) -> float:
+        """Largest power of ten that divides every value; the printed step where chance might do that.
+
+        One value ends in k zeros by chance once in 10^k; all D values once in 10^(k D): believed from k D = 2 on.
+        """
+        if self.fewest_decimals is None:
+            return 0.0
+        printed = 10 ** max(unit_decimals - self.fewest_decimals, 0)
+        common, count = self.common, self.count_distinct
+        if beside is not None and beside.first is not None:
+            common, count = math.gcd(common, beside.common), count + beside.count_distinct
+        step = printed
+        while common and common % (10 * step) == 0:
+            step *= 10
+        zeros = round(math.log10(step / printed))
+        return float(step if zeros * count >= LEAST_EVIDENCE else printed)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import reduce as fold
@@ -12,6 +13,7 @@ from fieldbook.reduce.quantisation import METRES_PER_MINUTE, Digits, constant_re
 
 Pair = tuple[float | None, float | None, float | None]
 
+LEAST_SEPARATION_DECIMALS = 1  # common practice of geoid tables in receivers, no source
 _FIELDS = ("longitude", "latitude", "altitude", "separation")
 
 
@@ -39,21 +41,22 @@ def steps_m(used: Sequence[InitialisationSums], frame: LocalFrame) -> Pair:
 def resolution_of(
     heard: list[InitialisationSums], used: list[InitialisationSums], frame: LocalFrame, sd_enu_m: Pair
 ) -> Resolution:
-    """Steps and u_q from the digits; the separation's decimals are the fewest of the whole occupation."""
+    """Steps and u_q from the digits; the separation's decimals are the fewest of the whole occupation, padded zeros off."""
     digits = _digits(used)
-    whole = fold(Digits.merged, (item.digits["separation"] for item in heard))
     steps = _steps(digits, frame)
     distinct = {name: item.count_distinct for name, item in digits.items()}
     u = u_of_steps(steps, sd_enu_m, distinct)
-    decimals = whole.fewest_decimals
-    return Resolution(
-        steps,
-        u,
-        decimals,
-        None if decimals is None else constant_resolution_u_m(decimals),
-        distinct,
-        digits,
-    )
+    decimals = _separation_decimals(fold(Digits.merged, (item.digits["separation"] for item in heard), Digits()))
+    separation_u_m = None if decimals is None else constant_resolution_u_m(decimals)
+    return Resolution(steps, u, decimals, separation_u_m, distinct, digits)
+
+
+def _separation_decimals(whole: Digits) -> int | None:
+    """The fewest printed, padded zeros off; a constant ends in zeros by chance, so not beyond one decimal."""
+    if whole.fewest_decimals is None:
+        return None
+    meant = 5 - round(math.log10(whole.padded_units(5)))
+    return min(whole.fewest_decimals, max(meant, LEAST_SEPARATION_DECIMALS))
 
 
 def u_of_steps(steps_enu_m: Pair, sd_enu_m: Pair, distinct: dict[str, int]) -> Pair:
@@ -76,7 +79,7 @@ def _digits(used: Sequence[InitialisationSums]) -> dict[str, Digits]:
 def _steps(digits: dict[str, Digits], frame: LocalFrame) -> Pair:
     per_unit = METRES_PER_MINUTE * 1e-8
     return (
-        _times(digits["longitude"].step_units(8), per_unit * frame.cos_latitude),
-        _times(digits["latitude"].step_units(8), per_unit),
+        _times(digits["longitude"].step_units(8, digits["latitude"]), per_unit * frame.cos_latitude),
+        _times(digits["latitude"].step_units(8, digits["longitude"]), per_unit),
         _times(digits["altitude"].step_units(5), 1e-5),
     )

@@ -1,7 +1,8 @@
 """Steps without loss of fix, and bursts: what the 60 s windows of screening let through.
 
 Step: with m(k) the 10 s means, a place where m(k+1) - m(k-1) exceeds max(6 MAD of all such differences, the tolerance
-of two initialisations of this kind of fix: 30 mm in plan and 60 mm in height for RTK), and where the medians of the
+of two initialisations of this kind of fix: 30 mm in plan and 60 mm in height for RTK; 1.5 received steps, since
+coarse output moves by one when the position crosses an edge), and where the medians of the
 minutes before and after differ by as much, without a block of one minute reaching into the other's half: a burst of
 less than a minute has its edges, but does not last. Looked for within one initialisation only:
 between initialisations the comparison of their places speaks. It runs on cleaned blocks: on raw ones it fires at the
@@ -24,7 +25,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from fieldbook.reduce.apart import LEAST_BLOCKS, medians, runs_of, scale_of
+from fieldbook.reduce.apart import LEAST_BLOCKS, Triple, medians, runs_of, scale_of
 from fieldbook.reduce.estimate import Estimate
 from fieldbook.reduce.fix_classes import ClassOfFix
 from fieldbook.reduce.initialisations import tolerances_m
@@ -34,6 +35,7 @@ from fieldbook.reduce.windows import MAD_TO_SIGMA
 Floats = NDArray[np.float64]
 
 LIMIT_MADS = 6.0
+RECEIVED_STEPS = 1.5
 LONGEST_BURST_BLOCKS = 12
 MINUTE_BLOCKS = 6
 _LONGEST_REACH = 9  # places of 10 s that six blocks may cover when some are missing
@@ -58,12 +60,13 @@ class Bursts:
     largest_m: float
 
 
-def steps(series: Series, fix_class: ClassOfFix) -> list[Step]:
+def steps(series: Series, fix_class: ClassOfFix, received_m: Triple = (None, None, None)) -> list[Step]:
     """Steps in order of time, one per place (the axis that exceeds its limit most)."""
     if len(series) < 2 * MINUTE_BLOCKS:
         return []
     horizontal, vertical = tolerances_m(fix_class)
-    least = np.array([horizontal, horizontal, vertical])
+    toggling = [RECEIVED_STEPS * (step or 0.0) for step in received_m]
+    least = np.maximum(np.array([horizontal, horizontal, vertical]), toggling)
     means, index, number = series.means_m, series.index, series.initialisation
     near = (number[2:] == number[:-2]) & (index[2:] - index[:-2] <= 4)
     change = np.where(near[:, None], means[2:] - means[:-2], np.nan)

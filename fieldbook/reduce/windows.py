@@ -11,6 +11,7 @@ What this pass lets through: a burst that fills more than half a window. `apart`
 
 from __future__ import annotations
 
+import math
 from bisect import insort
 from dataclasses import dataclass, field
 from itertools import pairwise
@@ -43,6 +44,7 @@ class Windows:
     override: FixClass | None = None
     pending: Ints = field(default_factory=lambda: EMPTY)
     mads: tuple[list[float], list[float], list[float]] = field(default_factory=lambda: ([], [], []))
+    common: tuple[int, int] = (0, 0)  # greatest common divisors of all coordinates and of all altitudes so far
 
     def push(self, table: Ints) -> list[tuple[Ints, Flags]]:
         """Take in epochs; the windows they close."""
@@ -57,7 +59,7 @@ class Windows:
 
     def look_ahead(self, table: Ints) -> list[tuple[Ints, Flags]]:
         """What would come of these further epochs, and of the open window, if it closed now. Changes nothing."""
-        scratch = Windows(self.cos_latitude, self.override, self.pending, self._mads_copied())
+        scratch = Windows(self.cos_latitude, self.override, self.pending, self._mads_copied(), self.common)
         closed = scratch.push(table)
         return [*closed, scratch._closed(scratch.pending)] if len(scratch.pending) else closed
 
@@ -67,6 +69,7 @@ class Windows:
 
     def _closed(self, rows: Ints) -> tuple[Ints, Flags]:
         kept = np.ones(len(rows), dtype=np.bool_)
+        self._seen(rows)
         fix_class = governing_class([int(item) for item in np.unique(rows[:, AT["quality"]])], self.override)
         for number, axis in enumerate(_AXES):
             units = rows[:, axis]
@@ -82,6 +85,13 @@ class Windows:
             kept[np.flatnonzero(known)[deviations > LIMIT_SCALES * scale]] = False
         return rows, kept
 
+    def _seen(self, rows: Ints) -> None:
+        angles, altitudes = rows[:, (AT["latitude_e8min"], AT["longitude_e8min"])], rows[:, AT["altitude_e5m"]]
+        altitudes = altitudes[altitudes != MISSING]
+        of_angles = int(np.gcd.reduce(np.abs(angles), axis=None))
+        of_altitudes = int(np.gcd.reduce(np.abs(altitudes))) if altitudes.size else 0
+        self.common = math.gcd(self.common[0], of_angles), math.gcd(self.common[1], of_altitudes)
+
     def _scale(self, axis: int, until_then: float) -> float:
         mads = self.mads[axis]
         count = len(mads)
@@ -90,16 +100,25 @@ class Windows:
         return (mads[(count - 1) // 2] + mads[count // 2]) / 2
 
     def _step_m(self, rows: Ints, axis: int) -> float:
-        """Received step of an axis: fewest digits in the window; a separation counts only where it changes."""
+        """Received step of an axis: fewest digits in the window, padded zeros off, as far as all values so far tell.
+
+        A separation counts only where it changes.
+        """
         if axis == 2:
-            step = 10.0 ** -_fewest(rows, "altitude_decimals")
+            step = 10.0 ** -min(_fewest(rows, "altitude_decimals"), 5 - _zeros(self.common[1]))
             separations = rows[:, AT["separation_e5m"]]
             if (separations != separations[0]).any():
                 step = max(step, 10.0 ** -_fewest(rows, "separation_decimals"))
             return step
+        most = 8 - _zeros(self.common[0])
         if axis == 0:
-            return coordinate_quantum_m(_fewest(rows, "longitude_decimals"), self.cos_latitude)
-        return coordinate_quantum_m(_fewest(rows, "latitude_decimals"))
+            return coordinate_quantum_m(min(_fewest(rows, "longitude_decimals"), most), self.cos_latitude)
+        return coordinate_quantum_m(min(_fewest(rows, "latitude_decimals"), most))
+
+
+def _zeros(common: int) -> int:
+    """Number of zeros at the end of every value of which this is the divisor; 0 says nothing."""
+    return len(str(common)) - len(str(common).rstrip("0")) if common else 0
 
 
 def _fewest(rows: Ints, name: str) -> int:

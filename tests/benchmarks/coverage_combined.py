@@ -1,7 +1,10 @@
 """Several occupations of one mark, the floor's error drawn too: coverage of each and of what the product combines.
 
 The simulator draws the error that the least uncertainty claimed for a class stands for: normal, of the class's own
-size, half of its variance once per mark (station and antenna are the same), half for each occupation. The separation
+size, half of its variance once per mark (station and antenna are the same), half for each occupation. The floor stands for
+what one session cannot see of itself; where the errors themselves have parts slower than the session, that is in the
+simulation twice. So each case is made three ways: 'on top' (both), 'together' (an occupation's own half is drawn only
+as far as the errors slower than the occupation do not fill it; the common half in full), 'none' (no floor). The separation
 the receiver prints is one number for the mark, so its rounding error is common too. The naive combination is the mean
 of all epochs of all occupations with 1.96 s/sqrt(n).
 """
@@ -41,20 +44,34 @@ CASES: tuple[tuple[str, tuple[int, ...]], ...] = (
 )
 
 
-def occupations_of_one_mark(name: str, lengths_s: tuple[int, ...], seed: int) -> list[Made]:
-    """Occupations of one place at independent times of day, with the floor's error drawn."""
+FLOORS = ("on top", "together", "none")
+LONG_RANGE = ("rtk_two", "rtk_flicker")  # elsewhere nothing is slower than what the class provides for: one way
+
+
+def occupations_of_one_mark(name: str, lengths_s: tuple[int, ...], seed: int, way: str = "on top") -> list[Made]:
+    """Occupations of one place at independent times of day, with the floor's error drawn in one of three ways."""
     regime, rng = REGIMES[name], generator(f"mark {name} {lengths_s}", sum(lengths_s), seed)
     half = np.array(class_of_quality(regime.quality).floor_enu_m) / math.sqrt(2)
     place, common = Place.drawn(rng), half * rng.normal(size=3)
     found = []
     for length_s in lengths_s:
         made = simulate(regime, length_s, rng, replace(place, start_s=int(rng.integers(0, 86_400))))
-        made.floor_m = common + half * rng.normal(size=3)
+        own = np.sqrt(np.maximum(half**2 - (_slower_m2(made, length_s) if way == "together" else 0.0), 0.0))
+        made.floor_m = common + own * rng.normal(size=3)
+        if way == "none":
+            made.floor_m = np.zeros(3)
         found.append(made)
     return found
 
 
-def _combined(task: tuple[str, tuple[int, ...], int]) -> list[float]:
+def _slower_m2(made: Made, length_s: int) -> np.ndarray:
+    horizontal, vertical = (
+        sum(part.slower_m2(length_s) for part in parts) for parts in (made.horizontal, made.vertical)
+    )
+    return np.array([horizontal, horizontal, vertical])
+
+
+def _combined(task: tuple[str, tuple[int, ...], int, str]) -> list[float]:
     """Share of occupations whose circle and height hold the truth; then circle, ellipse, V, E/N of the combination."""
     made = occupations_of_one_mark(*task)
     lines = [Line(item) for item in made]
@@ -73,18 +90,33 @@ def _combined(task: tuple[str, tuple[int, ...], int]) -> list[float]:
 
 def floor(run: Callable[..., Iterator[Any]], seeds: int) -> Iterator[str]:
     """Coverage of each occupation alone and of the mark, percent, and the mark's circle against its best occupation's."""
-    tasks = [(name, lengths, seed) for name, lengths in CASES for seed in range(seeds)]
-    found: dict[tuple[str, tuple[int, ...]], list[list[float]]] = {}
+    tasks = [
+        (name, lengths, seed, way)
+        for name, lengths in CASES
+        for way in (FLOORS if name in LONG_RANGE else FLOORS[:1])
+        for seed in range(seeds)
+    ]
+    found: dict[tuple[str, tuple[int, ...], str], list[list[float]]] = {}
     for task, item in zip(tasks, run(_combined, tasks, chunksize=5), strict=True):
-        found.setdefault(task[:2], []).append(item)
+        found.setdefault((task[0], task[1], task[3]), []).append(item)
     body = []
-    for (name, lengths), rows in found.items():
+    for (name, lengths, way), rows in found.items():
         values = np.array(rows)
         cells = [f"{percent(values[:, k]):.1f}" for k in range(7)]
         for k in (2, 3, 4):
             cells[k] += " !" if percent(values[:, k]) < least(len(rows)) else ""
         body.append(
-            [name, " + ".join(map(duration, lengths)), str(len(rows)), *cells, f"{np.median(values[:, 7]):.2f}"]
+            [name, " + ".join(map(duration, lengths)), way, str(len(rows)), *cells, f"{np.median(values[:, 7]):.2f}"]
         )
-    head = ("regime", "lengths", "n", "each circle %", "each V %", "mark circle %", "mark ellipse %", "mark V %")
+    head = (
+        "regime",
+        "lengths",
+        "floor drawn",
+        "n",
+        "each circle %",
+        "each V %",
+        "mark circle %",
+        "mark ellipse %",
+        "mark V %",
+    )
     yield from table((*head, "mark E, N %", "naive circle %", "mark circle / best one"), body)

@@ -32,6 +32,15 @@ RTK_MULTIPATH = Regime(
 )  # fmt: skip
 RTK_FLICKER = Regime("rtk_flicker", 4, (Part("flicker", 0.008),), (Part("flicker", 0.015),))
 RTK_FGN = Regime("rtk_fgn", 4, (Part("fgn", 0.008, 0.92),), (Part("fgn", 0.015, 0.92),))
+# sizes of the class table; the second like `rtk_two`: a fast part beside one slower than the class
+RTK_FLOAT = Regime("rtk_float", 5, _gm((0.20, 900), white=0.02), _gm((0.35, 900), white=0.04), decimals=6)
+RTK_FLOAT_TWO = Regime(
+    "rtk_float_two",
+    5,
+    _gm((0.12, 120), (0.16, 2700), white=0.02),
+    _gm((0.20, 120), (0.28, 2700), white=0.04),
+    decimals=6,
+)
 DGPS = Regime("dgps", 2, _gm((0.6, 700), white=0.05), _gm((1.0, 700), white=0.1), decimals=6)
 DGPS_TWO = Regime(
     "dgps_two", 2, _gm((0.35, 120), (0.5, 1500), white=0.05), _gm((0.6, 120), (0.8, 1500), white=0.1), decimals=6
@@ -49,6 +58,8 @@ REGIMES: dict[str, Regime] = {
         RTK_MULTIPATH,
         RTK_FLICKER,
         RTK_FGN,
+        RTK_FLOAT,
+        RTK_FLOAT_TWO,
         DGPS,
         DGPS_TWO,
         AUTONOMOUS,
@@ -64,6 +75,11 @@ REGIMES: dict[str, Regime] = {
         replace(RTK, name="rtk_dec5", group="quantised", decimals=5),
         replace(RTK, name="rtk_dec6", group="quantised", decimals=6),
         replace(RTK, name="rtk_dec8", group="quantised", decimals=8, altitude_decimals=4),
+        # the receiver prints zeros behind the decimals it has
+        replace(RTK, name="rtk_pad4", group="quantised", decimals=4, padded=(4, 0, 0)),
+        replace(RTK, name="rtk_pad5", group="quantised", decimals=5, padded=(3, 0, 0)),
+        replace(RTK, name="rtk_padalt1", group="quantised", altitude_decimals=1, padded=(0, 3, 0)),
+        replace(RTK, name="rtk_padsep1", group="quantised", separation_decimals=1, padded=(0, 0, 2)),
         replace(RTK, name="rtk_alt1", group="quantised", altitude_decimals=1),
         replace(RTK, name="rtk_alt2", group="quantised", altitude_decimals=2),
         replace(RTK, name="rtk_sep1", group="quantised", separation_decimals=1),

@@ -59,6 +59,12 @@ class Part:
         far, here, near = np.abs(lag + 1.0) ** power, lag.astype(float) ** power, np.abs(lag - 1.0) ** power
         return self.sd_m**2 * (far - 2 * here + near) / 2
 
+    def slower_m2(self, seconds: float) -> float:
+        """Variance of what turns over more slowly than `seconds`: a session of that length cannot see it of itself."""
+        if self.kind == "flicker":
+            return self.sd_m**2 * float(np.mean(np.array(_OCTAVES_S) > seconds))
+        return self.sd_m**2 if self.kind == "gm" and self.time_s > seconds else 0.0
+
     def draw(self, rng: np.random.Generator, count: int, step_s: float) -> Floats:
         """A series of `count` epochs."""
         if self.kind == "white":
@@ -104,6 +110,7 @@ class Regime:
     decimals: int = 7
     altitude_decimals: int = 3
     separation_decimals: int = 3
+    padded: tuple[int, int, int] = (0, 0, 0)  # zeros printed behind the decimals: coordinates, altitude, separation
     step_s: float = 1.0
     initialisations: int = 1  # at least; more in long sessions where `bias_m` is drawn
     bias_m: tuple[float, float] = (0.0, 0.0)  # sd of the bias of each initialisation, H and V
@@ -271,12 +278,13 @@ def epochs_of(made: Made, start: int = 0, stop: int | None = None) -> list[Epoch
     lon = _received((place.lon_deg + errors[:, 0] / per_lon) * 60, regime.decimals, 8)
     altitude = _received(place.h_m - place.separation_m + errors[:, 2], regime.altitude_decimals, 5)
     separation = int(_received(np.array([place.separation_m]), regime.separation_decimals, 5)[0])
+    printed = np.array([regime.decimals, regime.altitude_decimals, regime.separation_decimals]) + regime.padded
+    of_angle, of_altitude, of_separation = printed.tolist()
     instants = place.start_s * 1000 + np.rint(made.index[rows] * regime.step_s * 1000).astype(np.int64)
     return [
         Epoch(
             start + i + 1, "GGA", "GN", instant // DAY_MS, instant % DAY_MS, None, latitude, longitude,
-            regime.decimals, regime.decimals, height, regime.altitude_decimals, separation,
-            regime.separation_decimals, quality, 15, 800, None, None, 1000, "0042",
+            of_angle, of_angle, height, of_altitude, separation, of_separation, quality, 15, 800, None, None, 1000, "0042",
         )
         for i, (instant, latitude, longitude, height, quality) in enumerate(
             zip(instants.tolist(), lat, lon, altitude, made.quality[rows].tolist(), strict=True)
