@@ -20,7 +20,6 @@ from fieldbook.reduce.initialisations import InitialisationJudge
 from fieldbook.reduce.quantisation import Digits
 from fieldbook.reduce.screening import Screening
 
-
 OFF_ROUND = (0.0023 * M_PER_MIN_LON, 0.0037 * M_PER_MIN_LAT, 0.0)  # the mark of `made_epochs` stands on a whole minute
 
 
