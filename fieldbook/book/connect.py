@@ -20,6 +20,7 @@ from pathlib import Path
 from urllib.parse import quote_from_bytes
 
 from fieldbook.errors import BookError
+from fieldbook.model.visible import visible
 
 from . import beside, foreign, migrations
 from .wal import wal_problem
@@ -349,14 +350,16 @@ _WORDS: dict[int, tuple[str, str, str]] = {
 
 def printable(what: object) -> str:
     """SQLite's words without anything a hostile file could put into them to steer a terminal."""
-    return "".join(letter if letter.isprintable() else "?" for letter in str(what)[:300])
+    return visible(str(what)[:300])
 
 
 def book_error(path: Path, error: sqlite3.Error) -> BookError:
     """sqlite3's error as a BookError."""
     words = _WORDS.get(_primary(error))
     if words is None:
-        return BookError(f"The book {path} cannot be used: {error}.", "`fieldbook verify` says what still holds.")
+        return BookError(
+            f"The book {path} cannot be used: {printable(error)}.", "`fieldbook verify` says what still holds."
+        )
     text, remedy, code = words
     return BookError(f"The book {path} {text} ({printable(error)}).", remedy, code=code)
 

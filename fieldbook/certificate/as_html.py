@@ -17,6 +17,7 @@ from fieldbook.certificate.figures import captions, height_svg, plan_svg
 from fieldbook.certificate.printable import printable
 from fieldbook.certificate.sections import FirstPage, first_page, sections
 from fieldbook.model.canonical import Tree, normalised
+from fieldbook.model.visible import is_hidden
 
 LONG_NAME = 14
 _ESCAPES = {"<": "\\u003c", ">": "\\u003e", "&": "\\u0026", "\u2028": "\\u2028", "\u2029": "\\u2029"}
@@ -45,7 +46,7 @@ def embedded(facts: Tree) -> str:
     text = json.dumps(normalised(facts), ensure_ascii=False, sort_keys=True, separators=(",", ":"), allow_nan=False)
     for char, escaped in _ESCAPES.items():
         text = text.replace(char, escaped)
-    return "".join(char if char >= " " and char not in "\x7f" else f"\\u{ord(char):04x}" for char in text)
+    return "".join(json.dumps(char)[1:-1] if is_hidden(char) else char for char in text)
 
 
 def _e(text: str) -> str:

@@ -341,7 +341,7 @@ def _check_target(book: CertificateBook, out: Path, *, replace: bool) -> None:
     own = getattr(book, "path", None)
     if own is not None and out.resolve() == Path(own).resolve():
         raise UsageError(f"{out} is the book itself.", "Name another file.")
-    if out.exists() and not replace:
+    if (out.exists() or out.is_symlink()) and not replace:
         raise UsageError(f"{out} exists already.", "Name another file, or add --replace.", code="exists")
     if not out.resolve().parent.is_dir():
         raise UsageError(f"The folder {out.resolve().parent} does not exist.", "Make it first.")
@@ -366,7 +366,7 @@ def _write(
     waiting = out.with_name(f".{out.name}.{os.getpid()}.part")
     try:
         _save(waiting, data)
-        if out.exists() and not replace:
+        if (out.exists() or out.is_symlink()) and not replace:
             raise UsageError(f"{out} has appeared meanwhile.", "Name another file and run the command again.")
         with signed_by(book, signer):
             _enter(book, document, extension, out.name, sha256, observer)

@@ -8,8 +8,9 @@ faces that come inside the typesetter (no system fonts, so that equal facts give
 
 from __future__ import annotations
 
-import unicodedata
 from typing import Any
+
+from fieldbook.model.visible import is_hidden
 
 # Blocks that every cut of Libertinus Serif in the typst wheel (0.15) can show, read from its character map.
 FACE_RANGES = (
@@ -46,12 +47,11 @@ FACE_RANGES = (
     (0x2260, 0x2260),
     (0x2264, 0x2265),
 )
-_HIDDEN = {"Cc", "Cf", "Cs", "Co", "Cn", "Zl", "Zp"}
 
 
 def printable(text: str) -> str:
     """The text with every character that cannot be seen written as its number."""
-    return "".join(_number(char) if unicodedata.category(char) in _HIDDEN else char for char in text)
+    return "".join(_number(char) if is_hidden(char) else char for char in text)
 
 
 def in_face(char: str) -> bool:

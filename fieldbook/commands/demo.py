@@ -16,6 +16,7 @@ import click
 from fieldbook.clock import SystemClock
 from fieldbook.commands.output import line, note
 from fieldbook.errors import UsageError
+from fieldbook.model.visible import file_stem
 
 if TYPE_CHECKING:
     from fieldbook.reduce.occupation import Reduced
@@ -127,7 +128,7 @@ def _certify(path: Path, mark: str, number: int | None) -> list[Path]:
     written: list[Path] = []
     with Book.open(path, clock=SystemClock(), write=True) as book:
         for ending in FORMATS:
-            out = path.parent / f"{mark}.{ending}"
+            out = path.parent / f"{file_stem(mark)}.{ending}"
             issued = issue(book, mark, out, occupation=number, sign_off=SIGN_OFF)
             if not all(holds for holds, _ in verify_certificate(out, book)):
                 raise UsageError(f"{out} does not verify.", "Report this: it is a fault of the program.")

@@ -29,7 +29,7 @@ def command(book: Path, occupation: int | None, out: Path, *, raw: bool, replace
         raise UsageError(f"{out} is a folder.", "Name a file.")
     if os.path.realpath(out) == os.path.realpath(book):
         raise UsageError("--out names the book itself.", "Name another file.")
-    if out.exists() and not replace:
+    if (out.exists() or out.is_symlink()) and not replace:
         raise UsageError(f"{out} exists already.", "Name another file, or add --replace.", code="out_exists")
     with reading(book) as opened:
         number = chosen_occupation(opened.state(), occupation).number

@@ -3,6 +3,9 @@
 Columns: name, id, description, inscription, access, condition, lat_deg, lon_deg, or position instead of the last two: a
 text in any form of `settings.coordinates`. The position is the approximate one (for finding the mark and for judging a
 receiver's 0,0); it is never a coordinate of the mark.
+
+A text that a spreadsheet would take for a formula (`=1+1`, `@SUM(...)`) is exported with an apostrophe before it, which the
+import takes off again.
 """
 
 from __future__ import annotations
@@ -103,7 +106,7 @@ def import_marks(book: Path, file: Path, observer: str, key_path: Path | None, *
 @click.option("--replace", is_flag=True, help="Write over an existing file.")
 def export_marks(book: Path, out: Path, *, replace: bool) -> None:
     """Make the text, then write it."""
-    if out.exists() and not replace:
+    if (out.exists() or out.is_symlink()) and not replace:
         raise UsageError(f"{out} exists already.", "Name another file, or add --replace.", code="out_exists")
     with reading(book) as opened:
         marks = opened.state().marks
@@ -112,9 +115,21 @@ def export_marks(book: Path, out: Path, *, replace: bool) -> None:
     table.writeheader()
     for name, tree in sorted(marks.items()):
         place = tree.get("approximate", {})
-        table.writerow({**tree, "name": name, **place})
+        texts = {key: _no_formula(str(tree[key])) for key in TEXTS if key in tree}
+        table.writerow({**texts, "name": _no_formula(name), **place})
     out.write_bytes(text.getvalue().encode("utf-8"))
     line(f"{out}: {len(marks)} marks")
+
+
+_FORMULA = tuple("=+-@＝＋－＠'")  # the wide ones too: some spreadsheets read them alike
+
+
+def _no_formula(text: str) -> str:
+    return "'" + text if text.lstrip().startswith(_FORMULA) else text
+
+
+def _as_typed(text: str) -> str:
+    return text[1:] if text[:1] == "'" and text[1:].lstrip().startswith(_FORMULA) else text
 
 
 def _read(file: Path) -> list[tuple[str, dict[str, Any]]]:
@@ -182,6 +197,7 @@ def _tree(row: dict[str, Any], place: str, known: dict[str, Tree]) -> Tree:
     if None in row:
         raise UsageError(f"{place}: more fields than columns.", "Put quotes around a text with commas.")
     cells = {key: value.strip() for key, value in row.items() if value and value.strip()}
+    cells = {key: _as_typed(value) if key in TEXTS else value for key, value in cells.items()}
     if "name" not in cells:
         raise UsageError(f"{place}: the mark has no name.", "Write it in the column name.")
     if ("lat_deg" in cells) != ("lon_deg" in cells):

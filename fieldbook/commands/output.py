@@ -7,28 +7,21 @@ override must not make a coordinate read backwards: whatever is printed as text 
 from __future__ import annotations
 
 import json
-import re
 import sys
 from typing import Any
 
 import click
 
 from fieldbook.errors import FieldbookError
+from fieldbook.model.visible import visible
 
-# C0 and C1 controls, DEL, line and paragraph separators, zero-width and direction marks, byte order mark, surrogates
-_UNSAFE = re.compile(
-    "[\x00-\x1f\x7f-\x9f\u00ad\u061c\u200b-\u200f\u2028-\u202e\u2060-\u206f\ufeff\ud800-\udfff\ufff9-\ufffb]"
-)
+TYPED_SHOWN = 100  # characters before and behind the one that is wrong
+LONGEST_ERROR = 3000  # what is repeated in an error may be a whole file
 
 
 def plain(value: object) -> str:
-    r"""The text with everything that could move a cursor or turn a line written as `\x1b` or `\u202e`."""
-    return _UNSAFE.sub(_escaped, str(value))
-
-
-def _escaped(found: re.Match[str]) -> str:
-    number = ord(found.group())
-    return f"\\x{number:02x}" if number < 0x100 else f"\\u{number:04x}"
+    r"""The text with everything that could move a cursor, turn a line or hide written as `\x1b` or `\u202e`."""
+    return visible(str(value))
 
 
 def line(text: object = "") -> None:
@@ -56,9 +49,11 @@ def write_error(error: FieldbookError, *, as_json: bool) -> None:
         write_json({"schema": "fieldbook.error/1", "error": tree})
         return
     if typed is not None:  # what was typed, and a mark under the character that is wrong
-        note(f"  {typed}")
-        note(f"  {' ' * len(plain(typed[:column]))}^")
-    note(f"error: {error}")
+        start = max(0, column - TYPED_SHOWN) if len(typed) > 2 * TYPED_SHOWN else 0
+        note(f"  {typed[start : start + 2 * TYPED_SHOWN]}")
+        note(f"  {' ' * len(plain(typed[start:column]))}^")
+    text = f"error: {error}"
+    note(text if len(text) <= LONGEST_ERROR else text[:LONGEST_ERROR] + "…")
 
 
 class Progress:

@@ -7,6 +7,7 @@ from __future__ import annotations
 from typing import Any, ClassVar
 
 from fieldbook.model.reduction import Reduction
+from fieldbook.model.visible import file_stem
 from fieldbook.screens.bridge import Issued, Sheet
 from fieldbook.screens.diary_text import occupations_of
 from fieldbook.screens.fields import Field
@@ -133,11 +134,10 @@ def paper(desk: Desk, sheet: Sheet | None, *, issue: bool) -> None:
         desk.tell(f"Occupation {item.occupation} of {item.mark} is open: end it first (4, then E).", "bad")
         return
     standing = standing_number(desk, sheet)
-    name = (
-        "".join(letter if letter.isalnum() or letter in "-_." else "_" for letter in item.mark)[:60].strip(".")
-        or "mark"
+    stem = (
+        desk.bridge.path.absolute().parent
+        / f"{file_stem(item.mark)}-{'+'.join(map(str, sheet.numbers))}{'' if issue else '-draft'}"
     )
-    stem = desk.bridge.path.absolute().parent / f"{name}-{'+'.join(map(str, sheet.numbers))}{'' if issue else '-draft'}"
     fields = [
         Field("format", "Format", words(*FORMATS), "pdf", required=True),
         Field("path", "File", "text", str(stem), required=True),

@@ -10,7 +10,8 @@ import textwrap
 
 from rich.cells import cell_len, chop_cells, set_cell_size
 
-REPLACEMENT = "·"
+from fieldbook.model.visible import visible
+
 LONGEST = 2000  # characters of one text that a screen looks at
 _ASCII = str.maketrans(
     {
@@ -24,14 +25,14 @@ _ASCII = str.maketrans(
 
 
 def clean(text: object, limit: int = LONGEST) -> str:
-    """One line of visible characters: whatever cannot be printed stands as a middle dot.
+    r"""One line of visible characters: whatever cannot be seen stands as `\x1b` or `\u202e`, as on the command line.
 
-    Control, format (bidirectional overrides, joiners), surrogate and unassigned characters are not printable;
-    line ends and tabs become spaces, so nothing a book holds can move the cursor or turn the writing direction.
+    Line ends, tabs and other blanks become spaces, so nothing a book holds can move the cursor or turn the writing
+    direction, and no two names look alike that are not.
     """
     source = str(text)
     cut = source[:limit]
-    shown = "".join(letter if letter.isprintable() else " " if letter in "\n\t\r" else REPLACEMENT for letter in cut)
+    shown = visible("".join(" " if letter.isspace() else letter for letter in cut))
     return shown + "…" if len(source) > limit else shown
 
 

@@ -224,9 +224,9 @@ def test_hostile_text_is_only_text(kind: str, size: tuple[int, int]) -> None:
             await pilot.press("8")
             shown = {
                 "markup": "[bold red]x[/bold red]",
-                "escapes": "·[31mred·[0m",
+                "escapes": r"\x1b[31mred\x1b[0m",
                 "long": "LLLLLLLL",
-                "right_to_left": "·evil",
+                "right_to_left": r"\u202eevil",
                 "wide": "測量點",
             }[kind]
             await see(pilot, shown)
