@@ -146,6 +146,8 @@ def _mark(state: BookState, occupation: Occupation) -> Tree:
     facts: Tree = {"name": occupation.mark}
     for key in ("id", "description", "inscription", "access", "condition"):
         facts[key] = latest.get(key, getattr(mark, key))
+    if occupation.session.setup.inscription_read is not None:
+        facts["inscription_read"] = occupation.session.setup.inscription_read
     witnesses = latest.get("witness_marks")
     facts["witness_marks"] = (
         [

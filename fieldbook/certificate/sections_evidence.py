@@ -90,6 +90,7 @@ def mark(facts: Tree) -> Section:
         ["Identifier", said(item["id"])],
         ["Description", said(item["description"])],
         ["Inscription", said(item["inscription"])],
+        *([["Read from the metal", item["inscription_read"]]] if item.get("inscription_read") else []),
         ["Condition", said(item["condition"])],
         ["Access", said(item["access"])],
     ]

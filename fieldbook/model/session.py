@@ -168,6 +168,7 @@ class Setup:
     tribrach_id: str | None = None
     last_check: str | None = None
     reading_sigma_m: float | None = None
+    inscription_read: str | None = None  # from the metal, at this set-up; or "not readable because ..."
     heights: tuple[HeightReading, ...] = ()
 
 

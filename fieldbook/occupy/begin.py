@@ -35,8 +35,9 @@ from fieldbook.signing.in_book import signed_by
 from fieldbook.signing.signer import Signer
 
 # What may differ between the session of an open occupation and the one it is taken up with: a port changes its
-# name when it is plugged in again, and a moved file is still recognised by its bytes.
-FREE_KEYS = frozenset({"receiver.link"})
+# name when it is plugged in again, and a moved file is still recognised by its bytes. What was read from the metal is an
+# observation, not a set-up: who takes the occupation up need not type it as the first did.
+FREE_KEYS = frozenset({"receiver.link", "setup.inscription_read"})
 
 
 @dataclass(frozen=True)

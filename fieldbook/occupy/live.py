@@ -99,7 +99,7 @@ class LiveReader:
         except (ReductionError, UsageError) as error:
             return None, (error.code, error.text, error.remedy)
         others = self._others(book, state, occupation)
-        judge(reduced, occupation, others_of(reduced, [reduced, *others], occupation.session.requirement))
+        judge(reduced, occupation, others_of(reduced, [reduced, *others], occupation.session.requirement), state.marks)
         return reduced, None
 
     def _sky(self, book: Book, occupation: Occupation) -> list[Picture] | None:

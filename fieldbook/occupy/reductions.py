@@ -6,14 +6,17 @@ reduced. The leave check needs the mark's other occupations, so reductions are m
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
 from fieldbook.book.store import Book
 from fieldbook.check.findings import findings_of
+from fieldbook.check.identity import identity_findings
 from fieldbook.check.leave import Figures, OtherOccupation, leave_check
 from fieldbook.check.mark_leave import reaches_accuracy
 from fieldbook.errors import FieldbookError, ReductionError, UsageError
+from fieldbook.model.canonical import Tree
 from fieldbook.model.reduction import Finding
 from fieldbook.model.session import Requirement
 from fieldbook.model.sky import Picture
@@ -60,7 +63,7 @@ def reduce_book(book: Book, mark: str | None = None) -> tuple[list[Reduced], lis
             failed.append(Failure(occupation.mark, occupation.number, error))
     for item in reduced:
         occupation = state.occupations[item.reduction.occupation]
-        judge(item, occupation, others_of(item, reduced, occupation.session.requirement))
+        judge(item, occupation, others_of(item, reduced, occupation.session.requirement), state.marks)
     attach_to_reductions(state, reduced)
     return reduced, failed
 
@@ -124,10 +127,17 @@ def others_of(item: Reduced, all_reduced: list[Reduced], requirement: Requiremen
     ]
 
 
-def judge(item: Reduced, occupation: Occupation, others: list[OtherOccupation]) -> None:
-    """Add what the book says beside the epochs, and the leave check."""
+def judge(
+    item: Reduced, occupation: Occupation, others: list[OtherOccupation], marks: Mapping[str, Tree] | None = None
+) -> None:
+    """Add what the book says beside the epochs, and the leave check; marks: as described in the book, by name."""
     reduction = item.reduction
-    reduction.findings = [*book_findings(occupation), *item.notes, *findings_of(item, occupation)]
+    reduction.findings = [
+        *book_findings(occupation),
+        *item.notes,
+        *identity_findings(occupation.session, reduction, marks or {}),
+        *findings_of(item, occupation),
+    ]
     reduction.findings.sort(key=lambda finding: SEVERITIES.index(finding.severity))
     figures = Figures(item.horizontal, item.vertical, item.horizontal_forbidden_by, item.vertical_forbidden_by)
     reduction.leave = leave_check(occupation.session.requirement, reduction, figures, others, item.screened.gates)

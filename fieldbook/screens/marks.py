@@ -111,12 +111,13 @@ def mark_rows(tree: Tree, width: int) -> list[Row]:
     rows = [labelled("Mark", tree["name"], width, style="strong")]
     for label, key in (
         ("Description", "description"),
-        ("Inscription", "inscription"),
         ("Access", "access"),
         ("Condition", "condition"),
     ):
         text, style = stated(key)
         rows.append(labelled(label, text, width, style=style))
+    known = "known; asked for from the metal before a recording starts" if tree.get("inscription") else "not stated"
+    rows.insert(2, labelled("Inscription", known, width, style="soft"))  # who has seen it reads what he expects
     witnesses = tree.get("witness_marks") or []
     if witnesses:
         rows.append(labelled("Witnesses", "; ".join(str(item.get("text", "")) for item in witnesses), width))

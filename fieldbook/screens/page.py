@@ -82,7 +82,9 @@ def next_tree(view: LiveView) -> Tree | None:
     used = [item.session.tree.get("setup", {}).get("height") for item in view.state.occupations.values()]
     if setup.get("height") and setup["height"] in used:
         setup.pop("height")
-        tree["setup"] = setup
+    if view.state.occupations:
+        setup.pop("inscription_read", None)  # it is read anew from each metal
+    tree["setup"] = setup
     return tree
 
 

@@ -5,7 +5,10 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from typing import Any
 
+from fieldbook.check.identity import same_inscription, was_read
+from fieldbook.model.canonical import Tree
 from fieldbook.model.reduction import LeaveLine
+from fieldbook.model.session import Session
 from fieldbook.screens.ask import Question
 from fieldbook.screens.fields import Field
 from fieldbook.screens.forms import Form, Values
@@ -37,11 +40,47 @@ def start(desk: Desk) -> None:
     if session is None or tree is None:
         desk.tell(problem, "bad")
         return
+    expected = view.state.marks.get(session.mark.name, {}).get("inscription") or session.mark.inscription
+    if session.setup.inscription_read is None and expected:
+        _read_the_metal(desk, tree, session, str(expected))
+        return
+    _ask_start(desk, tree, session)
+
+
+def _read_the_metal(desk: Desk, tree: Tree, session: Session, expected: str) -> None:
+    """The inscription is typed before the expected one is shown: who has seen it reads what he expects."""
+
+    def typed(values: Values | None) -> None:
+        if values is None:
+            return
+        read = values["inscription_read"].strip()
+        setup = {**tree["setup"], "inscription_read": read}
+        if not was_read(read):
+            said = f"The inscription was {read}."
+        elif same_inscription(read, expected):
+            said = f'The metal says "{read}", as it should.'
+        else:
+            said = f'■ The metal says "{read}", the description "{expected}". Is it the right mark?'
+        _ask_start(desk, {**tree, "setup": setup}, session, said)
+
+    field = Field("inscription_read", "The metal says", required=True, hint="or: not readable because ...")
+    note = (
+        "Type it as it stands there, before you look at the description. What cannot be read: not readable because ..."
+    )
+    desk.ask(Form(f"READ THE MARK: {session.mark.name}", [field], note=note), typed)
+
+
+def _ask_start(desk: Desk, tree: Tree, session: Session, inscription: str = "") -> None:
+    """The question that begins the occupation, with what it will be."""
+    view, bridge = desk.view, desk.bridge
+    if view is None:
+        return
     text = [
         f"{session.mark.name}, antenna {session.antenna.model}, on {session.receiver.link}.",
         f"The receiver reports the {session.setup.reported_point}.",
     ]
     text.append(f"Its coordinates are taken to be in {session.frame.receiver}.")
+    text += [inscription] if inscription else []
     readings = current_readings(view)
     judged = bridge.heights(session, readings)
     height = judged.height

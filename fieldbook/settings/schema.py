@@ -122,6 +122,7 @@ TABLES: dict[str, dict[str, str]] = {
         "centring": "text",
         "centring_sigma_m": "positive",
         "reading_sigma_m": "positive",
+        "inscription_read": "text",
         "height": "list:setup.height",
     },
     "setup.height": {

@@ -306,6 +306,7 @@ def _setup(tree: Tree) -> model.Setup:
         tribrach_id=tree.get("tribrach_id"),
         last_check=tree.get("last_check"),
         reading_sigma_m=_float(tree, "reading_sigma_m"),
+        inscription_read=tree.get("inscription_read"),
         heights=tuple(reading_from_tree(item) for item in tree.get("height", [])),
     )
 

@@ -347,18 +347,31 @@ def test_start_asks_then_begins_and_opens_the_occupation(size: tuple[int, int]) 
         bridge = FakeBridge()
         async with opened(bridge, size) as pilot:
             await pilot.press("3", "s")
+            await see(pilot, "READ THE MARK: KR-07")
+            assert "1998" not in screen_text(pilot), "not before it was read"
+            await pilot.press("escape")
+            await on_desk(pilot)
+            await pilot.press("s")
+            await form(pilot)
+            await typed(pilot, "KR-08 1998")
+            await pilot.press("enter")
             await question(pilot)
-            await see(pilot, "START RECORDING?", "reports the phase centre")
+            await see(pilot, "START RECORDING?", "reports the phase centre", 'the description "KR 07 1998"')
             await pilot.press("enter")
             await on_desk(pilot)
             assert not bridge.calls
             await pilot.press("s")
+            await form(pilot)
+            await typed(pilot, "kr07/1998")
+            await pilot.press("enter")
             await question(pilot)
+            await see(pilot, "as it should")
             await pilot.press("y")
             await wait_until(pilot, lambda: desk(pilot).page == "occupation", "the occupation page")
             await see(pilot, "recording", "FIGURES")
             assert kinds(bridge) == ["begin"]
             assert bridge.calls[0][1]["setup"]["height"] == SESSION_TREE["setup"]["height"]
+            assert bridge.calls[0][1]["setup"]["inscription_read"] == "kr07/1998"
 
     asyncio.run(go())
 

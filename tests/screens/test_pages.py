@@ -17,7 +17,7 @@ from .waiting import SIZES, desk, on_desk, opened, screen_text, see, wait_until
 
 PAGE_WORDS = {
     "cover": ("FIELD BOOK", "Kestrel Ridge control", "EPSG:7912", "EPSG:7843", "20 mm"),
-    "marks": ("MARKS", "KR-07", "brass plate in rock", "KR 07 1998"),
+    "marks": ("MARKS", "KR-07", "brass plate in rock", "asked for from the metal"),
     "setup": ("SET-UP", "DEMO-A1 NONE", "PHASE CENTRE", "1.4946 m"),
     "occupation": ("FIGURES", "23°40′12.4460″ S", "148°53′07.8478″ E", "GDA2020", "842 kept of 861", "worth about 4"),
     "leave": ("MAY THE TRIPOD COME DOWN?", "NOT YET", "58 s", "Come back from 13:40 UTC", "What cannot be known here"),
