@@ -8,7 +8,7 @@ record nothing is known of its frame, so there is no height.
     name              what is printed                       kind        "global" or "national"
     frame             text (global), EPSG code (national)   frames      more EPSG codes of a national model
     vertical_datum    printed text; absent: none            u_m         one sigma of the model; absent: unknown
-    interpolation_u_m one sigma; absent: estimated (GTX), unknown (GeoTIFF)
+    interpolation_u_m one sigma; absent: estimated, unknown for bilinear GeoTIFF
     sha256  source  licence                                 u_source    where u_m is from
 """
 
@@ -33,8 +33,10 @@ from fieldbook.reduce.frames import (
     is_global_realisation,
     same_frame,
     undulation_by_proj,
+    undulations_by_proj,
 )
-from fieldbook.reduce.geoidgrid import Undulation, corners_finite, read_gtx
+from fieldbook.reduce.geoidgrid import Undulation, corners_finite, read_gtx, six_point
+from fieldbook.reduce.geotiff import Layout, geotiff_layout
 
 _AGREE_M = 0.001  # own reader and PROJ at a node
 
@@ -120,7 +122,7 @@ def height_above_geoid(
 
 
 def undulation_at(model: GeoidModel, lat_deg: float, lon_deg: float) -> Undulation:
-    """N at a place: six-point Lagrange on GTX, PROJ's bilinear on GeoTIFF.
+    """N at a place: six-point Lagrange, bilinear near the edge of a regional grid and where the nodes are not known.
 
     Raises:
         ReductionError: outside the grid or no data there.
@@ -131,7 +133,25 @@ def undulation_at(model: GeoidModel, lat_deg: float, lon_deg: float) -> Undulati
         if found.method == "six-point Lagrange" and stated is not None:
             return Undulation(found.value_m, found.method, stated)
         return found
-    return Undulation(undulation_by_proj(model.path, lat_deg, lon_deg), "bilinear", stated)
+    bilinear = undulation_by_proj(model.path, lat_deg, lon_deg)
+    six = _six_point(model.path, lat_deg, lon_deg, bilinear)
+    if six is None:
+        return Undulation(bilinear, "bilinear", stated)
+    return six if stated is None else Undulation(six.value_m, six.method, stated)
+
+
+def _six_point(path: Path, lat_deg: float, lon_deg: float, bilinear_m: float) -> Undulation | None:
+    state = path.stat()
+    layout = _layout(path, state.st_size, state.st_mtime_ns)
+    if layout is None:
+        return None
+    return six_point(layout, lambda lats, lons: undulations_by_proj(path, lats, lons), lat_deg, lon_deg, bilinear_m)
+
+
+@lru_cache(maxsize=8)
+def _layout(path: Path, size: int, changed_ns: int) -> Layout | None:
+    del size, changed_ns  # only the key of the cache
+    return geotiff_layout(path)
 
 
 def find_model(geoid_name: str, search_dirs: Sequence[Path]) -> GeoidModel:

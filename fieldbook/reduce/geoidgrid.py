@@ -15,6 +15,7 @@ from __future__ import annotations
 import hashlib
 import math
 import struct
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
 from pathlib import Path
@@ -24,9 +25,11 @@ from numpy.typing import NDArray
 
 from fieldbook.errors import ReductionError
 from fieldbook.reduce.constants import GTX_NO_DATA
+from fieldbook.reduce.geotiff import Layout
 
 _HEADER = struct.Struct(">4d2i")
 _POINTS = 6
+_SAME_M = 1e-4
 _SNAP = 1e-9  # of a node: a position on the edge must not fall outside by rounding
 
 
@@ -148,6 +151,41 @@ class GeoidGrid:
             "Give a model that covers this place, or leave frame.geoid out: then there is no height H.",
             code="geoid_no_value",
         )
+
+
+def six_point(
+    layout: Layout,
+    sample: Callable[[NDArray[np.float64], NDArray[np.float64]], NDArray[np.float64]],
+    lat_deg: float,
+    lon_deg: float,
+    bilinear_m: float,
+) -> Undulation | None:
+    """The same interpolation on nodes that somebody else reads, `sample(lats, lons)`.
+
+    None within two nodes of an edge, where nodes lack data, and where the layout is not that of the reader: the bilinear
+    value of its four nodes must be `bilinear_m` to 0.1 mm (values are 32-bit: 8 micrometres at 100 m).
+    """
+    row = (lat_deg - layout.south_deg) / layout.row_step_deg
+    column = ((lon_deg - layout.west_deg + 1e-12) % 360.0) / layout.column_step_deg
+    first, left = math.floor(row), math.floor(column)
+    if not (math.isfinite(row) and math.isfinite(column)) or first < 2 or first + 3 >= layout.rows:
+        return None
+    if not layout.round_the_world and not 2 <= left <= layout.columns - 4:
+        return None
+    rows, columns = np.arange(first - 2, first + 4), np.arange(left - 2, left + 4)
+    if layout.round_the_world:
+        columns = columns % layout.columns
+    lats = np.repeat(layout.south_deg + rows * layout.row_step_deg, _POINTS)
+    lons = np.tile(layout.west_deg + columns * layout.column_step_deg, _POINTS)
+    nodes = sample(lats, (lons + 180.0) % 360.0 - 180.0).reshape(_POINTS, _POINTS)
+    if not np.isfinite(nodes).all():
+        return None
+    row_at, column_at = row - first, column - left
+    if abs(_lagrange(nodes[2:4, 2:4], row_at, column_at) - bilinear_m) > _SAME_M:
+        return None
+    value = _lagrange(nodes, row_at + 2.0, column_at + 2.0)
+    four = _lagrange(nodes[1:5, 1:5], row_at + 1.0, column_at + 1.0)
+    return Undulation(value, "six-point Lagrange", abs(value - four))
 
 
 def _lagrange(window: NDArray[np.float64], row_at: float, column_at: float) -> float:

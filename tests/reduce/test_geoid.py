@@ -3,38 +3,24 @@
 from __future__ import annotations
 
 import struct
+from dataclasses import replace
 from importlib import resources
 from pathlib import Path
 
 import numpy as np
 import pytest
-from numpy.typing import ArrayLike
+from invented_geoid import bow, plane, write_geotiff, write_gtx
 
 from fieldbook.errors import ReductionError
 from fieldbook.model.reduction import ClientPosition
-from fieldbook.reduce.frames import frame_info
+from fieldbook.reduce.frames import frame_info, undulation_by_proj, undulations_by_proj
 from fieldbook.reduce.geodesy import geocentric
 from fieldbook.reduce.geoid import check_geoid_file, find_model, height_above_geoid, read_record, undulation_at
-from fieldbook.reduce.geoidgrid import read_gtx
+from fieldbook.reduce.geoidgrid import read_gtx, six_point
+from fieldbook.reduce.geotiff import geotiff_layout
 
 EPOCH = 2027.2
 PACKAGE = Path(str(resources.files("fieldbook") / "data"))
-
-
-def write_gtx(path: Path, nodes: ArrayLike, *, south: float, west: float, step: float) -> Path:
-    values = np.asarray(nodes, dtype=">f4")
-    path.write_bytes(struct.pack(">4d2i", south, west, step, step, *values.shape) + values.tobytes())
-    return path
-
-
-def plane(rows: int = 9, columns: int = 11) -> np.ndarray:
-    """A tilted plane with a gentle bow, which six-point Lagrange reproduces and bilinear does not."""
-    y, x = np.mgrid[0:rows, 0:columns]
-    return 20.0 + 0.3 * x - 0.2 * y + 0.01 * x * x
-
-
-def bow(row: float, column: float) -> float:
-    return 20.0 + 0.3 * column - 0.2 * row + 0.01 * column * column
 
 
 def client(code: str, lat: float, lon: float, h: float | None = 600.0, epoch: float | None = None) -> ClientPosition:
@@ -289,44 +275,64 @@ def test_no_ellipsoidal_height_no_orthometric_one() -> None:
     assert error.value.code == "no_ellipsoidal_height"
 
 
-def write_geotiff(path: Path, nodes: np.ndarray, *, north: float, west: float, step: float) -> Path:
-    """A one-strip float32 GeoTIFF of geographic nodes (pixel is point), the least that PROJ reads."""
-    values = np.ascontiguousarray(nodes[::-1], dtype="<f4")
-    rows, columns = values.shape
-    scale, tie = struct.pack("<3d", step, step, 0.0), struct.pack("<6d", 0, 0, 0, west, north, 0)
-    keys = struct.pack("<16H", 1, 1, 0, 3, 1024, 0, 1, 2, 1025, 0, 1, 2, 2048, 0, 1, 4326)
-    tags = [(256, 4, 1, columns), (257, 4, 1, rows), (258, 3, 1, 32), (259, 3, 1, 1), (262, 3, 1, 1)]
-    count = len(tags) + 8
-    data_at = 8 + 2 + 12 * count + 4
-    scale_at = data_at + values.nbytes
-    tie_at, keys_at = scale_at + len(scale), scale_at + len(scale) + len(tie)
-    tags += [(273, 4, 1, data_at), (277, 3, 1, 1), (278, 4, 1, rows), (279, 4, 1, values.nbytes), (339, 3, 1, 3)]
-    tags += [(33550, 12, 3, scale_at), (33922, 12, 6, tie_at), (34735, 3, 16, keys_at)]
-    directory = b"".join(
-        struct.pack("<HHI", tag, kind, number)
-        + (struct.pack("<HH", value, 0) if kind == 3 and number == 1 else struct.pack("<I", value))
-        for tag, kind, number, value in tags
-    )
-    head = struct.pack("<2sHI", b"II", 42, 8) + struct.pack("<H", count) + directory + struct.pack("<I", 0)
-    path.write_bytes(head + values.tobytes() + scale + tie + keys)
-    return path
-
-
 def test_geotiff_by_proj(tmp_path: Path) -> None:
-    """Read by PROJ, bilinear; without a stated interpolation error the uncertainty is unknown."""
+    """Values by PROJ; six points where the nodes are known, bilinear near the edge, there with unknown uncertainty."""
     write_geotiff(tmp_path / "nat.tif", plane(), north=-24.0 + 0.8, west=133.4, step=0.1)
     record = 'name = "Invented 2027"\nkind = "national"\nframe = "EPSG:7843"\nu_m = 0.03\n'
     (tmp_path / "nat.toml").write_text(record, encoding="utf-8")
     model = find_model("nat.tif", [tmp_path])
     node = undulation_at(model, -23.6, 133.9)
     assert node.value_m == pytest.approx(bow(4, 5), abs=1e-5)
-    assert node.method == "bilinear"
-    height = height_above_geoid(client("EPSG:7843", -23.6, 133.95), "nat.tif", [tmp_path], epoch_of_observation=EPOCH)
-    assert height.undulation_m == pytest.approx((bow(4, 5) + bow(4, 6)) / 2, abs=1e-5)
+    assert node.method == "six-point Lagrange"
+    inner = undulation_at(model, -23.57, 133.94)
+    assert inner.value_m == pytest.approx(bow(4.3, 5.4), abs=1e-5)
+    assert inner.value_m != pytest.approx(undulation_by_proj(model.path, -23.57, 133.94), abs=0.0005)
+    height = height_above_geoid(client("EPSG:7843", -23.6, 133.45), "nat.tif", [tmp_path], epoch_of_observation=EPOCH)
+    assert height.undulation_m == pytest.approx((bow(4, 0) + bow(4, 1)) / 2, abs=1e-5)
     assert height.undulation_u_m is None
+    assert "bilinearly" in height.heading
     (tmp_path / "nat.toml").write_text(record + "interpolation_u_m = 0.004\n", encoding="utf-8")
-    height = height_above_geoid(client("EPSG:7843", -23.6, 133.95), "nat.tif", [tmp_path], epoch_of_observation=EPOCH)
+    height = height_above_geoid(client("EPSG:7843", -23.6, 133.45), "nat.tif", [tmp_path], epoch_of_observation=EPOCH)
     assert height.undulation_u_m == pytest.approx(0.0303, abs=1e-4)
     with pytest.raises(ReductionError) as error:
         undulation_at(model, 10.0, 10.0)
     assert error.value.code == "geoid_no_value"
+
+
+@pytest.mark.parametrize("area", [False, True], ids=["point", "area"])
+@pytest.mark.parametrize("order", ["<", ">"], ids=["II", "MM"])
+def test_nodes_of_a_geotiff_are_where_proj_sees_them(tmp_path: Path, area: bool, order: str) -> None:
+    """Read as area when it is point shifts half a cell: here 0.05 degree, 0.2 m on this plane."""
+    west, north = 133.4, -23.2
+    half = 0.05 if area else 0.0
+    path = write_geotiff(
+        tmp_path / "nat.tif", plane(), north=north + half, west=west - half, step=0.1, area=area, order=order
+    )
+    layout = geotiff_layout(path)
+    assert layout is not None
+    assert layout.bounds == pytest.approx((-24.0, 133.4, -23.2, 134.4), abs=1e-9)
+    (tmp_path / "nat.toml").write_text('name = "I"\nkind = "national"\nframe = "EPSG:7843"\n', encoding="utf-8")
+    found = undulation_at(find_model("nat.tif", [tmp_path]), -23.57, 133.94)
+    assert (found.method, found.value_m) == ("six-point Lagrange", pytest.approx(bow(4.3, 5.4), abs=1e-5))
+
+
+def test_a_layout_that_is_not_proj_s_is_not_used(tmp_path: Path) -> None:
+    """Half a cell off, as if the point flag were ignored: the bilinear check notices and PROJ's own value stands."""
+    path = write_geotiff(tmp_path / "nat.tif", plane(), north=-23.2, west=133.4, step=0.1)
+    layout = geotiff_layout(path)
+    assert layout is not None
+    shifted = replace(layout, west_deg=layout.west_deg + 0.05, south_deg=layout.south_deg + 0.05)
+    bilinear = undulation_by_proj(path, -23.57, 133.94)
+
+    def sample(lats: np.ndarray, lons: np.ndarray) -> np.ndarray:
+        return undulations_by_proj(path, lats, lons)
+
+    assert six_point(layout, sample, -23.57, 133.94, bilinear) is not None
+    assert six_point(shifted, sample, -23.57, 133.94, bilinear) is None
+
+
+@pytest.mark.parametrize("cut", [0, 4, 9, 40, 120, 200])
+def test_a_torn_geotiff_has_no_layout_and_no_crash(tmp_path: Path, cut: int) -> None:
+    path = write_geotiff(tmp_path / "nat.tif", plane(), north=-23.2, west=133.4, step=0.1)
+    path.write_bytes(path.read_bytes()[:cut])
+    assert geotiff_layout(path) is None

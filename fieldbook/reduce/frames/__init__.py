@@ -38,7 +38,7 @@ from fieldbook.reduce.frames.convert import (  # noqa: E402
     transform_to_client,
 )
 from fieldbook.reduce.frames.geodesic import geodesic  # noqa: E402
-from fieldbook.reduce.frames.heightgrid import undulation_by_proj  # noqa: E402
+from fieldbook.reduce.frames.heightgrid import undulation_by_proj, undulations_by_proj  # noqa: E402
 from fieldbook.reduce.frames.local_plane import on_local_plane  # noqa: E402
 from fieldbook.reduce.frames.located import located, printed  # noqa: E402
 from fieldbook.reduce.frames.pair import Considered, Pair, pair_at  # noqa: E402
@@ -94,6 +94,7 @@ __all__ = [
     "same_frame",
     "transform_to_client",
     "undulation_by_proj",
+    "undulations_by_proj",
     "unproject",
     "versions",
 ]

@@ -10,6 +10,8 @@ import math
 from functools import lru_cache
 from pathlib import Path
 
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
 from pyproj import Transformer
 from pyproj.exceptions import ProjError
 
@@ -45,6 +47,20 @@ def undulation_by_proj(path: Path, lat_deg: float, lon_deg: float) -> float:
             code="geoid_no_value",
         )
     return float(undulation)
+
+
+def undulations_by_proj(path: Path, lats_deg: ArrayLike, lons_deg: ArrayLike) -> NDArray[np.float64]:
+    """N in metres at many places, bilinear; NaN where the file has no value.
+
+    Raises:
+        ReductionError: PROJ cannot read the file.
+    """
+    whole = path.resolve()
+    lons, lats = np.asarray(lons_deg, dtype=np.float64), np.asarray(lats_deg, dtype=np.float64)
+    reader = _reader(str(whole), whole.stat().st_mtime_ns)
+    _, _, found = reader.transform(lons, lats, np.zeros_like(lons), errcheck=False)
+    values = np.asarray(found, dtype=np.float64)
+    return np.where(np.isfinite(values), values, np.nan)
 
 
 @lru_cache(maxsize=8)
