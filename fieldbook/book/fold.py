@@ -231,6 +231,8 @@ def _decision(folder: _Folder, entry: Entry) -> None:
         occupation.accuracy_over_limit = bool(body["accuracy_over_limit"])
     if "outside_area" in body:
         occupation.outside_area_accepted = bool(body["outside_area"])
+    if "grid_file" in body:
+        occupation.accepted_grid_files.append(str(body["grid_file"]))
     if "outside_hull" in body:
         occupation.outside_hull_accepted = bool(body["outside_hull"])
 
@@ -245,7 +247,9 @@ def _steps(value: Any) -> list[str]:
 def _operation(folder: _Folder, entry: Entry) -> None:
     occupation = folder.occupation(entry)
     if occupation is not None:
-        occupation.operation = _steps(entry.body["steps"])
+        occupation.operation = _steps(entry.body["steps"]) or occupation.operation
+        files = entry.body.get("files", {})
+        occupation.grid_hashes |= {str(name): str(sha256) for name, sha256 in files.items()}
 
 
 def _remark(folder: _Folder, entry: Entry) -> None:

@@ -91,6 +91,7 @@ DECISIONS = (
     "accuracy_over_limit",
     "outside_area",
     "outside_hull",
+    "grid_file",
     "height_difference",
     "not_met",
 )

@@ -106,6 +106,7 @@ ANSWER_KEYS = {
     "accuracy_over_limit": ("accuracy",),
     "outside_area": ("area",),
     "outside_hull": ("hull",),
+    "grid_file": ("grid_file",),
 }
 
 DECISION_WORDS = {
@@ -117,6 +118,7 @@ DECISION_WORDS = {
     "operation": "frame operation {} chosen",
     "accuracy_over_limit": "frame operation over the accuracy limit accepted",
     "outside_area": "use outside the stated area accepted",
+    "grid_file": "another grid file accepted, SHA-256 {}",
     "outside_hull": "local coordinates outside the marks of the local grid accepted",
     "height_difference": "height readings that differ stand: {}",
     "not_met": "left with the requirement {} not met",

@@ -35,12 +35,13 @@ COMMANDS: dict[str, str] = {
     "key": "Keys that sign entries and certificates: make, list, show, export, trust; sign a book.",
     "marks": "List, import or export the marks of a book.",
     "frames": "Find a frame, see what a pair of frames does at a place, and which to record.",
+    "geoid": "Geoid models: add one with its record, list them, show one.",
     "profiles": "Requirements by published documents, for a session file.",
     "antenna": "Your own antennas: add from an ANTEX file or typed in, list, show.",
     "export": "Write out the received bytes of an occupation.",
     "rescue": "Salvage what a damaged book still holds into a new one.",
 }
-LATER = ("register", "geoid")
+LATER = ("register",)
 
 
 class LazyGroup(click.Group):

@@ -35,6 +35,7 @@ DECISIONS: dict[str, str] = {
     "outside_hull": "flag",
     "height_difference": "text",
     "not_met": "line",
+    "grid_file": "sha256",
 }
 # keys of a set-up that change what the decoder makes of the bytes
 DECODER_KEYS = frozenset({"receiver.accept_without_checksum", "receiver.talker"})
@@ -44,7 +45,7 @@ DECODER_KEYS = frozenset({"receiver.accept_without_checksum", "receiver.talker"}
     "entry",
     help="Write an entry into BOOK and print its number and hash. Keys are those of the session file: "
     "[[setup.height]] for height, any table.key for setup, [mark] for mark; text for remark; for decision one of "
-    "date, rollover_weeks, datum, talker, initialisation + used, operation, accuracy_over_limit, outside_area, outside_hull, "
+    "date, rollover_weeks, datum, talker, initialisation + used, operation, accuracy_over_limit, outside_area, outside_hull, grid_file, "
     "with reason.",
 )
 @click.argument("book", type=click.Path(path_type=Path))
@@ -209,6 +210,13 @@ def _decided(key: str, text: str) -> Any:
                 f"It is one of {', '.join(LEAVE_KEYS)}.",
             )
         return text
+    if kind == "sha256":
+        if len(text) != 64 or not set(text.lower()) <= set("0123456789abcdef"):
+            raise UsageError(
+                f"grid_file needs the SHA-256 of the file, 64 hex digits, not {text[:70]}.",
+                "`fieldbook geoid show NAME` tells it.",
+            )
+        return text.lower()
     if key == "rollover_weeks":
         digits = text.removeprefix("-")
         if not (digits.isascii() and digits.isdigit()) or int(digits) == 0:

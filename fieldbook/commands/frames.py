@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from fieldbook.clock import SystemClock
+from fieldbook.commands import grids
 from fieldbook.commands.output import line, note, write_json
 from fieldbook.errors import UsageError
 
@@ -50,31 +51,31 @@ def command() -> None:
 @click.argument("words", nargs=-1)
 @AT
 @BOOK
-@click.option("--grids", help="Instead: conformal grids of this frame (EPSG code) at the place.")
+@click.option("--grids", "of_frame", help="Instead: conformal grids of this frame (EPSG code) at the place.")
 @JSON
-def search(words: tuple[str, ...], at: str | None, book: Path | None, grids: str | None, *, as_json: bool) -> None:
+def search(words: tuple[str, ...], at: str | None, book: Path | None, of_frame: str | None, *, as_json: bool) -> None:
     """List them, smallest area first."""
     from fieldbook.commands.frames_json import frame_tree
     from fieldbook.occupy.frame_words import search_lines
     from fieldbook.reduce.frames import frames_by, grids_of
 
     place = _place(at, book)
-    if grids is not None:
+    if of_frame is not None:
         if place is None:
             raise UsageError("Grids are listed for a place.", 'Say where: --at "-34.27 146.05", or --book BOOK.')
         wanted = [word.casefold() for word in words]
         listed = [
             item
-            for item in grids_of(grids, place.lat_deg, place.lon_deg)
+            for item in grids_of(of_frame, place.lat_deg, place.lon_deg)
             if all(word in f"{item.code} {item.name}".casefold() for word in wanted)
         ]
         if as_json:
             rows = [{"code": item.code, "name": item.name, "area": item.area_name} for item in listed]
-            write_json({"schema": SCHEMA, "place": place.to_json(), "frame": grids, "grids": rows})
+            write_json({"schema": SCHEMA, "place": place.to_json(), "frame": of_frame, "grids": rows})
             return
         for item in listed:
             line(f"{item.code:11} {item.name}")
-        note("" if listed else f"No conformal grid of {grids} is known at this place.")
+        note("" if listed else f"No conformal grid of {of_frame} is known at this place.")
         return
     found = frames_by(words, None if place is None else (place.lat_deg, place.lon_deg))
     if as_json:
@@ -175,6 +176,10 @@ def ask(kind: str | None, at: str | None, book: Path | None, *, as_json: bool) -
         return
     for text in answer_lines(chosen, listed, place_known=place is not None):
         line(text)
+
+
+command.add_command(grids.add)
+command.add_command(grids.list_grids)
 
 
 def _place(at: str | None, book: Path | None) -> _Place | None:

@@ -81,6 +81,7 @@ class FrameChoice:
     realisation: str | None = None
     grid: str | None = None
     geoid: str | None = None
+    geoid_sha256: str | None = None  # of the file meant when the session file was read
     taken_as: tuple[TakenAs, ...] = ()
     motion: tuple[Motion, ...] = ()
 

@@ -37,6 +37,8 @@ class Occupation:
     talker: str | None = None  # session or decision
     initialisation_decisions: dict[int, tuple[bool, str]] = field(default_factory=dict)  # number -> (used, reason)
     operation: list[str] | None = None  # recorded codes of the frame operation, e.g. ["EPSG:9991 inverse", "EPSG:8049"]
+    grid_hashes: dict[str, str] = field(default_factory=dict)  # file name -> SHA-256 of what was used when certified
+    accepted_grid_files: list[str] = field(default_factory=list)  # SHA-256 of files a decision takes instead
     accuracy_over_limit: bool = False
     outside_area_accepted: bool = False
     outside_hull_accepted: bool = False  # of the marks that made a local grid

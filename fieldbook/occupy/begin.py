@@ -36,8 +36,9 @@ from fieldbook.signing.signer import Signer
 
 # What may differ between the session of an open occupation and the one it is taken up with: a port changes its
 # name when it is plugged in again, and a moved file is still recognised by its bytes. What was read from the metal is an
-# observation, not a set-up: who takes the occupation up need not type it as the first did.
-FREE_KEYS = frozenset({"receiver.link", "setup.inscription_read"})
+# observation, not a set-up: who takes the occupation up need not type it as the first did. A geoid file exchanged since
+# changes nothing of an occupation that began with the other one.
+FREE_KEYS = frozenset({"receiver.link", "setup.inscription_read", "frame.geoid_sha256"})
 
 
 @dataclass(frozen=True)

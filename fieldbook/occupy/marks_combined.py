@@ -49,6 +49,7 @@ from fieldbook.reduce.constants import SAME_EPOCH_YEARS
 from fieldbook.reduce.fix_classes import CLASSES, ClassOfFix
 from fieldbook.reduce.geodesy import enu_difference, geocentric, moved_by_enu
 from fieldbook.reduce.geoid import height_above_geoid
+from fieldbook.reduce.gridhashes import meant_geoid
 from fieldbook.reduce.occupation import METHOD, Reduced
 from fieldbook.reduce.prediction import type_a
 from fieldbook.reduce.region import coverage_factor_95
@@ -338,7 +339,7 @@ def _height(client: ClientPosition, form: LinearForm, latest: _Member, dirs: Seq
     epoch = latest.reduced.reduction.epoch_of_observation
     if geoid is None or client.h_m is None or epoch is None:
         return None
-    height = height_above_geoid(client, geoid, dirs, epoch_of_observation=epoch)
+    height = height_above_geoid(client, geoid, dirs, epoch_of_observation=epoch, meant=meant_geoid(latest.occupation))
     u_h, u_n = form.combined.u_enu_m[2], height.undulation_u_m
     if u_h is not None and u_n is not None:
         u_total, dof = welch_satterthwaite([(u_h, form.combined.dof_enu[2]), (u_n, None)])

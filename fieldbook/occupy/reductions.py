@@ -25,6 +25,7 @@ from fieldbook.nmea.sky_history import sky_history
 from fieldbook.occupy.local_positions import attach_to_reductions
 from fieldbook.reduce import frames
 from fieldbook.reduce.occupation import Reduced, reduce_occupation
+from fieldbook.settings.grids import grid_folders
 
 SEVERITIES = ("stop", "caution", "info")
 
@@ -39,8 +40,8 @@ class Failure:
 
 
 def search_dirs(book: Book) -> list[Path]:
-    """Where grids of a book are looked for before the package's own: beside the book."""
-    return [book.path.resolve().parent]
+    """Where grids of a book are looked for before the package's own: beside it, `grids/` there, the user's own."""
+    return grid_folders(book.path.resolve().parent)
 
 
 def reduce_book(book: Book, mark: str | None = None) -> tuple[list[Reduced], list[Failure]]:
@@ -175,12 +176,19 @@ def known_marks(state: BookState) -> list[str]:
 
 
 def record_operation(book: Book, item: Reduced) -> None:
-    """Keep the frame operation of an ended occupation as an entry, so that a later PROJ cannot quietly choose another.
+    """Keep the frame operation of an ended occupation as an entry, so that a later PROJ cannot quietly choose another,
+    and the hashes of the grid files that were used.
 
     Nothing is written when it is recorded already, or when nothing was computed (identity).
     """
     state = book.state()
     occupation = state.occupations[item.reduction.occupation]
     steps = frames.operation_codes(item.reduction.operation)
-    if steps and occupation.operation is None and not occupation.open:
-        book.append("operation", {"occupation": occupation.number, "steps": steps}, occupation.observer)
+    files = {grid.name: grid.sha256 for grid in item.reduction.operation.grids}
+    if item.reduction.height is not None:
+        files[item.reduction.height.model] = item.reduction.height.model_sha256
+    new_steps = bool(steps) and occupation.operation is None
+    if occupation.open or not (new_steps or files.items() - occupation.grid_hashes.items()):
+        return
+    body: Tree = {"occupation": occupation.number, "steps": occupation.operation or steps}
+    book.append("operation", {**body, "files": files} if files else body, occupation.observer)

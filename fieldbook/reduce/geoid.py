@@ -14,13 +14,11 @@ record nothing is known of its frame, so there is no height.
 
 from __future__ import annotations
 
-import hashlib
 import math
 import tomllib
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
-from importlib import resources
 from pathlib import Path
 from typing import Any
 
@@ -37,7 +35,10 @@ from fieldbook.reduce.frames import (
 )
 from fieldbook.reduce.geoidgrid import Undulation, corners_finite, read_gtx, six_point
 from fieldbook.reduce.geotiff import Layout, geotiff_layout
+from fieldbook.reduce.gridhashes import MeantFile, other_file
+from fieldbook.settings.grids import file_sha256, files_named, package_folder
 
+LARGEST_UNDULATION_M = 200.0  # EGM96 and EGM2008 lie within -107 and +86 m
 _AGREE_M = 0.001  # own reader and PROJ at a node
 
 
@@ -80,6 +81,7 @@ def height_above_geoid(
     search_dirs: Sequence[Path],
     *,
     epoch_of_observation: float,
+    meant: MeantFile | None = None,
 ) -> Height:
     """H of a mark by a model. `vertical95_m` is left None: the caller knows the uncertainty of h and fills it.
 
@@ -87,12 +89,13 @@ def height_above_geoid(
         client: the mark, with its ellipsoidal height.
         geoid_name: file name as in frame.geoid; looked for in `search_dirs`, then in the package's own data.
         epoch_of_observation: decimal year, for the height of a static frame against ITRF2020.
+        meant: the file the book names, or others a decision takes; None: none is named yet.
 
     `undulation_u_m` is the root sum of squares of the model's u_m, the interpolation and the difference of frames;
     None where the record states no u_m.
 
     Raises:
-        ReductionError: no h; file or record missing or damaged; the model does not go with the client's frame; no
+        ReductionError: no h; file or record missing or damaged; another file than the book names; the model does not go with the client's frame; no
             value at the mark.
     """
     if client.h_m is None:
@@ -101,7 +104,7 @@ def height_above_geoid(
             "The receiver must send altitude and geoid separation in the same sentence.",
             code="no_ellipsoidal_height",
         )
-    model = find_model(geoid_name, search_dirs)
+    model = find_model(geoid_name, search_dirs, meant)
     difference = _frame_difference(model.record, client, epoch_of_observation)
     found = undulation_at(model, client.lat_deg, client.lon_deg)
     heading = model.record.heading
@@ -154,19 +157,15 @@ def _layout(path: Path, size: int, changed_ns: int) -> Layout | None:
     return geotiff_layout(path)
 
 
-def find_model(geoid_name: str, search_dirs: Sequence[Path]) -> GeoidModel:
-    """The file, its record and its hash.
+def find_model(geoid_name: str, search_dirs: Sequence[Path], meant: MeantFile | None = None) -> GeoidModel:
+    """The file, its record and its hash. With `meant` the first file of that name that is one of those.
 
     Raises:
-        ReductionError: file or record missing, or the file is another one than the record's.
+        ReductionError: file or record missing, another file than the record's, or none of those meant.
     """
-    path = _found(geoid_name, search_dirs)
+    path = _found(geoid_name, search_dirs, meant)
     record = read_record(path.with_suffix(".toml"))
-    if path.suffix.lower() == ".gtx":
-        sha256 = read_gtx(path).sha256
-    else:
-        state = path.stat()
-        sha256 = _hash(path, state.st_size, state.st_mtime_ns)
+    sha256 = read_gtx(path).sha256 if path.suffix.lower() == ".gtx" else file_sha256(path)
     if record.sha256 is not None and record.sha256 != sha256:
         raise ReductionError(
             f"The geoid file {path.name} is not the one its record describes (SHA-256 {sha256[:12]}...).",
@@ -179,7 +178,8 @@ def find_model(geoid_name: str, search_dirs: Sequence[Path]) -> GeoidModel:
 def check_geoid_file(path: Path) -> str:
     """All checks of a new model file; its SHA-256.
 
-    A GTX file must have finite corner nodes, and one node read by PROJ must agree with our own reader to 1 mm.
+    A GTX file must have finite corner nodes, and one node read by PROJ must agree with our own reader to 1 mm. Of a GeoTIFF
+    the nodes must be where its tags say: PROJ's value in the middle of a cell is that of its four nodes.
 
     Raises:
         ReductionError: the file cannot be used, and why.
@@ -189,7 +189,8 @@ def check_geoid_file(path: Path) -> str:
             f"{path.name} is neither a GTX nor a GeoTIFF file.", "Convert it first.", code="geoid_file"
         )
     if path.suffix.lower() != ".gtx":
-        return _hash(path, path.stat().st_size, path.stat().st_mtime_ns)
+        _check_geotiff(path)
+        return file_sha256(path)
     grid = read_gtx(path)
     if not corners_finite(grid):
         raise ReductionError(
@@ -206,6 +207,49 @@ def check_geoid_file(path: Path) -> str:
             code="geoid_file",
         )
     return grid.sha256
+
+
+def _check_geotiff(path: Path) -> None:
+    layout = geotiff_layout(path)
+    if layout is None:
+        raise ReductionError(
+            f"{path.name} is no GeoTIFF grid of degrees: its tags do not say where its nodes are.",
+            "Fetch the file again (a saved web page is not a grid), or convert it to GTX.",
+            code="geoid_file",
+        )
+    south, west, north, east = layout.bounds
+    rows, columns = layout.rows // 2, layout.columns // 2
+    lat = layout.south_deg + (rows + 0.4) * layout.row_step_deg
+    lon = (layout.west_deg + (columns + 0.3) * layout.column_step_deg + 180.0) % 360.0 - 180.0
+    value = undulation_by_proj(path, lat, lon)
+    if abs(value) > LARGEST_UNDULATION_M or (six_point(
+        layout, lambda lats, lons: undulations_by_proj(path, lats, lons), lat, lon, value
+    ) is None and min(layout.rows, layout.columns) >= 8):  # fmt: skip
+        raise ReductionError(
+            f"{path.name} reads {value:.3f} m in its middle ({south:g} to {north:g}, {west:g} to {east:g}), which is not "
+            "what its nodes give there, or no undulation.",
+            "It is no geoid grid, or has no data in the middle: cut it to where it has.",
+            code="geoid_file",
+        )
+
+
+def grid_area(path: Path) -> tuple[tuple[float, float, float, float], tuple[float, float]] | None:
+    """Area (south, west, north, east) and spacing (latitude, longitude) in degrees; None where the file does not tell.
+
+    Raises:
+        ReductionError: a GTX file that is none.
+    """
+    if path.suffix.lower() == ".gtx":
+        grid = read_gtx(path)
+        rows, columns = grid.nodes.shape
+        layout = Layout(grid.south_deg, grid.west_deg, grid.row_step_deg, grid.column_step_deg, rows, columns)
+    else:
+        state = path.stat()
+        found = _layout(path, state.st_size, state.st_mtime_ns)
+        if found is None:
+            return None
+        layout = found
+    return layout.bounds, (layout.row_step_deg, layout.column_step_deg)
 
 
 def read_record(path: Path) -> GeoidRecord:
@@ -265,29 +309,25 @@ def _bad_record(path: Path, why: str) -> ReductionError:
     )
 
 
-def _found(geoid_name: str, search_dirs: Sequence[Path]) -> Path:
+def _found(geoid_name: str, search_dirs: Sequence[Path], meant: MeantFile | None) -> Path:
     if Path(geoid_name).suffix.lower() not in (".gtx", ".tif", ".tiff"):
         raise ReductionError(
             f"frame.geoid: {geoid_name!r} is neither a GTX nor a GeoTIFF file.",
             'Give a file name such as "egm96_15.gtx"; convert other formats first.',
             code="geoid_file",
         )
-    places = [*search_dirs, Path(str(resources.files("fieldbook") / "data"))]
-    for place in places:
-        path = Path(place) / geoid_name
-        if path.is_file():
-            return path.resolve()
+    found = files_named(geoid_name, search_dirs)
+    for path in found:
+        if meant is None or file_sha256(path) in meant.accepted:
+            return path
+    if found and meant is not None:
+        raise other_file(geoid_name, meant, file_sha256(found[0]))
+    places = [*search_dirs, package_folder()]
     raise ReductionError(
         f"The geoid file {geoid_name} is not there; looked in {', '.join(str(place) for place in places)}.",
         "Put the file and its record beside the session file or the book, or leave frame.geoid out.",
         code="geoid_missing",
     )
-
-
-@lru_cache(maxsize=8)
-def _hash(path: Path, size: int, changed_ns: int) -> str:
-    del size, changed_ns  # only the key of the cache
-    return hashlib.sha256(path.read_bytes()).hexdigest()
 
 
 def _frame_difference(record: GeoidRecord, client: ClientPosition, epoch: float) -> float:

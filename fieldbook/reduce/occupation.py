@@ -43,6 +43,7 @@ from fieldbook.reduce.estimate import Estimate, estimate
 from fieldbook.reduce.gates import Limits
 from fieldbook.reduce.geodesy import moved_along_normal, moved_by_enu
 from fieldbook.reduce.geoid import height_above_geoid
+from fieldbook.reduce.gridhashes import meant_geoid, require_same_grids
 from fieldbook.reduce.initialisations import InitialisationJudge, Judgement
 from fieldbook.reduce.motion import motion_findings
 from fieldbook.reduce.phase_centre import outside_validity
@@ -150,6 +151,7 @@ class OccupationReducer:
                 "Strike the decision that sets one aside, or occupy the mark again.",
                 code="no_usable_fix",
             )
+        frames.use_grid_folders(search_dirs)
         return _Steps(occupation, screened, judged, found, pictures).reduced(self._traces, search_dirs)
 
 
@@ -335,6 +337,7 @@ class _Steps:
             )
 
         client, operation = transform(keep)
+        require_same_grids(self.occupation, operation)
         if keep:
             would = frames.operation_codes(transform(None)[1])
             if would != frames.operation_codes(operation):
@@ -365,6 +368,7 @@ class _Steps:
             geoid,
             search_dirs,
             epoch_of_observation=self.epoch_of_observation,
+            meant=meant_geoid(self.occupation),
         )
         u_h, u_n = combined.u_enu_m[2], height.undulation_u_m
         if u_h is not None and u_n is not None:

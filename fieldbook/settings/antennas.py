@@ -24,7 +24,7 @@ from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.settings.antenna_source import LISTED_KEYS
 from fieldbook.settings.toml_text import BadToml, toml_tree
-from fieldbook.settings.user import user_file
+from fieldbook.settings.user_folder import user_folder
 from fieldbook.settings.values import nearest
 
 MAX_BYTES = 2 << 20
@@ -33,7 +33,7 @@ _NAME = re.compile(r"[A-Za-z0-9][A-Za-z0-9._+-]{0,63}")
 
 def antennas_folder() -> Path:
     """Where the list is kept, whether it exists or not."""
-    return user_file().parent / "antennas"
+    return user_folder() / "antennas"
 
 
 def antenna_path(name: str) -> Path:

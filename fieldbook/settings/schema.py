@@ -59,6 +59,7 @@ TABLES: dict[str, dict[str, str]] = {
         "realisation": "text",
         "grid": "text",
         "geoid": "text",
+        "geoid_sha256": "text",
         "taken_as": "list:frame.taken_as",
         "motion": "list:frame.motion",
     },

@@ -18,6 +18,7 @@ from fieldbook.model.canonical import Tree, normalised
 from fieldbook.settings.antenna_rules import antenna_conditions, reading_conditions
 from fieldbook.settings.antenna_source import with_antenna
 from fieldbook.settings.antex import block_calibration
+from fieldbook.settings.grids import with_geoid_hash
 from fieldbook.settings.schema import REQUIRED, TABLES, TOP_LEVEL
 from fieldbook.settings.toml_lines import line_of
 from fieldbook.settings.toml_text import BadToml, toml_tree
@@ -61,7 +62,12 @@ def load_session(path: Path) -> model.Session:
         raise UsageError(f"{path} is no text file.", "Name the session's TOML file.") from None
     except BadToml as problem:
         raise UsageError(f"{path} is no valid TOML: {problem}.", "Correct that line.") from None
-    return _build(with_antenna(tree, path.resolve().parent), _Where(path.name, text), stored=False)
+    return _build(_frozen(tree, path.resolve().parent), _Where(path.name, text), stored=False)
+
+
+def _frozen(tree: Tree, base_dir: Path) -> Tree:
+    """What the session names outside itself, put into it: antenna, and the hash of the geoid file."""
+    return with_geoid_hash(with_antenna(tree, base_dir), base_dir)
 
 
 def session_from_tree(tree: Tree) -> model.Session:
@@ -231,6 +237,7 @@ def _frame(tree: Tree) -> model.FrameChoice:
         realisation=tree.get("realisation"),
         grid=tree.get("grid"),
         geoid=tree.get("geoid"),
+        geoid_sha256=tree.get("geoid_sha256"),
         taken_as=taken,
         motion=motion,
     )

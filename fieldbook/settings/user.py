@@ -24,6 +24,7 @@ from fieldbook.errors import UsageError
 from fieldbook.model.canonical import Tree, normalised
 from fieldbook.settings.toml_lines import line_of
 from fieldbook.settings.toml_text import BadToml, toml_tree
+from fieldbook.settings.user_folder import user_folder
 from fieldbook.settings.values import BadValue, checked, nearest
 
 FILE_NAME = "fieldbook.toml"
@@ -39,9 +40,7 @@ CLASS_KEYS = {
 
 def user_file() -> Path:
     """Where the user's settings are looked for, whether they exist or not."""
-    import platformdirs
-
-    return Path(platformdirs.user_config_path("fieldbook", appauthor=False)) / FILE_NAME
+    return user_folder() / FILE_NAME
 
 
 def user_classes(path: Path | None = None) -> dict[str, Tree]:

@@ -8,16 +8,15 @@ from __future__ import annotations
 
 import hashlib
 import json
-import struct
 import subprocess
 import sys
 from pathlib import Path
 
 import pytest
+from invented_geoid import SHIFT_LAT, SHIFT_LON_WEST, ntv2
 
 ROOT = Path(__file__).parents[2]
 NAME = "touhokutaiheiyouoki2011.gsb"
-SHIFT_LAT, SHIFT_LON_WEST = 0.02, -0.05  # arc-seconds; NTv2 counts longitude positive west
 
 SCRIPT = """
 import json, sys, pyproj
@@ -31,34 +30,6 @@ print(json.dumps({
     "grids": [[grid.name, grid.sha256] for grid in operation.grids], "accuracy": operation.accuracy_m,
 }))
 """
-
-
-def ntv2(south: float, north: float, west: float, east: float, step: float) -> bytes:
-    """A constant shift: overview header, one sub-grid, nodes from the south-east corner westwards (degrees)."""
-
-    def record(key: str, value: bytes) -> bytes:
-        return key.ljust(8).encode() + value.ljust(8, b"\0")
-
-    def number(value: int) -> bytes:
-        return struct.pack("<i", value)
-
-    def real(value: float) -> bytes:
-        return struct.pack("<d", value)
-
-    rows, columns = round((north - south) / step) + 1, round((east - west) / step) + 1
-    head = [
-        record("NUM_OREC", number(11)), record("NUM_SREC", number(11)), record("NUM_FILE", number(1)),
-        record("GS_TYPE", b"SECONDS "), record("VERSION", b"invented"), record("SYSTEM_F", b"JGD2000 "),
-        record("SYSTEM_T", b"JGD2011 "), record("MAJOR_F", real(6378137.0)), record("MINOR_F", real(6356752.314)),
-        record("MAJOR_T", real(6378137.0)), record("MINOR_T", real(6356752.314)),
-        record("SUB_NAME", b"TEST    "), record("PARENT", b"NONE    "), record("CREATED", b"20270304"),
-        record("UPDATED", b"20270304"), record("S_LAT", real(south * 3600)), record("N_LAT", real(north * 3600)),
-        record("E_LONG", real(-east * 3600)), record("W_LONG", real(-west * 3600)),
-        record("LAT_INC", real(step * 3600)),
-        record("LONG_INC", real(step * 3600)), record("GS_COUNT", number(rows * columns)),
-    ]  # fmt: skip
-    node = struct.pack("<4f", SHIFT_LAT, SHIFT_LON_WEST, 0.01, 0.01)
-    return b"".join(head) + node * (rows * columns) + record("END", real(0.0))
 
 
 def run(folder: Path) -> subprocess.CompletedProcess[str]:

@@ -8,6 +8,7 @@ whether there was a connection.
     convert      transform_to_client           projection  project, check_grid        heightgrid  GeoTIFF geoid
     located      typed positions, there and back          geodesic    Karney's, by PROJ
     catalogue    frames by word and place        pair        what a pair would do at a place
+    gridfiles    the operator's own transformation grids
     questions    what corrects the receiver          local_plane  a plane of our own, for local grids
 """
 
@@ -38,6 +39,7 @@ from fieldbook.reduce.frames.convert import (  # noqa: E402
     transform_to_client,
 )
 from fieldbook.reduce.frames.geodesic import geodesic  # noqa: E402
+from fieldbook.reduce.frames.gridfiles import GridFacts, forget_offers, grid_facts, use_grid_folders  # noqa: E402
 from fieldbook.reduce.frames.heightgrid import undulation_by_proj, undulations_by_proj  # noqa: E402
 from fieldbook.reduce.frames.local_plane import on_local_plane  # noqa: E402
 from fieldbook.reduce.frames.located import located, printed  # noqa: E402
@@ -55,6 +57,7 @@ from fieldbook.reduce.frames.registry import (  # noqa: E402
     versions,
 )
 from fieldbook.reduce.frames.route import OperationChanged  # noqa: E402
+from fieldbook.settings.grids import user_grids_folder  # noqa: E402
 
 __all__ = [
     "ANSWERS",
@@ -63,6 +66,7 @@ __all__ = [
     "Answer",
     "Considered",
     "FrameInfo",
+    "GridFacts",
     "ListedGrid",
     "OperationChanged",
     "Pair",
@@ -74,9 +78,11 @@ __all__ = [
     "client_epoch_of",
     "decimal_year",
     "ellipsoidal_height_difference_to_itrf2020",
+    "forget_offers",
     "frame_info",
     "frames_by",
     "geodesic",
+    "grid_facts",
     "grids_of",
     "inside",
     "is_global_realisation",
@@ -96,5 +102,8 @@ __all__ = [
     "undulation_by_proj",
     "undulations_by_proj",
     "unproject",
+    "use_grid_folders",
     "versions",
 ]
+
+use_grid_folders([user_grids_folder()])
