@@ -59,7 +59,7 @@ def geotiff_layout(path: Path) -> Layout | None:
     try:
         with path.open("rb") as file:
             return _layout(_tags(file, path.stat().st_size))
-    except (OSError, struct.error, ValueError, KeyError, OverflowError):
+    except (OSError, struct.error, ValueError, LookupError, OverflowError):
         return None
 
 

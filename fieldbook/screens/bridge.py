@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 
 from fieldbook.clock import Clock, SystemClock
 from fieldbook.errors import FieldbookError, UsageError
-from fieldbook.model.canonical import Tree
+from fieldbook.model.canonical import Tree, normalised
 from fieldbook.model.entry import Entry
 from fieldbook.model.live import LiveView
 from fieldbook.model.reduction import AntennaHeight, Finding, MarkResult, Reduction
@@ -208,6 +208,46 @@ class Bridge:
         from fieldbook.settings.session import session_from_tree
 
         return session_from_tree(tree)
+
+    def antenna_names(self) -> list[str]:
+        """Names of the user's own antennas."""
+        from fieldbook.settings.antennas import listed_names
+
+        return listed_names()
+
+    def antenna_from_list(self, name: str, frequency: str) -> Tree:
+        """Keys of [antenna] as listed under a name; of a calibration also the offset that these signals have.
+
+        Raises:
+            UsageError: no such name, a broken file, or no signals that the calibration has.
+        """
+        from fieldbook.settings.antennas import listed_antenna
+
+        kept: Tree = normalised({**listed_antenna(name), "listed": name})
+        if "calibration" in kept:
+            kept["arp_to_phase_centre_m"] = self.calibrated_offset(kept["calibration"], frequency)
+            kept["antex"] = kept["calibration"]["file"]
+        return kept
+
+    def calibrated_offset(self, kept: Tree, frequency: str) -> Tree:
+        """ARP to phase centre of these signals, from the calibration kept in a session.
+
+        Raises:
+            UsageError: no signals that the calibration has.
+        """
+        from fieldbook.model.frequencies import combination
+        from fieldbook.settings.antenna_rules import combined_offset
+        from fieldbook.settings.antex import block_calibration
+
+        found = block_calibration(kept["block"], kept["file"])
+        try:
+            offset = combined_offset(found, combination(frequency))
+        except (ValueError, KeyError) as problem:
+            have = ", ".join(item.code for item in found.frequencies)
+            raise UsageError(
+                f"Say which signals the position is computed from ({problem}).", f"The calibration has {have}."
+            ) from None
+        return {part: f"{value:.5f}" for part, value in zip(("north", "east", "up"), offset, strict=True)}
 
     def session_file(self, path_text: str) -> Tree:
         """The tree of a session file, its link made independent of the folder the file lies in."""

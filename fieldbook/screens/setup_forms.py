@@ -24,6 +24,8 @@ ANTENNA_KEYS = (
     "slant_radius_m",
     "slant_mark_above_arp_m",
     "arp_above_mount_m",
+    "offset_frequency",
+    "receiver_applies",
 )
 
 
@@ -128,6 +130,20 @@ def antenna(desk: Desk) -> None:
         Field("north", "Ph. centre N, m", "number", _text_of(offset, "north"), hint="not stated"),
         Field("east", "Ph. centre E, m", "number", _text_of(offset, "east"), hint="not stated"),
         Field("up", "Ph. centre up, m", "number", _text_of(offset, "up"), hint="not stated"),
+        Field("offset_frequency", "Signals", "text", _text_of(tree, "offset_frequency"), hint="L1, L1/L2, ..."),
+        Field(
+            "receiver_applies",
+            "Receiver applies",
+            kinds["receiver_applies"],
+            _text_of(tree, "receiver_applies"),
+        ),
+        Field(
+            "listed",
+            "From your list",
+            "text",
+            _text_of(tree, "listed"),
+            hint=", ".join(desk.bridge.antenna_names()) or "empty",
+        ),
     ]
 
     def changes(values: Values) -> Tree:
@@ -135,9 +151,21 @@ def antenna(desk: Desk) -> None:
         parts = {key: values[key] for key in ("north", "east", "up") if values[key]}
         if parts:
             keys["arp_to_phase_centre_m"] = parts
+        if values["listed"] and values["listed"] != tree.get("listed"):
+            # what is listed under the name comes whole, in place of what stood here
+            keys |= desk.bridge.antenna_from_list(values["listed"], values["offset_frequency"])
+        elif "calibration" in tree:
+            keys["arp_to_phase_centre_m"] = desk.bridge.calibrated_offset(
+                tree["calibration"], values["offset_frequency"]
+            )
         return {"antenna": keys}
 
     def check(values: Values) -> dict[str, str]:
+        try:
+            changes(values)
+        except FieldbookError as problem:
+            signals = problem.text.startswith("Say which signals")
+            return {"offset_frequency" if signals else "listed": f"{problem.text} {problem.remedy}"}
         parts = [key for key in ("north", "east", "up") if not values[key]]
         if 0 < len(parts) < 3:
             return {parts[0]: "write all three parts of the offset, or none"}

@@ -18,10 +18,12 @@ from fieldbook.certificate.identity import sealed
 from fieldbook.certificate.issue import RENDERERS
 from fieldbook.certificate.read_file import PARSER_ERRORS, Unreadable, facts_of, text_lines
 from fieldbook.certificate.verify_file import verify_certificate
-from fieldbook.errors import LinkError, UsageError
+from fieldbook.errors import LinkError, ReductionError, UsageError
 from fieldbook.links.address import parse_link
 from fieldbook.links.base import EndOfLink, LinkLost
 from fieldbook.links.file import FileLink
+from fieldbook.reduce.frames.gridfiles import ntv2_head
+from fieldbook.reduce.geotiff import geotiff_layout
 
 from .edits import edited, script_of
 from .target import Target, kept, workshop
@@ -209,6 +211,23 @@ def _log_seeds() -> list[bytes]:
     ]
 
 
+def grid_file(data: bytes) -> None:
+    """Headers of geoid and transformation grids: a place on the earth, None, or a ReductionError."""
+    for name, read in (("any.tif", geotiff_layout), ("any.gsb", ntv2_head)):
+        path = workshop() / name
+        path.write_bytes(data)
+        try:
+            found = read(path)
+        except ReductionError:
+            continue
+        if found is None:
+            continue
+        south, west, north, east = found.bounds if name.endswith("tif") else found[1]
+        assert -90.1 <= south < north <= 90.1
+        assert west < east
+        assert abs(west) <= 720
+
+
 _PDF = (
     b"endobj",
     b"stream\r\n",
@@ -226,6 +245,7 @@ _PDF = (
 )
 _HTML = (b"<script>", b"</script>", b"<!--", b"<", b"&#0;", b"</title>", b"\x1b[2J", "\u202e".encode())
 TARGETS = [
+    Target("grid_file", "grid header", grid_file, lambda: kept("grid_file"), words=(b"NUM_OREC", b"\x0b\0\0\0", b"\0" * 8, b"\xff" * 8, b"\x7f\xf0\0\0\0\0\0\0"), most_bytes=900),
     Target("certificate", "certificate file", certificate, lambda: _certificate_seeds() + kept("certificate"), smoke=40, words=_HTML, most_bytes=400),
     Target("certificate_pdf", "facts of a PDF", certificate_pdf, lambda: _pdf_seeds() + kept("certificate_pdf"), smoke=100, words=_PDF, most_bytes=2000),
     Target("packed_log", "packed log", packed_log, lambda: _log_seeds() + kept("packed_log"), words=(b"PK\x03\x04", b"PK\x05\x06", b"\x1f\x8b\x08", b"BZh9", b"\xff\xfe"), most_bytes=2000),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import asyncio
+from pathlib import Path
 
 import pytest
 from textual.events import Key
@@ -275,7 +276,7 @@ def test_antenna_point_and_link_are_written_where_they_belong() -> None:
             while top.fields[top.here].key != "serial":
                 await pilot.press("up")
             await typed(pilot, "0099")
-            await pilot.press(*["enter"] * 8)
+            await pilot.press(*["enter"] * 11)
             await on_desk(pilot)
             await see(pilot, "serial 0099")
             await pilot.press("p")
@@ -295,6 +296,46 @@ def test_antenna_point_and_link_are_written_where_they_belong() -> None:
             await on_desk(pilot)
             await see(pilot, "tcp://base.example:2101")
             assert kinds(bridge) == ["session", "session"]
+
+    asyncio.run(go())
+
+
+def test_an_antenna_of_the_users_list_brings_its_values(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Calibrated: what the receiver applies must be said before it is written; then block and offset stand in the session."""
+    from invented_antex import FILE
+
+    from fieldbook.commands import run
+
+    monkeypatch.setattr("fieldbook.settings.antennas.antennas_folder", lambda: tmp_path / "antennas")
+    (tmp_path / "invented.atx").write_text(FILE, encoding="ascii")
+    assert run(["antenna", "add", str(tmp_path / "invented.atx"), "--type", "DEMO-A1 NONE", "--name", "demo"]) == 0
+
+    async def go() -> None:
+        bridge = FakeBridge()
+        async with opened(bridge) as pilot:
+            await pilot.press("3", "a")
+            top = await form(pilot)
+            while top.fields[top.here].key != "listed":
+                await pilot.press("down")
+            await typed(pilot, "demo-9")
+            await pilot.press("enter")
+            await see(pilot, 'no antenna "demo-9"')
+            await typed(pilot, "demo")
+            await pilot.press("enter")
+            await see(pilot, "Say which signals", "G01, G02")
+            await pilot.press(*"L1", "enter", "enter", "enter")
+            await see(pilot, "it must be said what")
+            while top.fields[top.here].key != "receiver_applies":
+                await pilot.press("down")
+            await pilot.press("right", "down", "enter")  # nothing
+            await on_desk(pilot)
+            kind, body = bridge.calls[0]
+            assert kind == "session"
+            antenna = body["tree"]["antenna"]
+            assert antenna["calibration"]["file"] == "invented.atx"
+            assert antenna["arp_to_phase_centre_m"]["up"] == "0.08730"
+            assert antenna["receiver_applies"] == "nothing"
+            await see(pilot, "by invented.atx, L1")
 
     asyncio.run(go())
 

@@ -85,7 +85,7 @@ def grid_facts(path: Path) -> GridFacts:
         )
     if "," in str(path) or '"' in str(path):
         raise UsageError(f"The path {path} holds a comma or a quotation mark.", "Rename the file or its folder.")
-    kind, bounds, step, subgrids = _ntv2(path) if ending == ".gsb" else _raster(path)
+    kind, bounds, step, subgrids = ntv2_head(path) if ending == ".gsb" else _raster(path)
     south, west, north, east = bounds
     # the middle of a cell near the middle of the area: a node may be one of the few without data
     lat = south + (math.floor((north - south) / step[0] / 2) + 0.5) * step[0]
@@ -130,7 +130,12 @@ def _raster(path: Path) -> tuple[str, tuple[float, float, float, float], tuple[f
     return "GeoTIFF", layout.bounds, (layout.row_step_deg, layout.column_step_deg), 1
 
 
-def _ntv2(path: Path) -> tuple[str, tuple[float, float, float, float], tuple[float, float], int]:
+def ntv2_head(path: Path) -> tuple[str, tuple[float, float, float, float], tuple[float, float], int]:
+    """("NTv2", area, spacing, number of sub-grids) from the first sub-grid's header.
+
+    Raises:
+        ReductionError: it is none, or is cut off.
+    """
     try:
         size = path.stat().st_size
         with path.open("rb") as file:
@@ -150,7 +155,7 @@ def _ntv2(path: Path) -> tuple[str, tuple[float, float, float, float], tuple[flo
     good = all(math.isfinite(value) for value in values) and lat_step > 0 and lon_step > 0
     if not good or not -90.01 <= south < north <= 90.01 or not -360 <= east < west <= 360:
         raise _unreadable(path, "its first sub-grid has no place on the earth")
-    if size < 16 * 22 + 16 * count:
+    if count < 1 or size < 16 * 22 + 16 * count:
         raise _unreadable(path, f"it has {size} bytes, its first sub-grid alone asks for {16 * 22 + 16 * count}")
     return "NTv2", (south, -west, north, -east), (lat_step, lon_step), subgrids
 
