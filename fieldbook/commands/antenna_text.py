@@ -90,4 +90,5 @@ def _formulas(notch: object, radius: object, mount: object) -> list[str]:
         rows.append("slant:    no dimensions stated: vertical readings only")
     if mount is not None:
         rows.append(f"mount:    ARP height = reading to the bottom of the mount + {mount}")
+        rows.append(f"rod:      ARP height = fixed length of the rod + {mount}")
     return [*rows, "vertical: ARP height = v"]
