@@ -12,7 +12,7 @@ findings -> the mark's own leave check.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -285,6 +285,8 @@ def _inputs(
         mean, own, shared = split_terms(
             (stated or reduction.uncertainty).budget, mean_term(part.u_enu_m, part.dof_enu, part.rho_en), gear
         )
+        if estimate.mean.governed_by != "data":
+            mean = replace(mean, group=f"mean, {estimate.fix_class.name}")
         prior = class_mean_u_m(estimate.fix_class, reduction.kept_s)
         found.append(Input(item.number, offset, mean, own, shared, prior))
     return found

@@ -3,7 +3,8 @@
 Strategy: a Term is one line with its standard uncertainty and degrees of freedom per axis. 0.0 = it does not touch
 this axis; None = not known, and then the combined figure of that axis is not known either: a missing line never
 makes an uncertainty smaller. Terms that share a `group` (the two halves of the least uncertainty claimed for a kind
-of fix) stand as separate lines but count as ONE quantity with one number of degrees of freedom.
+of fix; the means of several occupations that rest on one class of fix) stand as separate lines, but what is not known of
+their sizes is ONE thing: their variances err together, so they do not add degrees of freedom to one another.
 """
 
 from __future__ import annotations
@@ -133,18 +134,35 @@ def combine(terms: Sequence[Term]) -> Combined:
     )
 
 
+def erring_together(parts: Iterable[tuple[float, float | None]]) -> tuple[float, float | None]:
+    """(u, dof) of parts (u_i, dof_i) whose variance estimates err in the same sense: nu = u^4 / (sum u_i^2/sqrt(nu_i))^2.
+
+    As `welch_satterthwaite`, where the relative standard deviations sqrt(2/nu_i) of the variances add instead of their
+    squares: equal parts of nu degrees of freedom have nu together, not nu times their number.
+    """
+    pairs = [(u, dof) for u, dof in parts if u != 0.0]
+    variance = math.fsum(u * u for u, _ in pairs)
+    spread = math.fsum(u * u / variance / math.sqrt(dof) for u, dof in pairs if dof is not None and math.isfinite(dof))
+    return math.sqrt(variance), (1 / spread**2 if spread > 0 else None)
+
+
 def _grouped(terms: Sequence[Term]) -> list[Term]:
-    merged: dict[str, Term] = {}
+    groups: dict[str, list[Term]] = {}
     for number, term in enumerate(terms):
-        key = f"#{number}" if term.group is None else term.group
-        held = merged.get(key)
-        merged[key] = term if held is None else replace(held, u_enu_m=_rss(held.u_enu_m, term.u_enu_m))
-    return list(merged.values())
+        groups.setdefault(f"#{number}" if term.group is None else term.group, []).append(term)
+    return [same[0] if len(same) == 1 else together(same) for same in groups.values()]
 
 
-def _rss(first: Triple, second: Triple) -> Triple:
-    east, north, up = (None if a is None or b is None else math.hypot(a, b) for a, b in zip(first, second, strict=True))
-    return east, north, up
+def together(same: Sequence[Term]) -> Term:
+    """Terms of one group as one, with the first one's name."""
+    u: list[float | None] = []
+    dof: list[float | None] = []
+    for axis in range(3):
+        known = [(value, term.dof_enu[axis]) for term in same if (value := term.u_enu_m[axis]) is not None]
+        found = erring_together(known) if len(known) == len(same) else (None, None)
+        u.append(found[0])
+        dof.append(found[1])
+    return replace(same[0], u_enu_m=(u[0], u[1], u[2]), dof_enu=(dof[0], dof[1], dof[2]))
 
 
 def _axis(terms: Sequence[Term], axis: int) -> tuple[float | None, float | None]:

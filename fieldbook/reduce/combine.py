@@ -14,7 +14,8 @@ cannot disagree about what is common.
                  in both, what the larger has beyond it is its own. (u_i u_j instead gives negative weights as soon as
                  the two differ much, the effect known as Peelle's puzzle: a mean outside of both values.)
     dof          Welch-Satterthwaite over the same lines; all parts of the least uncertainty claimed for a kind of fix
-                 are one quantity with one number of degrees of freedom (`Term.group`).
+                 are one quantity with one number of degrees of freedom (`Term.group`), and so are the means of those
+                 occupations that the class of fix still governs in part: a class too good is too good for all of them.
 
 Sources: generalised least squares and its covariance: A. C. Aitken, Proc. R. Soc. Edinburgh 55 (1935) 42-48 (from
 memory, high); JCGM 100:2008, 5.2 (correlated input), G.4 (dof); t and F regions: `region`.
@@ -31,7 +32,7 @@ from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
 from fieldbook.model.reduction import BudgetLine
-from fieldbook.reduce.budget import Combined, Term, Triple, combine, welch_satterthwaite
+from fieldbook.reduce.budget import Combined, Term, Triple, combine, together, welch_satterthwaite
 from fieldbook.reduce.correlated_mean import SLOW_FACTOR, SLOW_SHARE, process_variance
 from fieldbook.reduce.fix_classes import ClassOfFix
 
@@ -239,9 +240,11 @@ def printed_lines(terms: Sequence[Term]) -> list[BudgetLine]:
         found.setdefault((term.source, term.common), []).append(term)
     lines = []
     for same in found.values():
+        if same[0].group is not None:
+            lines.append(together(same).line())
+            continue
         axes = [_together([(term.u_enu_m[axis], term.dof_enu[axis]) for term in same]) for axis in range(3)]
-        u = tuple(item[0] for item in axes)
-        dof = same[0].dof_enu if same[0].group is not None else tuple(item[1] for item in axes)
+        u, dof = tuple(item[0] for item in axes), tuple(item[1] for item in axes)
         lines.append(replace(same[0], u_enu_m=(u[0], u[1], u[2]), dof_enu=(dof[0], dof[1], dof[2])).line())
     return lines
 

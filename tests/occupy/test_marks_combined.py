@@ -19,7 +19,7 @@ from fieldbook.book.store import Book
 from fieldbook.clock import SystemClock
 from fieldbook.commands import run
 from fieldbook.model.epoch import Epoch
-from fieldbook.model.reduction import MarkResult
+from fieldbook.model.reduction import MarkResult, Uncertainty
 from fieldbook.model.session import Session
 from fieldbook.model.state import BookState, Occupation
 from fieldbook.occupy.marks_combined import combine_marks
@@ -83,6 +83,20 @@ def test_two_occupations_hold_the_truth_and_shrink_the_region(recorded: Recorded
     assert mark.uncertainty.vertical95_m < min(item.uncertainty.vertical95_m or 0.0 for item in alone)
     assert [item.occupation for item in mark.used] == [1, 2]
     assert sum(item.weight_enu[0] for item in mark.used) == pytest.approx(1.0)
+
+
+def test_means_that_rest_on_one_class_of_fix_do_not_add_degrees_of_freedom(recorded: Recorded) -> None:
+    (mark,) = recorded.marks()
+    alone = [item.reduction.uncertainty for item in recorded.reduced(recorded.state.occupations)]
+    assert all(item.governed_by != "data" for item in alone)
+    assert mark.uncertainty is not None
+
+    def dof(uncertainty: Uncertainty) -> float:
+        (line,) = [line for line in uncertainty.budget if line.source == "mean of the kept epochs"]
+        assert line.dof is not None
+        return line.dof
+
+    assert dof(mark.uncertainty) <= max(dof(item) for item in alone) + 1e-9
 
 
 def test_position_is_the_weighted_mean_of_geocentric_coordinates(recorded: Recorded) -> None:

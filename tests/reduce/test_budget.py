@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
+import numpy as np
 import pytest
 
-from fieldbook.reduce.budget import Term, combine, welch_satterthwaite
+from fieldbook.reduce.budget import Term, combine, erring_together, welch_satterthwaite
 from fieldbook.reduce.region import coverage_factor_95
 
 MEAN = Term("mean", "A", "t", (0.004, 0.005, 0.009), (6.0, 7.0, 8.0), rho_en=0.6)
@@ -64,3 +66,32 @@ def test_a_budget_without_terms_or_without_east_is_refused() -> None:
         combine([])
     with pytest.raises(ValueError, match="east and north"):
         combine([Term("x", "B", "normal", (None, 0.1, 0.1))])
+
+
+def test_variances_that_err_together_do_not_add_degrees_of_freedom() -> None:
+    """Drawn: two equal parts whose variances are ONE scaled chi-squared of 5 dof; the sum's variance has 5, not 10.
+
+    From the moments of the estimated variance: nu = 2 mean^2/variance (GUM G.4.1, the relation behind eq. G.2b).
+    """
+    rng = np.random.default_rng(1)
+    shared = rng.chisquare(5, 400_000) / 5
+    other = rng.chisquare(12, 400_000) / 12
+    together_s2, apart_s2 = 9 * shared + 4 * shared, 9 * shared + 4 * other
+    for s2, (u, dof) in (
+        (together_s2, erring_together([(3.0, 5.0), (2.0, 5.0)])),
+        (apart_s2, welch_satterthwaite([(3.0, 5.0), (2.0, 12.0)])),
+    ):
+        assert u == pytest.approx(math.sqrt(13))
+        assert dof == pytest.approx(2 * s2.mean() ** 2 / s2.var(), rel=0.02)
+    assert erring_together([(1.0, None), (1.0, None)])[1] is None
+    assert erring_together([(0.0, 3.0), (2.0, 7.0)]) == (2.0, pytest.approx(7.0))
+
+
+def test_terms_of_one_group_count_as_one_quantity() -> None:
+    part = Term("mean", "A", "t", (0.003, 0.003, 0.006), (6.0, 6.0, 6.0), group="mean")
+    single = combine([part, part])
+    assert single.u_enu_m[2] == pytest.approx(0.006 * math.sqrt(2))
+    assert single.dof_enu[2] == pytest.approx(6.0)
+    assert combine([replace(part, group=None), replace(part, group=None)]).dof_enu[2] == pytest.approx(12.0)
+    unknown = combine([part, replace(part, u_enu_m=(0.003, 0.003, None))])
+    assert unknown.u_enu_m[2] is None
