@@ -203,7 +203,10 @@ def _place(at: str | None, book: Path | None) -> _Place | None:
         return None
     from fieldbook.commands.open_book import reading
     from fieldbook.occupy.where import whereabouts
+    from fieldbook.reduce.frames import use_grid_folders
+    from fieldbook.settings.grids import grid_folders
 
+    use_grid_folders(grid_folders(book.resolve().parent))
     with reading(book) as opened:
         where = whereabouts(opened)
     epoch = now if where.day is None else decimal_year(where.day)

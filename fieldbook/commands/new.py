@@ -25,7 +25,7 @@ def command(book: Path, session_path: Path, key_path: Path | None, *, as_json: b
     from fieldbook.signing.in_book import sign_head
 
     session = load_session(session_path)
-    check_session_frames(session)
+    check_session_frames(session, session_path.resolve().parent)
     address = parse_link(session.receiver.link, session_path.resolve().parent)
     tree = merged(
         session.tree, {"receiver": {"link": address.text}}

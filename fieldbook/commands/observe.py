@@ -73,7 +73,7 @@ def _observe(
     from fieldbook.settings.session import load_session
 
     session = load_session(session_path)
-    check_session_frames(session)
+    check_session_frames(session, session_path.resolve().parent)
     if link_text is not None:
         address = parse_link(link_text, Path.cwd())
     else:

@@ -330,18 +330,26 @@ def _found(geoid_name: str, search_dirs: Sequence[Path], meant: MeantFile | None
     )
 
 
+def require_frame(record: GeoidRecord, client: str) -> None:
+    """Refuse a national model with a frame that is not its own.
+
+    Raises:
+        ReductionError: it belongs to other frames.
+    """
+    codes, info = (record.frame, *record.frames), frame_info(client)
+    if record.kind == "national" and not any(same_frame(frame_info(code), info) for code in codes):
+        raise ReductionError(
+            f"The geoid model {record.name} belongs to {', '.join(codes)}, the client's frame is {client} ({info.name}).",
+            "Give the model of the client's frame, or leave frame.geoid out: then there is no height H.",
+            code="geoid_frame",
+        )
+
+
 def _frame_difference(record: GeoidRecord, client: ClientPosition, epoch: float) -> float:
     """Ellipsoidal height in the client's frame minus in the model's, metres; 0 where they are the same."""
     info = frame_info(client.frame)
     if record.kind == "national":
-        codes = (record.frame, *record.frames)
-        if not any(same_frame(frame_info(code), info) for code in codes):
-            raise ReductionError(
-                f"The geoid model {record.name} belongs to {', '.join(codes)}, the client's frame is {client.frame} "
-                f"({info.name}).",
-                "Give the model of the client's frame, or leave frame.geoid out: then there is no height H.",
-                code="geoid_frame",
-            )
+        require_frame(record, client.frame)
         return 0.0
     if is_global_realisation(info):
         return 0.0

@@ -181,6 +181,16 @@ def test_a_model_of_another_frame_is_refused(job: Path, model: Path, fieldbook) 
     assert failed.json["failed"][0]["error"]["code"] == "geoid_frame"
 
 
+def test_a_model_of_another_frame_is_refused_before_the_first_byte(job: Path, fieldbook) -> None:
+    record = job / "grids" / "invented.toml"
+    record.write_text(record.read_text(encoding="utf-8").replace("EPSG:7843", "EPSG:4939"), encoding="utf-8")
+    for arguments in (("observe", job / "b.book", "--session"), ("new", job / "b.book", "--from")):
+        said = fieldbook(*arguments, job / "session.toml")
+        assert said.code == 2
+        assert "belongs to EPSG:4939" in said.err
+        assert not (job / "b.book").exists()
+
+
 def test_a_session_that_named_no_hash_is_held_to_its_first_certificate(job: Path, fieldbook) -> None:
     """As in books of older versions: the `operation` entry of the certificate names the file."""
     book = job / "ridge.book"

@@ -51,6 +51,34 @@ def test_add_and_use(tmp_path: Path, call) -> None:
     assert f"{NAME}: EPSG:4947 to EPSG:6667" in call("frames", "grids").stdout
 
 
+def test_a_grid_beside_a_book_is_the_books(tmp_path: Path, call) -> None:
+    """Seen with that book and not without it."""
+    job, path = tmp_path / "job", tmp_path / NAME
+    job.mkdir()
+    path.write_bytes(ntv2(37.0, 39.0, 140.0, 141.5, 0.1))
+    book = job / "any.book"
+    text = (ROOT / "tests" / "settings" / "contract_sample.toml").read_text(encoding="utf-8")
+    for old, new in (
+        ('receiver = "EPSG:7912"', 'receiver = "EPSG:4947"'),
+        ('client = "EPSG:7843"', 'client = "EPSG:6667"'),
+        ('grid = "EPSG:7855"', ""),
+        ('geoid = "egm96_15.gtx"', ""),
+        ('name = "KR-07"', 'name = "KR-07"\napproximate = { lat_deg = 37.95, lon_deg = 140.55 }'),
+    ):
+        assert old in text, old
+        text = text.replace(old, new, 1)
+    (job / "session.toml").write_text(text, encoding="utf-8")
+    made = call("new", book, "--from", job / "session.toml")
+    assert made.returncode == 0, made.stderr
+    assert json.loads(call("frames", "show", "--book", book, "--json").stdout)["pair"]["missing_grids"] == [NAME]
+    assert call("frames", "add", path, *ENDS, "--book", book).returncode == 0
+    shown = json.loads(call("frames", "show", "--book", book, "--json").stdout)["pair"]
+    assert shown["missing_grids"] == []
+    assert shown["operation"] is not None
+    without = call("frames", "show", "EPSG:4947", "EPSG:6667", "--at", "37.95 140.55", "--json")
+    assert json.loads(without.stdout)["pair"]["missing_grids"] == [NAME]
+
+
 def test_a_grid_proj_does_not_look_for_says_so(tmp_path: Path, call) -> None:
     path = tmp_path / "other.gsb"
     path.write_bytes(ntv2(37.0, 39.0, 140.0, 141.5, 0.1))
