@@ -28,7 +28,7 @@ def summary_rows(facts: Tree) -> list[list[str]]:
     agreement = f"largest difference {max(float(one['printed']['plan_mm']) for one in pairs):.0f} mm in plan; {grade}"
     common = {row[0]: row for row in evidence.summary_rows(facts)}
     wanted = ("Fix accepted", "Corrections", "Antenna", "Receiver", "Observers", "Surveyor")
-    return [*rows, ["They", agreement], *(common[name] for name in wanted)]
+    return [*rows, ["Repeats", agreement], *(common[name] for name in wanted)]
 
 
 def combined(facts: Tree) -> Section:
