@@ -70,6 +70,8 @@ ACTIONS: tuple[Action, ...] = (
            "fieldbook watch BOOK", PAGES, 6),
     Action("end", "e", "E", "end", "End the occupation. Asks first.", "fieldbook entry BOOK end",
            ("setup", "occupation", "leave", "cover"), 7),
+    Action("copy", "y", "Y", "copy", "Copy the coordinate in sight, with frame, epoch and 95 %: to the clipboard or a file.",
+           "fieldbook marks coordinates BOOK MARK", ("reduction",), 3),
     Action("update", "u", "U", "update", "Reduce again, or list again.", "fieldbook reduce BOOK",
            ("reduction", "certificate", "links"), 2),
     Action("issue", "i", "I", "issue", "Issue the certificate, signed off.", "fieldbook certify BOOK MARK --sign-off",

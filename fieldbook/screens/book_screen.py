@@ -23,8 +23,9 @@ from fieldbook.screens import entry_forms, height_form, recording, setup_forms
 from fieldbook.screens.actions import ACTIONS, BY_NAME, PAGES
 from fieldbook.screens.alarm_log import Alarm, AlarmLog
 from fieldbook.screens.big import BigView
-from fieldbook.screens.bridge import Bridge, Reduced
+from fieldbook.screens.bridge import Bridge
 from fieldbook.screens.certificate import CertificatePage, paper
+from fieldbook.screens.copying import copy_coordinate
 from fieldbook.screens.cover import CoverPage
 from fieldbook.screens.diary import DiaryPage
 from fieldbook.screens.feed import Feed
@@ -40,6 +41,7 @@ from fieldbook.screens.page import Page, open_occupation
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.reduction import ReductionPage
 from fieldbook.screens.setup import SetupPage
+from fieldbook.screens.sheets import Reduced
 
 TICK_S = 0.25
 ASK_EVERY = 4  # ticks: a picture a second; each one is a whole reduction of what was heard so far
@@ -310,6 +312,9 @@ class BookScreen(Screen[None]):
         else:
             self.reduce()
             self.redraw()
+
+    def do_copy(self) -> None:
+        copy_coordinate(self, self.query_one(ReductionPage).chosen(), self.app.copy_to_clipboard)
 
     def do_issue(self) -> None:
         paper(self, self.query_one(CertificatePage).chosen(), issue=True)

@@ -16,14 +16,13 @@ from fieldbook.errors import FieldbookError, UsageError
 from fieldbook.model.canonical import Tree, normalised
 from fieldbook.model.entry import Entry
 from fieldbook.model.live import LiveView
-from fieldbook.model.reduction import AntennaHeight, Finding, MarkResult, Reduction
+from fieldbook.model.reduction import AntennaHeight, Finding
 from fieldbook.model.session import Session
+from fieldbook.screens.sheets import Reduced, Sheet, reduced_sheets
 from fieldbook.settings.profiles import Profile, profiles
 
 if TYPE_CHECKING:
-    from fieldbook.model.state import BookState
     from fieldbook.occupy.live import LiveReader
-    from fieldbook.reduce.occupation import Reduced as OwnReduced
     from fieldbook.signing.signer import Signer
 
 
@@ -46,54 +45,6 @@ class Issued:
     path: str
     number: str | None  # None: a draft
     missing: tuple[str, ...] = ()  # what keeps it a draft
-
-
-@dataclass(frozen=True)
-class Sheet:
-    """What one page of reduction and one certificate are of: an occupation, or several of a mark together.
-
-    reduction: of the occupation, or the combined mark in the shape of one. result: of the mark, where it is combined.
-    missing: what keeps the paper of a combined mark a draft, besides the sign-off.
-    """
-
-    reduction: Reduction
-    numbers: tuple[int, ...]
-    result: MarkResult | None = None
-    missing: tuple[str, ...] = ()
-
-    @property
-    def title(self) -> str:
-        """`KR-07, occupation 2` or `KR-07, occupations 1, 2 together`."""
-        words = ", ".join(map(str, self.numbers))
-        return (
-            f"{self.reduction.mark}, occupation{'s' if self.result else ''} {words}{' together' if self.result else ''}"
-        )
-
-    @property
-    def state(self) -> str:
-        """`open`, `ended by operator`; nothing of a combined mark, whose occupations have ended each by itself."""
-        if self.result is not None:
-            return ""
-        return "open" if self.reduction.open else f"ended by {self.reduction.ended_by}"
-
-    @property
-    def key(self) -> tuple[str, tuple[int, ...]]:
-        """Tells it from every other sheet of the book."""
-        return self.reduction.mark, self.numbers
-
-
-@dataclass(frozen=True)
-class Reduced:
-    """The whole book reduced.
-
-    sheets: every occupation, and after the last one of a mark all of them together where they combine.
-    failures: what could not be reduced, (mark, occupation, text, remedy). apart: marks with several occupations that do
-    not go together, (mark, why).
-    """
-
-    sheets: tuple[Sheet, ...] = ()
-    failures: tuple[tuple[str, int, str, str], ...] = ()
-    apart: tuple[tuple[str, str], ...] = ()
 
 
 @dataclass(frozen=True)
@@ -162,27 +113,11 @@ class Bridge:
             return list(book.entries())
 
     def reduce(self) -> Reduced:
-        """Every occupation of the book, reduced."""
+        """Every occupation of the book, and every mark with several of them, reduced."""
         from fieldbook.book.store import Book
-        from fieldbook.occupy.marks_combined import combine_marks
-        from fieldbook.occupy.reductions import reduce_book, search_dirs
 
         with Book.open(self.path, clock=self.clock) as book:
-            reduced, failed = reduce_book(book)
-            state = book.state()
-            marks = combine_marks(state, reduced, search_dirs(book), failed)
-        failures = tuple((item.mark, item.occupation, item.error.text, item.error.remedy) for item in failed)
-        sheets: list[Sheet] = []
-        apart: list[tuple[str, str]] = []
-        for mark in marks:
-            own = [item for item in reduced if item.reduction.mark == mark.mark]
-            sheets += [Sheet(item.reduction, (item.reduction.occupation,)) for item in own]
-            if len(mark.occupations) > 1:
-                try:
-                    sheets.append(_together(state, mark, reduced))
-                except FieldbookError as problem:
-                    apart.append((mark.mark, problem.text))
-        return Reduced(tuple(sheets), failures, tuple(apart))
+            return reduced_sheets(book)
 
     def heights(self, session: Session, readings: Sequence[Tree], *, explained: bool = False) -> Heights:
         """Readings (keys of [[setup.height]]) reduced to the ARP and judged; pure, no disk.
@@ -454,6 +389,18 @@ class Bridge:
             )
         return Issued(str(made.path), made.number, tuple(made.missing))
 
+    def write_text(self, out: str, text: str) -> str:
+        """One line of text as a new file; its path. An existing file is refused."""
+        path = Path(out).expanduser()
+        try:
+            with path.open("x", encoding="utf-8") as file:
+                file.write(text + "\n")
+        except FileExistsError:
+            raise UsageError(f"{path} exists already.", "Choose another name.", code="out_exists") from None
+        except OSError as problem:
+            raise UsageError(f"{path} cannot be written: {problem.strerror or problem}.", "Check the folder.") from None
+        return str(path)
+
     def missing(self, sheet: Sheet) -> list[str]:
         """What keeps the paper a draft, besides the sign-off."""
         from fieldbook.book.store import Book
@@ -464,14 +411,3 @@ class Bridge:
         with Book.open(self.path, clock=self.clock) as book:
             occupation = book.state().occupations[sheet.numbers[0]]
         return [str(item["text"]) for item in missing_items(occupation, sheet.reduction, signed=True)]
-
-
-def _together(state: BookState, mark: MarkResult, reduced: Sequence[OwnReduced]) -> Sheet:
-    """The combined mark as a sheet; a UsageError says why its occupations do not go together."""
-    from fieldbook.certificate.combined import missing_of_mark
-    from fieldbook.issuing import evidence_of
-    from fieldbook.occupy.whole_mark import whole_of
-
-    whole = whole_of(state, mark, reduced)
-    missing = tuple(str(item["text"]) for item in missing_of_mark(evidence_of(whole), signed=True))
-    return Sheet(whole.reduction, tuple(item.occupation for item in mark.used), mark, missing)

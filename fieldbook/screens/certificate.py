@@ -8,7 +8,7 @@ from typing import Any, ClassVar
 
 from fieldbook.model.reduction import Reduction
 from fieldbook.model.visible import file_stem
-from fieldbook.screens.bridge import Issued, Sheet
+from fieldbook.screens.bridge import Issued
 from fieldbook.screens.diary_text import occupations_of
 from fieldbook.screens.fields import Field
 from fieldbook.screens.figures import wanted_rows_uncertainty
@@ -17,6 +17,7 @@ from fieldbook.screens.one_by_one import OccupationByOccupation
 from fieldbook.screens.page import Desk
 from fieldbook.screens.plain import fit, pad
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, paragraph, row
+from fieldbook.screens.sheets import Sheet
 from fieldbook.screens.words import length_95
 from fieldbook.settings.schema import words
 

@@ -5,8 +5,8 @@ A sheet is an occupation, or the occupations of a mark together.
 
 from __future__ import annotations
 
-from fieldbook.screens.bridge import Sheet
 from fieldbook.screens.page import Page
+from fieldbook.screens.sheets import Sheet
 
 
 class OccupationByOccupation(Page):

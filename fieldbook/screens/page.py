@@ -17,9 +17,10 @@ from fieldbook.model.canonical import Tree
 from fieldbook.model.live import LiveView
 from fieldbook.model.state import Occupation
 from fieldbook.screens.alarm_log import AlarmLog
-from fieldbook.screens.bridge import Bridge, Reduced
+from fieldbook.screens.bridge import Bridge
 from fieldbook.screens.panel import Panel
 from fieldbook.screens.rows import Row
+from fieldbook.screens.sheets import Reduced
 
 if TYPE_CHECKING:
     from textual.screen import Screen

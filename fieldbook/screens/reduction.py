@@ -9,11 +9,11 @@ from typing import ClassVar
 from fieldbook.model.angles import latitude_text, longitude_text, signed_dms_text
 from fieldbook.model.reduction import MarkResult, Reduction, Uncertainty
 from fieldbook.model.rounding import decimals_for
-from fieldbook.screens.bridge import Sheet
 from fieldbook.screens.figures import initialisation_rows, wanted_rows_uncertainty
 from fieldbook.screens.one_by_one import OccupationByOccupation
 from fieldbook.screens.plain import fit, pad, wrapped
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
+from fieldbook.screens.sheets import Sheet
 from fieldbook.screens.words import SEVERITY, duration, hour_minute, leave_word, length_95, set_aside_word, signed_mm
 
 

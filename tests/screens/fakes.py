@@ -40,7 +40,8 @@ from fieldbook.model.reduction import (
     Uncertainty,
 )
 from fieldbook.model.state import BookState, Occupation
-from fieldbook.screens.bridge import Bridge, FramesTold, Issued, Port, Reduced, Sheet
+from fieldbook.screens.bridge import Bridge, FramesTold, Issued, Port
+from fieldbook.screens.sheets import Reduced, Sheet
 from fieldbook.settings.session import reading_from_tree, session_from_tree
 
 NOW_MS = utc_ms_of("2027-03-04T09:41:22.000Z")

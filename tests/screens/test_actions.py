@@ -721,6 +721,23 @@ def test_errors_of_writing_are_said_with_their_remedy() -> None:
     asyncio.run(go())
 
 
+def test_copy_puts_the_coordinate_on_the_clipboard_with_what_belongs_to_it() -> None:
+    async def go() -> None:
+        bridge = FakeBridge(ended=True)
+        async with opened(bridge) as pilot:
+            await pilot.press("6")
+            await see(pilot, "as observed")
+            await pilot.press("y")
+            await see(pilot, "COPY KR-07, occupation 1", "empty: to the clipboard")
+            await pilot.press("enter", "enter")
+            await on_desk(pilot)
+            await see(pilot, "to the clipboard: KR-07, occupation 1: 23°40")
+            assert "GDA2020 (EPSG:7843)" in pilot.app.clipboard
+            assert "95 %" in pilot.app.clipboard
+
+    asyncio.run(go())
+
+
 @pytest.mark.parametrize(("key", "answer"), [("q", ""), ("b", None), ("r", None), ("question_mark", None)])
 def test_a_key_that_bounces_takes_nothing_but_the_top_away(key: str, answer: str | None) -> None:
     """Two answers in one turn of the loop: the second comes from a screen that is going already."""

@@ -6,6 +6,7 @@ import json
 import shutil
 import time
 from collections.abc import Callable, Iterator
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -14,8 +15,10 @@ from fieldbook.book.lock import held
 from fieldbook.book.store import Book
 from fieldbook.clock import FakeClock, SystemClock
 from fieldbook.errors import UsageError
+from fieldbook.model.coordinates import FORMS
 from fieldbook.screens.bridge import Bridge
 from fieldbook.screens.reduction import coordinate_rows, evidence_rows
+from fieldbook.screens.sheets import coordinate_text
 
 from .fakes import NOW_MS, SESSION_TREE
 
@@ -221,3 +224,24 @@ def test_frames_are_told_for_the_place_of_the_book(bridge: Bridge) -> None:
     assert "approximate position of KR-07" in told.place
     assert any("EPSG:8049" in line for line in told.pair)
     assert told.question[0] == "What corrects this receiver? Our own base, on a mark with known coordinates."
+
+
+def test_a_coordinate_is_never_copied_bare(tmp_path: Path, sample_books: dict[str, Path]) -> None:
+    path = Path(shutil.copy(sample_books["kestrel-ridge"], tmp_path))
+    bridge = Bridge(path, SystemClock(), "R. Kell")
+    together = bridge.reduce().sheets[-1]
+    for form in FORMS:
+        text = coordinate_text(together, form)
+        assert text.startswith("KR-07, occupations 1, 2 together: ")
+        assert "GDA2020 (EPSG:7843); 95 % 0.075 m circle, 0.062 m height" in text
+    assert "34°16′27.538" in coordinate_text(together, "dms")
+    assert "EPSG:7855  E 412720.705 m  N 6207021.000 m" in coordinate_text(together, "grid")
+    out = bridge.write_text(str(tmp_path / "kr-07.txt"), text)
+    assert Path(out).read_text(encoding="utf-8") == text + "\n"
+    with pytest.raises(UsageError, match="exists already"):
+        bridge.write_text(out, text)
+    with pytest.raises(UsageError, match="cannot be written"):
+        bridge.write_text(str(tmp_path / "no" / "kr-07.txt"), text)
+    bare = replace(together, reduction=replace(together.reduction, grid=None))
+    with pytest.raises(UsageError, match="No grid"):
+        coordinate_text(bare, "grid")
