@@ -6,6 +6,7 @@ what had been acknowledged to another process before the fault, and what of it i
     faults_rig.py     wire, recorders, witness           faults_kills.py    kill -9, a file in pieces
     faults_power.py   power cut: writes replayed         faults_media.py    disk full, read-only, copies, versions
     faults_links.py   ports, noise, silence, suspension  faults_clock.py    the host's clock, two recorders
+    faults_lock.py    the lost POSIX lock
     faults_rescue.py  damaged books, rescued
 
 The short form takes less than three minutes; `--long` kills 200 recorders and cuts the power 500 times. POSIX only;
@@ -19,9 +20,10 @@ import sys
 import time
 from collections.abc import Callable
 
-from faults_clock import clock_wrong, long_silence, race, second_recorder
+from faults_clock import clock_wrong, long_silence, race, second_recorder, woken_up
 from faults_kills import file_in_pieces, recorder_kills, screen_kills
 from faults_links import noise, replaced, silence, suspended, tcp_dropped, unplugged
+from faults_lock import lost_lock
 from faults_media import copied_without_wal, disk_full, newer_version, older_version, read_only
 from faults_power import power_cuts
 from faults_rescue import rescued
@@ -50,7 +52,9 @@ def faults(*, long: bool) -> dict[str, Callable[[], Row]]:
         "silence": lambda: silence(1, seconds=often(7, 1800)),
         "long_silence": lambda: long_silence(1),
         "suspended": lambda: suspended(often(2, 20)),
+        "woken_up": lambda: woken_up(often(2, 12)),
         "clock_wrong": clock_wrong,
+        "lost_lock": lambda: lost_lock(often(1, 10)),
         "second_recorder": lambda: second_recorder(often(2, 10)),
         "race": lambda: race(often(1, 10)),
         "copied_without_wal": lambda: copied_without_wal(often(3, 30)),

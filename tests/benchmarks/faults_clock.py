@@ -1,6 +1,7 @@
 """The host's clock wrong by years or jumping, half an hour of silence on a fast clock, and two recorders on one book.
 
-Run as a program this file is a recorder with a bent clock: `faults_clock.py BOOK LINK YEARS JUMP_YEARS JUMP_AFTER_S RATE`.
+Run as a program this file is a recorder with a bent clock: `faults_clock.py BOOK LINK YEARS JUMP_YEARS JUMP_AFTER_S RATE
+[SLEPT_S]`. A computer that slept finds its wall clock later, and its monotonic one later too or not, by the system.
 It differs from `fieldbook observe` in its clock alone.
 """
 
@@ -30,14 +31,15 @@ SIMULATED = "sim:rtk?seed=7&rate=10"
 class BentClock:
     """The host's clock, shifted by years, again after a while, and a monotonic one that may run fast."""
 
-    def __init__(self, years: float, jump_years: float, jump_after_s: float, rate: float) -> None:
-        self._years, self._jump_years, self._rate = years, jump_years, rate
+    def __init__(self, years: float, jump_years: float, jump_after_s: float, rate: float, slept_s: float = 0.0) -> None:
+        self._years, self._jump_years, self._rate, self._slept_s = years, jump_years, rate, slept_s
         self._began = time.monotonic()
         self._jump_after_s = jump_after_s
 
     def monotonic_ms(self) -> int:
         """Never goes back."""
-        return round((time.monotonic() - self._began) * 1000 * self._rate)
+        passed = time.monotonic() - self._began
+        return round((passed * self._rate + (self._slept_s if passed > self._jump_after_s else 0.0)) * 1000)
 
     def utc_ms(self) -> int:
         """Wrong."""
@@ -85,6 +87,34 @@ def clock_wrong() -> Row:
             row.expect(day is not None and abs((day - today).days) <= 1, f"the date of the occupation is {day}")
         row.times += 1
     row.note = "dates are the receiver's; the right clock goes on with the same occupation"
+    return row
+
+
+def woken_up(times: int) -> Row:
+    """The computer sleeps: the recorder stands still for some seconds, and wakes with the wall clock hours or days later
+    (or set back), and the monotonic one likewise or as it was."""
+    row, luck = Row("computer asleep: SIGSTOP, clocks jump, SIGCONT"), random.Random(51)
+    day_s = 86_400.0
+    kinds = [(3 * 3600.0, 0.0), (3 * 3600.0, 3 * 3600.0), (5 * day_s, 5 * day_s), (-3600.0, 0.0)]
+    while row.times < times:
+        wall_s, monotonic_s = kinds[row.times % len(kinds)]
+        with scene() as made:
+            recorder = _bent(made, 0.0, wall_s / (YEAR_MS / 1000), 3.0, 1.0, monotonic_s)
+            made.more(5)
+            recorder.send_signal(signal.SIGSTOP)
+            made.look()
+            time.sleep(3.0 + luck.uniform(0, 1.0))
+            recorder.send_signal(signal.SIGCONT)
+            row.recover_s.append(made.more(1))
+            made.more(10)
+            row.expect(recorder.poll() is None, "the recorder ended")
+            made.kill(recorder, signal.SIGTERM)
+            made.look()
+            made.judge(row)
+            row.acknowledged += made.count()
+            row.expect(list(made.seen) == [1], "more than one occupation")
+        row.times += 1
+    row.note = "3 h and 5 days later, 1 h back; monotonic clock standing still or running on"
     return row
 
 
