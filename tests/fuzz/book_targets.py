@@ -19,9 +19,11 @@ from typing import Any
 from fieldbook.book import epoch_packs, lines
 from fieldbook.book.audit import audit_book
 from fieldbook.book.store import Book
+from fieldbook.book.wal import wal_problem
 from fieldbook.clock import FakeClock
 from fieldbook.errors import FieldbookError
 from fieldbook.model.entry import GENESIS, entry_hash
+from fieldbook.model.epoch import Satellite
 from fieldbook.model.item import Item, ItemKind
 from fieldbook.model.recorder import RecorderState
 from fieldbook.nmea.decoder import Decoder
@@ -240,6 +242,35 @@ def book_values(data: bytes) -> None:
     _judge(path, write=choice >= 224)
 
 
+def heartbeat(data: bytes) -> None:
+    """A state whose JSON is read back as the same state, or a ValueError; `status` can show what was let in."""
+    try:
+        state = RecorderState.from_json(data.decode("utf-8", "replace"))
+    except ValueError:
+        return
+    except RecursionError:  # caught by the book's reader
+        return
+    assert RecorderState.from_json(state.to_json()) == state
+    json.dumps(vars(state), default=vars_of, allow_nan=False)
+
+
+def vars_of(value: Any) -> Any:
+    """A satellite as JSON."""
+    return {name: getattr(value, name) for name in value.__slots__}
+
+
+def wal_bytes(data: bytes) -> None:
+    """A -wal of any bytes: a sentence or none; what is cut off at its end is no damage unless two commits are left out."""
+    choice = data[:1].ljust(1, b"\0")[0]
+    sound = Path(f"{_bases()[2]}-wal").read_bytes()
+    content = data[1:] if choice & 1 else edited(sound, data[1:])
+    path = workshop() / "wal-only.book"
+    Path(f"{path}-wal").write_bytes(content)
+    assert wal_problem(path, 0).isprintable()
+    Path(f"{path}-wal").write_bytes(sound[: len(sound) - int.from_bytes(data[:3], "big") % len(sound)])
+    assert wal_problem(path, 0) == ""
+
+
 @cache
 def _plain_pack() -> bytes:
     with closing(sqlite3.connect(_bases()[0])) as connection:
@@ -318,6 +349,11 @@ def _byte_seeds() -> list[bytes]:
     ] + [b"\xe3", b"\x43"]
 
 
+def _heartbeat_seeds() -> list[bytes]:
+    full = RecorderState(1, epochs=9, sky=[Satellite("GPS", 7, 45, 120, 41.5, True)], counters={"good": 3}, hdop=0.7)
+    return [full.to_json().encode(), RecorderState(2).to_json(tail={"first_id": 1}).encode(), b"{}", b"[]"]
+
+
 def _value_seeds() -> list[bytes]:
     text = b'{"occupation":1,"text":"\\u001b[2J"}'
     return [
@@ -346,6 +382,8 @@ _WORDS = (
 TARGETS = [
     Target("book_bytes", "book, bytes changed", book_bytes, lambda: _byte_seeds() + kept("book_bytes"), smoke=60, most_bytes=97),
     Target("book_values", "book, values forged", book_values, lambda: _value_seeds() + kept("book_values"), smoke=60, words=_WORDS, most_bytes=400),
+    Target("heartbeat", "what the recorder says of itself", heartbeat, lambda: _heartbeat_seeds() + kept("heartbeat"), words=_WORDS, most_bytes=4096),
+    Target("wal_bytes", "-wal, bytes changed", wal_bytes, lambda: [bytes([n]) + script_of((4000 * n + 60, n, 3, 1)) for n in range(8)] + kept("wal_bytes"), smoke=25, most_bytes=97),
     Target("pressed_lines", "columns of received lines", pressed_lines, lambda: _pressed_seeds() + kept("pressed_lines"), smoke=800, most_bytes=4096),
     Target("epoch_pack", "epoch pack", epoch_pack, lambda: _pack_seeds() + kept("epoch_pack"), smoke=800, words=_WORDS, most_bytes=4096),
 ]  # fmt: skip

@@ -3,13 +3,17 @@
 from __future__ import annotations
 
 import json
+import sys
 from functools import cache
 from pathlib import Path
 from typing import Any
 
+from fieldbook.certificate.printable import printable
 from fieldbook.errors import LinkError, UsageError
 from fieldbook.links.address import parse_link
 from fieldbook.model.canonical import canonical_json
+from fieldbook.model.visible import file_stem, is_hidden, visible
+from fieldbook.screens.plain import clean
 from fieldbook.settings.antenna_source import frozen
 from fieldbook.settings.antex import block_calibration, read_antex
 from fieldbook.settings.schema import TABLES
@@ -17,6 +21,9 @@ from fieldbook.settings.session import load_session, session_from_tree
 from fieldbook.settings.user import user_classes, with_user_class
 
 from .target import Target, kept, workshop
+
+sys.path.insert(0, str(Path(__file__).parents[1]))
+from hostile import TEXTS
 
 _SAMPLES = sorted((Path(__file__).parents[2] / "sample_sessions").glob("*/session.toml"))
 _DEEP = (
@@ -182,6 +189,18 @@ _ANTEX_WORDS = (
 )  # fmt: skip
 
 
+def shown_texts(data: bytes) -> None:
+    """Any text: shown with nothing hidden, and made into a file name that stays where it is put."""
+    text = data.decode("utf-8", "surrogateescape")
+    for shown in (visible(text), clean(text), printable(text)):
+        assert not any(map(is_hidden, shown))
+    assert visible(visible(text)) == visible(text)
+    stem = file_stem(text)
+    assert stem
+    assert Path(stem).name == stem
+    assert not stem.startswith((".", "-"))
+
+
 def _settings_seeds() -> list[bytes]:
     own = '[class."0001"]\nhorizontal_m = 0.006\nvertical_m = 0.012\ncorrelation_s = 180\naccept_quality = [4]\nsource = "own"\n'
     return [own.encode(), own.replace('"0001"', '"Maker Model"').encode() + b"# end\n", b"[class]\n"]
@@ -213,5 +232,6 @@ TARGETS = [
     Target("session_file", "session file", session_file, lambda: _session_seeds() + kept("session_file"), words=_WORDS, most_bytes=16384),
     Target("session_tree", "stored session", session_tree, lambda: _tree_seeds() + kept("session_tree"), words=(b"1E400", b'"1e99999"', b"null", b"[]", b"{}", b"1.5", b"NaN", b'"\\ud800"', b"9" * 4400), most_bytes=16384),
     Target("user_settings", "user's settings", user_settings, lambda: _settings_seeds() + kept("user_settings"), smoke=600, words=(*_DEEP, b"\n[class]\n", b'\n[class." "]\n', b"accept_quality = [1,", b"nan", b'""')),
+    Target("shown_texts", "texts of others", shown_texts, lambda: [text.encode("utf-8", "surrogatepass")[:400] for text in TEXTS.values()] + kept("shown_texts"), most_bytes=300),
     Target("link_address", "link address", link_address, lambda: _address_seeds() + kept("link_address"), words=(b"%41", b"%25", b"%26", b"?from=", b"&", b"[", b"]", b"://", b"file:", b"tcp:", b"udp:", b"sim:", b"serial:", b"\x00", b" ", b"/. ", b"?baud=1"), most_bytes=300),
 ]  # fmt: skip
