@@ -19,6 +19,7 @@ from fieldbook.certificate.as_pdf import ATTACHMENT
 from fieldbook.model.canonical import Tree
 
 LIMIT_BYTES = 50_000_000
+LIMIT_FACTS = 2_000_000  # characters; a combined mark of many occupations has some 300,000, and pages are set from them
 # What parsers are known to raise on damaged input.
 PARSER_ERRORS = (
     ArithmeticError,
@@ -55,6 +56,8 @@ def facts_of(data: bytes, extension: str) -> Tree:
         raise Unreadable("it is larger than 50 MB")
     try:
         text = {"pdf": _attached, "html": _embedded, "json": _plain}[extension](data)
+        if len(text) > LIMIT_FACTS:
+            raise Unreadable("its facts are larger than those of any certificate")
         tree = json.loads(text)
     except Unreadable:
         raise
