@@ -185,12 +185,15 @@ class Bridge:
         return {part: f"{value:.5f}" for part, value in zip(("north", "east", "up"), offset, strict=True)}
 
     def session_file(self, path_text: str) -> Tree:
-        """The tree of a session file, its link made independent of the folder the file lies in."""
+        """The tree of a session file, its link made independent of the folder the file lies in; its frames checked."""
         from fieldbook.links.address import parse_link
+        from fieldbook.occupy.frame_check import check_session_frames
         from fieldbook.settings.session import load_session
 
         path = Path(path_text).expanduser()
-        tree = load_session(path).tree
+        session = load_session(path)
+        check_session_frames(session, path.absolute().parent)
+        tree = session.tree
         link = parse_link(tree["receiver"]["link"], path.absolute().parent).text
         return {**tree, "receiver": {**tree["receiver"], "link": link}}
 
@@ -329,9 +332,11 @@ class Bridge:
         from fieldbook.book.store import Book
         from fieldbook.occupy.begin import begin_occupation
         from fieldbook.occupy.detached import start_recorder
+        from fieldbook.occupy.frame_check import check_session_frames
 
         self._signed()
         session = self.session(tree)
+        check_session_frames(session, self.path.resolve().parent)
         with Book.open(self.path, clock=self.clock, write=True) as book:
             signer = self._signer(session.job.observer)
             number, resumed = begin_occupation(book, session, session.receiver.link, signer=signer)

@@ -245,3 +245,15 @@ def test_a_coordinate_is_never_copied_bare(tmp_path: Path, sample_books: dict[st
     bare = replace(together, reduction=replace(together.reduction, grid=None))
     with pytest.raises(UsageError, match="No grid"):
         coordinate_text(bare, "grid")
+
+
+def test_frames_that_cannot_be_used_are_refused_before_recording(bridge: Bridge, tmp_path: Path) -> None:
+    """As on the command line: EPSG:4979 is an ensemble, and which realisation was meant cannot be found out later."""
+    tree = {**SESSION_TREE, "frame": {**SESSION_TREE["frame"], "receiver": "EPSG:4979"}}
+    with pytest.raises(UsageError, match="ensemble"):
+        bridge.begin(tree)
+    assert not any(entry.kind == "occupation" for entry in bridge.entries())
+    text = (SAMPLE / "session.toml").read_text(encoding="utf-8").replace("EPSG:7912", "EPSG:4979")
+    (tmp_path / "session.toml").write_text(text, encoding="utf-8")
+    with pytest.raises(UsageError, match="ensemble"):
+        bridge.session_file(str(tmp_path / "session.toml"))
