@@ -38,10 +38,10 @@ COMMANDS: dict[str, str] = {
     "geoid": "Geoid models: add one with its record, list them, show one.",
     "profiles": "Requirements by published documents, for a session file.",
     "antenna": "Your own antennas: add from an ANTEX file or typed in, list, show.",
+    "register": "The office: books into one control register, decisions, what holds.",
     "export": "Write out the received bytes of an occupation.",
     "rescue": "Salvage what a damaged book still holds into a new one.",
 }
-LATER = ("register",)
 
 
 class LazyGroup(click.Group):
@@ -52,17 +52,7 @@ class LazyGroup(click.Group):
         return list(COMMANDS)
 
     def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:  # noqa: ARG002
-        """The command of that name, imported now; None if there is none.
-
-        Raises:
-            UsageError: a command that a later version brings.
-        """
-        if cmd_name in LATER:
-            raise UsageError(
-                f"`fieldbook {cmd_name}` is not in this version ({__version__}).",
-                "Run `fieldbook --help` for the commands that are.",
-                code="not_in_this_version",
-            )
+        """The command of that name, imported now; None if there is none."""
         if cmd_name not in COMMANDS:
             return None
         module = importlib.import_module(f"fieldbook.commands.{cmd_name}")
@@ -74,7 +64,7 @@ class LazyGroup(click.Group):
     ) -> tuple[str | None, click.Command | None, list[str]]:
         """As click does, but an unknown name gets the nearest known one."""
         name = args[0] if args else ""
-        if name and not name.startswith("-") and name not in COMMANDS and name not in LATER:
+        if name and not name.startswith("-") and name not in COMMANDS:
             import difflib
 
             close = difflib.get_close_matches(name, list(COMMANDS), n=1)

@@ -1,4 +1,4 @@
-"""`fieldbook verify`: is a book, or a certificate, unchanged and consistent; if not, what, where, since when.
+"""`fieldbook verify`: is a book, a register or a certificate unchanged and consistent; if not, what, where, since when.
 
 A book named together with certificates is the evidence they are compared with. Exit 1 when anything does not hold.
 """
@@ -6,6 +6,7 @@ A book named together with certificates is the evidence they are compared with. 
 from __future__ import annotations
 
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
@@ -14,6 +15,9 @@ from fieldbook.commands.output import line, write_json
 from fieldbook.errors import BookError, ExitCode, FieldbookError, UsageError
 from fieldbook.signing.keyring import Trust
 
+if TYPE_CHECKING:
+    from fieldbook.occupy.verifying import Verified
+
 CERTIFICATE_ENDINGS = (".pdf", ".html", ".json", ".txt")
 
 
@@ -21,7 +25,7 @@ CERTIFICATE_ENDINGS = (".pdf", ".html", ".json", ".txt")
 @click.argument("files", nargs=-1, required=True, type=click.Path(path_type=Path))
 @click.option("--json", "as_json", is_flag=True, help="Result as JSON.")
 def command(files: tuple[Path, ...], as_json: bool) -> int:
-    """Verify FILES: books, and certificates (together with their book, where it is named too)."""
+    """Verify FILES: books, registers, and certificates (together with their book, where it is named too)."""
     for path in files:
         if not path.exists():
             raise UsageError(f"{path} does not exist.", "Check the name.", code="missing")
@@ -41,17 +45,45 @@ def command(files: tuple[Path, ...], as_json: bool) -> int:
     return int(ExitCode.OK if holds else ExitCode.DOES_NOT_HOLD)
 
 
-def _book(path: Path, trust: Trust) -> dict[str, object]:
-    from fieldbook.book.causes import causes
+def book_findings(path: Path, trust: Trust) -> list[Verified]:
+    """Every line on a book: what is stored, certificates, signatures. Raises nothing for a file that exists."""
     from fieldbook.commands.verify_certified import verify_certified
-    from fieldbook.commands.verify_limits import to_compare
-    from fieldbook.commands.verify_signatures import not_proven, verify_signatures
+    from fieldbook.commands.verify_signatures import verify_signatures
     from fieldbook.occupy.verifying import verify_stored
 
     findings = verify_stored(path)
     if all(item.holds for item in findings):
         findings += verify_certified(path)
-    findings += verify_signatures(path, trust)
+    return findings + verify_signatures(path, trust)
+
+
+def _register(path: Path) -> dict[str, object]:
+    from fieldbook.register.audit import NOT_PROVEN, audit_register
+
+    lines = [
+        {"holds": item.holds, "where": item.where, "text": item.text, "since": item.since_seq}
+        for item in audit_register(path)
+    ]
+    holds = all(bool(item["holds"]) for item in lines)
+    return {
+        "file": str(path),
+        "kind": "register",
+        "holds": holds,
+        "lines": lines,
+        "looks_like": [],
+        "not_proven": list(NOT_PROVEN),
+    }
+
+
+def _book(path: Path, trust: Trust) -> dict[str, object]:
+    from fieldbook.book.causes import causes
+    from fieldbook.commands.verify_limits import to_compare
+    from fieldbook.commands.verify_signatures import not_proven
+    from fieldbook.register.store import Register
+
+    if Register.recognises(path):
+        return _register(path)
+    findings = book_findings(path, trust)
     lines = [
         {"holds": item.holds, "where": item.where, "text": item.text, "since": item.since_seq} for item in findings
     ]

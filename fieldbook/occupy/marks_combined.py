@@ -354,7 +354,7 @@ def _height(client: ClientPosition, form: LinearForm, latest: _Member, dirs: Seq
 
 def _circumstance(item: _Member, requirement: Requirement) -> Circumstance:
     reduction, session = item.reduced.reduction, item.session
-    kind = _class_for_tolerance(item)
+    kind = class_for_tolerance(item.reduced, session)
     antenna = session.antenna
     return Circumstance(
         occupation=item.number,
@@ -373,11 +373,11 @@ def _circumstance(item: _Member, requirement: Requirement) -> Circumstance:
     )
 
 
-def _class_for_tolerance(item: _Member) -> ClassOfFix:
+def class_for_tolerance(reduced: Reduced, session: Session) -> ClassOfFix:
     """The table's class, or the stated one: a receiver's bad opinion of itself (GST) does not widen a fixed tolerance."""
-    found = item.reduced.estimate.fix_class
-    if item.session.receiver.fix_class is not None:
-        stated = item.session.receiver.fix_class
+    found = reduced.estimate.fix_class
+    if session.receiver.fix_class is not None:
+        stated = session.receiver.fix_class
         return ClassOfFix(
             found.name, stated.horizontal_m, stated.vertical_m, stated.correlation_s, "", stated.source, found.margin
         )

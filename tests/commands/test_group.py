@@ -10,7 +10,7 @@ import click
 import pytest
 
 from fieldbook import commands
-from fieldbook.commands import COMMANDS, LATER, group
+from fieldbook.commands import COMMANDS, group
 from fieldbook.errors import BookError, LinkError, ReductionError, UsageError
 
 HEAVY = ("numpy", "pyproj", "scipy", "textual", "sqlite_utils", "pynmea2", "serial", "typst", "pypdf")
@@ -29,8 +29,6 @@ def test_help_lists_every_command_and_loads_nothing_heavy() -> None:
     assert done.returncode == 0, done.stderr
     for name in COMMANDS:
         assert f"\n  {name} " in done.stdout
-    for name in LATER:
-        assert name not in done.stdout
 
 
 @pytest.mark.parametrize(
@@ -43,14 +41,6 @@ def test_every_command_has_help_and_is_light_to_load(name: str, fieldbook) -> No
     command = group.get_command(click.Context(group), name)
     assert command is not None
     assert command.name == name
-
-
-@pytest.mark.parametrize("name", LATER)
-def test_commands_of_a_later_version_say_so(name: str) -> None:
-    done = run(name, "add", "x")
-    assert done.returncode == 2
-    assert "not in this version" in done.stderr
-    assert done.stdout == ""
 
 
 def test_an_unknown_command_names_the_nearest() -> None:

@@ -1,0 +1,58 @@
+"""`fieldbook register`: the office's file, from many books to one answer per mark.
+
+The sub-commands stand in modules of their own; each is imported when it is called, as the commands are.
+"""
+
+from __future__ import annotations
+
+import importlib
+
+import click
+
+from fieldbook.errors import UsageError
+from fieldbook.settings.values import nearest
+
+SUBCOMMANDS: dict[str, str] = {
+    "add": "Verify books and add them, or their later states.",
+    "list": "Books and marks of a register.",
+}
+LATER = ("check", "export")
+
+
+class SubcommandGroup(click.Group):
+    """Sub-commands by name, imported only to run."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:  # noqa: ARG002
+        """Names in the order of the work."""
+        return list(SUBCOMMANDS)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:  # noqa: ARG002
+        """The sub-command of that name.
+
+        Raises:
+            UsageError: there is none.
+        """
+        if cmd_name in LATER:
+            raise UsageError(
+                f"`fieldbook register {cmd_name}` is not in this version.",
+                "Run `fieldbook register --help` for the commands that are.",
+                code="not_in_this_version",
+            )
+        if cmd_name not in SUBCOMMANDS:
+            raise UsageError(
+                f'There is no command "register {cmd_name}".{nearest(cmd_name, SUBCOMMANDS)}',
+                "Run `fieldbook register --help` for the list.",
+            )
+        module = importlib.import_module(f"fieldbook.commands.register_{cmd_name.replace('-', '_')}")
+        command: click.Command = module.command
+        return command
+
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:  # noqa: ARG002
+        """The list of sub-commands from the table, without importing them."""
+        with formatter.section("Commands"):
+            formatter.write_dl(list(SUBCOMMANDS.items()))
+
+
+@click.group("register", cls=SubcommandGroup)
+def command() -> None:
+    """The office's register: books of many parties into one file, which coordinate holds, and from what evidence."""
