@@ -15,7 +15,7 @@ from fieldbook.commands.output import line, note, write_json
 from fieldbook.errors import UsageError
 
 if TYPE_CHECKING:
-    from fieldbook.model.session import FrameChoice
+    from fieldbook.model.session import FrameChoice, Motion
 
 SCHEMA = "fieldbook.frames/1"
 AT = click.option("--at", help='Where, e.g. --at "-34.27 146.05"; any form of a position.')
@@ -100,6 +100,8 @@ def search(words: tuple[str, ...], at: str | None, book: Path | None, of_frame: 
     "--receiver-epoch", type=float, help="Decimal year of the receiver's coordinates; else the observation's."
 )
 @click.option("--client-epoch", type=float, help="Decimal year of the client's coordinates; else the observation's.")
+@click.option("--plate", help='How the mark moves between two epochs: model and plate, e.g. "ITRF2020 AUST".')
+@click.option("--plate-sigma", type=float, help="Its standard uncertainty, metres a year.")
 @JSON
 def show(
     receiver: str | None,
@@ -109,6 +111,8 @@ def show(
     epoch: float | None,
     receiver_epoch: float | None,
     client_epoch: float | None,
+    plate: str | None,
+    plate_sigma: float | None,
     *,
     as_json: bool,
 ) -> None:
@@ -134,7 +138,8 @@ def show(
             (given if given is not None else "observation") if frame_info(code).dynamic else None
             for code, given in ((receiver, receiver_epoch), (client, client_epoch))
         ]
-        choice = FrameChoice(receiver, client, receiver_epoch=epochs[0], client_epoch=epochs[1])
+        motion = _motion(plate, plate_sigma)
+        choice = FrameChoice(receiver, client, receiver_epoch=epochs[0], client_epoch=epochs[1], motion=motion)
     pair = pair_at(choice, place.lat_deg, place.lon_deg, place.h_m, place.epoch if epoch is None else epoch)
     if as_json:
         write_json({"schema": SCHEMA, "place": place.to_json(), "pair": pair_tree(pair)})
@@ -180,6 +185,21 @@ def ask(kind: str | None, at: str | None, book: Path | None, *, as_json: bool) -
 
 command.add_command(grids.add)
 command.add_command(grids.list_grids)
+
+
+def _motion(plate: str | None, sigma: float | None) -> tuple[Motion, ...]:
+    """The stated plate motion; whether there is such a plate is the gateway's question."""
+    if plate is None and sigma is None:
+        return ()
+    parts = (plate or "").split()
+    if len(parts) != 2 or sigma is None:
+        raise UsageError(
+            "A plate motion is a model, a plate and a standard uncertainty.",
+            'Give e.g. --plate "ITRF2020 AUST" --plate-sigma 0.0003.',
+        )
+    from fieldbook.model.session import Motion
+
+    return (Motion(model=parts[0], plate=parts[1], sigma_m_per_year=sigma),)
 
 
 def _place(at: str | None, book: Path | None) -> _Place | None:

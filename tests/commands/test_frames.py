@@ -44,6 +44,14 @@ def test_show(fieldbook) -> None:
     assert "effect    E -" in text
     moved = fieldbook("frames", "show", "EPSG:9989", "EPSG:7912", *AT, "--client-epoch", "2020.0", "--json").json
     assert moved["pair"]["refused"]["code"] == "motion_unknown"
+    stated = ("--client-epoch", "2020.0", "--epoch", "2027.2", "--plate", "ITRF2020 AUST", "--plate-sigma", "0.0003")
+    moved = fieldbook("frames", "show", "EPSG:9989", "EPSG:7912", *AT, *stated, "--json").json["pair"]
+    assert [step["code"] for step in moved["operation"]["steps"]] == ["motion:ITRF2020 AUST", "EPSG:9991 inverse"]
+    assert moved["effect_enu_mm"][1] < -350
+    nowhere = fieldbook(
+        "frames", "show", "EPSG:9989", "EPSG:7912", *AT, *stated[:-3], "ITRF2020 ATLANTIS", *stated[-2:], "--json"
+    )
+    assert nowhere.json["pair"]["refused"]["code"] == "motion_bad"
 
 
 def test_a_refusal_is_an_answer(fieldbook) -> None:
@@ -63,6 +71,7 @@ def test_a_refusal_is_an_answer(fieldbook) -> None:
         (("search", *AT, "--book", "x.book"), "given twice"),
         (("search", "--book", "x.book"), "no book"),
         (("ask", "rtk"), "none of the answers"),
+        (("show", "EPSG:9989", "EPSG:7912", *AT, "--plate", "AUST"), "a model, a plate and a standard uncertainty"),
     ],
 )
 def test_slips(fieldbook, arguments: tuple[str, ...], said: str) -> None:

@@ -121,6 +121,12 @@ def test_from_fit_to_certificate(book: Path, control: Path, run_fieldbook, tmp_p
     assert "T1, T2, T3" in text
     assert "invented plan 7" in text
     assert "no national grid and no datum" in text
+    for ending, start in (("html", b"<!"), ("pdf", b"%PDF")):
+        other = tmp_path / f"in.{ending}"
+        assert run_fieldbook("certify", book, "IN", "--out", other)[0] == 0
+        data = other.read_bytes()
+        assert data.lower().startswith(start.lower())
+        assert ending == "pdf" or "Local grid quarry" in data.decode("utf-8")
     facts = json.loads(_json_of(run_fieldbook, book, "IN", tmp_path))
     stated = facts["position"]["local"][0]
     assert stated["printed"]["easting_m"] == f"{local['IN'][0]['easting_m']:.3f}"
