@@ -5,10 +5,11 @@ from __future__ import annotations
 import re
 import threading
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
-from fieldbook.clock import SystemClock
+from fieldbook.clock import SystemClock, utc_text
 from fieldbook.commands.output import Progress, line, note, write_json
 from fieldbook.commands.signing import chosen, key_option, signed_tree
 from fieldbook.commands.words import quality_words
@@ -16,6 +17,9 @@ from fieldbook.errors import ExitCode, FieldbookError, UsageError
 from fieldbook.model.canonical import Tree
 from fieldbook.model.recorder import RecorderState
 from fieldbook.signing.signer import Signer
+
+if TYPE_CHECKING:
+    from fieldbook.occupy.backup_thread import BackupStatus
 
 SECONDS = {"s": 1, "m": 60, "h": 3600}
 
@@ -31,6 +35,9 @@ SECONDS = {"s": 1, "m": 60, "h": 3600}
 @click.option("--for", "duration", help="End the occupation after this time: 90s, 15m, 2h.")
 @click.option("--new", is_flag=True, help="End the open occupation, if any, and begin another one.")
 @click.option("--end", "end", is_flag=True, help="End the open occupation and record nothing.")
+@click.option(
+    "--backup", type=click.Path(path_type=Path), help="Copies of the book while recording: a file or folder on a stick."
+)
 @key_option
 @click.option("--json", "as_json", is_flag=True, help="The result as JSON on stdout.")
 def command(
@@ -38,6 +45,7 @@ def command(
     session_path: Path | None,
     link_text: str | None,
     duration: str | None,
+    backup: Path | None,
     key_path: Path | None,
     *,
     new: bool,
@@ -47,12 +55,12 @@ def command(
     """Parse, call, tell."""
     limit_s = None if duration is None else _seconds(duration)
     if end:
-        if new or duration:
-            raise UsageError("--end goes with neither --new nor --for.", "End first, then record.")
+        if new or duration or backup:
+            raise UsageError("--end goes with none of --new, --for and --backup.", "End first, then record.")
         return _end(book, session_path, key_path, as_json=as_json)
     if session_path is None:
         raise UsageError("A session file is needed.", "Name it with --session SESSION.toml.")
-    tree, interrupted = _observe(book, session_path, link_text, limit_s, key_path, new=new)
+    tree, interrupted = _observe(book, session_path, link_text, limit_s, backup, key_path, new=new)
     if as_json:
         write_json(tree)
     else:
@@ -64,8 +72,16 @@ def command(
 
 
 def _observe(
-    book: Path, session_path: Path, link_text: str | None, limit_s: float | None, key_path: Path | None, *, new: bool
+    book: Path,
+    session_path: Path,
+    link_text: str | None,
+    limit_s: float | None,
+    backup: Path | None,
+    key_path: Path | None,
+    *,
+    new: bool,
 ) -> tuple[Tree, bool]:
+    from fieldbook.book.place import warnings_of_place
     from fieldbook.links.address import parse_link
     from fieldbook.occupy.foreground import Wish, observe
     from fieldbook.occupy.frame_check import check_session_frames
@@ -78,13 +94,16 @@ def _observe(
         address = parse_link(link_text, Path.cwd())
     else:
         address = parse_link(session.receiver.link, session_path.absolute().parent)
+    backup = _backup(backup, book)
+    for warning in warnings_of_place(book):
+        note(f"warning: {warning.text}")
     choice = chosen(session.job.observer, key_path)
     stop, progress = threading.Event(), Progress()
     try:
         with StopSignals(stop):
             result = observe(
                 book,
-                Wish(session, address, limit_s, new, choice.signer),
+                Wish(session, address, limit_s, new, backup, choice.signer),
                 SystemClock(),
                 stop,
                 on_start=choice.say,
@@ -93,6 +112,8 @@ def _observe(
     finally:
         progress.close()
     signer = _signed(book, choice.signer)
+    if signer is not None and result.backup is not None:
+        _copy_again(book, Path(result.backup.path))
     findings = list(result.findings)
     tree: Tree = {
         "schema": "fieldbook.observe/1",
@@ -109,9 +130,42 @@ def _observe(
         "counters": result.counters,
         "sentences": result.sentences,
         "findings": findings,
+        "backup": _backup_tree(result.backup),
         "signed": signed_tree(signer),
     }
     return tree, result.ended_by is None and stop.is_set()
+
+
+def _backup(wanted: Path | None, book: Path) -> Path | None:
+    """Where copies go: as asked, else as the user's settings say; refused where something else stands there."""
+    from fieldbook.book.backup import refuse_other, target_of
+    from fieldbook.settings.user import user_backup
+
+    place = wanted or user_backup()
+    if place is not None:
+        target = target_of(place, book)
+        if book.exists():
+            refuse_other(target, book)
+        elif target.exists():
+            raise UsageError(f"{target} exists already.", "Name another place for the copy.", code="backup_other")
+    return place
+
+
+def _copy_again(book: Path, target: Path) -> None:
+    """The signature came after the recorder's last copy."""
+    from fieldbook.book.backup import write_copy
+
+    try:
+        write_copy(book, target, pause_s=0.0)
+    except FieldbookError as error:
+        note(f"the copy lacks the last signature: {error.text}")
+
+
+def _backup_tree(status: BackupStatus | None) -> Tree | None:
+    if status is None:
+        return None
+    made = None if status.last_utc_ms is None else utc_text(status.last_utc_ms)
+    return {"path": status.path, "made_utc": made, "problem": status.problem or None}
 
 
 def _signed(book_path: Path, signer: Signer | None) -> Signer | None:
@@ -193,6 +247,8 @@ def _tell(tree: Tree) -> None:
         f"occupation {tree['occupation']} of {tree['mark']}: {tree['epochs']['heard']} epochs,"
         f" {tree['received_bytes']} bytes, {ended}"
     )
+    if tree.get("backup"):
+        line(f"copy: {tree['backup']['path']}, {tree['backup']['problem'] or 'complete'}")
     for finding in tree["findings"]:
         line(f"finding {finding['code']} ({finding['severity']}): {finding['text']}")
 

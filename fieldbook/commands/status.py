@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from fieldbook.clock import SystemClock
 from fieldbook.commands.open_book import reading
 from fieldbook.commands.output import line, write_json
 from fieldbook.commands.words import figures_line, head_line, quality_words
@@ -101,6 +102,8 @@ def _recorder(heard: RecorderState | None, view: LiveView) -> dict[str, Any]:
         tree["quality_words"] = quality_words(heard.quality)
         tree["satellites_in_view"] = len(heard.sky)
         tree["silence_s"] = view.silence_s
+        made = heard.backup_utc_ms
+        tree["backup_age_s"] = None if made is None else max(0.0, (SystemClock().utc_ms() - made) / 1000)
     return tree
 
 

@@ -20,6 +20,8 @@ def head_line(status: dict[str, Any]) -> str:
     occupation, recorder = status["occupation"], status["recorder"]
     if occupation is None:
         return "no occupation yet"
+    if not recorder["alive"] and occupation["open"] and recorder.get("stopped"):
+        return f"recorder stopped: {recorder['stopped']}"
     if not recorder["alive"]:
         gone = occupation["open"] and recorder.get("link_state") not in (None, "closed", "ended")
         return "RECORDER GONE: run the same `fieldbook observe` again" if gone else "no recorder runs"
@@ -33,7 +35,15 @@ def head_line(status: dict[str, Any]) -> str:
             said.append(words.format(recorder[key]))
     said.append(f"{recorder['epochs']} epochs")
     said.append(_link(recorder))
+    if recorder.get("backup_path"):
+        said.append(_copy(recorder))
     return ", ".join(said)
+
+
+def _copy(recorder: dict[str, Any]) -> str:
+    age_s = recorder["backup_age_s"]
+    how_old = "no copy yet" if age_s is None else f"copy {age_s:.0f} s old"
+    return f"{how_old}: {recorder['backup_problem']}" if recorder["backup_problem"] else how_old
 
 
 def _link(recorder: dict[str, Any]) -> str:

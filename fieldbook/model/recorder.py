@@ -30,6 +30,12 @@ class RecorderState:
     epochs: int = 0
     waiting_bytes: int = 0  # in memory, not yet committed
     dropped_bytes: int = 0
+    stopped: str = ""  # why the recorder stopped by itself
+    disk_free_bytes: int | None = None
+    disk_left_s: float | None = None  # of recording, at the measured rate
+    backup_path: str = ""  # where copies go; empty: none are made
+    backup_utc_ms: int | None = None  # the moment the last good copy shows the book at
+    backup_problem: str = ""  # why there is no newer one
     alarms: list[str] = field(default_factory=list)
     counters: dict[str, int] = field(default_factory=dict)  # decoder counters
     sentences: dict[str, int] = field(default_factory=dict)  # "GNGGA" -> count

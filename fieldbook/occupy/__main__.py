@@ -1,4 +1,4 @@
-"""`python -m fieldbook.occupy BOOK OCCUPATION [--link LINK]`: the detached recorder, started by `detached`.
+"""`python -m fieldbook.occupy BOOK OCCUPATION [--link LINK] [--backup PATH]`: the detached recorder, started by `detached`.
 
 One line on stdout says `started`, or the error as JSON; then stdout goes to the null device, because the process that
 reads it may be gone at any time. A later failure becomes an alarm in the book where that is still possible.
@@ -12,12 +12,14 @@ import sys
 import threading
 from pathlib import Path
 
+from fieldbook.book.backup import refuse_other, target_of
 from fieldbook.book.store import Book
 from fieldbook.clock import SystemClock
 from fieldbook.errors import FieldbookError
 from fieldbook.links.address import parse_link
 from fieldbook.occupy.detached import STARTED, error_line
 from fieldbook.occupy.recorder import Recorder, StopSignals
+from fieldbook.settings.user import user_backup
 
 
 class _Voice:
@@ -41,10 +43,21 @@ class _Voice:
 def main(arguments: list[str]) -> int:
     """Record until the occupation ends or the process is told to stop; returns the exit code."""
     book_path, occupation = Path(arguments[0]), int(arguments[1])
-    address = parse_link(arguments[3], Path.cwd()) if arguments[2:3] == ["--link"] else None
+    given = dict(zip(arguments[2::2], arguments[3::2], strict=False))
+    address = parse_link(given["--link"], Path.cwd()) if "--link" in given else None
     voice, stop = _Voice(), threading.Event()
-    recorder = Recorder(book_path, occupation, SystemClock(), address=address, on_start=lambda: voice.say(STARTED))
     try:
+        backup = Path(given["--backup"]) if "--backup" in given else user_backup()
+        if backup is not None:
+            refuse_other(target_of(backup, book_path), book_path)
+        recorder = Recorder(
+            book_path,
+            occupation,
+            SystemClock(),
+            address=address,
+            backup=backup,
+            on_start=lambda: voice.say(STARTED),
+        )
         with StopSignals(stop):
             recorder.run(stop)
     except FieldbookError as error:

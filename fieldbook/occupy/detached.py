@@ -24,13 +24,16 @@ STARTED = "started"
 REAPER = "fieldbook-reaper"
 
 
-def start_recorder(book_path: Path, occupation: int, *, link_text: str | None = None) -> None:
+def start_recorder(
+    book_path: Path, occupation: int, *, link_text: str | None = None, backup: Path | None = None
+) -> None:
     """Start a recorder on an open occupation and wait until bytes can come in.
 
     Args:
         book_path: the book.
         occupation: number of an open occupation.
         link_text: another link than the one the occupation was begun with; relative to the current folder.
+        backup: file or folder for copies of the book; if None that of the user's settings, if any.
 
     Raises:
         BookError: another recorder holds the book, or the new one did not start.
@@ -40,6 +43,8 @@ def start_recorder(book_path: Path, occupation: int, *, link_text: str | None = 
     command = [sys.executable, "-P", "-m", "fieldbook.occupy", str(book_path.absolute()), str(occupation)]
     if link_text is not None:
         command += ["--link", link_text]
+    if backup is not None:
+        command += ["--backup", str(backup.absolute())]
     child = subprocess.Popen(  # noqa: S603 - our own interpreter and module
         command,
         stdin=subprocess.DEVNULL,

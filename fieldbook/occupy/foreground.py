@@ -34,6 +34,7 @@ class Wish:
     address: LinkAddress
     limit_s: float | None = None
     new: bool = False
+    backup: Path | None = None  # file or folder for copies of the book
     signer: Signer | None = None  # key of the observer: signs the beginning; the recorder itself holds no key
 
 
@@ -76,6 +77,7 @@ def observe(
             address=wish.address,
             link=link,
             lock=lock,
+            backup=wish.backup,
             on_start=on_start,
             on_state=on_state,
         )

@@ -8,12 +8,11 @@ from fieldbook.model.item import Item, ItemKind
 from fieldbook.occupy.arrivals import Arrivals
 from fieldbook.occupy.reader_thread import ReaderThread
 from fieldbook.occupy.restore import Meanwhile
-from fieldbook.occupy.run import WAIT_S, Run
+from fieldbook.occupy.run import DISK_TOO_SLOW, WAIT_S, Run
 from fieldbook.occupy.source_warnings import WARNINGS, finding_of
 
 SENSELESS_MS, SENSELESS_BYTES = 5_000, 200
 MEANWHILE_MS = 100
-DISK_TOO_SLOW = "disk_too_slow"
 
 
 class LiveRun(Run):
@@ -21,7 +20,6 @@ class LiveRun(Run):
 
     def go(self) -> str | None:
         self._started_ms, self._taken_ms = self._clock.monotonic_ms(), 0
-        self._told: set[str] = set()
         self._arrivals = Arrivals(self._clock)
         self._reader = ReaderThread(self._link, self._address, self._arrivals, self._clock)
         meanwhile = None
@@ -101,14 +99,3 @@ class LiveRun(Run):
         if self._writer.decoder.sentences or self._writer.heard.received_bytes < SENSELESS_BYTES:
             return False
         return self._clock.monotonic_ms() - self._started_ms >= SENSELESS_MS
-
-    def _alarm(self, code: str, on: bool, text: str) -> None:
-        """Show an alarm while it holds; enter it once (a disk that is too slow each time: each is a loss)."""
-        alarms = self._writer.state.alarms
-        if on and code not in alarms:
-            alarms.append(code)
-            if code not in self._told or code == DISK_TOO_SLOW:
-                self._told.add(code)
-                self._writer.append("alarm", code=code, text=text, acknowledged=False)
-        elif not on and code in alarms:
-            alarms.remove(code)

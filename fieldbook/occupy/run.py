@@ -14,12 +14,15 @@ from fieldbook.links.address import LinkAddress
 from fieldbook.links.base import Link
 from fieldbook.model.recorder import RecorderState
 from fieldbook.model.state import Occupation
+from fieldbook.occupy.backup_thread import BackupThread
+from fieldbook.occupy.disk_guard import DiskGuard
 from fieldbook.occupy.rebuild import decoder_options, occupation_of
 from fieldbook.occupy.restore import Meanwhile, catch_up
 from fieldbook.occupy.writer import Writer
 
 WAIT_S = 0.1
 POLL_MS = 250
+DISK_TOO_SLOW, DISK_LOW, BACKUP_FAILED = "disk_too_slow", "disk_low", "backup_failed"
 
 
 @dataclass(frozen=True)
@@ -39,6 +42,8 @@ class Wishes:
     limit_s: float | None
     on_start: Callable[[], None]
     on_state: Callable[[RecorderState], None]
+    backup: BackupThread | None = None
+    disk: DiskGuard | None = None
 
 
 class Run:
@@ -61,6 +66,7 @@ class Run:
         self._seen_seq = book.state().head_seq
         self._shown_ms = 0
         self.resumed = next(iter(book.items(occupation.number)), None) is not None
+        self._told: set[str] = set()
         writer.state.link = source.address.text
 
     def go(self) -> str | None:
@@ -95,7 +101,7 @@ class Run:
 
     def _wanted(self) -> str | None:
         """`leave`, the reason for an end, or None to go on."""
-        if self._wishes.stop.is_set():
+        if self._wishes.stop.is_set() or self._writer.state.stopped:
             return "leave"
         now = self._clock.monotonic_ms()
         if self._until_ms is not None and now >= self._until_ms:
@@ -135,5 +141,38 @@ class Run:
         now = self._clock.monotonic_ms()
         if now - self._shown_ms >= POLL_MS:
             self._shown_ms = now
+            self._note_backup()
+            self._note_disk()
             self._writer.show_state()
             self._wishes.on_state(self._writer.state)
+
+    def _note_backup(self) -> None:
+        """Copy the status of the copies into the heartbeat."""
+        if self._wishes.backup is None:
+            return
+        state, status = self._writer.state, self._wishes.backup.status
+        state.backup_path, state.backup_utc_ms = status.path, status.last_utc_ms
+        state.backup_problem = status.problem
+        self._alarm(BACKUP_FAILED, bool(status.problem), f"No copy of the book is being made: {status.problem}")
+
+    def _note_disk(self) -> None:
+        """Warn before the disk is full, and stop while everything can still be committed."""
+        room = None if self._wishes.disk is None else self._wishes.disk.look(self._writer.heard.received_bytes)
+        if room is None:
+            return
+        state = self._writer.state
+        state.disk_free_bytes, state.disk_left_s = room.free_bytes, round(room.seconds)
+        self._alarm(DISK_LOW, room.low and (self._address.live or room.spent), room.text)
+        if room.spent and not state.stopped:
+            state.stopped = room.text
+
+    def _alarm(self, code: str, on: bool, text: str) -> None:
+        """Show an alarm while it holds; enter it once (a disk that is too slow each time: each is a loss)."""
+        alarms = self._writer.state.alarms
+        if on and code not in alarms:
+            alarms.append(code)
+            if code not in self._told or code == DISK_TOO_SLOW:
+                self._told.add(code)
+                self._writer.append("alarm", code=code, text=text, acknowledged=False)
+        elif not on and code in alarms:
+            alarms.remove(code)

@@ -239,21 +239,22 @@ class Writer:
         for other in [item for item in self._claimed if item.overlaps(times)]:
             self._claimed.remove(other)
             text = f"The fix times overlap those of {other}."
-            self._find("overlap", "stop", text, {"with_occupation": other.occupation})
+            self.find("overlap", "stop", text, {"with_occupation": other.occupation})
 
     def _note_source(self) -> None:
         for code in self.decoder.warnings:
             severity, text = finding_of(code)
-            self._find(code, severity, text, {})
+            self.find(code, severity, text, {})
         if self.heard.epochs and not self.heard.span.fixes:
-            self._find("no_fix", "caution", "No epoch of this occupation has a fix.", {"epochs": self.heard.epochs})
+            self.find("no_fix", "caution", "No epoch of this occupation has a fix.", {"epochs": self.heard.epochs})
 
     def note_damage(self, wrong: str) -> None:
         """Enter that items no entry covered yet are not as an earlier recorder wrote them: sealed now, they would pass."""
         text = f"Before this recorder took the occupation up again, its book was damaged: {wrong}."
-        self._find("tail_damaged", "caution", text, {})
+        self.find("tail_damaged", "caution", text, {})
 
-    def _find(self, code: str, severity: str, text: str, figures: Tree) -> None:
+    def find(self, code: str, severity: str, text: str, figures: Tree) -> None:
+        """Enter a finding of this occupation."""
         self.findings.append({"code": code, "severity": severity, "text": text, "figures": figures})
         self.append("finding", code=code, severity=severity, text=text, figures=figures)
 

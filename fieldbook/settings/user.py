@@ -1,4 +1,4 @@
-"""The user's own settings: figures of the kind of fix, from field tests of one's own receivers.
+"""The user's own settings: figures of the kind of fix, from field tests of one's own receivers; where copies go.
 
 An optional file `fieldbook.toml` in the user's configuration folder (`user_file()`), one table per receiver:
 
@@ -8,6 +8,9 @@ An optional file `fieldbook.toml` in the user's configuration folder (`user_file
     correlation_s = 180                # correlation time of the errors
     accept_quality = [4]               # the fix qualities that were tested
     source = "own field test, 12 occupations of 2 h, May 2026"
+
+    [backup]
+    path = "/media/stick"              # file, or folder for copies under the book's name, made while recording
 
 All keys are required, unknown ones are refused. The figures are taken only where the session states no class itself and
 accepts no other quality than those tested: a test of fixed RTK says nothing of a float. They are written into the
@@ -29,6 +32,7 @@ from fieldbook.settings.values import BadValue, checked, nearest
 
 FILE_NAME = "fieldbook.toml"
 MAX_BYTES = 1 << 20
+TABLES = ("class", "backup")
 CLASS_KEYS = {
     "horizontal_m": "positive",
     "vertical_m": "positive",
@@ -53,9 +57,43 @@ def user_classes(path: Path | None = None) -> dict[str, Tree]:
         UsageError: it cannot be read, is no TOML, or holds anything that is not as it must be.
     """
     path = path or user_file()
+    raw, text = _read(path)
+    classes = raw.get("class", {})
+    if not isinstance(classes, dict):
+        raise UsageError(f"{_where(path, text, 'class')}: class must be a table.", 'Write [class."SERIAL"].')
+    return _classes(classes, path, text)
+
+
+def user_backup(path: Path | None = None) -> Path | None:
+    """Where copies of a book go while it is recorded; None where the settings name no place.
+
+    Raises:
+        UsageError: as `user_classes`; the path is not absolute.
+    """
+    path = path or user_file()
+    raw, text = _read(path)
+    table = raw.get("backup")
+    if table is None:
+        return None
+    where, remedy = _where(path, text, "backup"), 'Write path = "..." below [backup], with the whole path.'
+    if not isinstance(table, dict) or set(table) != {"path"} or not isinstance(table["path"], str):
+        unknown = [key for key in table if key != "path"] if isinstance(table, dict) else []
+        raise UsageError(f"{where}: [backup] holds {unknown[0] if unknown else 'no path'}.", remedy)
+    place = Path(table["path"]).expanduser()
+    if not place.is_absolute():
+        raise UsageError(f"{where}: {table['path']} is no whole path.", remedy)
+    return place
+
+
+def _read(path: Path) -> tuple[Tree, str]:
+    """The tables of the file and its text; empty when there is no file.
+
+    Raises:
+        UsageError: it cannot be read, is no TOML, or has other tables.
+    """
     try:
         if not path.exists():
-            return {}
+            return {}, ""
         if path.stat().st_size > MAX_BYTES:
             raise UsageError(f"{path} is larger than 1 MB and no settings file.", "Look at it, or move it away.")
         text = path.read_bytes().decode("utf-8-sig")
@@ -70,17 +108,14 @@ def user_classes(path: Path | None = None) -> dict[str, Tree]:
     except BadToml as problem:
         raise UsageError(f"{path} is no valid TOML: {problem}.", "Correct that line.") from None
     for name, value in raw.items():
-        if name != "class":
+        if name not in TABLES:
             inner = next((f"{name}.{key}" for key in value), name) if isinstance(value, dict) else name
             raise UsageError(
                 f'{_where(path, text, inner)}: there is no table or key "{name}" in the user\'s settings.'
                 f"{nearest(name, ['class'])}",
                 "Rename or remove it.",
             )
-    classes = raw.get("class", {})
-    if not isinstance(classes, dict):
-        raise UsageError(f"{_where(path, text, 'class')}: class must be a table.", 'Write [class."SERIAL"].')
-    return _classes(classes, path, text)
+    return raw, text
 
 
 def _classes(classes: Tree, path: Path, text: str) -> dict[str, Tree]:
