@@ -10,7 +10,6 @@ from __future__ import annotations
 import json
 import os
 import sqlite3
-import sys
 import uuid
 from collections.abc import Callable
 from contextlib import closing, suppress
@@ -19,6 +18,7 @@ from pathlib import Path
 from fieldbook.errors import BookError, UsageError
 
 from . import connect
+from .begin import sync_folder
 from .copying import copy_book
 
 
@@ -103,7 +103,7 @@ def write_copy(
             return False
         _check(part, book)
         part.replace(target)
-        _sync_folder(folder)
+        sync_folder(folder)
         return True
     except OSError as error:
         raise BookError(f"{target} cannot be written: {error.strerror}.", "Look at the medium.", code="gone") from error
@@ -126,13 +126,3 @@ def _check(part: Path, book: Path) -> None:
         raise BookError(
             f"The copy of {book.name} does not read back as it was written.", "Use another medium.", code="disk_error"
         )
-
-
-def _sync_folder(folder: Path) -> None:
-    if sys.platform != "win32":
-        handle = os.open(folder, os.O_RDONLY)
-        try:
-            with suppress(OSError):  # a file system that cannot
-                os.fsync(handle)
-        finally:
-            os.close(handle)

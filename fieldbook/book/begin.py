@@ -79,10 +79,15 @@ def give_name(part: Path, path: Path) -> None:
             raise BookError(
                 f"The book {path} cannot be made: {error.strerror}.", "Choose another folder.", code="cannot_open"
             ) from error
+    sync_folder(path.absolute().parent)
+
+
+def sync_folder(folder: Path) -> None:
+    """Make a folder remember the names in it."""
     if sys.platform != "win32":
-        folder = os.open(path.absolute().parent, os.O_RDONLY)
+        handle = os.open(folder, os.O_RDONLY)
         try:
             with suppress(OSError):  # a file system that cannot: SQLite syncs the folder with its first WAL
-                os.fsync(folder)
+                os.fsync(handle)
         finally:
-            os.close(folder)
+            os.close(handle)

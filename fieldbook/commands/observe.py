@@ -56,7 +56,7 @@ def command(
     limit_s = None if duration is None else _seconds(duration)
     if end:
         if new or duration or backup:
-            raise UsageError("--end goes with none of --new, --for and --backup.", "End first, then record.")
+            raise UsageError("--end goes with neither --new, --for nor --backup.", "End first, then record.")
         return _end(book, session_path, key_path, as_json=as_json)
     if session_path is None:
         raise UsageError("A session file is needed.", "Name it with --session SESSION.toml.")

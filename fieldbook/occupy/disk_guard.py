@@ -7,7 +7,8 @@ book keeps it in a third to a half of that; the rest is for the -wal and for the
     stop            the reserve is reached: everything is committed, the occupation stays open, the state says why
 
 The reserve (16 MiB, on a small disk a fiftieth of it) is what sealing, closing and the last entries need. A disk that another
-program fills at once leaves no time for that: then commits are tried again and arriving bytes wait in memory.
+program fills at once, past an eighth of the reserve, leaves no room for that: then commits are tried again and arriving
+bytes wait in memory.
 """
 
 from __future__ import annotations
@@ -18,10 +19,11 @@ from pathlib import Path
 
 from fieldbook.clock import Clock
 
-LOOK_MS = 5_000
+LOOK_MS = 1_000
 LOW_S = 2 * 3600
 LOW_BYTES = 64 * 1024 * 1024
 RESERVE_BYTES = 16 * 1024 * 1024
+TOO_LATE = 8  # with less than this part of the reserve nothing can be closed any more: waiting is better
 LEAST_RATE = 200.0  # bytes a second: less is no GNSS receiver, only one that has just begun
 
 
@@ -44,7 +46,7 @@ class Room:
 
 
 class DiskGuard:
-    """Looks at the disk every five seconds."""
+    """Looks at the disk once a second."""
 
     def __init__(self, book: Path, clock: Clock) -> None:
         self._folder, self._clock = book.absolute().parent, clock
@@ -77,4 +79,4 @@ def room_of(total_bytes: int, free_bytes: int, bytes_per_s: float) -> Room:
     above = free_bytes - reserve
     seconds = max(0.0, above / bytes_per_s)
     low = seconds < LOW_S or free_bytes < min(LOW_BYTES, total_bytes // 10)
-    return Room(free_bytes, seconds, low, above <= 0)
+    return Room(free_bytes, seconds, low, above <= 0 and free_bytes > reserve // TOO_LATE)

@@ -202,7 +202,8 @@ class _Watch:
         made = []
         for hole, sides in zip(self._holes, [*self._sides, *[[]] * len(self._holes)], strict=False):
             times = [_moment(start, fix, arrival) for fix, arrival in sides] + [None, None]
-            made.append(LostItems(hole.first_id, hole.last_id, hole.data_bytes, times[0], times[1]))
+            until = None if hole.scattered else times[1]
+            made.append(LostItems(hole.first_id, hole.last_id, hole.data_bytes, times[0], until))
         return made
 
 

@@ -24,7 +24,7 @@ from faults_clock import clock_wrong, long_silence, race, second_recorder, woken
 from faults_kills import file_in_pieces, recorder_kills, screen_kills
 from faults_links import noise, replaced, silence, suspended, tcp_dropped, unplugged
 from faults_lock import lost_lock
-from faults_media import copied_without_wal, disk_full, newer_version, older_version, read_only
+from faults_media import copied_without_wal, disk_full, disk_low, newer_version, older_version, read_only
 from faults_power import power_cuts
 from faults_rescue import rescued
 from faults_rig import Row
@@ -44,6 +44,7 @@ def faults(*, long: bool) -> dict[str, Callable[[], Row]]:
         "file_in_pieces": lambda: file_in_pieces(2.0),
         "power_cuts": lambda: power_cuts(often(40, 500), seconds=often(8, 60)),
         "disk_full": lambda: disk_full(often(2, 9)),
+        "disk_low": lambda: disk_low(often(1, 5)),
         "read_only": lambda: read_only(often(1, 5)),
         "unplugged": lambda: unplugged(often(3, 20)),
         "replaced": lambda: replaced(often(2, 10)),

@@ -114,6 +114,42 @@ def _stalled(made: Scene) -> None:
         time.sleep(0.05)
 
 
+def disk_low(times: int) -> Row:
+    """The disk fills up to the recorder's reserve: it stops cleanly, and goes on when there is room again."""
+    row = Row("disk filled to the reserve (tmpfs), then freed")
+    while row.times < times:
+        with _small_disk(64) as disk:
+            if disk is None:
+                row.note = NO_MOUNT
+                return row
+            with scene(folder=disk) as made:
+                recorder = made.observe(stdout=subprocess.PIPE, text=True)
+                made.more(20)
+                filler = made.folder / "filler"
+                free = shutil.disk_usage(disk).free
+                filler.write_bytes(bytes(free - 1_200_000))
+                out, _ = recorder.communicate(timeout=40)
+                row.expect(recorder.returncode == 4, f"exit {recorder.returncode} at the reserve")
+                row.expect('"disk_low"' in out, "it does not say disk_low")
+                made.look()
+                made.judge(row)
+                with Book.open(made.book, clock=SystemClock()) as book:
+                    row.expect(book.state().open_occupation is not None, "the occupation was ended")
+                    state = book.recorder_state()
+                    row.expect(state is not None and bool(state.stopped), "the state does not say why")
+                    alarms = [entry.body["code"] for entry in book.entries() if entry.kind == "alarm"]
+                    row.expect("disk_low" in alarms, "no alarm was entered")
+                filler.unlink()
+                made.observe()
+                row.recover_s.append(made.more(1))
+                made.more(10)
+                made.judge(row)
+                row.acknowledged += made.count()
+        row.times += 1
+    row.note = "exit 4 (disk_low), occupation left open, taken up again"
+    return row
+
+
 def read_only(times: int) -> Row:
     """A killed recorder's book, -wal and all, on a medium that has become read-only."""
     row = Row("medium read-only, book with its -wal")

@@ -30,6 +30,7 @@ def test_thresholds() -> None:
     assert room_of(500 * GIGA, RESERVE_BYTES, 200.0).spent
     assert not room_of(3_000_000, 100_000, 200.0).spent  # a small disk has a small reserve
     assert room_of(3_000_000, 60_000, 200.0).spent
+    assert not room_of(3_000_000, 7_000, 200.0).spent  # too late to close: wait
 
 
 def test_the_rate_is_measured(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

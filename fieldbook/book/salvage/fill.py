@@ -44,6 +44,7 @@ class Hole:
     last_id: int
     data_bytes: int | None
     chunks: tuple[int, ...] = ()
+    scattered: bool = False  # what is missing stood between the lines that follow, not before them
 
 
 class Filler:

@@ -341,8 +341,9 @@ class _Work:
             filled.offer(piece)
         for first, last, stored, start in self.partial:
             if not filled.anything(first, last):
-                items = tuple(lines_left(stored, start))[: last - first + 1]
-                filled.offer(Piece(first, items, "none"))
+                items = _at_most(list(lines_left(stored, start)), last - first)
+                # behind the hole, which so breaks the sentence that may be torn before it
+                filled.offer(Piece(last - len(items) + 1, items, "none"))
                 self.uncounted += [(first, last)] if items else []
         pieces = filled.pieces(max((sealed.last_id for sealed in self.stated.values()), default=0))
         stream.holes = list(self._holes(pieces))
@@ -367,8 +368,9 @@ class _Work:
         inside = [sealed for sealed in self.stated.values() if first <= sealed.last_id and sealed.first_id <= last]
         covered = sum(min(last, sealed.last_id) - max(first, sealed.first_id) + 1 for sealed in inside)
         chunks = tuple(sealed.chunk for sealed in inside)
-        if covered < last - first + 1 or any(begin <= last and first <= end for begin, end in self.uncounted):
-            return Hole(first, last, None, chunks)
+        scattered = any(begin <= last and first <= end for begin, end in self.uncounted)
+        if covered < last - first + 1 or scattered:
+            return Hole(first, last, None, chunks, scattered)
         size = sum(sealed.bytes - ITEM_HEAD * sealed.items for sealed in inside)
         begin, end = min(item.first_id for item in inside), max(item.last_id for item in inside)
         there = 0
@@ -408,6 +410,17 @@ def _judge(stream: Stream, work: _Work) -> None:
     stream.whole = True
     stream.packs = [row for _, row in sorted(work.packs_as_stated.items())]
     stream.chunks = [work.stored_as_stated[number] for number in sorted(stored)]
+
+
+def _at_most(items: list[Item], count: int) -> tuple[Item, ...]:
+    """No more items than there are ids for: those too many become part of the last one."""
+    if count < 1:
+        return ()
+    rest = items[count - 1 :]
+    if len(rest) > 1:
+        joined = b"".join(item.data for item in rest)
+        items = [*items[: count - 1], Item(rest[0].kind, joined, rest[0].monotonic_ms, rest[0].utc_ms)]
+    return tuple(items)
 
 
 def _columns(sealed: Sealed) -> tuple[int, int, int, int, int, int, str]:
