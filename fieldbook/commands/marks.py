@@ -1,4 +1,4 @@
-"""`fieldbook marks`: the marks of a book as a list, from CSV, to CSV.
+"""`fieldbook marks`: the marks of a book as a list, from CSV or GeoJSON, to CSV or GeoJSON.
 
 Columns: name, id, description, inscription, access, condition, lat_deg, lon_deg, or position instead of the last two: a
 text in any form of `settings.coordinates`. The position is the approximate one (for finding the mark and for judging a
@@ -12,12 +12,13 @@ from __future__ import annotations
 
 import csv
 import io
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
 import click
 
-from fieldbook.commands import assignments, marks_coordinates, marks_inverse, marks_localgrid
+from fieldbook.commands import assignments, marks_coordinates, marks_geojson, marks_inverse, marks_localgrid
 from fieldbook.commands.open_book import reading, writing
 from fieldbook.commands.output import line, write_json
 from fieldbook.commands.signing import chosen, key_option, say_unsigned, signed_tree
@@ -29,6 +30,7 @@ from fieldbook.signing.in_book import signed_by
 TEXTS = ("name", "id", "description", "inscription", "access", "condition")
 COLUMNS = (*TEXTS, "lat_deg", "lon_deg")
 READ = (*COLUMNS, "position")
+GEOJSON = (".geojson", ".json")
 MAX_BYTES = 4 * 1024 * 1024
 
 
@@ -63,7 +65,7 @@ def list_marks(book: Path, *, as_json: bool) -> None:
         line(f"{mark['name']}: {mark.get('description', 'no description')}; occupations: {numbers}")
 
 
-@command.command("import", help="Read marks from a CSV file; one entry per new mark, all of them or none.")
+@command.command("import", help="Read marks from a CSV or GeoJSON file; one entry per new mark, all of them or none.")
 @click.argument("book", type=click.Path(path_type=Path))
 @click.argument("file", type=click.Path(path_type=Path))
 @click.option("--by", "observer", required=True, help="Name of who writes.")
@@ -100,7 +102,7 @@ def import_marks(book: Path, file: Path, observer: str, key_path: Path | None, *
         line(f"{len(written)} marks written, {tree['unchanged']} unchanged")
 
 
-@command.command("export", help="Write the marks of BOOK as CSV.")
+@command.command("export", help="Write the marks of BOOK as CSV or, by its ending, GeoJSON.")
 @click.argument("book", type=click.Path(path_type=Path))
 @click.option("--out", required=True, type=click.Path(path_type=Path), help="File to write.")
 @click.option("--replace", is_flag=True, help="Write over an existing file.")
@@ -110,6 +112,14 @@ def export_marks(book: Path, out: Path, *, replace: bool) -> None:
         raise UsageError(f"{out} exists already.", "Name another file, or add --replace.", code="out_exists")
     with reading(book) as opened:
         marks = opened.state().marks
+    if out.suffix.lower() in GEOJSON:
+        out.write_bytes(marks_geojson.text_of(marks, TEXTS).encode("utf-8"))
+    else:
+        out.write_bytes(_csv_text(marks).encode("utf-8"))
+    line(f"{out}: {len(marks)} marks")
+
+
+def _csv_text(marks: Mapping[str, Tree]) -> str:
     text = io.StringIO(newline="")
     table = csv.DictWriter(text, COLUMNS, extrasaction="ignore", lineterminator="\r\n")
     table.writeheader()
@@ -117,8 +127,7 @@ def export_marks(book: Path, out: Path, *, replace: bool) -> None:
         place = tree.get("approximate", {})
         texts = {key: _no_formula(str(tree[key])) for key in TEXTS if key in tree}
         table.writerow({**texts, "name": _no_formula(name), **place})
-    out.write_bytes(text.getvalue().encode("utf-8"))
-    line(f"{out}: {len(marks)} marks")
+    return text.getvalue()
 
 
 _FORMULA = tuple("=+-@＝＋－＠'")  # the wide ones too: some spreadsheets read them alike
@@ -135,13 +144,15 @@ def _as_typed(text: str) -> str:
 def _read(file: Path) -> list[tuple[str, dict[str, Any]]]:
     """Rows with the place they stand at, for errors."""
     if not file.is_file():
-        raise UsageError(f"There is no file {file}.", "Name a CSV file with a header line.")
+        raise UsageError(f"There is no file {file}.", "Name a CSV file with a header line, or a .geojson file.")
     if file.stat().st_size > MAX_BYTES:
         raise UsageError(f"{file} is larger than 4 MB.", "A list of marks is shorter; is it the right file?")
     try:
         text = file.read_bytes().decode("utf-8-sig")
     except UnicodeDecodeError:
         raise UsageError(f"{file} is no UTF-8 text.", "Save it as CSV in UTF-8.") from None
+    if file.suffix.lower() in GEOJSON:
+        return marks_geojson.rows_of(file, text, READ)
     head = text.partition("\n")[0]
     reader = csv.DictReader(io.StringIO(text, newline=""), delimiter=";" if ";" in head else ",", strict=True)
     try:
