@@ -15,6 +15,9 @@ from fieldbook.settings.values import nearest
 SUBCOMMANDS: dict[str, str] = {
     "add": "Verify books and add them, or their later states.",
     "list": "Books and marks of a register.",
+    "proposals": "Which marks may be one, which may have been re-set: the evidence.",
+    "decide": "Decide such a question, or strike a decision.",
+    "decisions": "Who decided what, when and why.",
 }
 LATER = ("check", "export")
 

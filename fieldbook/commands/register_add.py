@@ -26,6 +26,7 @@ def command(register: Path, books: tuple[Path, ...], by: str, as_json: bool) -> 
     """Verify BOOKS and add them to REGISTER, which is begun where there is none. Books are only read."""
     from fieldbook.commands.verify import book_findings
     from fieldbook.register.adding import add_book
+    from fieldbook.register.decisions import apply_rule
     from fieldbook.signing.keyring import trust
 
     for path in books:
@@ -41,14 +42,18 @@ def command(register: Path, books: tuple[Path, ...], by: str, as_json: bool) -> 
                 add_book(opened, path, by=by, clock=SystemClock(), verify=lambda one: book_findings(one, known))
             )
         progress.close()
+        accepted = apply_rule(opened, by=by)
         state = opened.state()
     refused = any(item.refused for item in outcomes)
     if as_json:
         held = {"path": str(register), "id": state.id, "head_seq": state.head_seq, "head": state.head_hash}
-        write_json({"schema": "fieldbook.register.add/1", "register": held, "books": [asdict(o) for o in outcomes]})
+        tree = {"register": held, "books": [asdict(item) for item in outcomes]}
+        write_json({"schema": "fieldbook.register.add/1", **tree, "accepted": [entry.seq for entry in accepted]})
     else:
         for item in outcomes:
             _say(item)
+        if accepted:
+            line(f"{len(accepted)} pairs of marks accepted as one by the rule of entry {accepted[0].body['rule']}")
     return int(ExitCode.BOOK if refused else ExitCode.OK)
 
 

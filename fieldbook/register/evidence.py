@@ -76,6 +76,18 @@ class Place:
 
 
 @dataclass(frozen=True)
+class ByModel:
+    """Height by a geoid model at the mark: N, its standard uncertainty where the model states one, and H = h - N."""
+
+    model: str
+    model_sha256: str
+    datum: str | None
+    undulation_m: float
+    undulation_u_m: float | None
+    orthometric_m: float
+
+
+@dataclass(frozen=True)
 class Evidence:
     """One occupation. `place`: in the client's frame, None if it has none there; `observed`: in the receiver's.
 
@@ -83,6 +95,7 @@ class Evidence:
     cov_own_m2, cov_common_m2: geocentric, 3 x 3, None without height; their sum is the covariance relative to the datum.
     governed_by: 'class', 'class and data' or 'data', of the mean's own uncertainty.
     prior_u_enu_m: of the mean, as kind of fix and length give it; it governs weights.
+    plan_u95_m, height_u95_m: of the place; measured_u95_m: both as measured, without the frame operation.
     sigma_plan_m, sigma_height_m: of the kind of fix, for fixed tolerances. meets: alone it reaches what was required.
     """
 
@@ -101,9 +114,7 @@ class Evidence:
     place: Place | None
     observed: Place
     operation: tuple[str, ...]
-    geoid: str | None
-    geoid_u_m: float | None
-    orthometric_m: float | None
+    height: ByModel | None
     grid: str | None
     fix_class: str
     governed_by: str
@@ -116,6 +127,7 @@ class Evidence:
     cov_common_m2: Matrix | None
     plan_u95_m: float
     height_u95_m: float | None
+    measured_u95_m: tuple[float, float | None]
     shares: Shares
     asked: Asked
     meets: bool
@@ -161,9 +173,7 @@ def evidence_of(reduced: Reduced, occupation: Occupation, *, meets: bool) -> Evi
         place=place,
         observed=Place(seen.frame, seen.frame_name, seen.epoch, seen.lat_deg, seen.lon_deg, seen.h_m, None),
         operation=tuple(f"{step.authority}:{step.code}" for step in reduction.operation.steps),
-        geoid=None if reduction.height is None else reduction.height.model,
-        geoid_u_m=None if reduction.height is None else reduction.height.undulation_u_m,
-        orthometric_m=None if reduction.height is None else reduction.height.orthometric_m,
+        height=_height(reduction),
         grid=session.frame.grid,
         fix_class=reduced.estimate.fix_class.name,
         governed_by=reduced.mean.governed_by,
@@ -176,6 +186,7 @@ def evidence_of(reduced: Reduced, occupation: Occupation, *, meets: bool) -> Evi
         cov_common_m2=common,
         plan_u95_m=stated.horizontal95_m,
         height_u95_m=stated.vertical95_m,
+        measured_u95_m=(reduction.uncertainty.horizontal95_m, reduction.uncertainty.vertical95_m),
         shares=_shares(session),
         asked=_asked(session),
         meets=meets,
@@ -222,11 +233,13 @@ def evidence_from_tree(tree: dict[str, Any]) -> Evidence:
     values = dict(tree)
     values["place"] = None if tree["place"] is None else _place(tree["place"])
     values["observed"] = _place(tree["observed"])
+    values["height"] = None if tree["height"] is None else ByModel(**tree["height"])
     mean = tree["mean"]
     values["mean"] = MeanLine(_triple(mean["u_enu_m"]), _triple(mean["dof_enu"]), mean["rho_en"])
     values["budget"] = tuple(BudgetLine(**line) for line in tree["budget"])
     values["shares"], values["asked"] = Shares(**tree["shares"]), Asked(**tree["asked"])
     values["prior_u_enu_m"] = tuple(tree["prior_u_enu_m"])
+    values["measured_u95_m"] = tuple(tree["measured_u95_m"])
     for key in ("operation", "stops", "findings"):
         values[key] = tuple(tree[key])
     return Evidence(**values)
@@ -241,6 +254,13 @@ def _triple(values: list[Any]) -> tuple[float, float, float | None]:
     # an infinite number of degrees of freedom is null in JSON
     east, north, up = values
     return (math.inf if east is None else east), (math.inf if north is None else north), up
+
+
+def _height(reduction: Reduction) -> ByModel | None:
+    by = reduction.height
+    if by is None:
+        return None
+    return ByModel(by.model, by.model_sha256, by.datum, by.undulation_m, by.undulation_u_m, by.orthometric_m)
 
 
 def _shares(session: Session) -> Shares:

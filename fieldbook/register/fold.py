@@ -5,7 +5,8 @@ the entry that gave it. Only entries change that:
 
     same        two numbers are one mark, known by the smaller number
     different   two numbers are settled as two marks: no proposal any more, and no `same` may join them
-    reset       from a date on, a mark is a new point with a new number
+    reset       from a date on, a mark is a new point with a new number, or another mark that is known already
+    separate    one occupation is of another mark than its book says: a new number
     exclude     one occupation takes no part
     strike      takes an entry out again; numbers it gave are not given a second time
 """
@@ -35,7 +36,10 @@ class Held:
     frame: str | None
     epoch: str | None
     place: tuple[float, float, float | None] | None
-    plan_u95_m: float | None
+    plan_u95_m: float
+    height_u95_m: float | None
+    measured_u95_m: tuple[float, float | None]  # plan, height: without the frame operation
+    operation: tuple[str, ...]
     received_sha256: str | None
 
     @property
@@ -113,7 +117,7 @@ class RegisterState:
             self.id = str(body["id"])
         elif entry.kind == "added":
             self._add(entry)
-        elif entry.kind == "reset":
+        elif entry.kind in ("reset", "separate"):
             self.next_number = max(self.next_number, int(body["number"]) + 1)
         elif entry.kind == "strike":
             self._strike()
@@ -214,15 +218,19 @@ class RegisterState:
         resets: dict[int, list[Entry]] = {}
         for entry in self.standing("reset"):
             resets.setdefault(root(int(entry.body["mark"])), []).append(entry)
+        apart = {(e.body["book"], int(e.body["occupation"])): int(e.body["number"]) for e in self.standing("separate")}
         members: dict[int, list[Held]] = {}
         for held in self.occupations():
-            members.setdefault(_after_resets(root(held.number), held, resets, root), []).append(held)
+            first = root(apart.get(held.key, held.number))
+            members.setdefault(_after_resets(first, held, resets, root), []).append(held)
         numbers: dict[int, list[int]] = {}
         for number in sorted(self._numbers):
             numbers.setdefault(root(number), []).append(number)
-        for entries in resets.values():
-            for entry in entries:
-                numbers.setdefault(root(int(entry.body["number"])), []).append(int(entry.body["number"]))
+        given = [int(entry.body["number"]) for entries in resets.values() for entry in entries]
+        for number in (*given, *apart.values()):
+            own = numbers.setdefault(root(number), [])
+            if number not in own:
+                own.append(number)
         decided = {root(int(entry.body["mark"])): str(entry.body["name"]) for entry in self.standing("name")}
         begun = {root(int(e.body["number"])): str(e.body["from_utc"]) for list_ in resets.values() for e in list_}
         return {
@@ -244,7 +252,7 @@ class RegisterState:
             if known in self._numbers:
                 book, name = self._numbers[known]
                 described.append((book, name, self.books[book].marks.get(name) or {"name": name}))
-        if not described:  # a reset point: what its occupations' books say of the mark
+        if not described:  # a number given by a decision: what the books of its occupations say
             seen = dict.fromkeys((held.book, held.name) for held in members)
             described = [(book, name, self.books[book].marks.get(name) or {"name": name}) for book, name in seen]
         names = tuple(dict.fromkeys(name for _, name, _ in described))
@@ -293,7 +301,7 @@ def _after_resets(number: int, held: Held, resets: dict[int, list[Entry]], root:
 
 def _held(book: str, item: Tree, numbers: dict[str, int]) -> Held:
     place = item["place"]
-    u95, name = item["plan_u95_m"], str(item["mark"])
+    name = str(item["mark"])
     return Held(
         book=book,
         occupation=int(item["occupation"]),
@@ -307,7 +315,10 @@ def _held(book: str, item: Tree, numbers: dict[str, int]) -> Held:
         frame=item["frame"],
         epoch=item["epoch"],
         place=None if place is None else (float(place[0]), float(place[1]), _number(place[2])),
-        plan_u95_m=None if u95 is None else float(u95),
+        plan_u95_m=float(item["plan_u95_m"]),
+        height_u95_m=_number(item["height_u95_m"]),
+        measured_u95_m=(float(item["measured_u95_m"][0]), _number(item["measured_u95_m"][1])),
+        operation=tuple(item["operation"]),
         received_sha256=item["received_sha256"],
     )
 

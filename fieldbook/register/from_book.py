@@ -145,6 +145,9 @@ def line_of(evidence: Evidence, evidence_sha: str, reduction_sha: str) -> Tree:
         "epoch": None if place is None else epoch_text(place.epoch),
         "place": None if place is None else [fixed(place.lat_deg, 11), fixed(place.lon_deg, 11), fixed(place.h_m, 6)],
         "plan_u95_m": fixed(evidence.plan_u95_m, 6),
+        "height_u95_m": fixed(evidence.height_u95_m, 6),
+        "measured_u95_m": [fixed(value, 6) for value in evidence.measured_u95_m],
+        "operation": list(evidence.operation),
         "received_sha256": evidence.received_sha256,
     }
 

@@ -37,13 +37,14 @@ KINDS: dict[str, dict[str, tuple[type, ...]]] = {
     "same": {"marks": _LIST, "reason": _TEXT},
     "different": {"marks": _LIST, "reason": _TEXT},
     "reset": {"mark": _INT, "from_utc": _TEXT, "number": _INT, "reason": _TEXT},
+    "separate": {"book": _TEXT, "occupation": _INT, "number": _INT, "reason": _TEXT},
     "exclude": {"book": _TEXT, "occupation": _INT, "reason": _TEXT},
     "name": {"mark": _INT, "name": _TEXT, "reason": _TEXT},
     "frame": {"frame": _TEXT, "epoch": _TEXT_OR_NONE, "reason": _TEXT},
     "rule": {"rule": _TEXT, "within_m": _TEXT, "reason": _TEXT},
     "strike": {"seq": _INT, "reason": _TEXT},
 }
-DECISIONS = ("same", "different", "reset", "exclude", "name", "frame", "rule")
+DECISIONS = ("same", "different", "reset", "separate", "exclude", "name", "frame", "rule")
 STRIKABLE = (*DECISIONS, "strike")
 
 

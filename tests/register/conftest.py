@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import shutil
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -13,6 +13,12 @@ import pytest
 from recorded_samples import record_into
 
 from fieldbook import commands
+from fieldbook.clock import SystemClock
+from fieldbook.register.evidence import Evidence
+from fieldbook.register.from_book import read_book
+from fieldbook.register.store import Register
+
+from .made import new_register
 
 
 @dataclass
@@ -57,3 +63,17 @@ def short_book(tmp_path_factory: pytest.TempPathFactory, short_session: Path) ->
 def book(short_book: Path, tmp_path: Path) -> Path:
     """A copy of the short book that may be changed."""
     return Path(shutil.copy(short_book, tmp_path / "party.book"))
+
+
+@pytest.fixture(scope="session")
+def base(sample_books: dict[str, Path]) -> Evidence:
+    """The evidence of the first occupation of the first sample, as a register keeps it."""
+    read = read_book(sample_books["kestrel-ridge"], SystemClock())
+    return read.occupations[0][0]
+
+
+@pytest.fixture
+def register(tmp_path: Path) -> Iterator[Register]:
+    """An empty register, open for writing."""
+    with new_register(tmp_path / "office.register") as made:
+        yield made
