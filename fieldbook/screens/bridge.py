@@ -228,13 +228,15 @@ class Bridge:
         from fieldbook.book.store import Book
         from fieldbook.occupy.frame_words import answer_lines, pair_lines
         from fieldbook.occupy.where import whereabouts
-        from fieldbook.reduce.frames import answer, decimal_year, pair_at, plausible
+        from fieldbook.reduce.frames import answer, decimal_year, pair_at, plausible, use_grid_folders
+        from fieldbook.settings.grids import grid_folders
 
         with Book.open(self.path, clock=self.clock) as book:
             where = whereabouts(book)
         session = where.session
         if session is None:
             raise UsageError("This book has no session yet, so no frames.", "Press 1, then F.")
+        use_grid_folders(grid_folders(self.path.resolve().parent))
         epoch = decimal_year(where.day or datetime.fromtimestamp(self.clock.utc_ms() / 1000, UTC))
         pair = pair_at(session.frame, where.lat_deg, where.lon_deg, 0.0, epoch)
         asked = answer(session.corrections.kind)
