@@ -17,6 +17,7 @@ SUBCOMMANDS: dict[str, str] = {
     "list": "Books and marks of a register.",
     "proposals": "Which marks may be one, which may have been re-set: the evidence.",
     "decide": "Decide such a question, or strike a decision.",
+    "coordinates": "What the evidence gives for each mark, with both accuracies.",
     "decisions": "Who decided what, when and why.",
 }
 LATER = ("check", "export")

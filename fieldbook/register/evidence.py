@@ -60,6 +60,7 @@ class Asked:
     vertical_95_m: float
     occupations: int
     hours_between: float | None
+    in_frame: str
 
 
 @dataclass(frozen=True)
@@ -96,7 +97,7 @@ class Evidence:
     governed_by: 'class', 'class and data' or 'data', of the mean's own uncertainty.
     prior_u_enu_m: of the mean, as kind of fix and length give it; it governs weights.
     plan_u95_m, height_u95_m: of the place; measured_u95_m: both as measured, without the frame operation.
-    sigma_plan_m, sigma_height_m: of the kind of fix, for fixed tolerances. meets: alone it reaches what was required.
+    sigma_plan_m, sigma_height_m: of the kind of fix, for fixed tolerances.
     """
 
     mark: str
@@ -130,7 +131,6 @@ class Evidence:
     measured_u95_m: tuple[float, float | None]
     shares: Shares
     asked: Asked
-    meets: bool
     simulated: bool
     stops: tuple[str, ...]
     findings: tuple[Tree, ...]
@@ -139,11 +139,11 @@ class Evidence:
 
     def to_tree(self) -> dict[str, Any]:
         """JSON with finite numbers or null."""
-        tree: dict[str, Any] = _finite(asdict(self))
+        tree: dict[str, Any] = finite(asdict(self))
         return tree
 
 
-def evidence_of(reduced: Reduced, occupation: Occupation, *, meets: bool) -> Evidence:
+def evidence_of(reduced: Reduced, occupation: Occupation) -> Evidence:
     """What is kept of one reduced occupation."""
     reduction, session = reduced.reduction, occupation.session
     stated = reduction.uncertainty_client if reduction.client is not None else reduction.uncertainty
@@ -189,7 +189,6 @@ def evidence_of(reduced: Reduced, occupation: Occupation, *, meets: bool) -> Evi
         measured_u95_m=(reduction.uncertainty.horizontal95_m, reduction.uncertainty.vertical95_m),
         shares=_shares(session),
         asked=_asked(session),
-        meets=meets,
         simulated=occupation.simulated,
         stops=tuple(sorted({item.code for item in reduction.findings if item.severity == "stop"})),
         findings=tuple(_findings(reduction)),
@@ -272,18 +271,19 @@ def _shares(session: Session) -> Shares:
 
 def _asked(session: Session) -> Asked:
     asked = session.requirement
-    return Asked(asked.horizontal_95_m, asked.vertical_95_m, asked.occupations, asked.hours_between)
+    return Asked(asked.horizontal_95_m, asked.vertical_95_m, asked.occupations, asked.hours_between, asked.in_frame)
 
 
 def _findings(reduction: Reduction) -> list[Tree]:
     return [{"code": item.code, "severity": item.severity, "text": item.text} for item in reduction.findings]
 
 
-def _finite(value: Any) -> Any:
+def finite(value: Any) -> Any:
+    """A tree in which every float is finite or None."""
     if isinstance(value, float):
         return value if math.isfinite(value) else None
     if isinstance(value, dict):
-        return {key: _finite(item) for key, item in value.items()}
+        return {key: finite(item) for key, item in value.items()}
     if isinstance(value, list | tuple):
-        return [_finite(item) for item in value]
+        return [finite(item) for item in value]
     return value

@@ -8,7 +8,6 @@ from pathlib import Path
 
 from fieldbook import __version__
 from fieldbook.book.store import Book
-from fieldbook.check.mark_leave import reaches_accuracy
 from fieldbook.clock import Clock
 from fieldbook.errors import FieldbookError
 from fieldbook.model.canonical import Tree, fixed
@@ -78,8 +77,7 @@ def read_book(path: Path, clock: Clock) -> ReadBook:
     occupations = []
     for item in reduced:
         occupation = state.occupations[item.reduction.occupation]
-        meets = reaches_accuracy(occupation.session.requirement, item.reduction)
-        evidence = evidence_of(item, occupation, meets=meets)
+        evidence = evidence_of(item, occupation)
         occupations.append((evidence, as_kept(evidence.to_tree()), as_kept(_whole(item))))
     used = versions()
     return ReadBook(
