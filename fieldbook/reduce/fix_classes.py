@@ -79,7 +79,7 @@ RTK_FIXED = ClassOfFix(
 )  # fmt: skip
 RTK_FLOAT = ClassOfFix(
     "RTK float", 0.20, 0.35, 900.0,
-    "decimetres that drift while the ambiguities converge; not tried on simulated occupations",
+    "decimetres that drift while the ambiguities converge; tried on simulated errors of this size, not on their converging",
     f"{_WORKING}; 0.1 to 0.5 m is common practice, no source", 1.15,
 )  # fmt: skip
 DIFFERENTIAL = ClassOfFix(
