@@ -8,7 +8,7 @@ over 1 s blocks first and merged ten to one, so that live and batch go the same 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -33,11 +33,12 @@ _SUMS = ("east", "north", "up")
 
 @dataclass
 class Blocks:
-    """Blocks in order of time. whole: int64 (n, 10), sums in 1e-8 m and ms; m2: float64 (n, 3), m^2."""
+    """Blocks in order of time, never changed once made. whole: int64 (n, 10), sums in 1e-8 m and ms; m2: float64 (n, 3), m^2."""
 
     block_s: int
     whole: Ints
     m2: Floats
+    _means_m: Floats | None = field(default=None, init=False, repr=False, compare=False)
 
     @classmethod
     def empty(cls) -> Blocks:
@@ -83,7 +84,9 @@ class Blocks:
         return self.where(np.isin(self.column("initialisation"), numbers))
 
     def where(self, keep: NDArray[np.bool_]) -> Blocks:
-        """Only the blocks of which `keep`, shape (n,), is true."""
+        """Only the blocks of which `keep`, shape (n,), is true; these themselves if all are."""
+        if keep.all():
+            return self  # the common case of a live look, and blocks are never changed
         return Blocks(self.block_s, self.whole[keep], self.m2[keep])
 
     def lengthened(self) -> Blocks:
@@ -110,6 +113,12 @@ class Blocks:
 
     def means_m(self) -> Floats:
         """Mean east, north, up of each block, metres, shape (n, 3); NaN where there is no height."""
+        if self._means_m is None:
+            self._means_m = self._divided()
+            self._means_m.flags.writeable = False
+        return self._means_m
+
+    def _divided(self) -> Floats:
         counts = self.whole[:, [_W["count"], _W["count"], _W["count_up"]]].astype(np.float64)
         sums = self.whole[:, [_W[f"sum_{name}"] for name in _SUMS]].astype(np.float64)
         with np.errstate(invalid="ignore", divide="ignore"):

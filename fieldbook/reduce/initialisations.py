@@ -202,14 +202,9 @@ class InitialisationJudge:
         numbers = screened.blocks.column("initialisation")
         items: list[Judged] = []
         for item in sums:
-            blocks = Blocks(
-                screened.blocks.block_s,
-                screened.blocks.whole[numbers == item.number],
-                screened.blocks.m2[numbers == item.number],
-            )
-            key = (item.number, blocks.block_s, item.kept, fix_class.name)
+            key = (item.number, screened.blocks.block_s, item.kept, fix_class.name)
             if key not in self._places:
-                self._places[key] = place_of(blocks, fix_class)
+                self._places[key] = place_of(screened.blocks.where(numbers == item.number), fix_class)
             root = screened.root_of[item.number]
             items.append(
                 Judged(item.number, item.first_ms, item.last_ms, item.kept, item.independent, self._places[key], root)

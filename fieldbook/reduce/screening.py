@@ -159,7 +159,9 @@ class Screening:
             sums = KeptSums()
         return Screened(
             codes=codes,
-            initialisation=self._numbers[: self._heard].copy(),
+            initialisation=self._numbers[
+                : self._heard
+            ],  # what was numbered keeps its number: no copy of a day of epochs
             frame=self.frame,
             blocks=sums.blocks(),
             initialisations=sums.by_number,
