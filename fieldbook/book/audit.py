@@ -19,6 +19,7 @@ off at the end of the chain, and a chain forged as a whole; certificates and sig
 from __future__ import annotations
 
 import json
+import math
 import sqlite3
 import time
 from collections.abc import Callable, Iterator
@@ -52,14 +53,14 @@ class AuditFinding:
 
 
 class _TooMany(Exception):
-    """Enough findings: the rest would say nothing new."""
+    """Enough findings, or enough time spent: the rest would say nothing new."""
 
 
 class Audit:
     """Findings so far, and the sound entries the later checks rest on."""
 
-    def __init__(self, connection: sqlite3.Connection) -> None:
-        self.connection = connection
+    def __init__(self, connection: sqlite3.Connection, deadline: float = math.inf) -> None:
+        self.connection, self._deadline = connection, deadline
         self.findings: list[AuditFinding] = []
         self.bodies: dict[str, list[tuple[int, Tree]]] = {}  # kind -> (seq, body)
 
@@ -67,6 +68,12 @@ class Audit:
         """Note one finding."""
         self.findings.append(AuditFinding(where, text, since_seq))
         if len(self.findings) >= MAX_FINDINGS:
+            raise _TooMany
+
+    def in_time(self, where: str) -> None:
+        """Between two pieces that are inflated: SQLite's own time limit does not count that."""
+        if time.monotonic() > self._deadline:
+            self.find(where, "it takes longer to read than any book of its size; the rest was not looked at")
             raise _TooMany
 
     @contextmanager
@@ -112,7 +119,7 @@ def _audited(connection: connect.BookConnection, time_limit_s: float) -> list[Au
     connection.set_progress_handler(lambda: time.monotonic() > deadline, 100_000)
     # Damaged text must not stop the reading: it cannot match its hash any more, and is found there.
     connection.text_factory = lambda data: data.decode("utf-8", "surrogateescape")
-    audit = Audit(connection)
+    audit = Audit(connection, deadline)
     checks: list[tuple[str, Callable[[Audit], None]]] = [
         ("schema", _check_schema),  # first: SQLite's own check evaluates what a foreign schema tells it to
         ("file", _check_pages),
@@ -132,7 +139,8 @@ def _audited(connection: connect.BookConnection, time_limit_s: float) -> list[Au
             if where == "schema" and any(item.where == "schema" for item in audit.findings):
                 break  # with other tables, every further question could be answered by a trick
     except _TooMany:
-        audit.findings.append(AuditFinding("file", f"more than {MAX_FINDINGS} findings; the rest is not listed"))
+        if len(audit.findings) >= MAX_FINDINGS:
+            audit.findings.append(AuditFinding("file", f"more than {MAX_FINDINGS} findings; the rest is not listed"))
     return audit.findings
 
 

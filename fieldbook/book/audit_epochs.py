@@ -78,6 +78,7 @@ def _packs(audit: Audit) -> dict[int, _Numbers]:
     for occupation, *columns in connection.execute(
         f"SELECT occupation, {_PACK_COLUMNS} FROM epoch_pack ORDER BY rowid"  # noqa: S608 - a constant
     ):
+        audit.in_time("epoch")
         pack = epoch_packs.Pack(*columns)
         where = f"the pack of epochs {pack.first} to {pack.last} of occupation {occupation}"
         try:

@@ -126,6 +126,7 @@ def _check_strangers(audit: Audit, received: dict[int, _Received]) -> None:
 def _check_occupation(audit: Audit, occupation: int, found: _Received) -> None:
     position = 0
     while position < len(found.chunks):
+        audit.in_time("raw")
         seq, sealed = found.chunks[position]
         where = f"chunk {sealed.chunk} of occupation {occupation}"
         taken = 1

@@ -279,3 +279,8 @@ def test_what_is_no_regular_file_or_hardly_one(tmp_path: Path, packed: Path, wha
     code, out = _said(path, ("verify",))
     assert code == (0 if what == "sparse" else 1), out  # what stands behind the last page is no part of the book
     assert time.perf_counter() - began < 5
+
+
+def test_an_audit_ends_in_time_however_much_there_is_to_inflate(book: Path) -> None:
+    findings = audit_book(book, time_limit_s=0.0)
+    assert [finding.text for finding in findings if "longer to read than" in finding.text]
