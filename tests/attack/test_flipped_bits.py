@@ -25,7 +25,7 @@ def test_a_flipped_bit_is_found_or_without_effect(name: str, tmp_path: Path) -> 
     victim = Victim(made(name, tmp_path / name), tmp_path / "under-attack.book")
     result = flips(victim, anywhere=12, each_table=5, seed=len(name))
     assert result.holes == []
-    assert result.of(WITHOUT_EFFECT) > 0
+    assert result.of(WITHOUT_EFFECT) > 0 or name == "killed"  # nearly every bit of a -wal counts
     assert result.of(FOUND) > 0
     owners = {region.owner for region in victim.places if region.kind == CONTENT}
     assert owners <= {region.owner for region, _ in result.counts}

@@ -130,7 +130,7 @@ def killed(path: Path, folder: Path) -> Path:
     def take() -> None:
         taken.update({ending: Path(f"{work}{ending}").read_bytes() for ending in ("", "-wal")})
 
-    left_open(work, folder, before_the_end=take)
+    left_open(work, folder, lines=330, before_the_end=take)  # short enough that the -wal never begins anew
     for ending, data in taken.items():
         Path(f"{path}{ending}").write_bytes(data)
     return path
