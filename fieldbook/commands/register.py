@@ -18,9 +18,10 @@ SUBCOMMANDS: dict[str, str] = {
     "proposals": "Which marks may be one, which may have been re-set: the evidence.",
     "decide": "Decide such a question, or strike a decision.",
     "coordinates": "What the evidence gives for each mark, with both accuracies.",
+    "check": "What is not in order; exit 1 when anything is found.",
     "decisions": "Who decided what, when and why.",
 }
-LATER = ("check", "export")
+LATER = ("export",)
 
 
 class SubcommandGroup(click.Group):

@@ -34,6 +34,8 @@ from fieldbook.reduce.stated import stated_uncertainty
 from .evidence import Evidence, Matrix, Place
 from .fold import Mark, RegisterState
 from .members import (
+    FRAME_OPERATION,
+    MOTION,
     Apart,
     Member,
     chosen_members,
@@ -296,6 +298,15 @@ def between_marks(one: MarkValue, two: MarkValue) -> Combined | None:
     terms = linear_form(inputs, coefficients).terms
     extra = [term for value in (one, two) for term in value.terms if term.source == DISAGREE]
     return combine([*terms, *extra])
+
+
+def measured(value: MarkValue) -> Combined:
+    """The mark as it was measured: without the frame operations and motions that brought it to its frame.
+
+    Raises:
+        ValueError: a mark without a coordinate.
+    """
+    return combine([term for term in value.terms if not term.source.startswith((FRAME_OPERATION, MOTION))])
 
 
 # -- what is said of it ----------------------------------------------------------------------------------------
