@@ -19,6 +19,9 @@ SUBCOMMANDS: dict[str, str] = {
     "decide": "Decide such a question, or strike a decision.",
     "coordinates": "What the evidence gives for each mark, with both accuracies.",
     "check": "What is not in order; exit 1 when anything is found.",
+    "publish": "Make what the evidence gives the value in force, with a number.",
+    "in-force": "Which value of a mark was in force on a date.",
+    "changes": "What changed since a date, by how much, and why.",
     "decisions": "Who decided what, when and why.",
 }
 LATER = ("export",)

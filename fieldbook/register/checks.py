@@ -23,6 +23,7 @@ from .classes import OfficeClass
 from .combining import combine_mark, measured
 from .evidence import Evidence, Place
 from .fold import HeldBook, Mark, RegisterState, label_of
+from .history import apart_m, in_force
 from .identity import Proposal, proposals
 from .members import requirement_of
 from .reading import evidence_by_key
@@ -55,6 +56,7 @@ def check_register(register: Register, classes: Sequence[OfficeClass] = ()) -> l
     found += _of_frames(rows)
     found += [_of_proposal(item) for item in proposals(state)]
     found += _of_books(state)
+    found += [item for row in rows for item in _of_published(state, row)]
     found += _of_certificates(register)
     return sorted(found, key=lambda item: (item.severity != "stop", item.mark or 0, item.code))
 
@@ -137,6 +139,22 @@ def _of_books(state: RegisterState) -> Iterator[Trouble]:
             yield Trouble(
                 "not_reduced", "caution", number, item["mark"], f"Occupation {label} was not reduced: {item['text']}"
             )
+
+
+def _of_published(state: RegisterState, row: Row) -> Iterator[Trouble]:
+    value = row.value
+    held = in_force(state, value.mark.number)
+    if held is None:
+        return
+    evidence = [[m.held.book, m.held.occupation, m.held.evidence] for m in value.members]
+    if held.entry.body["evidence"] == evidence:
+        return
+    moved = None if value.place is None else apart_m(held.entry.body["place"], value.place)
+    by = "in another frame" if moved is None else f"{1000 * math.hypot(moved[0], moved[1]):.1f} mm away in plan"
+    if value.place is None:
+        by = "nothing"
+    text = f"The evidence has changed since {held.number} was published ({held.entry.utc[:10]}); it now gives a place {by}."
+    yield Trouble("published_outdated", "caution", value.mark.number, value.mark.name, text)
 
 
 # -- certificates ----------------------------------------------------------------------------------------------

@@ -15,7 +15,6 @@ _INT: tuple[type, ...] = (int,)
 _LIST: tuple[type, ...] = (list,)
 _TREE: tuple[type, ...] = (dict,)
 _TEXT_OR_NONE: tuple[type, ...] = (str, type(None))
-_INT_OR_NONE: tuple[type, ...] = (int, type(None))
 
 KINDS: dict[str, dict[str, tuple[type, ...]]] = {
     "register": {"id": _TEXT, "format": _INT, "program": _TEXT, "migrations": _LIST},
@@ -42,6 +41,20 @@ KINDS: dict[str, dict[str, tuple[type, ...]]] = {
     "name": {"mark": _INT, "name": _TEXT, "reason": _TEXT},
     "frame": {"frame": _TEXT, "epoch": _TEXT_OR_NONE, "reason": _TEXT},
     "rule": {"rule": _TEXT, "within_m": _TEXT, "reason": _TEXT},
+    "published": {
+        "number": _TEXT,
+        "mark": _INT,
+        "name": _TEXT,
+        "place": _TREE,
+        "datum_accuracy": _TREE,
+        "between_accuracy": _TREE,
+        "method": _TEXT,
+        "evidence": _LIST,
+        "supersedes": _TEXT_OR_NONE,
+        "change": _TREE,
+        "reason": _TEXT,
+    },
+    "withdrawn": {"mark": _INT, "number": _TEXT, "reason": _TEXT},
     "strike": {"seq": _INT, "reason": _TEXT},
 }
 DECISIONS = ("same", "different", "reset", "separate", "exclude", "name", "frame", "rule")
