@@ -22,9 +22,9 @@ SUBCOMMANDS: dict[str, str] = {
     "publish": "Make what the evidence gives the value in force, with a number.",
     "in-force": "Which value of a mark was in force on a date.",
     "changes": "What changed since a date, by how much, and why.",
+    "export": "The values in force as a file for others.",
     "decisions": "Who decided what, when and why.",
 }
-LATER = ("export",)
 
 
 class SubcommandGroup(click.Group):
@@ -40,12 +40,6 @@ class SubcommandGroup(click.Group):
         Raises:
             UsageError: there is none.
         """
-        if cmd_name in LATER:
-            raise UsageError(
-                f"`fieldbook register {cmd_name}` is not in this version.",
-                "Run `fieldbook register --help` for the commands that are.",
-                code="not_in_this_version",
-            )
         if cmd_name not in SUBCOMMANDS:
             raise UsageError(
                 f'There is no command "register {cmd_name}".{nearest(cmd_name, SUBCOMMANDS)}',

@@ -158,7 +158,7 @@ def _publish(register: Register, row: Row, *, by: str, reason: str) -> Outcome:
         return Outcome(mark.number, mark.name, "refused", f"{stops[0].text}")
     known = history(state, mark.number)
     before = in_force(state, mark.number)
-    body = _body(state, row, len(known) + 1, reason)
+    body = body_of(state, row, len(known) + 1, reason)
     if before is not None and _same(before.entry.body, body):
         return Outcome(mark.number, mark.name, "unchanged", "in force with the same evidence", before.number)
     change = _change(register, value, before)
@@ -179,13 +179,14 @@ def withdraw(register: Register, mark: Mark, *, by: str, reason: str) -> Entry:
     return register.append("withdrawn", {"mark": mark.number, "number": before.number, "reason": reason}, by)
 
 
-def _body(state: RegisterState, row: Row, running: int, reason: str) -> Tree:
+def body_of(state: RegisterState, row: Row, running: int | None, reason: str) -> Tree:
+    """The frozen facts of a publication; without `running` they bear no number."""
     value, place = row.value, row.value.place
     assert place is not None  # noqa: S101 - the caller has looked
     assert value.datum is not None  # noqa: S101
     datum, height, local = value.datum, value.height, row.local
     return {
-        "number": f"{prefix_of(state.id)}-{value.mark.number}.{running}",
+        "number": "" if running is None else f"{prefix_of(state.id)}-{value.mark.number}.{running}",
         "mark": value.mark.number,
         "name": value.mark.name,
         "place": {
