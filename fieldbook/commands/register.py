@@ -23,6 +23,7 @@ SUBCOMMANDS: dict[str, str] = {
     "in-force": "Which value of a mark was in force on a date.",
     "changes": "What changed since a date, by how much, and why.",
     "export": "The values in force as a file for others.",
+    "import": "The same register again from its GeoPackage.",
     "decisions": "Who decided what, when and why.",
 }
 

@@ -14,13 +14,13 @@ from fieldbook.errors import UsageError
 if TYPE_CHECKING:
     from fieldbook.register.export_rows import ExportRow
 
-LATER = (".gpkg", ".xml", ".pdf", ".html")
-ENDINGS = (".csv", ".geojson", ".kml")
+LATER = (".xml", ".pdf", ".html")
+ENDINGS = (".gpkg", ".csv", ".geojson", ".kml")
 
 
 @click.command("export")
 @click.argument("register", type=click.Path(path_type=Path))
-@click.option("--out", type=click.Path(path_type=Path), help="File: .csv, .geojson or .kml.")
+@click.option("--out", type=click.Path(path_type=Path), help="File: .gpkg, .csv, .geojson or .kml.")
 @click.option(
     "--for", "reader", type=click.Choice(["programs", "people"]), default="programs", help="Of CSV: for whom."
 )
@@ -41,8 +41,13 @@ def command(register: Path, out: Path | None, reader: str, today: bool, replace:
     with reading(register) as opened:
         rows = export_rows(opened, today=today)
         marks = len(opened.state().marks())
-        data = _rendered(ending, rows, reader)
-    out.write_bytes(data)
+        if ending == ".gpkg":
+            from fieldbook.clock import SystemClock
+            from fieldbook.register.export_geopackage import write_geopackage
+
+            write_geopackage(out, rows, opened, SystemClock())
+        else:
+            out.write_bytes(_rendered(ending, rows, reader))
     line(f"{out}: {len(rows)} marks")
     if len(rows) < marks:
         why = "no coordinate" if today else "no published value in force (`register publish`, or --today)"

@@ -248,6 +248,42 @@ class Register:
         (_, data) = next(iter(self.given([sha256])))
         return json.loads(data)
 
+    def raw_entries(self) -> list[tuple[Any, ...]]:
+        """Rows of `entry` as they are stored: seq, utc, kind, body text, by, previous hash, hash."""
+        with connect.register_errors(self.path):
+            return self._connection.execute(
+                "SELECT seq, utc, kind, body, by, previous_hash, hash FROM entry ORDER BY seq"
+            ).fetchall()
+
+    def raw_content(self) -> Iterator[tuple[Any, ...]]:
+        """Rows of `content` as they are stored: SHA-256, bytes, codec, data."""
+        with connect.register_errors(self.path):
+            yield from self._connection.execute("SELECT sha256, bytes, codec, data FROM content ORDER BY rowid")
+
+
+def rebuilt(path: Path, entries: Iterable[tuple[Any, ...]], content: Iterable[tuple[Any, ...]]) -> int:
+    """A register file of rows that come from elsewhere; the caller audits it. Returns the number of entries.
+
+    Raises:
+        BookError: it cannot be written, or the rows are not those of a register.
+    """
+    connection = connect.open_writer(path, create=True)
+    count = 0
+    try:
+        with connect.register_errors(path):
+            connection.execute("BEGIN IMMEDIATE")
+            connection.execute(f"PRAGMA application_id = {migrations.APPLICATION_ID}")
+            _migrate(connection, 0, "")
+            for row in entries:
+                connection.execute("INSERT INTO entry VALUES (?, ?, ?, ?, ?, ?, ?)", row)
+                count += 1
+            for row in content:
+                connection.execute("INSERT INTO content VALUES (?, ?, ?, ?)", row)
+            connection.execute("COMMIT")
+    finally:
+        connection.close()
+    return count
+
 
 def unpacked(size: object, codec: object, data: object) -> bytes | None:
     """The bytes of one row of `content`; None if they are not what the row says. Inflates to the stated size at most."""

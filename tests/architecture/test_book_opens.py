@@ -47,7 +47,7 @@ EXEMPT_CALLS = {
     "book/salvage/bits.py": {"before.copy()"},  # of a hash
 }
 SAYS_BOOK = ("book",)
-SQLITE_ELSEWHERE = ("register/connect.py",)
+SQLITE_ELSEWHERE = ("register/connect.py", "register/export_geopackage.py")
 
 
 def _calls(source: str) -> Iterator[tuple[int, str, str]]:

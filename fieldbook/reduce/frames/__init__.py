@@ -38,6 +38,7 @@ from fieldbook.reduce.frames.convert import (  # noqa: E402
     operation_codes,
     transform_to_client,
 )
+from fieldbook.reduce.frames.flat import FlatFrame, flat_frame  # noqa: E402
 from fieldbook.reduce.frames.geodesic import geodesic  # noqa: E402
 from fieldbook.reduce.frames.gridfiles import GridFacts, forget_offers, grid_facts, use_grid_folders  # noqa: E402
 from fieldbook.reduce.frames.heightgrid import undulation_by_proj, undulations_by_proj  # noqa: E402
@@ -65,6 +66,7 @@ __all__ = [
     "QUESTION",
     "Answer",
     "Considered",
+    "FlatFrame",
     "FrameInfo",
     "GridFacts",
     "ListedGrid",
@@ -78,6 +80,7 @@ __all__ = [
     "client_epoch_of",
     "decimal_year",
     "ellipsoidal_height_difference_to_itrf2020",
+    "flat_frame",
     "forget_offers",
     "frame_info",
     "frames_by",
