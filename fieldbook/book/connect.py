@@ -133,6 +133,20 @@ def folder_is_writable(path: Path) -> bool:
     return os.access(folder, os.W_OK, effective_ids=os.access in os.supports_effective_ids)
 
 
+def recognises(path: Path, application_id: int) -> bool:
+    """Whether a file bears this application id, sound or damaged; a damaged head counts, a missing or foreign file not."""
+    try:
+        connection = open_reader(path)
+    except BookError as error:
+        return error.code not in ("missing", "not_a_book")
+    try:
+        return bool(connection.execute("PRAGMA application_id").fetchone()[0] == application_id)
+    except sqlite3.Error:
+        return True
+    finally:
+        connection.close()
+
+
 def open_reader(path: Path) -> BookConnection:
     """A connection that can only read. The schema is not yet checked.
 

@@ -24,7 +24,7 @@ from typing import Any
 from fieldbook.model.epoch import Epoch
 
 from .columns import Column, decode_column, encode_column
-from .epochs import FORM_FIELDS, PLAIN_FIELDS, Form, Origin, form_of, plain_of, read_epochs
+from .epochs import FORM_FIELDS, PLAIN_FIELDS, Form, Origin, form_of, load_forms, plain_of, read_epochs
 
 CODEC = "columns-lzma"
 COLUMNS = ("form", "day", "time_ms", "latitude_e8min", "longitude_e8min", *PLAIN_FIELDS)
@@ -84,6 +84,16 @@ def pieces_of_epochs(epochs: Sequence[Epoch]) -> Iterator[Piece]:
         own = [forms.setdefault(form_of(epoch), len(forms)) for epoch in part]
         rows = [(one.day, one.time_ms, one.latitude_e8min, one.longitude_e8min, *plain_of(one)) for one in part]
         yield _piece([epoch.number for epoch in part], own, dict(enumerate(forms)), list(zip(*rows, strict=True)))
+
+
+def packs_of_rows(connection: sqlite3.Connection, occupation: int, origin: Origin | None) -> list[Pack]:
+    """The epoch rows of an occupation compressed, as `pieces_of_rows` cuts them.
+
+    Raises:
+        ValueError: as `pieces_of_rows`.
+    """
+    forms = load_forms(connection, occupation)
+    return [packed(piece) for piece in pieces_of_rows(connection, occupation, origin, forms)]
 
 
 def pieces_of_rows(

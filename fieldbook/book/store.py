@@ -105,16 +105,7 @@ class Book:
     @staticmethod
     def recognises(path: Path) -> bool:
         """Whether a file is a book, sound or damaged: asked of SQLite, because nobody else may open it."""
-        try:
-            connection = connect.open_reader(path)
-        except BookError as error:
-            return error.code not in ("missing", "not_a_book")
-        try:
-            return bool(connection.execute("PRAGMA application_id").fetchone()[0] == migrations.APPLICATION_ID)
-        except sqlite3.Error:
-            return True
-        finally:
-            connection.close()
+        return connect.recognises(path, migrations.APPLICATION_ID)
 
     def _enter_lost_commits(self, wrong: str) -> None:
         """Closing this writer clears the -wal away: whoever asks later must still know that something is missing."""
@@ -409,10 +400,7 @@ class Book:
         """Move the epoch rows of an ended occupation into packs, compressed outside the transaction."""
         if not self._known.has_ended(occupation):
             return False
-        forms = epochs.load_forms(self._connection, occupation)
-        origin = self._known.origin_of(occupation)
-        pieces = epoch_packs.pieces_of_rows(self._connection, occupation, origin, forms)
-        packs = [epoch_packs.packed(piece) for piece in pieces]
+        packs = epoch_packs.packs_of_rows(self._connection, occupation, self._known.origin_of(occupation))
         with self.transaction():
             heartbeat.forget_sky(self._connection, occupation)
             if packs:
@@ -445,10 +433,6 @@ class Book:
             size += len(data)
             total.update(data)
         return size, total.hexdigest()
-
-    def received_sha256(self, occupation: int) -> str:
-        """SHA-256 of the received bytes alone: the same for the same file, whatever the times and events."""
-        return self.received_digest(occupation)[1]
 
     def epochs(self, occupation: int, after: int = 0, limit: int | None = None) -> list[Epoch]:
         """Decoded epochs of an occupation with a number above `after`, in order; the first `limit` of them if given.

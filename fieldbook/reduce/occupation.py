@@ -287,8 +287,8 @@ class _Steps:
             ),
             horizontal=horizontal,
             vertical=vertical,
-            horizontal_forbidden_by=_largest([*own[1:], *judged_terms], (0, 1)),
-            vertical_forbidden_by=_largest([*own[1:], *judged_terms], (2,)),
+            horizontal_forbidden_by=terms.heaviest_source([*own[1:], *judged_terms], (0, 1)),
+            vertical_forbidden_by=terms.heaviest_source([*own[1:], *judged_terms], (2,)),
             estimate=self.found,
             screened=self.screened,
             judged=self.judged,
@@ -443,14 +443,3 @@ class _Steps:
 
 def _vector(offset: tuple[float, float, float | None] | None) -> list[float | None] | None:
     return None if offset is None else list(offset)
-
-
-def _largest(found: list[Term], axes: tuple[int, ...]) -> str:
-    """The budget line (lines of one group together) that weighs most on these axes, Type A apart."""
-    weights: dict[str, float] = {}
-    names: dict[str, str] = {}
-    for number, term in enumerate(found):
-        key = term.group or f"#{number}"
-        names.setdefault(key, term.source.partition(": of ")[0] if term.group else term.source)
-        weights[key] = weights.get(key, 0.0) + max((term.u_enu_m[axis] or 0.0) ** 2 for axis in axes)
-    return names[max(weights, key=lambda key: weights[key])] if weights else ""

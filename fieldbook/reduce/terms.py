@@ -161,3 +161,14 @@ def _motion_term(step: OperationStep) -> Term:
         common=True,
         note=f"{how}; {step.name}; {step.remark}".rstrip("; "),
     )
+
+
+def heaviest_source(found: list[Term], axes: tuple[int, ...]) -> str:
+    """The budget line (lines of one group together) that weighs most on these axes, Type A apart."""
+    weights: dict[str, float] = {}
+    names: dict[str, str] = {}
+    for number, term in enumerate(found):
+        key = term.group or f"#{number}"
+        names.setdefault(key, term.source.partition(": of ")[0] if term.group else term.source)
+        weights[key] = weights.get(key, 0.0) + max((term.u_enu_m[axis] or 0.0) ** 2 for axis in axes)
+    return names[max(weights, key=lambda key: weights[key])] if weights else ""
