@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import os
 import shutil
 import signal
-from collections.abc import Callable
+import sys
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -14,6 +16,22 @@ from recorded_samples import SAMPLE_NAMES, SAMPLES, record_into
 if signal.getsignal(signal.SIGINT) is signal.SIG_IGN:
     # a run in the background of a shell has Ctrl+C ignored, and would hand that on to every program that a test interrupts
     signal.signal(signal.SIGINT, signal.default_int_handler)
+
+
+@pytest.fixture(autouse=True)
+def proj_search_path() -> Iterator[None]:
+    """Grid folders of one test are not searched in the next: PROJ keeps them for the whole process.
+
+    With two of them on its path the `+init=` of the published plate models, which only tests use, is no longer found.
+    """
+    yield
+    module = sys.modules.get("fieldbook.reduce.frames.gridfiles")
+    if module is not None and module._known:
+        from pyproj import datadir
+
+        datadir.set_data_dir(datadir.get_data_dir().partition(os.pathsep)[0])
+        module._known.clear()
+        module.forget_offers()
 
 
 @pytest.fixture(scope="session")

@@ -19,7 +19,7 @@ from fieldbook.model.coordinates import FORMS
 @click.option("--json", "as_json", is_flag=True, help="JSON on stdout.")
 def command(book: Path, mark: str, forms: tuple[str, ...], grid: str | None, *, as_json: bool) -> None:
     """Reduce the mark and print it, digits by its 95 % figure."""
-    from fieldbook.model.rounding import decimals_for
+    from fieldbook.model.rounding import decimals_for, rounded_up
     from fieldbook.occupy.mark_results import mark_position
     from fieldbook.reduce.frames import printed
 
@@ -41,7 +41,7 @@ def command(book: Path, mark: str, forms: tuple[str, ...], grid: str | None, *, 
         return
     epoch = "static frame" if client.epoch is None else f"epoch {client.epoch:.4f}"
     line(
-        f"{mark}: {client.frame_name} ({client.frame}), {epoch}; 95 % in plan {found.uncertainty.horizontal95_m:.3f} m"
+        f"{mark}: {client.frame_name} ({client.frame}), {epoch}; 95 % in plan {rounded_up(found.uncertainty.horizontal95_m, decimals)} m"
     )
     for form, text in texts.items():
         line(f"  {form:11} {text}")

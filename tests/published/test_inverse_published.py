@@ -81,7 +81,7 @@ def test_geodesics_against_pygeodesy() -> None:
     exact = pytest.importorskip("pygeodesy.ellipsoidalExact").LatLon
     rng = np.random.default_rng(20270304)
     pairs = [
-        (tuple(rng.uniform((-90, -180), (90, 180))), tuple(rng.uniform((-90, -180), (90, 180)))) for _ in range(200)
+        (tuple(rng.uniform((-90, -180), (90, 180))), tuple(rng.uniform((-90, -180), (90, 180)))) for _ in range(40)
     ]
     pairs += [((90.0, 0.0), (45.0, 10.0)), ((10.0, 179.999), (10.0, -179.999)), ((30.0, 0.0), (-29.9, 179.8))]
     pairs += [((-37.0, 144.0), (-37.0 + d, 144.0 + d)) for d in (1e-7, 1e-5, 1e-3)]
