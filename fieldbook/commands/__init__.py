@@ -20,7 +20,7 @@ from fieldbook.commands.output import write_error
 from fieldbook.errors import ExitCode, FieldbookError, Interrupted, UsageError
 
 COMMANDS: dict[str, str] = {
-    "demo": "The whole job on the samples: books, reductions, certificates.",
+    "demo": "The whole job on the samples: books, reductions, certificates, register.",
     "new": "Begin a book from a session file.",
     "open": "Open a book on the screen.",
     "links": "List serial ports without opening any, or listen to one link.",

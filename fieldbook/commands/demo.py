@@ -1,4 +1,4 @@
-"""`fieldbook demo`: the whole job on the samples, from received bytes to verified certificates.
+"""`fieldbook demo`: the whole job on the samples, from received bytes to verified certificates and to the office's register.
 
 The samples are copied into the folder first and recorded from there, so that everything the books name stands beside
 them. Nothing is overwritten: the folder must be new or empty.
@@ -26,6 +26,9 @@ BOOKS = {
     "kestrel-ridge": ("kestrel-ridge-1", "kestrel-ridge-2"),
     "saltpan": ("saltpan-1", "saltpan-2"),
 }
+# of another party, for the office: not certified, because it holds what an office has to find
+SECOND_PARTY = {"northgate": ("northgate-1", "northgate-2", "northgate-3", "northgate-4")}
+OFFICE = "O. Desk (sample)"
 SIGN_OFF = "I. Nobody (sample); no licence, not for use"
 FORMATS = ("pdf", "html", "json")
 LIVE_LINK = "sim:two-inits?seed=7"
@@ -35,7 +38,7 @@ LIVE_LINK = "sim:two-inits?seed=7"
 @click.option("--out", type=click.Path(path_type=Path), default=Path("fieldbook-demo"), help="Folder, new or empty.")
 @click.option("--live", is_flag=True, help="Open the screen on a simulated receiver instead.")
 def command(out: Path, live: bool) -> int | None:
-    """Do the whole job on the samples: books, reductions, certificates, and verify them."""
+    """Do the whole job on the samples: books, reductions, certificates, verify them, and the register of both parties."""
     _make_folder(out)
     samples = out / "sample_sessions"
     shutil.copytree(samples_folder(), samples, ignore=shutil.ignore_patterns("*.py", "__pycache__"))
@@ -47,8 +50,42 @@ def command(out: Path, live: bool) -> int | None:
     line("Certificates of the sample marks, each verified with its book:")
     for path in written:
         line(f"  {path}")
+    _office(out, samples)
     line(f"Look at one, or open a book: fieldbook open {out / 'kestrel-ridge.book'}")
     return None
+
+
+def _office(out: Path, samples: Path) -> None:
+    """Both parties' books into one register; what it asks is shown, and nothing is decided for anybody."""
+    from fieldbook.commands.register_proposals import lines_of
+    from fieldbook.commands.verify import book_findings
+    from fieldbook.register.adding import add_book
+    from fieldbook.register.checks import check_register
+    from fieldbook.register.identity import proposals
+    from fieldbook.register.store import Register
+    from fieldbook.signing.keyring import trust
+
+    for name, sessions in SECOND_PARTY.items():
+        for session in sessions:
+            _record(out / f"{name}.book", samples / session)
+    known, path, clock = trust(), out / "office.register", SystemClock()
+    with Register.create(path, clock=clock, by=OFFICE) as register:
+        for name in (*BOOKS, *SECOND_PARTY):
+            outcome = add_book(
+                register, out / f"{name}.book", by=OFFICE, clock=clock, verify=lambda one: book_findings(one, known)
+            )
+            if outcome.refused:
+                raise UsageError(f"{outcome.path}: {outcome.text}", "Report this: it is a fault of the program.")
+        line()
+        line(f"The office's register of both parties, {path}. What it asks:")
+        for item in proposals(register.state()):
+            for text in lines_of(item):
+                line(f"  {text}")
+        line("What is not in order:")
+        for trouble in check_register(register):
+            if trouble.code not in ("open_question", "one_occupation"):
+                line(f"  {trouble.severity} {trouble.name}: {trouble.text}")
+        line()
 
 
 def samples_folder() -> Path:

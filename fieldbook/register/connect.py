@@ -26,6 +26,7 @@ from . import migrations
 BUSY_MS = 5000
 MAX_VALUE_BYTES = 64 * 1024 * 1024
 PAGE_BYTES = 4096
+CACHE_KIB = 64 * 1024  # evidence is found by its hash, anywhere in the file
 
 Connection = sqlite3.Connection
 DatabaseError = sqlite3.Error
@@ -61,7 +62,7 @@ def open_writer(path: Path, *, create: bool = False) -> Connection:
         _look(path)
     with register_errors(path):
         connection = _connect(path, "mode=rwc" if create else "mode=rw")
-        first = (f"page_size={PAGE_BYTES}",) if create else ()
+        first = (f"page_size={PAGE_BYTES}", f"cache_size=-{CACHE_KIB}") if create else (f"cache_size=-{CACHE_KIB}",)
         return _tried(connection, (*first, "synchronous=FULL"))
 
 

@@ -228,14 +228,12 @@ def apply_rule(register: Register, *, by: str) -> list[Entry]:
         if item.case == SAME_APART:
             for number in item.marks:
                 doubtful[number] += 1
-    written = []
+    written, joins = [], state.joins()
     with register.transaction():
         for item in open_ones:
             if not _covered(item, within_m) or any(doubtful[number] for number in item.marks):
                 continue
-            now = register.state()
-            one, two = now.root_of(item.marks[0]), now.root_of(item.marks[1])
-            if one == two or _in_the_way(now, one, two) is not None:
+            if not joins.join(*item.marks):
                 continue
             body: Tree = {
                 "marks": list(item.marks),

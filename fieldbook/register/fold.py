@@ -106,12 +106,14 @@ class RegisterState:
     next_number: int = 1
     _numbers: dict[int, tuple[str, str]] = field(default_factory=dict)  # number -> (book, name)
     _marks: dict[int, Mark] | None = None
+    _excluded: dict[tuple[str, int], Entry] | None = None
+    _union: _Union | None = None
 
     def apply(self, entry: Entry) -> None:
         """Take in the next entry."""
         self.entries.append(entry)
         self.head_seq, self.head_hash = entry.seq, entry.hash
-        self._marks = None
+        self._marks = self._excluded = self._union = None
         body = entry.body
         if entry.kind == "register":
             self.id = str(body["id"])
@@ -175,7 +177,10 @@ class RegisterState:
 
     def excluded(self) -> dict[tuple[str, int], Entry]:
         """Occupations that were set apart by decision."""
-        return {(entry.body["book"], int(entry.body["occupation"])): entry for entry in self.standing("exclude")}
+        if self._excluded is None:
+            found = {(e.body["book"], int(e.body["occupation"])): e for e in self.standing("exclude")}
+            self._excluded = found
+        return self._excluded
 
     def different(self) -> dict[frozenset[int], Entry]:
         """Pairs of marks (today's numbers) that were settled as two."""
@@ -207,11 +212,20 @@ class RegisterState:
         return last
 
     def _roots(self) -> _Union:
-        union = _Union()
-        for entry in self.standing("same"):
-            first, second = (int(number) for number in entry.body["marks"])
-            union.join(first, second)
-        return union
+        if self._union is None:
+            self._union = _Union()
+            for entry in self.standing("same"):
+                first, second = (int(number) for number in entry.body["marks"])
+                self._union.join(first, second)
+        return self._union
+
+    def joins(self) -> Joins:
+        """Which marks are one and which are settled as two, to try further joins on."""
+        apart: dict[int, set[int]] = {}
+        for pair in self.different():
+            for number in pair:
+                apart.setdefault(number, set()).update(pair - {number})
+        return Joins(self._roots().copied(), apart)
 
     def _grouped(self) -> dict[int, Mark]:
         root = self._roots()
@@ -268,8 +282,11 @@ class RegisterState:
 class _Union:
     """Union-find that knows every set by its smallest number."""
 
-    def __init__(self) -> None:
-        self._parent: dict[int, int] = {}
+    def __init__(self, parent: dict[int, int] | None = None) -> None:
+        self._parent: dict[int, int] = {} if parent is None else parent
+
+    def copied(self) -> _Union:
+        return _Union(dict(self._parent))
 
     def __call__(self, number: int) -> int:
         path = []
@@ -284,6 +301,27 @@ class _Union:
         low, high = sorted((self(first), self(second)))
         if low != high:
             self._parent[high] = low
+
+
+class Joins:
+    """Marks as they would be after further joins, without folding thousands of entries again for each."""
+
+    def __init__(self, union: _Union, apart: dict[int, set[int]]) -> None:
+        self._union = union
+        self._apart = apart
+
+    def join(self, first: int, second: int) -> bool:
+        """Make two marks one; False, and nothing done, if they are one already or settled as two."""
+        one, two = self._union(first), self._union(second)
+        if one == two or two in self._apart.get(one, ()):
+            return False
+        self._union.join(one, two)
+        kept, gone = min(one, two), max(one, two)
+        for other in self._apart.pop(gone, set()):
+            self._apart[other].discard(gone)
+            self._apart[other].add(kept)
+            self._apart.setdefault(kept, set()).add(other)
+        return True
 
 
 def _after_resets(number: int, held: Held, resets: dict[int, list[Entry]], root: _Union) -> int:

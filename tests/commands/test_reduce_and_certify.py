@@ -200,6 +200,9 @@ def test_demo_ends_with_a_certificate_for_each_mark(tmp_path: Path, run_fieldboo
         for ending in ("pdf", "html", "json"):
             assert (folder / f"{mark}.{ending}").is_file()
             assert f"{mark}.{ending}" in out
+    for asked in ("same name, near", "other name, near", "same name, apart", "Occupations disagree"):
+        assert asked in out.partition("The office's register of both parties")[2]
+    assert run_fieldbook("verify", folder / "office.register", folder / "northgate.book")[0] == 0
     code, _, err = run_fieldbook("demo", "--out", folder)
     assert code == 2
     assert "not empty" in err

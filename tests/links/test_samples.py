@@ -15,7 +15,10 @@ import pyproj
 import pytest
 
 SAMPLES = Path(__file__).resolve().parents[2] / "sample_sessions"
-NAMES = ("kestrel-ridge-1", "kestrel-ridge-2", "saltpan-1", "saltpan-2")
+NAMES = (
+    "kestrel-ridge-1", "kestrel-ridge-2", "saltpan-1", "saltpan-2",
+    "northgate-1", "northgate-2", "northgate-3", "northgate-4",
+)  # fmt: skip
 
 
 def load_maker() -> ModuleType:
