@@ -14,6 +14,7 @@ from fieldbook.settings.values import nearest
 
 SUBCOMMANDS: dict[str, str] = {
     "add": "Verify books and add them, or their later states.",
+    "elsewhere": "Published control and post-processed results from a CSV file.",
     "list": "Books and marks of a register.",
     "proposals": "Which marks may be one, which may have been re-set: the evidence.",
     "decide": "Decide such a question, or strike a decision.",

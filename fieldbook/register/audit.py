@@ -137,7 +137,7 @@ def _evidence(connection: connect.Connection) -> Iterator[Verified]:
 def _named(connection: connect.Connection) -> Iterator[tuple[int, str]]:
     for entry in read_entries(connection):
         body: Any = entry.body
-        if entry.kind == "added":
+        if entry.kind in ("added", "elsewhere"):
             yield entry.seq, str(body["hashes"])
             for item in body["occupations"]:
                 yield entry.seq, str(item["evidence"])

@@ -98,6 +98,8 @@ def _requirement(row: Row) -> Iterator[str]:
     """The strictest session's own lines, in the frame it speaks of."""
     value = row.value
     wanted = requirement_of(value.members)
+    if math.isinf(wanted.horizontal_95_m):
+        return  # coordinates from elsewhere alone: nobody asked anything of them
     figures = measured(value)
     plan, up = figures.horizontal95_m, figures.vertical95_m
     if wanted.in_frame == "client frame" and value.datum is not None:

@@ -89,6 +89,18 @@ class ByModel:
 
 
 @dataclass(frozen=True)
+class Stated:
+    """Of a coordinate that no book holds: what it is, from where, and the part of it that all of that source share.
+
+    common_u_enu_m: standard uncertainty per axis, metres, the same error in every coordinate of the source.
+    """
+
+    kind: str  # "published control" or "post-processed"
+    source: str
+    common_u_enu_m: tuple[float, float, float | None]
+
+
+@dataclass(frozen=True)
 class Evidence:
     """One occupation. `place`: in the client's frame, None if it has none there; `observed`: in the receiver's.
 
@@ -97,7 +109,8 @@ class Evidence:
     governed_by: 'class', 'class and data' or 'data', of the mean's own uncertainty.
     prior_u_enu_m: of the mean, as kind of fix and length give it; it governs weights.
     plan_u95_m, height_u95_m: of the place; measured_u95_m: both as measured, without the frame operation.
-    sigma_plan_m, sigma_height_m: of the kind of fix, for fixed tolerances.
+    sigma_plan_m, sigma_height_m: of the kind of fix, for fixed tolerances. asked: None where nothing was.
+    stated: only of a coordinate from elsewhere; its Type A line then is the stated uncertainty.
     """
 
     mark: str
@@ -130,11 +143,12 @@ class Evidence:
     height_u95_m: float | None
     measured_u95_m: tuple[float, float | None]
     shares: Shares
-    asked: Asked
+    asked: Asked | None
     simulated: bool
     stops: tuple[str, ...]
     findings: tuple[Tree, ...]
     received_sha256: str | None
+    stated: Stated | None = None
     schema: str = field(default=SCHEMA)
 
     def to_tree(self) -> dict[str, Any]:
@@ -236,7 +250,10 @@ def evidence_from_tree(tree: dict[str, Any]) -> Evidence:
     mean = tree["mean"]
     values["mean"] = MeanLine(_triple(mean["u_enu_m"]), _triple(mean["dof_enu"]), mean["rho_en"])
     values["budget"] = tuple(BudgetLine(**line) for line in tree["budget"])
-    values["shares"], values["asked"] = Shares(**tree["shares"]), Asked(**tree["asked"])
+    values["shares"] = Shares(**tree["shares"])
+    values["asked"] = None if tree["asked"] is None else Asked(**tree["asked"])
+    if tree.get("stated") is not None:
+        values["stated"] = Stated(**{**tree["stated"], "common_u_enu_m": tuple(tree["stated"]["common_u_enu_m"])})
     values["prior_u_enu_m"] = tuple(tree["prior_u_enu_m"])
     values["measured_u95_m"] = tuple(tree["measured_u95_m"])
     for key in ("operation", "stops", "findings"):

@@ -117,7 +117,7 @@ class RegisterState:
         body = entry.body
         if entry.kind == "register":
             self.id = str(body["id"])
-        elif entry.kind == "added":
+        elif entry.kind in ("added", "elsewhere"):
             self._add(entry)
         elif entry.kind in ("reset", "separate"):
             self.next_number = max(self.next_number, int(body["number"]) + 1)

@@ -16,23 +16,25 @@ _LIST: tuple[type, ...] = (list,)
 _TREE: tuple[type, ...] = (dict,)
 _TEXT_OR_NONE: tuple[type, ...] = (str, type(None))
 
+_ADDED: dict[str, tuple[type, ...]] = {
+    "book": _TEXT,
+    "path": _TEXT,
+    "head_seq": _INT,
+    "head_hash": _TEXT,
+    "hashes": _TEXT,
+    "versions": _TREE,
+    "occupations": _LIST,
+    "failed": _LIST,
+    "marks": _TREE,
+    "numbers": _TREE,
+    "certificates": _LIST,
+    "changes": _LIST,
+}
 KINDS: dict[str, dict[str, tuple[type, ...]]] = {
     "register": {"id": _TEXT, "format": _INT, "program": _TEXT, "migrations": _LIST},
     "migrated": {"migrations": _LIST},
-    "added": {
-        "book": _TEXT,
-        "path": _TEXT,
-        "head_seq": _INT,
-        "head_hash": _TEXT,
-        "hashes": _TEXT,
-        "versions": _TREE,
-        "occupations": _LIST,
-        "failed": _LIST,
-        "marks": _TREE,
-        "numbers": _TREE,
-        "certificates": _LIST,
-        "changes": _LIST,
-    },
+    "added": _ADDED,  # one state of one book
+    "elsewhere": _ADDED,  # a list of coordinates from elsewhere, in the same shape
     "same": {"marks": _LIST, "reason": _TEXT},
     "different": {"marks": _LIST, "reason": _TEXT},
     "reset": {"mark": _INT, "from_utc": _TEXT, "number": _INT, "reason": _TEXT},

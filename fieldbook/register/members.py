@@ -18,7 +18,7 @@ from fieldbook.model.entry import Entry
 from fieldbook.model.reduction import BudgetLine, Finding
 from fieldbook.model.session import Antenna, Corrections, FrameChoice, Receiver, Requirement
 from fieldbook.reduce import frames
-from fieldbook.reduce.budget import Triple
+from fieldbook.reduce.budget import Term, Triple
 from fieldbook.reduce.combine import Input, Shared
 from fieldbook.reduce.constants import SAME_EPOCH_YEARS
 from fieldbook.reduce.geodesy import enu_difference
@@ -129,6 +129,8 @@ def _overlaps(found: Sequence[tuple[Held, Evidence]]) -> list[Finding]:
         for other, second in found[place + 1 :]:
             if not (evidence.started and evidence.ended and second.started and second.ended):
                 continue
+            if evidence.stated is not None or second.stated is not None:
+                continue
             if evidence.started <= second.ended and second.started <= evidence.ended:
                 text = (
                     f"Occupations {held.label} and {other.label} overlap in time on one mark: the same occupation in two "
@@ -189,11 +191,14 @@ def same_epoch(one: float | None, two: float | None) -> bool:
 
 
 def requirement_of(members: Sequence[Member]) -> Requirement:
-    """The strictest that was asked of the mark (smallest circle), the latest of equal ones."""
-    asked = members[0].evidence.asked
-    for item in members[1:]:
-        if item.evidence.asked.horizontal_95_m <= asked.horizontal_95_m:
-            asked = item.evidence.asked
+    """The strictest that was asked of the mark (smallest circle), the latest of equal ones; without limits if nothing was."""
+    wanted = [item.evidence.asked for item in members if item.evidence.asked is not None]
+    if not wanted:
+        return Requirement(math.inf, math.inf, (), 1)
+    asked = wanted[0]
+    for one in wanted[1:]:
+        if one.horizontal_95_m <= asked.horizontal_95_m:
+            asked = one
     return Requirement(
         horizontal_95_m=asked.horizontal_95_m,
         vertical_95_m=asked.vertical_95_m,
@@ -213,9 +218,11 @@ def meets(evidence: Evidence, requirement: Requirement) -> bool:
 
 
 def equipment(members: Sequence[Member]) -> list[Equipment]:
-    """What the members of one mark share with each other: `reduce.shared`, with the figures of every party."""
+    """What the occupations among them share with each other: `reduce.shared`, with the figures of every party."""
     stated = []
     for item in members:
+        if item.evidence.stated is not None:
+            continue
         shares = item.evidence.shares
         stated.append(
             (
@@ -251,10 +258,14 @@ def inputs_of(members: Sequence[Member], *, first_number: int = 1, mark: int | N
             too small). The frame operation is the same everywhere, the plumb line and what is not known of are the mark's.
     """
     found = []
-    places = offsets(members)
-    for number, (item, gear, place) in enumerate(zip(members, equipment(members), places, strict=True)):
+    gears = iter(equipment(members))
+    for number, (item, place) in enumerate(zip(members, offsets(members), strict=True)):
         evidence = item.evidence
         line = evidence.mean
+        if evidence.stated is not None:
+            found.append(_stated_input(item, place, first_number + number))
+            continue
+        gear = next(gears)
         mean = mean_term(line.u_enu_m, line.dof_enu, line.rho_en)
         mean, own, shared = split_terms(list(item.budget), mean, gear)
         if evidence.governed_by != "data":
@@ -263,6 +274,21 @@ def inputs_of(members: Sequence[Member], *, first_number: int = 1, mark: int | N
             shared = tuple(_across(one, gear, mark) for one in shared)
         found.append(Input(first_number + number, place, mean, own, shared, evidence.prior_u_enu_m))
     return found
+
+
+def _stated_input(item: Member, place: Triple, number: int) -> Input:
+    """A coordinate from elsewhere: its own part, what all of its source share, and the operation that brought it here."""
+    evidence, stated = item.evidence, item.evidence.stated
+    assert stated is not None  # noqa: S101 - the caller has looked
+    line, name = evidence.mean, f"{stated.kind}, {stated.source}"
+    mean = Term(f"stated: {name}", "B", "as stated", line.u_enu_m, (None, None, None), rho_en=line.rho_en)
+    common = Term(f"common to the source: {name}", "B", "as stated", stated.common_u_enu_m, common=True)
+    shared = [Shared(common, f"source {stated.source}")]
+    for extra in item.budget[len(evidence.budget) :]:
+        east, north, up = extra.u_enu_m
+        term = Term(extra.source, extra.type, extra.distribution, (east, north, up), common=True, note=extra.note)
+        shared.append(Shared(term, MARK_SCOPE + extra.source))
+    return Input(number, place, mean, (), tuple(shared), evidence.prior_u_enu_m)
 
 
 def _across(shared: Shared, gear: Equipment, mark: int) -> Shared:
@@ -289,13 +315,21 @@ def circumstances(members: Sequence[Member]) -> list[Circumstance]:
                 meets=meets(evidence, requirement),
                 arp_height_m=evidence.antenna_height_m,
                 tribrach=evidence.tribrach,
-                antenna=f"{shares.antenna} {shares.antenna_serial}" if shares.antenna_serial else None,
+                antenna=_antenna(evidence),
                 observer=evidence.observer,
                 station=shares.station,
                 receiver=shares.receiver_serial,
             )
         )
     return found
+
+
+def _antenna(evidence: Evidence) -> str | None:
+    """What stood on the mark; a coordinate from elsewhere came by other means than any tripod of ours."""
+    if evidence.stated is not None:
+        return f"{evidence.stated.kind}, {evidence.stated.source}"
+    shares = evidence.shares
+    return f"{shares.antenna} {shares.antenna_serial}" if shares.antenna_serial else None
 
 
 def parties_of(members: Sequence[Member]) -> dict[str, list[str]]:
