@@ -42,6 +42,7 @@ def command(register: Path, as_json: bool) -> None:
 def _book(held: HeldBook) -> dict[str, Any]:
     return {
         "id": held.id,
+        "kind": "list" if held.entry.kind == "elsewhere" else "book",
         "path": held.path,
         "head_seq": held.head_seq,
         "head": held.head_hash,
@@ -81,12 +82,12 @@ def _mark(mark: Mark, state: RegisterState) -> dict[str, Any]:
 
 def _print(state: RegisterState) -> None:
     line(f"Register {state.id}, {state.head_seq} entries")
-    line(f"{len(state.books)} books:")
+    line(f"{len(state.books)} books and lists:")
     for held in state.books.values():
-        line(
-            f"  {held.prefix}  {held.path}: entry {held.head_seq}, {len(held.occupations)} occupations; added by "
-            f"{held.entry.observer}, {held.entry.utc}"
-        )
+        what = f"entry {held.head_seq}, {len(held.occupations)} occupations"
+        if held.entry.kind == "elsewhere":
+            what = f"{len(held.occupations)} coordinates from elsewhere"
+        line(f"  {held.prefix}  {held.path}: {what}; added by {held.entry.observer}, {held.entry.utc}")
         for item in held.failed:
             line(f"            occupation {item['occupation']} of {item['mark']} was not reduced: {item['text']}")
     marks, excluded = state.marks(), state.excluded()
