@@ -7,11 +7,17 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
+from fieldbook.reduce.geodesy import geocentric
+
 from .classes import Figures, OfficeClass, fgdc_class, office_class
 from .combining import MarkValue, combine_register
 from .evidence import finite
-from .network import Local, local_accuracies
+from .network import NEIGHBOURS, Local, local_accuracies
 from .store import Register
+
+CANDIDATES = 8 * NEIGHBOURS
 
 
 @dataclass(frozen=True)
@@ -27,18 +33,35 @@ class Row:
 
 
 def rows_of(register: Register, classes: Sequence[OfficeClass] = (), only: Sequence[int] | None = None) -> list[Row]:
-    """Rows in order of number. Neighbours are all marks of the register, also where only some rows are wanted.
+    """Rows in order of number. Neighbours are sought among all marks, also where only some rows are wanted.
 
     Raises:
         BookError: evidence is missing or damaged.
     """
-    values = combine_register(register)
+    values = combine_register(register, None if only is None else _with_neighbours(register, only))
     locals_ = local_accuracies(values, only)
     return [
         row_of(value, locals_.get(value.mark.number, Local(())), classes)
         for value in values
         if only is None or value.mark.number in only
     ]
+
+
+def _with_neighbours(register: Register, only: Sequence[int]) -> list[int]:
+    """The marks wanted and those around them, by the places that stand in the entries: two thousand need not be combined
+    for one. Many more than are stated, because some may have no place in the same frame."""
+    placed = {
+        number: geocentric(place[0], place[1], place[2] or 0.0)
+        for number, mark in register.state().marks().items()
+        if (place := next((held.place for held in mark.occupations if held.place is not None), None)) is not None
+    }
+    numbers, found = list(placed), set(only)
+    places = np.array(list(placed.values())).reshape(-1, 3)
+    for number in only:
+        if number in placed:
+            order = np.argsort(np.linalg.norm(places - placed[number], axis=1), kind="stable")
+            found.update(numbers[int(place)] for place in order[: CANDIDATES + 1])
+    return sorted(found)
 
 
 def row_of(value: MarkValue, local: Local, classes: Sequence[OfficeClass]) -> Row:

@@ -424,3 +424,18 @@ def test_the_command_keeps_the_two_accuracies_apart(register: Register, base: Ev
     assert "relative to the datum, 95 %" in text
     assert "relative to neighbours 2, 95 %" in text
     assert run_fieldbook("register", "coordinates", register.path, "Z").code == 2
+
+
+def test_one_mark_wanted_has_the_neighbours_it_has_among_all(register: Register, base: Evidence) -> None:
+    from fieldbook.register.results import rows_of, tree_of
+
+    places = np.random.default_rng(3).uniform(0.0, 5000.0, (40, 2))
+    items = [
+        occupied(base, n + 1, mark=f"M{n}", enu_m=(float(east), float(north), 0.0), hours=float(n))
+        for n, (east, north) in enumerate(places)
+    ]
+    add(register, 0, items)
+    every = {row.value.mark.number: tree_of(row) for row in rows_of(register)}
+    for number in (1, 17, 40):
+        (row,) = rows_of(register, only=[number])
+        assert tree_of(row) == every[number]
