@@ -25,6 +25,7 @@ SUBCOMMANDS: dict[str, str] = {
     "changes": "What changed since a date, by how much, and why.",
     "export": "The values in force as a file for others.",
     "import": "The same register again from its GeoPackage.",
+    "dispute": "Everything behind one certificate's or published value's number.",
     "decisions": "Who decided what, when and why.",
 }
 

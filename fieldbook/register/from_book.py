@@ -117,6 +117,9 @@ def _certificate(entry: Entry) -> Tree:
         "digest": body["digest"],
         "supersedes": body.get("supersedes"),
         "issued_utc": body.get("issued_utc"),
+        "reason": body.get("reason"),
+        "sign_off": body["facts"].get("sign_off"),
+        "signature": body.get("signature"),
         "seq": entry.seq,
         "hash": entry.hash,
         "client": None
