@@ -72,7 +72,8 @@ def connections_here(path: Path) -> int:
         return _open[os.path.realpath(path)]
 
 
-def _uri(path: Path, query: str) -> str:
+def file_uri(path: Path, query: str) -> str:
+    """The path as a URI for sqlite3, symbolic links followed."""
     posix = Path(os.path.realpath(path)).as_posix()
     if not posix.startswith("/"):
         posix = "/" + posix  # a drive letter of Windows
@@ -87,17 +88,26 @@ def _connect(path: Path, query: str) -> BookConnection:
             code="sqlite",
         )
     connection = sqlite3.connect(
-        _uri(path, query), uri=True, isolation_level=None, timeout=BUSY_MS / 1000, factory=BookConnection
+        file_uri(path, query), uri=True, isolation_level=None, timeout=BUSY_MS / 1000, factory=BookConnection
     )
     connection.count_in(path)
+    harden(connection, MAX_VALUE_BYTES)
+    return connection
+
+
+def harden(connection: sqlite3.Connection, most_bytes: int) -> None:
+    """Settings for a file that may come from anybody; the connection is closed where they are refused.
+
+    Args:
+        most_bytes: of one value.
+    """
     try:
-        connection.setlimit(sqlite3.SQLITE_LIMIT_LENGTH, MAX_VALUE_BYTES)
+        connection.setlimit(sqlite3.SQLITE_LIMIT_LENGTH, most_bytes)
         for pragma in ("trusted_schema=OFF", "cell_size_check=ON", "foreign_keys=ON", "recursive_triggers=ON"):
             connection.execute(f"PRAGMA {pragma}")
     except BaseException:
         connection.close()
         raise
-    return connection
 
 
 def look(path: Path) -> None:

@@ -30,6 +30,7 @@ from .begin import new_book
 from .known import Known
 from .press import LARGE_BYTES, Presser
 from .tail import TailSum
+from .transactions import immediate
 
 
 class Book:
@@ -174,19 +175,8 @@ class Book:
         """
         if not self.writable:
             raise BookError(f"{self.path} is open for reading only.", "Open it for writing.", code="read_only")
-        with connect.book_errors(self.path):
-            if self._connection.in_transaction:
-                yield
-                return
-            self._connection.execute("BEGIN IMMEDIATE")
-            try:
-                yield
-                self._connection.execute("COMMIT")
-            except BaseException:
-                self._forget()
-                if self._connection.in_transaction:
-                    self._connection.execute("ROLLBACK")
-                raise
+        with connect.book_errors(self.path), immediate(self._connection, self._forget):
+            yield
 
     @contextmanager
     def _reading(self) -> Iterator[None]:

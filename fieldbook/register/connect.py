@@ -7,17 +7,15 @@ short commands of one office, so the plain rollback journal does; nobody has to 
 
 from __future__ import annotations
 
-import os
 import sqlite3
 from collections.abc import Iterator
 from contextlib import contextmanager
 from functools import lru_cache
 from pathlib import Path
 from typing import Any
-from urllib.parse import quote_from_bytes
 
 from fieldbook.book.beside import refuse_hostile
-from fieldbook.book.connect import printable
+from fieldbook.book.connect import file_uri, folder_is_writable, harden, printable
 from fieldbook.book.migrations import schema_of
 from fieldbook.errors import BookError
 
@@ -32,13 +30,6 @@ Connection = sqlite3.Connection
 DatabaseError = sqlite3.Error
 
 
-def _uri(path: Path, query: str) -> str:
-    posix = Path(os.path.realpath(path)).as_posix()
-    if not posix.startswith("/"):
-        posix = "/" + posix  # a drive letter of Windows
-    return f"file://{quote_from_bytes(os.fsencode(posix), safe='/:')}?{query}"
-
-
 def open_reader(path: Path) -> Connection:
     """A connection that can only read; the schema is checked by `check_identity`.
 
@@ -47,7 +38,7 @@ def open_reader(path: Path) -> Connection:
     """
     _look(path)
     with register_errors(path):
-        query = "mode=ro" if os.access(Path(os.path.realpath(path)).parent, os.W_OK) else "immutable=1"
+        query = "mode=ro" if folder_is_writable(path) else "immutable=1"
         connection = _connect(path, query)
         return _tried(connection, ("query_only=ON",))
 
@@ -67,14 +58,8 @@ def open_writer(path: Path, *, create: bool = False) -> Connection:
 
 
 def _connect(path: Path, query: str) -> Connection:
-    connection = sqlite3.connect(_uri(path, query), uri=True, isolation_level=None, timeout=BUSY_MS / 1000)
-    try:
-        connection.setlimit(sqlite3.SQLITE_LIMIT_LENGTH, MAX_VALUE_BYTES)
-        for pragma in ("trusted_schema=OFF", "cell_size_check=ON", "foreign_keys=ON", "recursive_triggers=ON"):
-            connection.execute(f"PRAGMA {pragma}")
-    except BaseException:
-        connection.close()
-        raise
+    connection = sqlite3.connect(file_uri(path, query), uri=True, isolation_level=None, timeout=BUSY_MS / 1000)
+    harden(connection, MAX_VALUE_BYTES)
     return connection
 
 

@@ -19,6 +19,7 @@ from typing import Any
 from fieldbook import __version__
 from fieldbook.book.begin import give_name
 from fieldbook.book.connect import printable
+from fieldbook.book.transactions import immediate
 from fieldbook.clock import Clock, utc_text
 from fieldbook.errors import BookError, UsageError
 from fieldbook.model.canonical import Tree, canonical_json
@@ -132,19 +133,11 @@ class Register:
         """
         if not self.writable:
             raise BookError(f"{self.path} is open for reading only.", "Open it for writing.", code="read_only")
-        with connect.register_errors(self.path):
-            if self._connection.in_transaction:
-                yield
-                return
-            self._connection.execute("BEGIN IMMEDIATE")
-            try:
-                yield
-                self._connection.execute("COMMIT")
-            except BaseException:
-                self._state = RegisterState()  # it may hold entries that were not committed
-                if self._connection.in_transaction:
-                    self._connection.execute("ROLLBACK")
-                raise
+        with connect.register_errors(self.path), immediate(self._connection, self._forget):
+            yield
+
+    def _forget(self) -> None:
+        self._state = RegisterState()  # it may hold entries that were not committed
 
     # -- entries -----------------------------------------------------------------------------------------------
 

@@ -2,47 +2,18 @@
 
 from __future__ import annotations
 
-import json
-from collections.abc import Callable
-from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
 
 import pytest
-
-from fieldbook import commands
+from said import Call, caller
 
 SAMPLE = Path(__file__).parents[1] / "settings" / "contract_sample.toml"
-
-
-@dataclass
-class Said:
-    """What a command said."""
-
-    code: int
-    out: str
-    err: str
-
-    @property
-    def json(self) -> Any:
-        """stdout as JSON."""
-        return json.loads(self.out)
-
-
-Call = Callable[..., Said]
 
 
 @pytest.fixture
 def fieldbook(capsys: pytest.CaptureFixture[str]) -> Call:
     """Call a command in this process."""
-
-    def call(*arguments: object) -> Said:
-        capsys.readouterr()
-        code = commands.run([str(argument) for argument in arguments])
-        captured = capsys.readouterr()
-        return Said(code, captured.out, captured.err)
-
-    return call
+    return caller(capsys)
 
 
 @pytest.fixture

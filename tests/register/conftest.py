@@ -2,17 +2,14 @@
 
 from __future__ import annotations
 
-import json
 import shutil
-from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator
 from pathlib import Path
-from typing import Any
 
 import pytest
 from recorded_samples import record_into
+from said import Call, caller
 
-from fieldbook import commands
 from fieldbook.clock import SystemClock
 from fieldbook.register.evidence import Evidence
 from fieldbook.register.from_book import read_book
@@ -21,34 +18,10 @@ from fieldbook.register.store import Register
 from .made import new_register
 
 
-@dataclass
-class Said:
-    """What a command said."""
-
-    code: int
-    out: str
-    err: str
-
-    @property
-    def json(self) -> Any:
-        """stdout as JSON."""
-        return json.loads(self.out)
-
-
-Call = Callable[..., Said]
-
-
 @pytest.fixture
 def run_fieldbook(capsys: pytest.CaptureFixture[str]) -> Call:
     """Call a command in this process."""
-
-    def call(*arguments: object) -> Said:
-        capsys.readouterr()
-        code = commands.run([str(argument) for argument in arguments])
-        captured = capsys.readouterr()
-        return Said(code, captured.out, captured.err)
-
-    return call
+    return caller(capsys)
 
 
 @pytest.fixture(scope="session")
