@@ -36,12 +36,19 @@ def command(book: Path, mark: str, forms: tuple[str, ...], grid: str | None, *, 
         for form in forms or possible
     }
     if as_json:
-        tree = {"frame": client.frame, "frame_name": client.frame_name, "epoch": client.epoch}
+        tree = {
+            "frame": client.frame,
+            "frame_name": client.frame_name,
+            "epoch": client.epoch,
+            "horizontal95_m": found.uncertainty.horizontal95_m,
+            "vertical95_m": found.uncertainty.vertical95_m,
+        }
         write_json({"schema": "fieldbook.coordinates/1", "book": str(book), "mark": mark, **tree, "forms": texts})
         return
     epoch = "static frame" if client.epoch is None else f"epoch {client.epoch:.4f}"
-    line(
-        f"{mark}: {client.frame_name} ({client.frame}), {epoch}; 95 % in plan {rounded_up(found.uncertainty.horizontal95_m, decimals)} m"
-    )
+    stated = f"95 % {rounded_up(found.uncertainty.horizontal95_m, decimals)} m in plan"
+    if found.uncertainty.vertical95_m is not None:
+        stated += f", {rounded_up(found.uncertainty.vertical95_m, decimals)} m in height"
+    line(f"{mark}: {client.frame_name} ({client.frame}), {epoch}; {stated}")
     for form, text in texts.items():
         line(f"  {form:11} {text}")

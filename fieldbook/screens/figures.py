@@ -16,6 +16,7 @@ from fieldbook.screens.plain import clean, fit, pad
 from fieldbook.screens.rows import BLANK, Row, heading, labelled, labelled_lines, paragraph, row
 from fieldbook.screens.words import SEVERITY, duration, hour_minute, length_95, set_aside_word, signed_mm, stopwatch
 
+ONE_LINE = 72  # cells: from here on the frame of the two 95 % stands beside each of them
 SETTLED_LENGTHS = 5.0  # under five correlation times the 95 % rests on the kind of fix (design, section 6)
 
 
@@ -101,8 +102,9 @@ def position_rows(reduction: Reduction, width: int, judged_in: str) -> list[Row]
         figure("Longitude", lon, f"95 % {length_95(stated.horizontal95_m)} circle"),
         figure("Ell. height", h_text, f"95 % {length_95(stated.vertical95_m)}"),
         row((fit(f" of the mark, in {place.frame_name} ({place.frame}){epoch}", width - 1), "soft")),
-        *_reached(reduction, "horizontal_95_m", "Horizontal", judged_in),
-        *_reached(reduction, "vertical_95_m", "Height", judged_in),
+        *_reached(reduction, "horizontal_95_m", "Horizontal", judged_in if width >= ONE_LINE else ""),
+        *_reached(reduction, "vertical_95_m", "Height", judged_in if width >= ONE_LINE else ""),
+        *([] if width >= ONE_LINE else [row((f" both against the requirement, in the {judged_in}", "soft"))]),
     ]
 
 
@@ -120,7 +122,7 @@ def _reached(reduction: Reduction, name: str, label: str, judged_in: str) -> lis
             (pad(have, 8), "strong"),
             f"wanted {pad(wanted, 7)} ",
             state,
-            (f"  in the {judged_in}", "soft"),
+            (f"  in the {judged_in}" if judged_in else "", "soft"),
         )
     ]
 

@@ -141,7 +141,7 @@ def _observed(item: Reduction, width: int) -> list[Row]:
     return [
         labelled("as observed", f"{seen.frame_name} {seen.frame}{epoch}", width, style="soft"),
         labelled("", place, width, style="soft"),
-        labelled(
+        *labelled_lines(
             "",
             f"95 % {length_95(item.uncertainty.horizontal95_m)}; to the client's frame by {steps}",
             width,
@@ -205,7 +205,7 @@ def budget_rows(stated: Uncertainty, width: int) -> list[Row]:
     for line in stated.budget:
         figures = [(pad(_mm(value), 6, right=True), "text") for value in line.u_enu_m]
         dof = "∞" if line.dof is None else f"{line.dof:.0f}"
-        names = wrapped(line.source + (", common" if line.common else ""), name_width, 3)
+        names = wrapped(line.source + (", common" if line.common else ""), name_width, 4)
         rows.append(row(f" {pad(names[0], name_width)} {line.type}", *figures, (pad(dof, 5, right=True), "soft")))
         rows += [row(f"   {name}") for name in names[1:]]
     total = [(pad(_mm(value), 6, right=True), "strong") for value in stated.u_enu_m]

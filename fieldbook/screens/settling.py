@@ -49,7 +49,7 @@ def settling_rows(view: LiveView, width: int, height: int, *, ascii_only: bool =
     strips = [_plan(run, wanted.horizontal_95_m), _height(run, wanted.vertical_95_m)]
     half = (width - 1) // 2
     drawn = [_strip(strip, half, height - 2, ascii_only=ascii_only) for strip in strips]
-    legend = " line: mean, from the latest one; dots: its 95 %; far dots: wanted"
+    legend = " line: mean about the latest; dots: 95 %; wide: wanted"
     return [title, *beside(drawn[0], drawn[1], half), row((fit(legend, width - 1), "soft"))]
 
 
